@@ -1,0 +1,73 @@
+"""The book: trades, the desk's side of each, and what could not be read."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from datetime import date
+
+from pricer.contracts.option import EuropeanOption
+from pricer.core.issues import Issue
+from pricer.core.source import SourceFile
+
+
+@dataclass(frozen=True, slots=True)
+class Premium:
+    """An agreed premium: ``amount`` in the trade's currency, paid by the long side."""
+
+    amount: float
+    payment_date: date
+
+
+@dataclass(frozen=True, slots=True)
+class Trade:
+    """One position of the desk.
+
+    ``position`` is signed: positive when the desk is long. It counts options for price
+    options and is the notional in the trade's currency for performance options.
+    ``collateral`` names the collateral whose discount curve applies (empty: the
+    currency's standard curve).
+    """
+
+    trade_id: str
+    contract: EuropeanOption
+    position: float
+    currency: str
+    collateral: str = ""
+    trade_date: date | None = None
+    premium: Premium | None = None
+    counterparty: str = ""
+    netting_set: str = ""
+    strategy: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Refusal:
+    """A trade that cannot be priced, and why.
+
+    What could be read of it stays readable, so that it is listed and counted, never lost.
+    """
+
+    trade_id: str
+    issues: tuple[Issue, ...]
+    product: str = ""
+    currency: str = ""
+    counterparty: str = ""
+    strategy: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Book:
+    """The trades that could be read, those that could not, and everything found on the way."""
+
+    name: str
+    trades: tuple[Trade, ...]
+    refusals: tuple[Refusal, ...] = ()
+    issues: tuple[Issue, ...] = ()
+    sources: tuple[SourceFile, ...] = ()
+
+    def __len__(self) -> int:
+        return len(self.trades)
+
+    def __iter__(self) -> Iterator[Trade]:
+        return iter(self.trades)

@@ -1,0 +1,91 @@
+"""The European multi-asset option: an aggregate of levels and a profile on it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from datetime import date
+
+import numpy as np
+from numpy.typing import NDArray
+
+from pricer.contracts.aggregate import Aggregate, AggregateKind
+from pricer.contracts.profile import PiecewiseLinear, Profile, ProfileKind
+
+
+@dataclass(frozen=True, slots=True)
+class EuropeanOption:
+    """Pays ``profile(aggregate(levels at expiry))`` per unit on the payment date.
+
+    ``reference_levels`` divides each underlying's price: the initial fixings for a
+    performance option, ones for a price option.
+    """
+
+    underlyings: tuple[str, ...]
+    reference_levels: tuple[float, ...]
+    aggregate: Aggregate
+    profile: Profile
+    expiry_date: date
+    payment_date: date
+    on_performance: bool
+
+    def __post_init__(self) -> None:
+        n = len(self.underlyings)
+        if not n == len(self.reference_levels) == len(self.aggregate.weights):
+            raise ValueError(
+                f"{n} underlyings, {len(self.reference_levels)} reference levels and "
+                f"{len(self.aggregate.weights)} weights must be equal in number"
+            )
+
+    def payoff_on_core(self) -> PiecewiseLinear:
+        """The payoff per unit as a function of the aggregate *without* its cash level.
+
+        "Best of assets and cash" is the best of the assets seen through a profile that is
+        flat below the cash level, so engines never meet the cash level itself.
+        """
+        payoff = self.profile.payoff()
+        cash = self.aggregate.cash
+        if cash is None:
+            return payoff
+        if self.aggregate.kind is AggregateKind.BEST_OF:
+            return payoff.of_floored_argument(cash)
+        return payoff.of_capped_argument(cash)
+
+    def payoff(self, spots: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Payoff per unit for prices ``spots`` (..., n_assets)."""
+        levels = np.asarray(spots, dtype=float) / np.array(self.reference_levels)
+        return self.profile.payoff()(self.aggregate(levels))
+
+    def unit_notional(self, spots: NDArray[np.float64]) -> float:
+        """The amount that one unit refers to, for quoting errors in basis points of notional.
+
+        A cash digital refers to the amount it pays; a performance option to 1 unit of
+        currency; a price option to its aggregate at ``spots`` (n_assets,), with the
+        absolute values of the weights of a weighted sum.
+        """
+        if self.profile.kind in (ProfileKind.CASH_DIGITAL_CALL, ProfileKind.CASH_DIGITAL_PUT):
+            return abs(self.profile.cash_amount)
+        if self.on_performance:
+            return 1.0
+        weights = self.aggregate.weights
+        if self.aggregate.kind is not AggregateKind.GEOMETRIC:
+            weights = tuple(abs(w) for w in weights)
+        levels = np.asarray(spots, dtype=float)
+        return float(Aggregate(self.aggregate.kind, weights)(levels))
+
+    @property
+    def product(self) -> str:
+        """The trade's everyday name, used to group reports."""
+        return f"{_family(self)} {self.profile.kind}"
+
+
+def _family(option: EuropeanOption) -> str:
+    aggregate = option.aggregate
+    if len(option.underlyings) == 1:
+        return "single-asset"
+    if aggregate.cash is not None:
+        return f"{aggregate.kind} assets and cash"
+    if aggregate.kind is AggregateKind.WEIGHTED_SUM:
+        return "spread" if min(aggregate.weights) < 0.0 < max(aggregate.weights) else "basket"
+    if aggregate.kind is AggregateKind.GEOMETRIC:
+        return "geometric basket"
+    return str(aggregate.kind)

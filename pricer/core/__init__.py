@@ -1,0 +1,1 @@
+"""Ground floor: issues, random streams and progress. Knows no finance."""

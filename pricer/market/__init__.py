@@ -1,0 +1,1 @@
+"""Tonight's market: curves, dividends, volatilities, correlations and currencies, checked once."""

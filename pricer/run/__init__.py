@@ -1,0 +1,1 @@
+"""Runs: plan the work, do it, hand back frozen results."""
