@@ -25,9 +25,7 @@ class AggregateKind(StrEnum):
 
 
 #: Aggregates whose level depends on the ordering of the underlyings' levels.
-RANKED = frozenset(
-    {AggregateKind.BEST_OF, AggregateKind.WORST_OF, AggregateKind.KTH_BEST, AggregateKind.RANK_WEIGHTED}
-)
+RANKED = frozenset({AggregateKind.BEST_OF, AggregateKind.WORST_OF, AggregateKind.KTH_BEST, AggregateKind.RANK_WEIGHTED})
 
 
 @dataclass(frozen=True, slots=True)

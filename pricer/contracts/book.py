@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from dataclasses import dataclass
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field
 from datetime import date
 
 from pricer.contracts.option import EuropeanOption
 from pricer.core.issues import Issue
-from pricer.core.source import SourceFile
+from pricer.core.source import Place, SourceFile
 
 
 @dataclass(frozen=True, slots=True)
@@ -65,6 +65,7 @@ class Book:
     refusals: tuple[Refusal, ...] = ()
     issues: tuple[Issue, ...] = ()
     sources: tuple[SourceFile, ...] = ()
+    places: Mapping[tuple[str, str], Place] = field(default_factory=dict)  # (trade id, column) -> cell
 
     def __len__(self) -> int:
         return len(self.trades)

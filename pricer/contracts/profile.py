@@ -10,6 +10,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from enum import StrEnum
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -53,7 +54,7 @@ class PiecewiseLinear:
                 "knots, bends and jumps must have one length; got "
                 f"{len(self.knots)}, {len(self.bends)} and {len(self.jumps)}"
             )
-        if any(b <= a for a, b in zip(self.knots, self.knots[1:], strict=False)):
+        if any(b <= a for a, b in pairwise(self.knots)):
             raise ValueError(f"knots must increase strictly; got {self.knots}")
 
     def __call__(self, a: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -145,10 +146,10 @@ class PiecewiseLinear:
         knots: list[float] = []
         b: list[float] = []
         m: list[float] = []
-        for j, (lo, hi) in enumerate(zip(edges, edges[1:], strict=False)):
+        for j, (lo, hi) in enumerate(pairwise(edges)):
             crossing = (floor - intercepts[j]) / slopes[j] if slopes[j] != 0.0 else np.nan
             cuts = [lo, crossing, hi] if lo < crossing < hi else [lo, hi]
-            for start, end in zip(cuts, cuts[1:], strict=False):
+            for start, end in pairwise(cuts):
                 middle = _inside(start, end)
                 above = intercepts[j] + slopes[j] * middle >= floor
                 if start != -np.inf:

@@ -1,4 +1,4 @@
-"""Which file an input came from."""
+"""Which file and cell an input came from."""
 
 from __future__ import annotations
 
@@ -11,3 +11,14 @@ class SourceFile:
 
     name: str
     sha256: str
+
+
+@dataclass(frozen=True, slots=True)
+class Place:
+    """Where a fact was read: a cell of a sheet (or of a CSV file), rows counted from 1."""
+
+    file: str
+    sheet: str
+    row: int
+    column: str
+    cell: str

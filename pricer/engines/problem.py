@@ -27,9 +27,7 @@ class EuropeanProblem:
         if self.aggregate.cash is not None:
             raise ValueError("fold the cash level into the payoff first")
         if self.law.n_assets != len(self.aggregate.weights):
-            raise ValueError(
-                f"{self.law.n_assets} levels for {len(self.aggregate.weights)} weights"
-            )
+            raise ValueError(f"{self.law.n_assets} levels for {len(self.aggregate.weights)} weights")
 
 
 class ReferenceKind(StrEnum):

@@ -23,9 +23,7 @@ class JointLognormal:
     def __post_init__(self) -> None:
         n = self.forwards.shape[0]
         if self.forwards.shape != (n,) or self.covariance.shape != (n, n):
-            raise ValueError(
-                f"forwards {self.forwards.shape} and covariance {self.covariance.shape} do not fit"
-            )
+            raise ValueError(f"forwards {self.forwards.shape} and covariance {self.covariance.shape} do not fit")
         if not (np.all(np.isfinite(self.forwards)) and np.all(self.forwards > 0.0)):
             raise ValueError("forwards must be finite and positive")
 
@@ -49,13 +47,14 @@ class JointLognormal:
     @property
     def deviations(self) -> NDArray[np.float64]:
         """Standard deviations of the log-levels, (n,)."""
-        return np.sqrt(np.diag(self.covariance))
+        out: NDArray[np.float64] = np.sqrt(np.diag(self.covariance))
+        return out
 
     @property
     def correlation(self) -> NDArray[np.float64]:
         """Correlation of the log-levels, (n, n); an asset without variance is uncorrelated."""
         s = self.deviations
         safe = np.where(s > 0.0, s, 1.0)
-        out = self.covariance / np.outer(safe, safe)
+        out: NDArray[np.float64] = self.covariance / np.outer(safe, safe)
         np.fill_diagonal(out, 1.0)
         return out

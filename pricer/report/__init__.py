@@ -1,0 +1,1 @@
+"""Writers: frozen results in, a workbook and plain tables out."""

@@ -1,0 +1,1 @@
+"""Paths: low-discrepancy normals and fused sampling kernels. Knows no trades by name."""

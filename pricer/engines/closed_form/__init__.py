@@ -1,0 +1,1 @@
+"""Closed forms, bounds and quadratures: one file per family."""
