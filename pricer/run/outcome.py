@@ -9,6 +9,8 @@ from enum import StrEnum
 from pricer.contracts.book import Refusal
 from pricer.core.issues import Issue
 from pricer.core.source import SourceFile
+from pricer.engines.cross_check import Verdict as Verdict
+from pricer.engines.selector import Interval as Interval
 
 
 class Status(StrEnum):
@@ -17,25 +19,6 @@ class Status(StrEnum):
     PRICED = "priced"
     PRECISION_NOT_REACHED = "precision not reached"  # priced, but less precisely than asked
     NOT_PRICED = "not priced"
-
-
-class Interval(StrEnum):
-    """What ``lower`` and ``upper`` mean."""
-
-    EXACT = "exact"  # closed form or quadrature, with its numerical error
-    BOUNDS = "bounds"  # lower and upper bounds computed without sampling
-    SAMPLING = "99 % sampling"  # two-sided 99 % interval from the standard error
-
-
-class Verdict(StrEnum):
-    """What a cross-check found."""
-
-    AGREES = "agrees"
-    DIFFERS = "differs"
-    WITHIN_BOUND = "within bound"
-    OUTSIDE_BOUND = "outside bound"
-    CLOSE = "approximation close"
-    FAR = "approximation far"
 
 
 @dataclass(frozen=True, slots=True)

@@ -1,0 +1,33 @@
+"""Arguments that several commands share."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+BookPath = Annotated[
+    Path,
+    typer.Argument(
+        metavar="BOOK", help="The trades: an .xlsx workbook, or a folder of .csv files.", show_default=False
+    ),
+]
+MarketPath = Annotated[
+    Path,
+    typer.Argument(
+        metavar="MARKET", help="Tonight's market: an .xlsx workbook, or a folder of .csv files.", show_default=False
+    ),
+]
+ValuationDate = Annotated[
+    str | None,
+    typer.Option(
+        "--date",
+        metavar="YYYY-MM-DD",
+        help="Value at this date instead of the snapshot's own.",
+        show_default=False,
+    ),
+]
+EveryProblem = Annotated[
+    bool, typer.Option("--every-problem", help="Print every problem, not only the first of each kind.")
+]

@@ -1,0 +1,25 @@
+"""``pricer check``: validate a book against a market, price nothing."""
+
+from __future__ import annotations
+
+import typer
+
+from pricer.cli.arguments import BookPath, EveryProblem, MarketPath, ValuationDate
+
+
+def check(book: BookPath, market: MarketPath, date: ValuationDate = None, every_problem: EveryProblem = False) -> None:
+    """List every problem of a book and a market; price nothing."""
+    from pricer.cli import console
+    from pricer.cli.inputs import parse_date, read_inputs
+    from pricer.core.issues import InputError
+    from pricer.run.admission import admit
+
+    try:
+        admitted = admit(*read_inputs(book, market, parse_date(date)))
+    except InputError as error:
+        console.show_problems(error.issues, every=every_problem)
+        raise typer.Exit(2) from None
+    console.show_problems(admitted.issues, every=every_problem)
+    ready, refused = len(admitted.trades), len(admitted.refusals)
+    console.say(f"{ready} trades can be priced, {refused} cannot.")
+    raise typer.Exit(2 if not ready else 1 if refused else 0)

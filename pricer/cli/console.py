@@ -1,0 +1,164 @@
+"""What the terminal shows: problems, progress and the closing summary."""
+
+from __future__ import annotations
+
+import sys
+import time
+from collections import Counter, defaultdict
+from collections.abc import Iterable, Sequence
+from threading import Lock
+
+from rich.console import Console
+from rich.progress import BarColumn, MofNCompleteColumn, TextColumn, TimeElapsedColumn, TimeRemainingColumn
+from rich.progress import Progress as Bar
+from rich.table import Table
+
+from pricer.core.issues import Issue, Severity
+from pricer.core.progress import Progress, Silent
+from pricer.engines.cross_check import ALARMS
+from pricer.run.outcome import Outcome, Status
+
+#: Problems of one kind that are printed before the rest is only counted.
+SHOWN_OF_A_KIND = 8
+
+_ORDER = (Severity.FATAL, Severity.ERROR, Severity.WARNING)
+
+out = Console(highlight=False, soft_wrap=True)
+err = Console(stderr=True, highlight=False, soft_wrap=True)
+
+
+def show_problems(issues: Sequence[Issue], *, every: bool = False) -> None:
+    """Print problems on standard error, the gravest first, grouped by kind and counted."""
+    if not issues:
+        return
+    counts = Counter(issue.severity for issue in issues)
+    err.print(
+        f"{len(issues)} problem{'s' if len(issues) != 1 else ''}: " + _counted(counts), style="bold", markup=False
+    )
+    groups: dict[tuple[Severity, str], list[Issue]] = defaultdict(list)
+    for issue in issues:
+        groups[issue.severity, issue.code].append(issue)
+    for severity, code in sorted(groups, key=lambda key: (_ORDER.index(key[0]), key[1])):
+        members = groups[severity, code]
+        err.print(f"\n{severity}: {code.replace('-', ' ')} ({len(members)})", style="bold", markup=False)
+        shown = members if every else members[:SHOWN_OF_A_KIND]
+        for issue in shown:
+            err.print(f"  {issue}", markup=False)
+        if len(shown) < len(members):
+            err.print(f"  ... and {len(members) - len(shown)} more of this kind", markup=False)
+
+
+def _counted(counts: Counter[Severity]) -> str:
+    return ", ".join(f"{counts[severity]} {severity}" for severity in _ORDER if counts[severity])
+
+
+def progress(*, quiet: bool) -> Progress:
+    """A bar on a terminal, dated lines in a log, nothing when quiet."""
+    if quiet:
+        return Silent()
+    return _BarProgress() if err.is_terminal else _LoggedProgress()
+
+
+class _BarProgress:
+    """A bar with the trade in hand and the time left."""
+
+    def __init__(self) -> None:
+        self._bar = Bar(
+            TextColumn("pricing"),
+            BarColumn(),
+            MofNCompleteColumn(),
+            TextColumn("elapsed"),
+            TimeElapsedColumn(),
+            TextColumn("left"),
+            TimeRemainingColumn(),
+            TextColumn("{task.description}"),
+            console=err,
+            transient=True,
+        )
+        self._task = self._bar.add_task("")
+
+    def start(self, total: int) -> None:
+        self._bar.update(self._task, total=total)
+        self._bar.start()
+
+    def advance(self, label: str) -> None:
+        self._bar.update(self._task, advance=1, description=label)
+
+    def finish(self) -> None:
+        self._bar.stop()
+
+
+class _LoggedProgress:
+    """A line at every tenth of the work, for output that goes to a file."""
+
+    def __init__(self) -> None:
+        self._lock = Lock()
+        self._done = self._total = 0
+        self._began = time.monotonic()
+
+    def start(self, total: int) -> None:
+        self._total = total
+        self._began = time.monotonic()
+        self._say(f"pricing {total} trades")
+
+    def advance(self, label: str) -> None:
+        with self._lock:
+            self._done += 1
+            tenths = (10 * self._done) // max(self._total, 1)
+            if tenths > (10 * (self._done - 1)) // max(self._total, 1):
+                elapsed = time.monotonic() - self._began
+                left = elapsed / self._done * (self._total - self._done)
+                self._say(f"priced {self._done} of {self._total}, last {label}, about {left:.0f} s left")
+
+    def finish(self) -> None:
+        self._say(f"pricing took {time.monotonic() - self._began:.1f} s")
+
+    @staticmethod
+    def _say(text: str) -> None:
+        err.print(f"{time.strftime('%Y-%m-%d %H:%M:%S')} {text}", markup=False)
+
+
+def show_outcome(outcome: Outcome) -> None:
+    """The short table at the end of a run."""
+    facts = outcome.facts
+    table = Table(title=f"{facts.book_name}, {facts.valuation_date:%d %B %Y}", title_justify="left", min_width=60)
+    table.add_column("currency")
+    table.add_column("trades", justify="right")
+    table.add_column("value", justify="right")
+    table.add_column("standard error", justify="right")
+    by_currency: dict[str, list[tuple[float, float]]] = defaultdict(list)
+    for v in outcome.valuations:
+        by_currency[v.currency].append((v.value, v.standard_error))
+    for currency in sorted(by_currency):
+        table.add_row(currency, *_row(by_currency[currency]))
+    table.add_section()
+    total = [(v.reporting_value, v.reporting_standard_error) for v in outcome.valuations]
+    table.add_row(f"total in {facts.reporting_currency}", *_row(total), style="bold")
+    out.print(table)
+
+    imprecise = sum(v.status is Status.PRECISION_NOT_REACHED for v in outcome.valuations)
+    alarms = sum(check.verdict in ALARMS for check in outcome.cross_checks)
+    lines = [
+        f"priced {len(outcome.valuations)}, not priced {len(outcome.refusals)}",
+        f"less precise than asked: {imprecise}",
+        f"cross-checks: {len(outcome.cross_checks)}, of which to look at: {alarms}",
+    ]
+    for line in lines:
+        out.print(line, markup=False)
+
+
+def _row(members: Iterable[tuple[float, float]]) -> tuple[str, str, str]:
+    values, errors = zip(*members, strict=True) if (members := list(members)) else ((), ())
+    error = sum(e * e for e in errors) ** 0.5
+    return str(len(values)), f"{sum(values):,.2f}", f"{error:,.2f}"
+
+
+def say(text: str) -> None:
+    """A plain line on standard output."""
+    out.print(text, markup=False)
+
+
+def complain(text: str) -> None:
+    """A plain line on standard error."""
+    err.print(text, markup=False)
+    sys.stderr.flush()

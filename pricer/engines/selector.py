@@ -1,0 +1,67 @@
+"""Which number leads: exact where an exact method applies, sampled otherwise."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from enum import StrEnum
+
+import numpy as np
+from scipy.special import stdtrit
+
+from pricer.engines.closed_form import best_exact
+from pricer.engines.monte_carlo import Sample
+from pricer.engines.problem import Reference, ReferenceKind
+
+#: Two-sided probability that a sampling interval covers the value.
+COVERAGE = 0.99
+
+
+class Interval(StrEnum):
+    """What ``lower`` and ``upper`` mean."""
+
+    EXACT = "exact"  # closed form or quadrature, with its numerical error
+    BOUNDS = "bounds"  # lower and upper bounds computed without sampling
+    SAMPLING = "99 % sampling"  # two-sided 99 % interval from the standard error
+
+
+@dataclass(frozen=True, slots=True)
+class Headline:
+    """The value that leads, per unit, with the interval that goes with it."""
+
+    value: float
+    standard_error: float
+    lower: float
+    upper: float
+    interval: Interval
+    method: str
+
+
+def headline(sample: Sample, references: tuple[Reference, ...], tolerance: float) -> Headline:
+    """The leading value of one unit.
+
+    An exact reference leads when its own numerical error is below ``tolerance`` (the
+    standard error asked of sampling). Otherwise the sampled value leads, and the interval
+    is the narrower of a pair of bounds and the sampling interval.
+    """
+    exact = best_exact(references)
+    if exact is not None and exact.error <= tolerance:
+        low, high = exact.value - exact.error, exact.value + exact.error
+        return Headline(exact.value, 0.0, low, high, Interval.EXACT, exact.method)
+
+    reach = sampling_quantile(sample.randomisations, 1.0 - COVERAGE) * sample.standard_error
+    low, high, interval = sample.value - reach, sample.value + reach, Interval.SAMPLING
+    lowers = [r.value - r.error for r in references if r.kind is ReferenceKind.LOWER_BOUND]
+    uppers = [r.value + r.error for r in references if r.kind is ReferenceKind.UPPER_BOUND]
+    if lowers and uppers and min(uppers) - max(lowers) < high - low:
+        low, high, interval = max(lowers), min(uppers), Interval.BOUNDS
+    return Headline(sample.value, sample.standard_error, low, high, interval, "randomised low-discrepancy sampling")
+
+
+def sampling_quantile(randomisations: int, probability: float) -> float:
+    """Two-sided Student quantile for the mean of ``randomisations`` independent estimates.
+
+    ``probability`` is the chance of falling outside.
+    """
+    if randomisations < 2:
+        return 0.0
+    return float(np.abs(stdtrit(randomisations - 1, 0.5 * probability)))

@@ -1,0 +1,49 @@
+"""Which trades can be priced on this market; the others are refused with every reason."""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from dataclasses import replace
+
+from pricer.contracts.book import Book, Refusal, Trade
+from pricer.core.issues import Issue, Severity
+from pricer.core.source import Place
+from pricer.market.coverage import coverage
+from pricer.market.market import Market
+
+
+def admit(book: Book, market: Market) -> Book:
+    """The book as this market can price it: uncovered trades become refusals.
+
+    Issues of the book and of the market stay; those found here are added.
+    """
+    kept: list[Trade] = []
+    refused: list[Refusal] = []
+    found: list[Issue] = []
+    places = _places_by_trade(book)
+    for trade in book.trades:
+        issues = coverage(trade, market, places[trade.trade_id].get)
+        found.extend(issues)
+        errors = tuple(issue for issue in issues if issue.severity is not Severity.WARNING)
+        if errors:
+            refused.append(refusal(trade, errors))
+        else:
+            kept.append(trade)
+    return replace(
+        book,
+        trades=tuple(kept),
+        refusals=(*book.refusals, *refused),
+        issues=(*book.issues, *market.issues, *found),
+    )
+
+
+def refusal(trade: Trade, issues: tuple[Issue, ...]) -> Refusal:
+    """The trade as it is listed when it cannot be priced."""
+    return Refusal(trade.trade_id, issues, trade.contract.product, trade.currency, trade.counterparty, trade.strategy)
+
+
+def _places_by_trade(book: Book) -> dict[str, dict[str, Place]]:
+    places: dict[str, dict[str, Place]] = defaultdict(dict)
+    for (trade_id, column), place in book.places.items():
+        places[trade_id][column] = place
+    return places
