@@ -22,18 +22,18 @@ Row = dict[str, Any]
 
 # id: currency, spot, calendar, lot, dividend yield, volatility today's level, sensitivity to its own region
 UNDERLYINGS: dict[str, tuple[str, float, str, int, float, float, float]] = {
-    "ORLUMA": ("EUR", 84.20, "TARGET", 1, 0.021, 0.215, 0.78),
-    "TESKIR": ("EUR", 212.50, "TARGET", 1, 0.012, 0.262, 0.70),
-    "VADRONE": ("EUR", 37.16, "TARGET", 10, 0.034, 0.188, 0.66),
-    "PELLOMAR": ("EUR", 128.90, "TARGET", 1, 0.000, 0.301, 0.62),
-    "KRUNTEL": ("USD", 156.30, "US", 1, 0.008, 0.284, 0.80),
-    "SORBEQ": ("USD", 61.45, "US", 10, 0.025, 0.231, 0.68),
-    "MIZZANT": ("USD", 402.00, "US", 1, 0.000, 0.347, 0.74),
-    "HALQUIN": ("USD", 98.75, "US", 1, 0.017, 0.205, 0.60),
-    "DRUVEX": ("GBP", 5.32, "UK", 100, 0.041, 0.198, 0.71),
-    "YONNARD": ("GBP", 18.94, "UK", 100, 0.028, 0.244, 0.64),
-    "FENTRICK": ("GBP", 2.775, "UK", 1000, 0.036, 0.272, 0.58),
-    "WEXMOOR": ("GBP", 44.10, "UK", 10, 0.019, 0.226, 0.69),
+    "ORLUMA": ("EUR", 84.20, "XETRA", 1, 0.021, 0.215, 0.78),
+    "TESKIR": ("EUR", 212.50, "XETRA", 1, 0.012, 0.262, 0.70),
+    "VADRONE": ("EUR", 37.16, "XETRA", 10, 0.034, 0.188, 0.66),
+    "PELLOMAR": ("EUR", 128.90, "XETRA", 1, 0.000, 0.301, 0.62),
+    "KRUNTEL": ("USD", 156.30, "NYSE", 1, 0.008, 0.284, 0.80),
+    "SORBEQ": ("USD", 61.45, "NYSE", 10, 0.025, 0.231, 0.68),
+    "MIZZANT": ("USD", 402.00, "NYSE", 1, 0.000, 0.347, 0.74),
+    "HALQUIN": ("USD", 98.75, "NYSE", 1, 0.017, 0.205, 0.60),
+    "DRUVEX": ("GBP", 5.32, "LSE", 100, 0.041, 0.198, 0.71),
+    "YONNARD": ("GBP", 18.94, "LSE", 100, 0.028, 0.244, 0.64),
+    "FENTRICK": ("GBP", 2.775, "LSE", 1000, 0.036, 0.272, 0.58),
+    "WEXMOOR": ("GBP", 44.10, "LSE", 10, 0.019, 0.226, 0.69),
 }
 COUNTERPARTIES = {
     "Ostrevane Pension Trust": "OPT-1",

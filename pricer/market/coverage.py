@@ -1,0 +1,171 @@
+"""Whether a market holds what a trade needs."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from pricer.contracts.book import Trade
+from pricer.core.issues import Issue
+from pricer.market.date_coverage import date_coverage
+from pricer.market.findings import Locate, did_you_mean, error, words
+from pricer.market.market import CORRELATIONS, Market
+
+
+def coverage(trade: Trade, market: Market, place: Locate) -> tuple[Issue, ...]:
+    """Everything that keeps ``trade`` from being priced on ``market`` (errors), or qualifies its price (warnings).
+
+    ``place`` gives the cell from which a column of the trade was read ("trade_id", "currency",
+    "collateral", "expiry_date", "payment_date", "premium_date", and "underlying:ID" for a
+    constituent), or None. Every issue carries the trade's id.
+    """
+    issues = [
+        *_currencies(trade, market, place),
+        *_underlyings(trade, market, place),
+        *_correlations(trade, market, place),
+        *date_coverage(trade, market, place),
+    ]
+    return tuple(issue.for_trade(trade.trade_id) for issue in issues)
+
+
+def _currencies(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
+    currency, collateral, reporting = trade.currency, trade.collateral, market.reporting_currency
+    if currency not in _known_currencies(market):
+        known = sorted(_known_currencies(market))
+        yield error(
+            place("currency"),
+            "unknown-currency",
+            f'currency "{currency}"',
+            f"a currency of the market: {words(known, 'or')}",
+            f"{did_you_mean(currency, known)}Correct the currency, or add its curve to the curves table and its rate "
+            "to the fx table of the market.",
+        )
+        return  # what else is missing follows from this
+    if not _converts(market, currency):
+        yield error(
+            place("currency"),
+            "no-fx-route",
+            f"currency {currency}, which no quoted pairs link to the reporting currency {reporting}",
+            f"a chain of exchange rates from {currency} to {reporting}",
+            f"Add the pair {reporting}{currency} or {currency}{reporting} to the fx table of the market.",
+        )
+    if (currency, "") not in market.curves:
+        yield error(
+            place("currency"),
+            "no-standard-curve",
+            f"currency {currency}, which has no standard discount curve",
+            f"a curve of {currency} with empty collateral, from which discount factors and forwards come",
+            _refused_curve(market) or f"Add a curve of {currency} with empty collateral to the curves table.",
+        )
+    if collateral and (currency, collateral) not in market.curves:
+        known = sorted(other for owner, other in market.curves if owner == currency and other)
+        instead = f"use a collateral that has one ({words(known, 'or')})" if known else "clear the cell"
+        yield error(
+            place("collateral"),
+            "no-collateral-curve",
+            f'collateral "{collateral}", for which {currency} has no discount curve',
+            f"a collateral with a discount curve in {currency}, or none for the standard curve",
+            _refused_curve(market)
+            or f'Add a curve of {currency} with collateral "{collateral}" to the curves table, or {instead}.',
+        )
+
+
+def _underlyings(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
+    for name in dict.fromkeys(trade.contract.underlyings):
+        here = place(f"underlying:{name}")
+        why = _why(market.rejected.get(name, ()))
+        underlying = market.underlyings.get(name)
+        if underlying is None and why:
+            yield error(
+                here,
+                "rejected-underlying",
+                f'underlying "{name}", which the market lists but could not use',
+                "an underlying with usable market data",
+                why,
+            )
+        elif underlying is None:
+            yield error(
+                here,
+                "unknown-underlying",
+                f'underlying "{name}"',
+                "an underlying of the market",
+                f"{did_you_mean(name, market.underlyings)}Correct the name, or add it to the underlyings table of the "
+                "market.",
+            )
+        else:
+            if underlying.volatility is None:
+                yield error(
+                    here,
+                    "no-volatility",
+                    f'underlying "{name}", which has no usable volatility',
+                    "an underlying with at least one volatility",
+                    why or f'Add "{name}" to the volatilities table of the market.',
+                )
+            if underlying.currency != trade.currency and trade.currency in _known_currencies(market):
+                yield error(
+                    here,
+                    "other-currency",
+                    f'underlying "{name}", quoted in {underlying.currency}, in a trade in {trade.currency}',
+                    "underlyings quoted in the trade's currency",
+                    f"Correct the trade's currency if it is {underlying.currency}; quanto and composite trades are not "
+                    "priced by this version.",
+                )
+
+
+def _correlations(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
+    names = [name for name in dict.fromkeys(trade.contract.underlyings) if name in market.underlyings]
+    if len(names) < 2:
+        return
+    if market.correlation is None:
+        yield error(
+            place("trade_id"),
+            "no-correlations",
+            "no usable correlation matrix",
+            f"correlations among {words(names)}",
+            _why(market.rejected.get(CORRELATIONS, ()))
+            or "Add the correlations of the trade's underlyings to the correlations table of the market.",
+        )
+        return
+    told: set[str] = set()  # a pair is told once, at the first of the two
+    for name in names:
+        if name in market.correlation:
+            continue
+        told.add(name)
+        others = [other for other in names if other not in told]
+        if others:
+            yield error(
+                place(f"underlying:{name}"),
+                "missing-correlation",
+                f'no correlation of underlying "{name}" with {words(others)}',
+                "a correlation for every pair of the trade's underlyings",
+                f'Add a row and a column "{name}" to the correlations table of the market.',
+            )
+
+
+def _known_currencies(market: Market) -> set[str]:
+    return {market.reporting_currency, *market.fx.currencies, *(currency for currency, _ in market.curves)}
+
+
+def _converts(market: Market, currency: str) -> bool:
+    try:
+        market.to_reporting(currency)
+    except LookupError:
+        return False
+    return True
+
+
+def _why(issues: tuple[Issue, ...]) -> str:
+    """The market's own reason, short enough to stand in a trade's issue."""
+    if not issues:
+        return ""
+    first, more = issues[0], len(issues) - 1
+    place = f"{first.place()}: " if first.place() else ""
+    rest = f" (and {more} more)" if more else ""
+    return f"Mend the market first: {place}found {first.found}; expected {first.expected}{rest}."
+
+
+def _refused_curve(market: Market) -> str:
+    """The reason of a curve that was given but refused: it may be the one that is missing."""
+    for name, issues in market.rejected.items():
+        if any((issue.sheet or "").startswith("curve") for issue in issues):
+            return f'Curve "{name}" could not be used. {_why(issues)}'
+    return ""

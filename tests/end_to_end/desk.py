@@ -1,0 +1,38 @@
+"""A small book and market on disk, cut from the sample, for tests that run commands."""
+
+from __future__ import annotations
+
+import importlib.util
+from pathlib import Path
+from types import ModuleType
+
+from pricer.loader import write_tables
+
+ROOT = Path(__file__).parents[2]
+SAMPLE = ROOT / "sample_books" / "saltmarsh_desk"
+
+
+def sample_maker() -> ModuleType:
+    """The script that writes the sample, as a module."""
+    spec = importlib.util.spec_from_file_location("make_sample", ROOT / "sample_books" / "make_sample.py")
+    module = importlib.util.module_from_spec(spec)
+    spec.loader.exec_module(module)
+    return module
+
+
+def small_book(*trade_ids: str) -> dict[str, list[dict]]:
+    """Tables of the sample's trades with these ids, in the order asked."""
+    tables = sample_maker().book_tables()
+    by_id = {row["trade_id"]: row for row in tables["trades"]}
+    return {
+        "trades": [by_id[trade_id] for trade_id in trade_ids],
+        "constituents": [row for row in tables["constituents"] if row["trade_id"] in trade_ids],
+    }
+
+
+def write_desk(folder: Path, *trade_ids: str) -> tuple[Path, Path]:
+    """A book of these trades and the sample's market as workbooks in ``folder``."""
+    book, market = folder / "book.xlsx", folder / "market.xlsx"
+    write_tables(small_book(*trade_ids), book)
+    write_tables(sample_maker().market_tables(), market)
+    return book, market
