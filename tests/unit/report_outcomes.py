@@ -1,4 +1,4 @@
-"""Outcomes made by hand for the report's tests: an invented book on twelve invented underlyings, in three currencies."""
+"""Outcomes made by hand for the report's tests: an invented book on invented underlyings, in three currencies."""
 
 from __future__ import annotations
 

@@ -1,0 +1,188 @@
+"""Probabilities of the multivariate normal law, each with a bound on its error."""
+
+from __future__ import annotations
+
+import math
+from itertools import product
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.special import ndtr, ndtri
+
+from pricer.core.randomness import Purpose, stream
+from pricer.engines.closed_form import one_factor
+from pricer.engines.closed_form.family import Estimate
+from pricer.engines.closed_form.quadrature import integrate, normal_density
+
+RECURSION_LIMIT = 6  # dimensions up to which the recursive quadrature is quick (milliseconds)
+
+_SAME = 4e-15  # correlations this near to +-1 are +-1 up to rounding
+_FAR = 38.0  # normal probabilities beyond are below the smallest double
+_RANGE = 9.0  # integrals over a common factor stop here: what lies beyond is below 1e-18
+_SHIFTS = 12
+_POINTS = 4096
+_SHIFT_QUANTILE = 4.0  # standard errors; 99.8 % two-sided for Student's law with 11 degrees
+
+
+def cdf(limits: NDArray[np.float64], correlation: NDArray[np.float64]) -> Estimate:
+    """``P(X_i <= limits[i] for all i)``; limits (n,) may be infinite, ``correlation`` (n, n) singular."""
+    h = np.asarray(limits, dtype=float)
+    if np.any(h < -_FAR):
+        return Estimate(0.0)
+    kept = np.flatnonzero(h < _FAR)
+    lower, upper, kept = _merge(h, correlation, kept)
+    r = np.ascontiguousarray(correlation[np.ix_(kept, kept)], dtype=float)
+    if np.any(lower >= upper):
+        return Estimate(0.0)
+    two_sided = np.flatnonzero(np.isfinite(lower))
+    total = Estimate(0.0)
+    for corner in product((False, True), repeat=two_sided.size):
+        h = upper.copy()
+        down = two_sided[list(corner)]
+        h[down] = lower[down]
+        total = total + _one_sided(h, r).times((-1.0) ** down.size)
+    return Estimate(min(1.0, max(0.0, total.value)), total.error)
+
+
+def within(
+    rows: NDArray[np.float64],
+    limits: NDArray[np.float64],
+    covariance: NDArray[np.float64],
+    strict: NDArray[np.bool_],
+) -> Estimate:
+    """``P(rows @ x <= limits)`` for ``x`` normal with mean 0; rows (m, n), limits (m,), strict (m,).
+
+    A row without variance is certain: it holds where its limit is above 0, or is 0 and the
+    row is not ``strict``.
+    """
+    between = rows @ covariance @ rows.T
+    variance = np.diag(between)
+    gross = np.abs(rows) @ np.sqrt(np.diag(covariance))
+    certain = variance <= 1e-15 * gross * gross
+    if np.any(certain & ((limits < 0.0) | (strict & (limits == 0.0)))):
+        return Estimate(0.0)
+    uncertain = ~certain
+    deviation = np.sqrt(variance[uncertain])
+    r = between[np.ix_(uncertain, uncertain)] / np.outer(deviation, deviation)
+    return cdf(limits[uncertain] / deviation, r)
+
+
+def _merge(
+    h: NDArray[np.float64], correlation: NDArray[np.float64], kept: NDArray[np.intp]
+) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.intp]]:
+    """Fold variables that are equal, or each other's negative, into intervals of one of them."""
+    lower: list[float] = []
+    upper: list[float] = []
+    chosen: list[int] = []
+    for i in kept:
+        for position, j in enumerate(chosen):
+            if correlation[i, j] >= 1.0 - _SAME:
+                upper[position] = min(upper[position], float(h[i]))
+                break
+            if correlation[i, j] <= -1.0 + _SAME:
+                lower[position] = max(lower[position], -float(h[i]))
+                break
+        else:
+            chosen.append(int(i))
+            lower.append(-math.inf)
+            upper.append(float(h[i]))
+    return np.array(lower), np.array(upper), np.array(chosen, dtype=np.intp)
+
+
+def _one_sided(h: NDArray[np.float64], r: NDArray[np.float64]) -> Estimate:
+    n = h.size
+    if n == 0:
+        return Estimate(1.0)
+    if n == 1:
+        return Estimate(float(ndtr(h[0])), 1e-16)
+    if n > 2 and (common := one_factor.loadings(r)) is not None:
+        return _by_common_factor(h, common)
+    if n <= RECURSION_LIMIT:
+        from pricer.engines.closed_form import normal_kernels  # numba is needed only from here on
+
+        value, error = normal_kernels.multivariate(h, r, 1e-10 if n < 5 else 1e-9, 40)
+        return Estimate(float(value), float(error))
+    return _by_lattice(h, r)
+
+
+def _by_common_factor(h: NDArray[np.float64], loading: NDArray[np.float64]) -> Estimate:
+    """One integral over the common factor (Dunnett & Sobel 1955; Curnow & Dunnett 1962)."""
+    own = np.sqrt(np.maximum(1.0 - loading**2, 0.0))
+    tied = own < 1e-7
+    start, end = -_RANGE, _RANGE
+    for limit, b in zip(h[tied], loading[tied], strict=True):
+        if b > 0.0:
+            end = min(end, limit / b)
+        else:
+            start = max(start, limit / b)
+    if end <= start:
+        return Estimate(0.0)
+    slope, level = loading[~tied] / own[~tied], h[~tied] / own[~tied]
+
+    def density(z: NDArray[np.float64]) -> NDArray[np.float64]:
+        given = np.prod(ndtr(level - slope * z[:, None]), axis=1)
+        return np.asarray(normal_density(z) * given)
+
+    found = integrate(density, np.linspace(start, end, 9), 1e-14)
+    return Estimate(found.value, found.error + 1e-15)
+
+
+def _by_lattice(h: NDArray[np.float64], r: NDArray[np.float64]) -> Estimate:
+    """Separation of variables and randomly shifted lattice points (Genz 1992; Genz & Bretz 2002).
+
+    The shifts come from a stream of fixed key, so that a probability is always the same number.
+    """
+    factor, limits = _ordered_cholesky(h, r)
+    n = h.size
+    rng = stream(0, "multivariate normal cdf", Purpose.PRICE, 0)
+    shifts = rng.random((_SHIFTS, n - 1))
+    generator = np.sqrt(_primes(n - 1))  # Richtmyer's irrational lattice
+    steps = np.arange(1, _POINTS + 1)[:, None] * generator
+    u = np.abs(2.0 * ((steps + shifts[:, None, :]) % 1.0) - 1.0).reshape(-1, n - 1)
+    y = np.empty((u.shape[0], n))
+    probability = np.ones(u.shape[0])
+    for i in range(n):
+        distance = limits[i] - y[:, :i] @ factor[i, :i]
+        reached = ndtr(distance / factor[i, i]) if factor[i, i] > 0.0 else (distance >= 0.0).astype(float)
+        probability *= reached
+        if i < n - 1:
+            y[:, i] = ndtri(np.clip(u[:, i] * reached, 1e-300, 1.0 - 1e-16))
+    means = probability.reshape(_SHIFTS, _POINTS).mean(axis=1)
+    error = _SHIFT_QUANTILE * float(means.std(ddof=1)) / math.sqrt(_SHIFTS)
+    return Estimate(float(means.mean()), error + 1e-15)
+
+
+def _ordered_cholesky(
+    h: NDArray[np.float64], r: NDArray[np.float64]
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Lower factor and limits with the most restrictive variables first (Gibson, Glasbey & Elston 1994)."""
+    n = h.size
+    r, h = r.copy(), h.copy()
+    factor = np.zeros((n, n))
+    expected = np.zeros(n)
+    for i in range(n):
+        spare = np.maximum(np.diag(r)[i:] - (factor[i:, :i] ** 2).sum(axis=1), 0.0)
+        shifted = h[i:] - factor[i:, :i] @ expected[:i]
+        safe = np.where(spare > 1e-13, np.sqrt(np.where(spare > 1e-13, spare, 1.0)), 1e-7)
+        best = i + int(np.argmin(shifted / safe))
+        order = np.arange(n)
+        order[[i, best]] = order[[best, i]]
+        r, h, factor = r[np.ix_(order, order)], h[order], factor[order]
+        pivot = spare[best - i]
+        if pivot > 1e-13:
+            factor[i, i] = math.sqrt(pivot)
+            factor[i + 1 :, i] = (r[i + 1 :, i] - factor[i + 1 :, :i] @ factor[i, :i]) / factor[i, i]
+            d = (h[i] - factor[i, :i] @ expected[:i]) / factor[i, i]
+            # Mean of a standard normal cut off at d, with its limit far in the tail.
+            expected[i] = d if d < -30.0 else -math.exp(-0.5 * d * d) / math.sqrt(2.0 * math.pi) / float(ndtr(d))
+    return factor, h
+
+
+def _primes(count: int) -> NDArray[np.float64]:
+    found: list[int] = []
+    candidate = 2
+    while len(found) < count:
+        if all(candidate % p for p in found):
+            found.append(candidate)
+        candidate += 1
+    return np.array(found, dtype=float)

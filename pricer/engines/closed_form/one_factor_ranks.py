@@ -1,0 +1,121 @@
+"""Best, worst and k-th best of any number of levels that share one common factor.
+
+Given the factor the levels are independent, so that the number of them above a level has
+a Poisson-binomial law; an option on the k-th best is the integral of the probability
+that at least k of them are above (for max and min: Johnson 1987).
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.special import ndtr
+
+from pricer.engines.closed_form import one_factor
+from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side
+from pricer.engines.closed_form.quadrature import integrate, normal_density
+from pricer.engines.closed_form.ranks import SingleRank, scaled
+from pricer.engines.problem import EuropeanProblem, ReferenceKind
+from pricer.market.joint_lognormal import JointLognormal
+
+_RANGE = 9.0
+_STEP = 0.6  # of the trapezoidal rule, in units of the narrowest transition along the factor
+_MOST_NODES = 800
+_RELATIVE_TOLERANCE = 1e-10
+
+
+@dataclass(frozen=True, slots=True)
+class OneFactorRank:
+    """The law of the level of rank ``rank`` (1 is the best).
+
+    ``loadings`` (n,) on the factor; ``own`` (n,) > 0 deviations of the logs given it;
+    ``nodes`` (2 m,) an equally spaced grid of the factor.
+    """
+
+    law: JointLognormal
+    rank: int
+    loadings: NDArray[np.float64]
+    own: NDArray[np.float64]
+    nodes: NDArray[np.float64]
+
+    def mean(self) -> Estimate:
+        return self.option(0.0, 1)
+
+    def option(self, strike: float, side: Side) -> Estimate:
+        low, high = self._reach()
+        y = math.log(strike) if strike > 0.0 else -math.inf
+        if side == 1:
+            start, end = min(max(y, low), high), high
+            certain = math.exp(start) - strike if y < low else 0.0
+        else:
+            start, end, certain = low, min(max(y, low), high), 0.0
+            certain = strike - math.exp(end) if y > high else 0.0
+        rough = 0.0
+
+        def density(y: NDArray[np.float64]) -> NDArray[np.float64]:
+            nonlocal rough
+            fine, gap = self._above(y)
+            rough = max(rough, float((np.exp(y) * gap).max()))
+            return np.exp(y) * (fine if side == 1 else 1.0 - fine)
+
+        scale = float(self.law.forwards.max())
+        found = integrate(density, np.linspace(start, end, 5), _RELATIVE_TOLERANCE * scale, 4_000)
+        return Estimate(found.value + certain, found.error + (end - start) * rough + 1e-14 * scale)
+
+    def digital(self, strike: float, side: Side) -> Estimate:
+        if strike <= 0.0:
+            return Estimate(1.0 if side == 1 else 0.0)
+        above, gap = self._above(np.array([math.log(strike)]))
+        value = float(above[0]) if side == 1 else 1.0 - float(above[0])
+        return Estimate(value, float(gap[0]) + 1e-14)
+
+    def _reach(self) -> tuple[float, float]:
+        """Log-levels outside of which the ranked level practically never is."""
+        deviation = self.law.deviations
+        middle = np.log(self.law.forwards) - 0.5 * deviation**2
+        width = _RANGE * deviation
+        return float((middle - width).min()), float((middle + width + deviation**2).max())
+
+    def _above(self, y: NDArray[np.float64]) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+        """Probability that the ranked level is above ``exp(y)`` (m,), and its quadrature error."""
+        middle = np.log(self.law.forwards) - 0.5 * np.diag(self.law.covariance)
+        below_rank = np.zeros((self.rank, y.size, self.nodes.size))  # exactly 0, 1, ... levels above
+        below_rank[0] = 1.0
+        for m, b, s in zip(middle, self.loadings, self.own, strict=True):
+            p = ndtr(((m + b * self.nodes) - y[:, None]) / s)
+            below_rank[1:] = below_rank[1:] * (1.0 - p) + below_rank[:-1] * p
+            below_rank[0] *= 1.0 - p
+        enough = 1.0 - below_rank.sum(axis=0)
+        weights = normal_density(self.nodes) * (self.nodes[1] - self.nodes[0])
+        even, odd = enough[:, ::2] @ (2.0 * weights[::2]), enough[:, 1::2] @ (2.0 * weights[1::2])
+        # Halving the step squares the error of the trapezoidal rule, so the halves' gap is a bound.
+        return 0.5 * (even + odd), np.abs(even - odd)
+
+
+def _law(problem: EuropeanProblem) -> AggregateLaw | None:
+    single = SingleRank.of(problem)
+    if single is None or single.law.n_assets < 3:
+        return None
+    loadings = one_factor.loadings(single.law.covariance)
+    if loadings is None:
+        return None
+    own = np.sqrt(np.maximum(np.diag(single.law.covariance) - loadings**2, 0.0))
+    if np.any(own <= 0.0):
+        return None
+    steepest = float(np.max(np.abs(loadings) / own))
+    count = 2 * math.ceil(_RANGE * max(1.0, steepest) / _STEP)
+    if count > _MOST_NODES:
+        return None
+    nodes = np.linspace(-_RANGE, _RANGE, 2 * count)
+    return scaled(OneFactorRank(single.law, single.rank, loadings, own, nodes), single.weight)
+
+
+ONE_FACTOR_RANKS = Family(
+    "ranked level, one common factor",
+    ReferenceKind.EXACT,
+    "Johnson (1987) by conditional independence",
+    _law,
+)

@@ -1,0 +1,66 @@
+"""Any weighted sum of two levels by one quadrature (Pearson 1995).
+
+Given the second level the first is lognormal, so that a call on the sum is a Black call
+at the strike that the second level leaves; that strike may be negative.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side
+from pricer.engines.closed_form.lognormal import Numbers, black, exceedance
+from pricer.engines.closed_form.lognormal_sum import LognormalSum
+from pricer.engines.closed_form.quadrature import integrate, normal_density
+from pricer.engines.problem import EuropeanProblem, ReferenceKind
+
+_RANGE = 9.0  # beyond this many deviations lies less than 1e-18
+_RELATIVE_TOLERANCE = 1e-14
+
+_Formula = Callable[[Numbers, Numbers, Numbers, Side], NDArray[np.float64]]
+
+
+@dataclass(frozen=True, slots=True)
+class TwoAssetSum:
+    """``shift + first X + second Y``; ``first`` and ``second`` of either sign."""
+
+    total: LognormalSum
+
+    def mean(self) -> Estimate:
+        return Estimate(self.total.mean)
+
+    def option(self, strike: float, side: Side) -> Estimate:
+        return self._integral(black, strike, side, self.total.gross + abs(strike))
+
+    def digital(self, strike: float, side: Side) -> Estimate:
+        return self._integral(exceedance, strike, side, 1.0)
+
+    def _integral(self, formula: _Formula, strike: float, side: Side, scale: float) -> Estimate:
+        (first, second), v = self.total.coefficients, self.total.covariance
+        deviation = math.sqrt(v[1, 1])
+        loading = v[0, 1] / deviation
+        own = math.sqrt(max(v[0, 0] - loading * loading, 0.0))
+        mirrored: Side = side if first > 0.0 else (-1 if side == 1 else 1)
+
+        def density(z: NDArray[np.float64]) -> NDArray[np.float64]:
+            forward = abs(first) * np.exp(loading * z - 0.5 * loading * loading)
+            left = strike - self.total.shift - second * np.exp(deviation * z - 0.5 * deviation * deviation)
+            return normal_density(z) * formula(forward, left * np.sign(first), own, mirrored)
+
+        # A lognormal payment moves the weight of the integrand by its own loading.
+        low, high = min(0.0, loading), max(deviation, loading)
+        found = integrate(density, np.linspace(low - _RANGE, high + _RANGE, 9), _RELATIVE_TOLERANCE * scale)
+        return Estimate(max(found.value, 0.0), found.error + 1e-15 * scale)
+
+
+def _law(problem: EuropeanProblem) -> AggregateLaw | None:
+    as_sum = LognormalSum.of(problem)
+    return TwoAssetSum(as_sum) if as_sum is not None and as_sum.n_terms == 2 else None
+
+
+TWO_ASSET_SUM = Family("two-asset sum, one-dimensional quadrature", ReferenceKind.EXACT, "Pearson (1995)", _law)

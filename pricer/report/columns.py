@@ -1,0 +1,322 @@
+"""The columns of the workbook's tables: name, heading with its unit, kind of content, meaning.
+
+One list serves the headings, the number formats and the explanations on the run sheet, so they cannot drift apart.
+``{reporting}`` stands for the reporting currency.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from enum import Enum
+
+
+class Kind(Enum):
+    """What a column holds, and so how it is aligned and formatted."""
+
+    TEXT = "text"
+    STATUS = "status"  # text that says how the row stands: bold where the row is marked
+    PROSE = "prose"  # sentences, wrapped
+    DATE = "date"
+    COUNT = "count"
+    AMOUNT = "amount"  # as many decimals as the column's size asks for
+    FIXED = "fixed"  # two decimals
+
+    @property
+    def numeric(self) -> bool:
+        """Whether cells are numbers, set to the right."""
+        return self in (Kind.COUNT, Kind.AMOUNT, Kind.FIXED)
+
+
+@dataclass(frozen=True, slots=True)
+class Column:
+    """One column of a sheet.
+
+    ``like`` names the column whose decimals an amount shares; ``printed`` is False for what
+    is kept for the screen, right of the print area; ``widest`` caps the width, in characters.
+    """
+
+    name: str
+    header: str
+    kind: Kind
+    meaning: str
+    like: str = ""
+    printed: bool = True
+    widest: int = 24
+
+
+def _text(name: str, header: str, meaning: str, widest: int = 24, printed: bool = True) -> Column:
+    return Column(name, header, Kind.TEXT, meaning, widest=widest, printed=printed)
+
+
+_TRADE = _text("trade_id", "trade", "The trade's id in the book.", 18)
+_PRODUCT = _text("product", "product", "The trade's everyday name, formed from its aggregate and profile.", 26)
+
+VALUATIONS: tuple[Column, ...] = (
+    _TRADE,
+    _PRODUCT,
+    _text("counterparty", "counterparty", "As stated in the book.", 20),
+    _text("strategy", "strategy", "The book's own tag for grouping.", 18),
+    Column("expiry_date", "expiry", Kind.DATE, "The date on which the payoff is fixed."),
+    _text("currency", "trade currency", "The currency of value, errors, notional and premium.", 9),
+    Column("notional", "notional (trade currency)", Kind.AMOUNT, "The amount that basis points refer to."),
+    Column(
+        "value",
+        "value (trade currency)",
+        Kind.AMOUNT,
+        "Value of the position as the desk holds it, premium still to be paid or received included.",
+    ),
+    Column(
+        "standard_error",
+        "standard error (trade currency)",
+        Kind.AMOUNT,
+        "Sampling error of the value, one standard deviation; 0 where nothing was sampled.",
+        like="value",
+    ),
+    Column(
+        "lower", "lower end (trade currency)", Kind.AMOUNT, "Lower end of the interval named beside it.", like="value"
+    ),
+    Column(
+        "upper", "upper end (trade currency)", Kind.AMOUNT, "Upper end of the interval named beside it.", like="value"
+    ),
+    Column("reporting_value", "value ({reporting})", Kind.AMOUNT, "The value in the reporting currency."),
+    Column("status", "status", Kind.STATUS, "How the pricing of the trade ended, in one word.", widest=22),
+    _text("method", "method", "How the value was obtained.", 36),
+    _text("interval", "kind of interval", "What the lower and upper ends mean; see below.", 16, printed=False),
+    Column(
+        "reporting_standard_error",
+        "standard error ({reporting})",
+        Kind.AMOUNT,
+        "The standard error in the reporting currency.",
+        like="reporting_value",
+        printed=False,
+    ),
+    Column(
+        "unpaid_premium",
+        "unpaid premium (trade currency)",
+        Kind.AMOUNT,
+        "Discounted premium already inside the value; negative where the desk owes it.",
+        like="value",
+        printed=False,
+    ),
+    Column(
+        "sampled_value",
+        "sampled value (trade currency)",
+        Kind.AMOUNT,
+        "What sampling alone gives; it is the value itself where no exact method applies.",
+        like="value",
+        printed=False,
+    ),
+    Column(
+        "sampled_standard_error",
+        "standard error of sampled value (trade currency)",
+        Kind.AMOUNT,
+        "Sampling error of the sampled value.",
+        like="value",
+        printed=False,
+    ),
+    _text("netting_set", "netting set", "As stated in the book.", printed=False),
+    Column("paths", "paths (number)", Kind.COUNT, "Paths sampled in all.", printed=False),
+    Column(
+        "randomisations",
+        "randomisations (number)",
+        Kind.COUNT,
+        "Independent scramblings of the points, from whose spread the standard error comes.",
+        printed=False,
+    ),
+    Column("seconds", "time (seconds)", Kind.FIXED, "Time spent on the trade.", printed=False),
+    _text("ending", "how the work ended", "In words; for a trade without a value, every reason.", 60, printed=False),
+)
+
+DELTAS: tuple[Column, ...] = (
+    _TRADE,
+    _text("underlying", "underlying", "The underlying's id in the market snapshot.", 18),
+    Column("delta", "delta (shares)", Kind.AMOUNT, "Change of the position's value per unit change of the price."),
+    Column(
+        "standard_error", "standard error of delta (shares)", Kind.AMOUNT, "Sampling error of the delta.", like="delta"
+    ),
+    Column("lots", "delta (lots)", Kind.FIXED, "Delta divided by the underlying's lot size."),
+    _text("underlying_currency", "underlying's currency", "The currency of the underlying's price.", 12),
+    Column("spot", "spot (underlying's currency)", Kind.AMOUNT, "The price used."),
+    Column("cash_delta", "cash delta (underlying's currency)", Kind.AMOUNT, "Delta times spot."),
+    Column(
+        "cash_delta_standard_error",
+        "standard error of cash delta (underlying's currency)",
+        Kind.AMOUNT,
+        "Standard error of delta times spot.",
+        like="cash_delta",
+    ),
+    Column("reporting_cash_delta", "cash delta ({reporting})", Kind.AMOUNT, "Cash delta in the reporting currency."),
+    Column(
+        "gamma",
+        "gamma (shares per unit of underlying's currency)",
+        Kind.AMOUNT,
+        "Change of delta per unit change of the price; blank where the payoff's switching between underlyings "
+        "makes the pathwise second derivative wrong.",
+    ),
+    Column(
+        "gamma_standard_error",
+        "standard error of gamma (shares per unit of underlying's currency)",
+        Kind.AMOUNT,
+        "Sampling error of the gamma.",
+        like="gamma",
+    ),
+    _text("vega_currency", "trade currency", "The currency of vega.", 9),
+    Column(
+        "vega",
+        "vega (trade currency per vol point)",
+        Kind.AMOUNT,
+        "Change of the position's value when the underlying's volatility rises by one point, say from 20 % to 21 %.",
+    ),
+    Column(
+        "vega_standard_error",
+        "standard error of vega (trade currency per vol point)",
+        Kind.AMOUNT,
+        "Sampling error of the vega.",
+        like="vega",
+    ),
+    _text("method", "method", "How the sensitivities were obtained.", 44, printed=False),
+)
+
+UNDERLYING_DELTAS: tuple[Column, ...] = (
+    _text("underlying", "underlying", "The underlying's id in the market snapshot.", 18),
+    _text("currency", "underlying's currency", "The currency of the underlying's price.", 12),
+    Column("spot", "spot (underlying's currency)", Kind.AMOUNT, "The price used."),
+    Column("trades", "trades (number)", Kind.COUNT, "Priced trades that depend on the underlying."),
+    Column("delta", "delta (shares)", Kind.AMOUNT, "Sum of the trades' deltas."),
+    Column(
+        "standard_error", "standard error of delta (shares)", Kind.AMOUNT, "Errors added in quadrature.", like="delta"
+    ),
+    Column("lot_size", "lot size (shares)", Kind.AMOUNT, "Shares in one lot."),
+    Column("lots", "delta (lots)", Kind.FIXED, "Delta divided by the lot size."),
+    Column("cash_delta", "cash delta (underlying's currency)", Kind.AMOUNT, "Delta times spot."),
+    Column("reporting_cash_delta", "cash delta ({reporting})", Kind.AMOUNT, "Cash delta in the reporting currency."),
+    Column(
+        "reporting_cash_delta_standard_error",
+        "standard error of cash delta ({reporting})",
+        Kind.AMOUNT,
+        "Errors added in quadrature.",
+        like="reporting_cash_delta",
+    ),
+    Column(
+        "gamma",
+        "gamma (shares per unit of underlying's currency)",
+        Kind.AMOUNT,
+        "Sum over the trades that have a gamma; the next columns say how exact and how complete it is.",
+    ),
+    Column(
+        "gamma_standard_error",
+        "standard error of gamma (shares per unit of underlying's currency)",
+        Kind.AMOUNT,
+        "Errors added in quadrature.",
+        like="gamma",
+    ),
+    Column("trades_without_gamma", "trades without gamma (number)", Kind.COUNT, "Trades that the gamma leaves out."),
+    Column(
+        "reporting_vega",
+        "vega ({reporting} per vol point)",
+        Kind.AMOUNT,
+        "Sum of the trades' vegas, converted from the trades' currencies.",
+    ),
+    Column(
+        "reporting_vega_standard_error",
+        "standard error of vega ({reporting} per vol point)",
+        Kind.AMOUNT,
+        "Errors added in quadrature.",
+        like="reporting_vega",
+    ),
+)
+
+CROSS_CHECK: tuple[Column, ...] = (
+    _TRADE,
+    _PRODUCT,
+    _text("reference_method", "reference", "The method that the engine is compared with.", 34),
+    _text("reference_kind", "kind of reference", "Whether it is exact, a bound or an approximation.", 14),
+    _text("currency", "trade currency", "The currency of the amounts.", 9),
+    Column("engine_value", "engine (trade currency)", Kind.AMOUNT, "The sampled value of the position."),
+    Column(
+        "engine_standard_error",
+        "standard error of engine (trade currency)",
+        Kind.AMOUNT,
+        "Its sampling error.",
+        like="engine_value",
+    ),
+    Column(
+        "reference_value",
+        "reference (trade currency)",
+        Kind.AMOUNT,
+        "The same position by the reference.",
+        like="engine_value",
+    ),
+    Column(
+        "difference",
+        "difference (trade currency)",
+        Kind.AMOUNT,
+        "Engine minus reference.",
+        like="engine_value",
+    ),
+    Column("difference_bp", "difference (bp of notional)", Kind.FIXED, "One basis point is 0.01 % of the notional."),
+    Column(
+        "difference_standard_errors",
+        "difference (standard errors)",
+        Kind.FIXED,
+        "Difference over the engine's standard error; blank where the engine has none.",
+    ),
+    Column(
+        "tolerance",
+        "tolerance (trade currency)",
+        Kind.AMOUNT,
+        "What the verdict compares the difference with.",
+        like="engine_value",
+    ),
+    Column("verdict", "verdict", Kind.STATUS, "What was found; see below.", widest=20),
+    Column("tolerance_bp", "tolerance (bp of notional)", Kind.FIXED, "The tolerance again.", printed=False),
+    Column(
+        "reference_percent",
+        "reference (% of notional)",
+        Kind.FIXED,
+        "The reference value again: the horizontal axis of the summary's chart.",
+        printed=False,
+    ),
+    Column(
+        "agrees",
+        "difference where it agrees (tolerances)",
+        Kind.FIXED,
+        "Difference over tolerance, for the summary's chart.",
+        printed=False,
+    ),
+    Column(
+        "differs",
+        "difference where it differs (tolerances)",
+        Kind.FIXED,
+        "Difference over tolerance, for the summary's chart.",
+        printed=False,
+    ),
+    Column(
+        "reference_error",
+        "error of reference (trade currency)",
+        Kind.AMOUNT,
+        "Bound on the reference's own numerical error.",
+        printed=False,
+    ),
+    _text("source", "source of reference", "Where the reference's formula was published.", 60, printed=False),
+)
+
+PROBLEMS: tuple[Column, ...] = (
+    Column(
+        "severity",
+        "severity",
+        Kind.STATUS,
+        "Fatal: nothing could be done. Error: one trade or market item cannot "
+        "be used. Warning: used, but a person should look.",
+    ),
+    _text("trade_id", "trade", "The trade that cannot be priced because of it, if there is one.", 18),
+    _text("file", "file", "The file in which it was found.", 26),
+    _text("sheet", "sheet", "The sheet.", 16),
+    Column("row", "row (number)", Kind.COUNT, "Row of the sheet or of the CSV file, counted from 1."),
+    _text("column", "column", "The column's name.", 18),
+    _text("cell", "cell", "The spreadsheet reference.", 8),
+    Column("found", "found", Kind.PROSE, "What stands there.", widest=34),
+    Column("expected", "expected", Kind.PROSE, "What should stand there.", widest=34),
+    Column("mend", "how to mend it", Kind.PROSE, "What to do.", widest=46),
+    _text("code", "code", "A short stable word for machines.", 24, printed=False),
+)

@@ -1,0 +1,74 @@
+"""The words of the report that explain its numbers."""
+
+from __future__ import annotations
+
+from pricer.core.issues import Severity
+from pricer.run.outcome import Interval, Status, Verdict
+
+CAUTION = (
+    "Model values are estimates. They are not advice and not an offer, and they are no substitute for independent "
+    "price verification, the firm's own model approval, the accounting and prudential rules where it operates, and "
+    "the sign-off of people authorised to give it."
+)
+
+READING: tuple[tuple[str, str], ...] = (
+    ("totals", "Sums over the trades that have a value. Trades that were not priced are left out, counted and listed."),
+    (
+        "standard errors of totals",
+        "Every trade is sampled with draws of its own, so standard errors are added in quadrature (the root of the sum "
+        "of squares).",
+    ),
+    (
+        "99 % sampling interval",
+        "The total less and plus a Student quantile of standard errors, the degrees of freedom of the trades pooled "
+        "(2.58 in a large book). It covers the sampling error alone: not the model, not the market data, not trades "
+        "left out.",
+    ),
+    (
+        "values without sampling",
+        "Closed forms and quadratures have a numerical error instead of a sampling error: half the distance between "
+        "lower and upper end. These are added up, without any netting, in a line of their own.",
+    ),
+    ("signs", "The desk's: a positive value is worth having, a positive delta gains when the price rises."),
+    ("lots", "Delta over the underlying's lot size, not rounded."),
+    ("1 vol point", "0.01 of annual volatility: from 20 % to 21 %."),
+    ("1 bp of notional", "0.01 % of the trade's notional."),
+    (
+        "reporting currency",
+        "Converted at the snapshot's spot rates. Groups with many members show the largest twelve "
+        "and one line for the rest.",
+    ),
+    ("blank cell", "The number does not exist for this row, or could not be formed from what is known."),
+    (
+        "marked rows",
+        "Orange tint with a bold word: look at it. Grey with slanted figures: the trade has no value. Columns right "
+        "of the print area are for the screen.",
+    ),
+)
+
+INTERVALS: dict[Interval, str] = {
+    Interval.EXACT: "Closed form or quadrature; the ends are the value less and plus its numerical error.",
+    Interval.BOUNDS: "Lower and upper bounds computed without sampling, narrower than the sampling interval.",
+    Interval.SAMPLING: "Two-sided 99 % interval: Student's quantile for the number of randomisations.",
+}
+
+STATUSES: dict[Status, str] = {
+    Status.PRICED: "Priced to the precision asked for.",
+    Status.PRECISION_NOT_REACHED: "Priced, but less precisely than asked: read the standard error.",
+    Status.NOT_PRICED: "No value; the reason is in the last column of Valuations and on the sheet Problems.",
+}
+
+VERDICTS: dict[Verdict, str] = {
+    Verdict.DIFFERS: "Engine and exact reference differ by more than the tolerance: find out why before using either.",
+    Verdict.OUTSIDE_BOUND: "The engine's value lies beyond a bound by more than the tolerance: find out why.",
+    Verdict.FAR: "An approximation is far from the engine's value; that by itself says nothing against the engine.",
+    Verdict.AGREES: "Engine and exact reference agree within the tolerance.",
+    Verdict.WITHIN_BOUND: "The engine's value respects the bound within the tolerance.",
+    Verdict.CLOSE: "An approximation lies close to the engine's value.",
+}
+
+SEVERITIES: dict[Severity, str] = {
+    Severity.FATAL: "The file or the market could not be used at all.",
+    Severity.ERROR: "One trade, or one market item, could not be used.",
+    Severity.WARNING: "Used, but a person should look.",
+}

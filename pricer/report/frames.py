@@ -1,0 +1,249 @@
+"""Tidy tables of an outcome: one row a thing, machine names, units in :mod:`pricer.report.columns`.
+
+Text is ``""`` where there is none, numbers are NaN or NA. Nothing here varies between two runs of the same input
+and seed except the table ``seconds``, which is kept apart for that reason.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import fields, replace
+from typing import TYPE_CHECKING, Any
+
+from pricer.contracts.book import Refusal
+from pricer.core.issues import Issue, Severity
+from pricer.report.rates import Rates
+from pricer.report.sums import ratio
+from pricer.report.totals import GROUPINGS, Total, group_totals, priced
+from pricer.report.underlying_totals import UnderlyingTotal, underlying_totals
+from pricer.run.outcome import CrossCheck, Outcome, Status, Valuation, Verdict
+
+if TYPE_CHECKING:
+    import pandas
+
+    Frame = pandas.DataFrame
+
+_SEVERITIES = (Severity.FATAL, Severity.ERROR, Severity.WARNING)
+# What a reader should see first comes first.
+_VERDICTS = (
+    Verdict.DIFFERS,
+    Verdict.OUTSIDE_BOUND,
+    Verdict.FAR,
+    Verdict.AGREES,
+    Verdict.WITHIN_BOUND,
+    Verdict.CLOSE,
+)
+
+
+def tables(outcome: Outcome) -> Mapping[str, Frame]:
+    """Every table of the report, by name.
+
+    ``valuations`` has the trades that were not priced too, last, with blank numbers; ``cross_check`` and
+    ``problems`` begin with what needs attention; ``seconds`` is the time each trade took.
+    """
+    return {
+        "valuations": valuations(outcome),
+        "deltas": deltas(outcome),
+        "underlying_deltas": underlying_deltas(outcome),
+        "summaries": summaries(outcome),
+        "cross_check": cross_check(outcome),
+        "problems": problems(outcome),
+        "not_priced": not_priced(outcome),
+        "seconds": seconds(outcome),
+    }
+
+
+def valuations(outcome: Outcome) -> Frame:
+    """One row a trade, in book order, refused trades after them."""
+    items: list[Valuation | Refusal] = [*outcome.valuations, *outcome.refusals]
+
+    def known(name: str) -> list[Any]:
+        return [getattr(item, name, None) for item in items]
+
+    def number(name: str) -> list[Any]:
+        return [None if _status(item) is Status.NOT_PRICED else getattr(item, name) for item in items]
+
+    return _frame(
+        {
+            "trade_id": known("trade_id"),
+            "product": known("product"),
+            "currency": known("currency"),
+            "value": number("value"),
+            "standard_error": number("standard_error"),
+            "lower": number("lower"),
+            "upper": number("upper"),
+            "interval": number("interval"),
+            "method": number("method"),
+            "status": [_status(item) for item in items],
+            "notional": known("notional"),
+            "unpaid_premium": number("unpaid_premium"),
+            "reporting_currency": [outcome.facts.reporting_currency] * len(items),
+            "reporting_value": number("reporting_value"),
+            "reporting_standard_error": number("reporting_standard_error"),
+            "sampled_value": number("sampled_value"),
+            "sampled_standard_error": number("sampled_standard_error"),
+            "counterparty": known("counterparty"),
+            "strategy": known("strategy"),
+            "netting_set": known("netting_set"),
+            "expiry_date": known("expiry_date"),
+            "paths": number("paths"),
+            "randomisations": number("randomisations"),
+            "ending": [reason(item) if isinstance(item, Refusal) else item.ending for item in items],
+        },
+        text="trade_id product currency interval method status reporting_currency counterparty strategy netting_set "
+        "ending",
+        whole="paths randomisations",
+        dates="expiry_date",
+    )
+
+
+def deltas(outcome: Outcome) -> Frame:
+    """One row a priced trade and underlying, in book order."""
+    rates = Rates.from_outcome(outcome)
+    facts = {u.underlying: u for u in outcome.underlyings}
+    pairs = [(v, d, facts.get(d.underlying)) for v in priced(outcome) for d in v.deltas]
+    return _frame(
+        {
+            "trade_id": [v.trade_id for v, _, _ in pairs],
+            "underlying": [d.underlying for _, d, _ in pairs],
+            "delta": [d.delta for _, d, _ in pairs],
+            "standard_error": [d.standard_error for _, d, _ in pairs],
+            "gamma": [d.gamma for _, d, _ in pairs],
+            "gamma_standard_error": [d.gamma_standard_error for _, d, _ in pairs],
+            "vega": [d.vega for _, d, _ in pairs],
+            "vega_standard_error": [d.vega_standard_error for _, d, _ in pairs],
+            "vega_currency": [v.currency for v, _, _ in pairs],
+            "reporting_vega": [rates.reporting(d.vega, v.currency) for v, d, _ in pairs],
+            "lots": [ratio(d.delta, u.lot_size) if u else None for _, d, u in pairs],
+            "underlying_currency": [u.currency if u else None for _, _, u in pairs],
+            "spot": [d.spot for _, d, _ in pairs],
+            "cash_delta": [d.delta * d.spot for _, d, _ in pairs],
+            "cash_delta_standard_error": [d.standard_error * d.spot for _, d, _ in pairs],
+            "reporting_currency": [outcome.facts.reporting_currency] * len(pairs),
+            "reporting_cash_delta": [d.delta * d.spot * u.to_reporting if u else None for _, d, u in pairs],
+            "method": [d.method for _, d, _ in pairs],
+        },
+        text="trade_id underlying vega_currency underlying_currency reporting_currency method",
+    )
+
+
+def underlying_deltas(outcome: Outcome) -> Frame:
+    """One row an underlying, largest absolute cash delta first."""
+    frame = _records(
+        underlying_totals(outcome), UnderlyingTotal, text="underlying currency", whole="trades trades_without_gamma"
+    )
+    frame.insert(list(frame).index("cash_delta") + 1, "reporting_currency", outcome.facts.reporting_currency)
+    return frame
+
+
+def summaries(outcome: Outcome) -> Frame:
+    """One row a group of each grouping (currency, product, strategy, counterparty, netting set)."""
+    totals = [t for grouping in GROUPINGS for t in group_totals(outcome, grouping)]
+    whole = "trades priced precision_not_reached not_priced"
+    frame = _records(totals, Total, text="grouping group own_currency", whole=whole)
+    frame.insert(2, "reporting_currency", outcome.facts.reporting_currency)
+    return frame.rename(
+        columns={
+            "gross_notional": "reporting_gross_notional",
+            "own_currency": "currency",
+            "own_value": "value",
+            "own_standard_error": "standard_error",
+            "value": "reporting_value",
+            "standard_error": "reporting_standard_error",
+        }
+    )
+
+
+def cross_check(outcome: Outcome) -> Frame:
+    """One row a comparison: disagreements first, then approximations that are far off, then the rest."""
+    by_id = {v.trade_id: v for v in outcome.valuations}
+    checks = sorted(outcome.cross_checks, key=lambda c: _VERDICTS.index(c.verdict))
+    owners = [by_id.get(c.trade_id) for c in checks]
+    notionals = [abs(owner.notional) if owner else math.nan for owner in owners]
+    frame = _records(checks, CrossCheck, text="trade_id product reference_method reference_kind verdict source")
+    frame.insert(2, "currency", _text([owner.currency if owner else None for owner in owners]))
+    pairs = list(zip(checks, notionals, strict=True))
+    frame["tolerance_bp"] = _numbers([1e4 * ratio(c.tolerance, notional) for c, notional in pairs])
+    frame["difference_tolerances"] = _numbers([ratio(c.difference, c.tolerance) for c in checks])
+    frame["reference_percent"] = _numbers([100.0 * ratio(c.reference_value, notional) for c, notional in pairs])
+    return frame
+
+
+def problems(outcome: Outcome) -> Frame:
+    """One row a problem, the gravest first; those of the refused trades name the trade they refuse."""
+    rows = sorted(_all_issues(outcome), key=lambda issue: _SEVERITIES.index(issue.severity))
+    order = ["severity", "trade_id", "file", "sheet", "row", "column", "cell", "code", "found", "expected", "mend"]
+    text = " ".join(name for name in order if name != "row")
+    return _records(rows, Issue, text=text, whole="row")[order]
+
+
+def not_priced(outcome: Outcome) -> Frame:
+    """One row a trade without a value, with what could be read of it and every reason in words."""
+    items: list[Valuation | Refusal] = [v for v in outcome.valuations if v.status is Status.NOT_PRICED]
+    items += outcome.refusals
+    names = ("trade_id", "product", "currency", "counterparty", "strategy")
+    columns: dict[str, Sequence[Any]] = {name: [getattr(item, name) for item in items] for name in names}
+    columns["issues"] = [len(item.issues) if isinstance(item, Refusal) else 0 for item in items]
+    columns["reasons"] = [reason(item) for item in items]
+    return _frame(columns, text=" ".join([*names, "reasons"]), whole="issues")
+
+
+def seconds(outcome: Outcome) -> Frame:
+    """The time each trade took; the only table that differs between two runs of the same input and seed."""
+    return _frame(
+        {"trade_id": [v.trade_id for v in outcome.valuations], "seconds": [v.seconds for v in outcome.valuations]},
+        text="trade_id",
+    )
+
+
+def reason(item: Valuation | Refusal) -> str:
+    """Why a trade has no value, in words."""
+    if isinstance(item, Valuation):
+        return item.ending
+    return "; ".join(str(issue) for issue in item.issues) or "no reason was recorded"
+
+
+def _status(item: Valuation | Refusal) -> Status:
+    return item.status if isinstance(item, Valuation) else Status.NOT_PRICED
+
+
+def _all_issues(outcome: Outcome) -> list[Issue]:
+    """Every issue once: one found while reading and then charged to a trade is listed with the trade only."""
+    charged = [
+        issue if issue.trade_id is not None else issue.for_trade(refusal.trade_id)
+        for refusal in outcome.refusals
+        for issue in refusal.issues
+    ]
+    without_trade = {replace(issue, trade_id=None) for issue in charged}
+    found = [issue for issue in outcome.issues if issue.trade_id is not None or issue not in without_trade]
+    return list(dict.fromkeys([*found, *charged]))
+
+
+def _records(items: Sequence[Any], kind: type[Any], text: str = "", whole: str = "") -> Frame:
+    """A frame of dataclass instances, one column a field."""
+    names = [f.name for f in fields(kind)]
+    return _frame({name: [getattr(item, name) for item in items] for name in names}, text=text, whole=whole)
+
+
+def _frame(columns: Mapping[str, Sequence[Any]], text: str = "", whole: str = "", dates: str = "") -> Frame:
+    """A frame; ``text``, ``whole`` and ``dates`` name the columns that do not hold floats."""
+    import pandas
+
+    makers: dict[str, Callable[[Sequence[Any]], Any]] = dict.fromkeys(columns, _numbers)
+    makers.update(dict.fromkeys(text.split(), _text))
+    makers.update(dict.fromkeys(whole.split(), lambda values: pandas.array(list(values), dtype="Int64")))
+    makers.update(dict.fromkeys(dates.split(), lambda values: pandas.Series(values, dtype="datetime64[s]")))
+    return pandas.DataFrame({name: makers[name](values) for name, values in columns.items()})
+
+
+def _text(values: Sequence[Any]) -> pandas.Series:
+    import pandas
+
+    return pandas.Series(["" if value is None else str(value) for value in values], dtype=object)
+
+
+def _numbers(values: Sequence[Any]) -> pandas.Series:
+    import pandas
+
+    return pandas.Series(values, dtype="float64")

@@ -1,0 +1,172 @@
+"""The first sheet: what the book is worth, how sure that is, what is missing, and what drives it.
+
+Row heights are fixed, so that page breaks fall between sections and never through a table or a chart.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import TYPE_CHECKING
+
+from pricer.core.issues import Severity
+from pricer.engines.cross_check import ALARMS
+from pricer.report.cells import put_number, put_text, workbook_of
+from pricer.report.columns import Kind
+from pricer.report.layout import LAST, LEFT, N_COLUMNS, RIGHT, ROW_HEIGHT, Canvas
+from pricer.report.page import set_up_page
+from pricer.report.styles import Mark, body_style, decimals_for
+from pricer.report.summary_charts import Area, add_bars, add_scatter
+from pricer.report.summary_tables import group_table, underlying_table, verdict_table
+from pricer.report.text import shorten
+from pricer.report.totals import BookTotal, book_total, priced
+
+if TYPE_CHECKING:
+    import pandas
+    from openpyxl import Workbook
+    from openpyxl.cell.cell import Cell
+
+    from pricer.run.outcome import Outcome
+
+TITLE = "Summary"
+_REASONS_SHOWN = 5
+_REASON_LENGTH = 125  # what one line between the list's third column and the page's edge holds
+
+
+def add_summary_sheet(workbook: Workbook, outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> None:
+    """Add the sheet in front of those of ``frames``, which its charts refer to."""
+    sheet = workbook.create_sheet(TITLE, 0)
+    canvas = Canvas(sheet)
+    whole = book_total(outcome)
+    _heading(canvas, outcome)
+    _key_figures(canvas, outcome, whole, frames["problems"])
+    _not_priced(canvas, frames["not_priced"])
+    n_rows = canvas.chart_rows() if priced(outcome) else 0
+    row = canvas.row
+    if n_rows:
+        canvas.take_rows(n_rows + 2)
+        canvas.section(row, LEFT, "Value by strategy")
+        canvas.section(row, RIGHT, "Cash delta by underlying")
+    canvas.tables(group_table(outcome, whole, "currency"), group_table(outcome, whole, "product"))
+    strategies = group_table(outcome, whole, "strategy")
+    first_strategy = canvas.tables(strategies, group_table(outcome, whole, "counterparty"))
+    underlyings, verdicts = underlying_table(outcome), verdict_table(outcome)
+    if outcome.cross_checks:  # keep their chart on the same page
+        canvas.reserve(max(underlyings.height, verdicts.height) + canvas.least_chart_height)
+    first_underlying = canvas.tables(underlyings, verdicts)
+    if n_rows:
+        currency = outcome.facts.reporting_currency
+        left, right = (Area(row + 1, column, n_rows, N_COLUMNS) for column in (LEFT, RIGHT))
+        add_bars(sheet, left, "value", currency, strategies.lines, first_strategy, LEFT)
+        add_bars(sheet, right, "cash delta", currency, underlyings.lines, first_underlying, LEFT)
+    if outcome.cross_checks:
+        n_rows = canvas.chart_rows()
+        row = canvas.take_rows(n_rows + 2)
+        canvas.section(row, LEFT, "Engine against exact references", LAST - LEFT + 1)
+        area = Area(row + 1, LEFT, n_rows, LAST - LEFT + 1)
+        add_scatter(sheet, area, workbook["Cross-check"], frames["cross_check"])
+    sheet.print_area = f"A1:{sheet.cell(1, LAST).column_letter}{canvas.row - 1}"
+    set_up_page(sheet, outcome.facts)
+    sheet.sheet_view.showGridLines = False
+
+
+def _heading(canvas: Canvas, outcome: Outcome) -> None:
+    facts = outcome.facts
+    put_text(canvas.sheet, canvas.take(24.0), LEFT, facts.book_name, "title")
+    words = (
+        f"valuation date {facts.valuation_date.isoformat()}",
+        f"reporting currency {facts.reporting_currency}",
+        f"run started {facts.started.isoformat(sep=' ', timespec='minutes')}",
+        f"seed {facts.seed}",
+    )
+    put_text(canvas.sheet, canvas.take(), LEFT, ",  ".join(words), "subtitle")
+    canvas.take(8.0)
+
+
+def _key_figures(canvas: Canvas, outcome: Outcome, whole: BookTotal, problems: pandas.DataFrame) -> None:
+    from openpyxl.worksheet.hyperlink import Hyperlink
+
+    sheet, currency, total = canvas.sheet, outcome.facts.reporting_currency, whole.total
+    first = canvas.take()
+    canvas.section(first, LEFT, "Value of the book")
+    canvas.section(first, RIGHT, "What was done")
+    amounts = (
+        (f"total value ({currency})", total.value),
+        (f"standard error ({currency})", total.standard_error),
+        (f"99 % sampling interval, from ({currency})", whole.lower),
+        (f"99 % sampling interval, to ({currency})", whole.upper),
+        (f"errors of values without sampling, added up ({currency})", whole.unsampled_error),
+        (f"unpaid premium inside the total ({currency})", whole.unpaid_premium),
+        ("precision asked for (bp of notional)", outcome.facts.precision_bp),
+    )
+    flagged = sum(check.verdict in ALARMS for check in outcome.cross_checks)
+    severities = [int((problems["severity"] == severity).sum()) for severity in Severity]
+    counts = (
+        ("trades in the book", total.trades, False),
+        ("priced to the precision asked for", total.priced, False),
+        ("priced, precision not reached", total.precision_not_reached, True),
+        ("not priced, left out of every total", total.not_priced, True),
+        ("cross-checks made", len(outcome.cross_checks), False),
+        ("cross-checks that disagree", flagged, True),
+        ("problems found (number)", sum(severities), True),
+    )
+    decimals = decimals_for([total.value], [total.standard_error])
+    for i, ((label, amount), (what, count, alarm)) in enumerate(zip(amounts, counts, strict=True)):
+        row = canvas.take(24.0 if i == 0 else ROW_HEIGHT)
+        mark = Mark.LOOK if alarm and count else Mark.NONE
+        for first, words, look in ((LEFT, label, Mark.NONE), (RIGHT, what, mark)):
+            style = body_style(workbook_of(sheet), Kind.STATUS, mark=look)
+            for column in range(first, first + N_COLUMNS - 1):
+                put_text(sheet, row, column, words if column == first else "", style)
+        places = decimals if i < 4 else decimals_for([amount])
+        cell = put_number(sheet, row, LEFT + N_COLUMNS - 1, amount, Kind.AMOUNT, places)
+        put_number(sheet, row, RIGHT + N_COLUMNS - 1, count, Kind.COUNT, mark=mark)
+        if i == 0:
+            instead = "not a number" if priced(outcome) else "no trade was priced"
+            _headline(canvas, row, LEFT + N_COLUMNS - 2, cell, instead)
+    canvas.take(6.0)
+    row = canvas.take(18.0)
+    for column in range(LEFT, LAST + 1):
+        put_text(sheet, row, column, "", "caution")
+    words = "Model values are estimates. Read the cautions on the sheet Run before using them."
+    link = put_text(sheet, row, LEFT, words, "caution")
+    link.hyperlink = Hyperlink(ref=link.coordinate, location="'Run'!A1")
+    link.style = "caution"  # making it a link changed it
+    sheet.merge_cells(start_row=row, end_row=row, start_column=LEFT, end_column=LAST)
+    canvas.take(8.0)
+
+
+def _headline(canvas: Canvas, row: int, column: int, cell: Cell, instead: str) -> None:
+    """The total in large figures, moved from ``cell`` to ``column``, from which it covers two columns."""
+    wide = put_text(canvas.sheet, row, column, instead, "headline")
+    if cell.value is not None:
+        wide.value = cell.value
+    wide.number_format, cell.value = cell.number_format, None
+    cell.style = "headline"
+    canvas.sheet.merge_cells(start_row=row, end_row=row, start_column=column, end_column=column + 1)
+
+
+def _not_priced(canvas: Canvas, missing: pandas.DataFrame) -> None:
+    if missing.empty:
+        return
+    shown = missing.head(_REASONS_SHOWN)
+    rest = len(missing) - len(shown)
+    canvas.reserve(ROW_HEIGHT * (3 + len(shown) + (rest > 0)))
+    canvas.section(canvas.take(), LEFT, "Not priced", LAST - LEFT + 1)
+    row = canvas.take()
+    text_style = body_style(workbook_of(canvas.sheet), Kind.TEXT)
+    for column in range(LEFT, LAST + 1):
+        text = {LEFT: "trade", LEFT + 1: "product", LEFT + 4: "reason"}.get(column, "")
+        put_text(canvas.sheet, row, column, text, "heading")
+    for trade_id, product, reasons in shown[["trade_id", "product", "reasons"]].itertuples(index=False):
+        row = canvas.take()
+        texts = {
+            LEFT: shorten(trade_id, 26),
+            LEFT + 1: shorten(product, 36),
+            LEFT + 4: shorten(reasons, _REASON_LENGTH),
+        }
+        for column in range(LEFT, LAST + 1):
+            put_text(canvas.sheet, row, column, texts.get(column, ""), text_style)
+    if rest:
+        text = f"and {rest:,} more: sheet Valuations, status “not priced”, last column"
+        put_text(canvas.sheet, canvas.take(), LEFT, text, "note")
+    canvas.take(8.0)

@@ -1,0 +1,69 @@
+"""The summary's small tables: value by group, delta by underlying, cross-checks by verdict."""
+
+from __future__ import annotations
+
+from pricer.report.columns import Kind
+from pricer.report.layout import BlockTable
+from pricer.report.styles import decimals_for
+from pricer.report.top import lines_of_groups, lines_of_underlyings, lines_of_verdicts
+from pricer.report.totals import BookTotal, group_totals
+from pricer.report.underlying_totals import underlying_totals
+from pricer.run.outcome import Outcome
+
+
+def group_table(outcome: Outcome, whole: BookTotal, grouping: str) -> BlockTable:
+    """Trades, notional, value and standard error by one grouping; by currency with the value in that currency."""
+    currency = outcome.facts.reporting_currency
+    own = grouping == "currency"
+    return BlockTable(
+        title=f"Value by {grouping}",
+        headings=(
+            grouping,
+            "trades (number)",
+            "not priced (number)",
+            "value (trade currency)" if own else f"gross notional ({currency})",
+            f"value ({currency})",
+            f"standard error ({currency})",
+        ),
+        kinds=(Kind.COUNT, Kind.COUNT, Kind.AMOUNT, Kind.AMOUNT, Kind.AMOUNT),
+        lines=lines_of_groups(group_totals(outcome, grouping), whole.total, own_currency=own),
+        empty="The book has no trades.",
+        decimals=decimals_for([whole.total.value], [whole.total.standard_error]),
+    )
+
+
+def underlying_table(outcome: Outcome) -> BlockTable:
+    """Delta by underlying, largest cash delta first."""
+    currency = outcome.facts.reporting_currency
+    return BlockTable(
+        title="Cash delta by underlying",
+        headings=(
+            "underlying",
+            "trades (number)",
+            "gross share (%)",
+            "delta (shares)",
+            f"cash delta ({currency})",
+            f"standard error ({currency})",
+        ),
+        kinds=(Kind.COUNT, Kind.FIXED, Kind.AMOUNT, Kind.AMOUNT, Kind.AMOUNT),
+        lines=lines_of_underlyings(underlying_totals(outcome)),
+        empty="No priced trade has sensitivities.",
+    )
+
+
+def verdict_table(outcome: Outcome) -> BlockTable:
+    """How many cross-checks ended how, and how far off they were."""
+    return BlockTable(
+        title="Cross-checks by verdict",
+        headings=(
+            "verdict",
+            "checks (number)",
+            "share (%)",
+            "median difference (bp of notional)",
+            "largest difference (bp of notional)",
+            "largest (standard errors)",
+        ),
+        kinds=(Kind.COUNT, Kind.FIXED, Kind.FIXED, Kind.FIXED, Kind.FIXED),
+        lines=lines_of_verdicts(outcome.cross_checks),
+        empty="No cross-checks were made in this run.",
+    )

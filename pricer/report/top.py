@@ -1,0 +1,116 @@
+"""The longest lines first, the rest in one: what a table or a chart of a large book can show."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
+from statistics import median
+from typing import TypeVar
+
+from pricer.engines.cross_check import ALARMS
+from pricer.report.styles import Mark
+from pricer.report.sums import quadrature, ratio, total
+from pricer.report.totals import Total
+from pricer.report.underlying_totals import UnderlyingTotal
+from pricer.run.outcome import CrossCheck, Verdict
+
+SHOWN = 12
+NONE_STATED = "(none stated)"
+
+_Item = TypeVar("_Item")
+
+
+@dataclass(frozen=True, slots=True)
+class Line:
+    """A name and the numbers beside it, NaN where there is none."""
+
+    name: str
+    numbers: tuple[float, ...]
+    mark: Mark = Mark.NONE
+
+
+def lines_of_groups(totals: Sequence[Total], whole: Total, own_currency: bool = False) -> list[Line]:
+    """Trades, trades not priced, gross notional (or value in own currency), value, standard error; then the total.
+
+    ``totals`` come largest first; of more than :data:`SHOWN` the rest is one line, errors added in quadrature.
+    """
+
+    def line(item: Total) -> Line:
+        third = item.own_value if own_currency else item.gross_notional
+        return Line(item.group or NONE_STATED, (item.trades, item.not_priced, third, item.value, item.standard_error))
+
+    if not totals:
+        return []
+    shown, rest = _split(totals)
+    lines = [line(item) for item in shown]
+    if rest:
+        numbers = (
+            sum(t.trades for t in rest),
+            sum(t.not_priced for t in rest),
+            math.nan if own_currency else _known(t.gross_notional for t in rest),
+            _known(t.value for t in rest),
+            quadrature(t.standard_error for t in rest if not math.isnan(t.standard_error)),
+        )
+        lines.append(Line(f"other ({len(rest)})", numbers))
+    third = math.nan if own_currency else whole.gross_notional
+    whole_numbers = (whole.trades, whole.not_priced, third, whole.value, whole.standard_error)
+    return [*lines, Line("total", whole_numbers, Mark.TOTAL)]
+
+
+def lines_of_underlyings(totals: Sequence[UnderlyingTotal]) -> list[Line]:
+    """Trades, share of the gross cash delta in percent, delta in shares, reporting cash delta, its standard error."""
+    gross = _known(abs(t.reporting_cash_delta) for t in totals)
+
+    def line(name: str, items: Sequence[UnderlyingTotal], mark: Mark = Mark.NONE) -> Line:
+        one = len(items) == 1 and mark is Mark.NONE
+        numbers = (
+            items[0].trades if one else math.nan,
+            100.0 * ratio(_known(abs(t.reporting_cash_delta) for t in items), gross),
+            items[0].delta if one else math.nan,  # shares of different underlyings do not add
+            _known(t.reporting_cash_delta for t in items),
+            quadrature(
+                t.reporting_cash_delta_standard_error
+                for t in items
+                if not math.isnan(t.reporting_cash_delta_standard_error)
+            ),
+        )
+        return Line(name, numbers, mark)
+
+    shown, rest = _split(totals)
+    lines = [line(item.underlying, [item]) for item in shown]
+    if rest:
+        lines.append(line(f"other ({len(rest)})", rest))
+    return [*lines, line("total", totals, Mark.TOTAL)] if totals else []
+
+
+def lines_of_verdicts(checks: Sequence[CrossCheck]) -> list[Line]:
+    """Number, share in percent, median and largest absolute difference in basis points of notional, and the largest
+    in standard errors; every verdict has a line, so that none that did not occur is left unsaid."""
+    if not checks:
+        return []
+    lines = []
+    for verdict in Verdict:
+        mine = [c for c in checks if c.verdict is verdict]
+        sizes = [abs(c.difference_bp) for c in mine]
+        errors = [abs(c.difference_standard_errors) for c in mine if c.difference_standard_errors is not None]
+        numbers = (
+            len(mine),
+            100.0 * len(mine) / len(checks),
+            median(sizes) if sizes else math.nan,
+            max(sizes, default=math.nan),
+            max(errors, default=math.nan),
+        )
+        lines.append(Line(str(verdict), numbers, Mark.LOOK if mine and verdict in ALARMS else Mark.NONE))
+    return lines
+
+
+def _split(items: Sequence[_Item]) -> tuple[Sequence[_Item], Sequence[_Item]]:
+    """The lines to show and the rest; a rest of one is shown instead of being called other."""
+    if len(items) <= SHOWN + 1:
+        return items, ()
+    return items[:SHOWN], items[SHOWN:]
+
+
+def _known(amounts: Iterable[float]) -> float:
+    return total(a for a in amounts if not math.isnan(a))

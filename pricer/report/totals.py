@@ -1,0 +1,125 @@
+"""Totals of the book and of its parts. Standard errors add in quadrature: every trade has draws of its own."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+from pricer.contracts.book import Refusal
+from pricer.engines.selector import COVERAGE, sampling_quantile
+from pricer.report.rates import Rates
+from pricer.report.sums import pooled_randomisations, quadrature, total
+from pricer.run.outcome import Outcome, Status, Valuation
+
+
+@dataclass(frozen=True, slots=True)
+class Total:
+    """What a group of trades is worth, in the reporting currency; NaN where none of them was priced.
+
+    ``gross_notional`` adds the absolute notionals. ``own_value`` and ``own_standard_error`` are in ``own_currency``,
+    the one currency of the group's priced trades; NaN and empty where there are several.
+    """
+
+    grouping: str
+    group: str
+    trades: int
+    priced: int
+    precision_not_reached: int
+    not_priced: int
+    gross_notional: float
+    own_currency: str
+    own_value: float
+    own_standard_error: float
+    value: float
+    standard_error: float
+
+
+@dataclass(frozen=True, slots=True)
+class BookTotal:
+    """The headline, in the reporting currency.
+
+    ``lower`` and ``upper`` are the 99 % sampling interval; ``unsampled_error`` adds the half-widths of the values
+    that have no sampling error; ``unpaid_premium`` is already inside the value.
+    """
+
+    total: Total
+    lower: float
+    upper: float
+    unsampled_error: float
+    unpaid_premium: float
+
+
+_BY_VALUATION: dict[str, Callable[[Valuation], str]] = {
+    "currency": lambda v: v.currency,
+    "product": lambda v: v.product,
+    "strategy": lambda v: v.strategy,
+    "counterparty": lambda v: v.counterparty,
+    "netting_set": lambda v: v.netting_set,
+}
+_BY_REFUSAL: dict[str, Callable[[Refusal], str]] = {
+    "currency": lambda r: r.currency,
+    "product": lambda r: r.product,
+    "strategy": lambda r: r.strategy,
+    "counterparty": lambda r: r.counterparty,
+    "netting_set": lambda r: "",
+}
+GROUPINGS = tuple(_BY_VALUATION)
+
+
+def priced(outcome: Outcome) -> list[Valuation]:
+    """The valuations that carry a number, in book order."""
+    return [v for v in outcome.valuations if v.status is not Status.NOT_PRICED]
+
+
+def book_total(outcome: Outcome) -> BookTotal:
+    """The headline of the book."""
+    rates = Rates.from_outcome(outcome)
+    whole = _total("book", outcome.facts.book_name, outcome.valuations, outcome.refusals, rates)
+    valuations = priced(outcome)
+    errors = [v.reporting_standard_error for v in valuations]
+    pooled = pooled_randomisations(errors, [v.randomisations for v in valuations])
+    reach = sampling_quantile(pooled, 1.0 - COVERAGE) * whole.standard_error
+    return BookTotal(
+        total=whole,
+        lower=whole.value - reach,
+        upper=whole.value + reach,
+        unsampled_error=total(
+            0.0 if v.standard_error else rates.reporting((v.upper - v.lower) / 2.0, v.currency) for v in valuations
+        ),
+        unpaid_premium=total(rates.reporting(v.unpaid_premium, v.currency) for v in valuations),
+    )
+
+
+def group_totals(outcome: Outcome, grouping: str) -> list[Total]:
+    """The totals of one of :data:`GROUPINGS`, largest absolute value first; groups without a price come last."""
+    rates = Rates.from_outcome(outcome)
+    members: dict[str, tuple[list[Valuation], list[Refusal]]] = {}
+    for valuation in outcome.valuations:
+        members.setdefault(_BY_VALUATION[grouping](valuation), ([], []))[0].append(valuation)
+    for refusal in outcome.refusals:
+        members.setdefault(_BY_REFUSAL[grouping](refusal), ([], []))[1].append(refusal)
+    totals = [_total(grouping, group, vs, rs, rates) for group, (vs, rs) in members.items()]
+    return sorted(totals, key=lambda t: (math.isnan(t.value), 0.0 if math.isnan(t.value) else -abs(t.value), t.group))
+
+
+def _total(
+    grouping: str, group: str, valuations: Sequence[Valuation], refusals: Sequence[Refusal], rates: Rates
+) -> Total:
+    numbers = [v for v in valuations if v.status is not Status.NOT_PRICED]
+    currencies = {v.currency for v in numbers}
+    own = numbers if len(currencies) == 1 else []
+    return Total(
+        grouping=grouping,
+        group=group,
+        trades=len(valuations) + len(refusals),
+        priced=sum(v.status is Status.PRICED for v in numbers),
+        precision_not_reached=sum(v.status is Status.PRECISION_NOT_REACHED for v in numbers),
+        not_priced=len(valuations) - len(numbers) + len(refusals),
+        gross_notional=total(rates.reporting(abs(v.notional), v.currency) for v in numbers),
+        own_currency=currencies.pop() if own else "",
+        own_value=total(v.value for v in own),
+        own_standard_error=quadrature(v.standard_error for v in own),
+        value=total(v.reporting_value for v in numbers),
+        standard_error=quadrature(v.reporting_standard_error for v in numbers),
+    )

@@ -1,0 +1,136 @@
+"""The workbook that is handed round in the meeting."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from pricer.core.issues import Severity
+from pricer.engines.cross_check import ALARMS
+from pricer.report import columns
+from pricer.report.bulk import Bulk, save_with_bulk
+from pricer.report.run_sheet import add_run_sheet
+from pricer.report.styles import Mark, define_styles
+from pricer.report.summary_sheet import add_summary_sheet
+from pricer.report.sums import quadrature, total
+from pricer.report.table_sheet import Table, add_table_sheet
+from pricer.report.totals import Total, book_total
+from pricer.run.outcome import Outcome, Status, Verdict
+
+if TYPE_CHECKING:
+    import pandas
+
+
+def write_workbook(outcome: Outcome, frames: Mapping[str, pandas.DataFrame], target: Path) -> None:
+    """Write the workbook at ``target``; ``frames`` are :func:`pricer.report.tables` of the same outcome."""
+    from openpyxl import Workbook
+
+    workbook = Workbook()
+    workbook.remove(workbook.worksheets[0])
+    define_styles(workbook)
+    facts = outcome.facts
+    workbook.properties.creator = "pricer"
+    workbook.properties.title = f"Book valuation {facts.valuation_date.isoformat()}"
+    bulks: dict[str, Bulk] = {}
+    frames = {**frames, "cross_check": _with_clouds(frames["cross_check"])}
+    for table in _tables(outcome, frames):
+        bulk = add_table_sheet(workbook, table, facts)
+        if bulk is not None:
+            bulks[table.title] = bulk
+    add_run_sheet(workbook, outcome)
+    add_summary_sheet(workbook, outcome, frames)
+    workbook.active = 0
+    save_with_bulk(workbook, bulks, target)
+
+
+def _tables(outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> list[Table]:
+    whole = book_total(outcome).total
+    valuations = frames["valuations"].copy()
+    # Times are kept out of the tidy table, which must not change from run to run; here they belong.
+    seconds = [v.seconds for v in outcome.valuations] + [None] * len(outcome.refusals)
+    valuations["seconds"] = seconds
+    checks, problems = frames["cross_check"], frames["problems"]
+    return [
+        Table(
+            "Valuations",
+            "Valuations",
+            _valuations_note(whole),
+            columns.VALUATIONS,
+            valuations,
+            [_STATUS_MARKS.get(status, Mark.NONE) for status in valuations["status"]],
+            empty="The book has no trades.",
+        ),
+        Table(
+            "Deltas by trade",
+            "Deltas by trade",
+            "One row a priced trade and underlying. Standard errors are one standard deviation.",
+            columns.DELTAS,
+            frames["deltas"],
+            [Mark.NONE] * len(frames["deltas"]),
+            empty="No priced trade has sensitivities.",
+            frozen=2,
+        ),
+        Table(
+            "Deltas by underlying",
+            "Deltas by underlying",
+            "Sums over the priced trades, largest cash delta first. Standard errors add in quadrature.",
+            columns.UNDERLYING_DELTAS,
+            frames["underlying_deltas"],
+            [Mark.NONE] * len(frames["underlying_deltas"]),
+            empty="No priced trade has sensitivities.",
+            total=_underlying_total(frames["underlying_deltas"]),
+        ),
+        Table(
+            "Cross-check",
+            "Cross-check",
+            _cross_check_note(outcome),
+            columns.CROSS_CHECK,
+            checks,
+            [Mark.LOOK if verdict in ALARMS else Mark.NONE for verdict in checks["verdict"]],
+            empty="No cross-checks were made in this run.",
+        ),
+        Table(
+            "Problems",
+            "Problems",
+            ", ".join(f"{severity} {int((problems['severity'] == severity).sum()):,}" for severity in Severity),
+            columns.PROBLEMS,
+            problems,
+            [_SEVERITY_MARKS[Severity(severity)] for severity in problems["severity"]],
+            empty="No problems were found.",
+        ),
+    ]
+
+
+_STATUS_MARKS = {Status.NOT_PRICED: Mark.REFUSED, Status.PRECISION_NOT_REACHED: Mark.LOOK}
+_SEVERITY_MARKS = {Severity.FATAL: Mark.LOOK, Severity.ERROR: Mark.LOOK, Severity.WARNING: Mark.NONE}
+
+
+def _valuations_note(whole: Total) -> str:
+    note = f"{whole.trades:,} trades: {whole.priced:,} priced, {whole.precision_not_reached:,} precision not reached"
+    return f"{note}, {whole.not_priced:,} not priced. More columns on screen, right of what prints."
+
+
+def _cross_check_note(outcome: Outcome) -> str:
+    counts = {verdict: sum(check.verdict is verdict for check in outcome.cross_checks) for verdict in Verdict}
+    found = ", ".join(f"{verdict} {n:,}" for verdict, n in counts.items() if n)
+    return f"{found}. Disagreements first; more columns on screen, right of what prints." if found else ""
+
+
+def _with_clouds(checks: pandas.DataFrame) -> pandas.DataFrame:
+    """The table with the differences from exact references in two columns, one for each cloud of the chart."""
+    verdicts, differences = checks["verdict"], checks["difference_tolerances"]
+    return checks.assign(
+        agrees=differences.where(verdicts == Verdict.AGREES), differs=differences.where(verdicts == Verdict.DIFFERS)
+    )
+
+
+def _underlying_total(frame: pandas.DataFrame) -> dict[str, object] | None:
+    """Sums of what adds up across underlyings: amounts in the reporting currency."""
+    if frame.empty:
+        return None
+    amounts = {name: total(frame[name].tolist()) for name in ("reporting_cash_delta", "reporting_vega")}
+    errors = {f"{name}_standard_error": quadrature(frame[f"{name}_standard_error"].tolist()) for name in amounts}
+    numbers = {name: None if math.isnan(number) else number for name, number in (amounts | errors).items()}
+    return {"underlying": "total", **numbers}

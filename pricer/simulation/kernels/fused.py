@@ -1,0 +1,224 @@
+"""The fused kernel: points, normals, levels, payoff and sums in one pass over cache-sized blocks.
+
+Numba's disk cache notices edits in the file of the function it stores, but not in what that
+function calls: a newer version of this package would silently run older kernels. It does
+look at the values a function closes over, so a digest of the kernels' sources is one.
+"""
+
+from __future__ import annotations
+
+import hashlib
+from pathlib import Path
+from typing import Any
+
+from numba import njit, types
+
+from pricer.simulation.kernels.levels import (
+    log_levels,
+    low_table,
+    normals_of_block,
+    powers,
+    scrambled_columns,
+)
+from pricer.simulation.kernels.payoffs import (
+    BEST,
+    BY_FACTOR,
+    BY_OUTSIDE,
+    BY_OUTSIDE_TWICE,
+    BY_SCALED,
+    BY_SCALED_TWICE,
+    GEOMETRIC,
+    OUTSIDE,
+    RANKED,
+    SCALED,
+    SUM,
+    VALUE,
+    WORST,
+    extreme,
+    geometric,
+    integrate_factor,
+    rank_weighted,
+    weighted_sum,
+)
+from pricer.simulation.kernels.vectors import BLOCK, OPTIONS, SUM_OPTIONS, use_wide_vectors
+
+#: Sums per randomisation: three of the aggregate, then ``LEG_SUMS`` per asset.
+HEAD_SUMS = 3
+LEG_SUMS = 5
+
+
+@njit(**SUM_OPTIONS)
+def _add_head(paths: Any, m: int, sums: Any) -> None:
+    use_wide_vectors()
+    s0 = s1 = s2 = 0.0
+    for p in range(m):
+        s0 += paths[VALUE + p]
+        s1 += paths[SCALED + p]
+        s2 += paths[OUTSIDE + p]
+    sums[0] += s0
+    sums[1] += s1
+    sums[2] += s2
+
+
+@njit(**SUM_OPTIONS)
+def _add_legs(paths: Any, levels: Any, logs: Any, n_common: int, m: int, sums: Any) -> None:
+    """Per asset: sums of by-level, by-level times log, by-factor, second derivative, level."""
+    use_wide_vectors()
+    for i in range(levels.shape[0]):
+        s0 = s1 = s2 = s3 = s4 = 0.0
+        if i < n_common:
+            for p in range(m):
+                level = float(levels[i, p])
+                part = paths[BY_SCALED + p] * level
+                s0 += part
+                s1 += part * float(logs[i, p])
+                s2 += paths[BY_FACTOR + p] * level
+                s3 += paths[BY_SCALED_TWICE + p] * level * level
+                s4 += level
+        else:
+            for p in range(m):
+                level = float(levels[i, p])
+                part = paths[BY_OUTSIDE + p] * level
+                s0 += part
+                s1 += part * float(logs[i, p])
+                s3 += paths[BY_OUTSIDE_TWICE + p] * level * level
+                s4 += level
+        k = HEAD_SUMS + LEG_SUMS * i
+        sums[k] += s0
+        sums[k + 1] += s1
+        sums[k + 2] += s2
+        sums[k + 3] += s3
+        sums[k + 4] += s4
+
+
+@njit(**OPTIONS)
+def _level_free(levels: Any, paths: Any) -> None:
+    """A geometric aggregate moves by its own level, whichever asset moves: levels become 1."""
+    use_wide_vectors()
+    for i in range(levels.shape[0]):
+        for p in range(BLOCK):
+            levels[i, p] = 1.0
+    for p in range(BLOCK):
+        scaled = paths[SCALED + p]
+        paths[BY_SCALED + p] *= scaled
+        paths[BY_FACTOR + p] *= scaled
+        paths[BY_SCALED_TWICE + p] *= scaled * scaled
+
+
+_SCRAMBLE = types.void(types.uint32[:, ::1], types.uint32[:, :, ::1], types.uint32[:, :, ::1])
+
+_ACCUMULATE = types.void(
+    types.int64,
+    types.int64,
+    types.uint32[:, :, ::1],
+    types.uint32[:, :, ::1],
+    types.float32[:, ::1],
+    types.int64[::1],
+    types.float64[::1],
+    types.float32[::1],
+    types.int64,
+    types.int64,
+    types.float64,
+    types.float64,
+    types.float64[::1],
+    types.boolean,
+    types.uint32[:, ::1],
+    types.float32[:, ::1],
+    types.float32[:, ::1],
+    types.float32[:, ::1],
+    types.float64[::1],
+    types.float64[:, ::1],
+)
+
+
+def _sources() -> int:
+    """A digest of all kernel sources; never 0."""
+    digest = hashlib.sha256()
+    for path in sorted(Path(__file__).parent.glob("*.py")):
+        digest.update(path.read_bytes())
+    return int.from_bytes(digest.digest()[:7], "big") + 1
+
+
+def _compiled(sources: int) -> tuple[Any, Any]:
+    """The two kernels; their bodies mention ``sources`` only to close over it."""
+
+    @njit(_SCRAMBLE, cache=True, **OPTIONS)
+    def scramble(directions: Any, words: Any, columns: Any) -> None:
+        """Scrambled direction numbers of every randomisation.
+
+        ``directions`` : (dims, bits); ``words`` : (randomisations, dims, 33) random;
+        ``columns`` : (randomisations, dims, bits), result. All uint32.
+        """
+        if sources == 0:
+            return
+        for r in range(words.shape[0]):
+            scrambled_columns(directions, words[r], columns[r])
+
+    @njit(_ACCUMULATE, cache=True, **OPTIONS)
+    def accumulate(
+        first: int,
+        last: int,
+        columns: Any,
+        words: Any,
+        loadings: Any,
+        widths: Any,
+        scales: Any,
+        rank_weights: Any,
+        kind: int,
+        n_common: int,
+        v: float,
+        log2_scale: float,
+        profile: Any,
+        with_ratios: bool,
+        table: Any,
+        normals: Any,
+        logs: Any,
+        levels: Any,
+        paths: Any,
+        sums: Any,
+    ) -> None:
+        """Add points ``first`` to ``last`` of every randomisation to ``sums``.
+
+        ``first`` is a multiple of ``BLOCK``; ``last`` is one too, or lies in the first block.
+        ``columns`` : (randomisations, dims, bits) scrambled direction numbers; ``words`` : word 32
+        is the digital shift. ``loadings`` : (n, dims padded to 4) float32, base-2 log-levels per
+        normal; ``widths`` : (n,) as in ``log_levels``. ``scales`` : (n,) level of each asset at
+        zero normals times its weight (for a geometric aggregate the exponents). ``rank_weights``
+        : (n,) float32. ``kind``, ``n_common``, ``v``, ``log2_scale``, ``profile``: see ``payoffs``.
+        Scratch: ``table`` (dims, BLOCK), ``normals`` (dims padded, BLOCK; padding 0), ``logs`` and
+        ``levels`` (n, BLOCK), ``paths`` (PATH_ROWS * BLOCK,).
+        ``sums`` : (randomisations, HEAD_SUMS + LEG_SUMS n): value, scaled part, outside part; per
+        asset the sums of ``_add_legs``. Blocks are added in order.
+        """
+        if sources == 0:
+            return
+        for r in range(columns.shape[0]):
+            low_table(columns[r], table)
+            for start in range(first, last, BLOCK):
+                normals_of_block(start // BLOCK, columns[r], words[r], table, normals)
+                log_levels(loadings, widths, normals, logs)
+                if kind == GEOMETRIC:
+                    geometric(logs, scales, log2_scale, paths)
+                else:
+                    powers(logs, levels)
+                    if kind == SUM:
+                        weighted_sum(levels, scales, n_common, paths)
+                    elif kind == BEST:
+                        extreme(levels, scales, 1.0, paths)
+                    elif kind == WORST:
+                        extreme(levels, scales, -1.0, paths)
+                    elif kind == RANKED:
+                        # normals are no longer needed: their rows hold the ranks
+                        rank_weighted(levels, scales, rank_weights, normals, paths)
+                integrate_factor(profile, v, with_ratios, paths)
+                m = min(BLOCK, last - start)
+                _add_head(paths, m, sums[r])
+                if with_ratios:
+                    if kind == GEOMETRIC:
+                        _level_free(levels, paths)
+                    _add_legs(paths, levels, logs, n_common, m, sums[r])
+
+    return scramble, accumulate
+
+
+scramble, accumulate = _compiled(_sources())
