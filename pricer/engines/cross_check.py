@@ -62,7 +62,7 @@ def compare(sample: Sample, reference: Reference, unit_notional: float, tests_in
         verdict = Verdict.CLOSE if abs(difference) <= tolerance else Verdict.FAR
         return Comparison(difference, scale, tolerance, verdict)
 
-    quantile = sampling_quantile(sample.randomisations, FALSE_ALARM / max(tests_in_book, 1))
+    quantile = sampling_quantile(sample.degrees_of_freedom, FALSE_ALARM / max(tests_in_book, 1))
     tolerance = quantile * sample.standard_error + reference.error + IMMATERIAL_BP * 1e-4 * unit_notional
     match reference.kind:
         case ReferenceKind.LOWER_BOUND:

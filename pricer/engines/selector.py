@@ -48,7 +48,7 @@ def headline(sample: Sample, references: tuple[Reference, ...], tolerance: float
         low, high = exact.value - exact.error, exact.value + exact.error
         return Headline(exact.value, 0.0, low, high, Interval.EXACT, exact.method)
 
-    reach = sampling_quantile(sample.randomisations, 1.0 - COVERAGE) * sample.standard_error
+    reach = sampling_quantile(sample.degrees_of_freedom, 1.0 - COVERAGE) * sample.standard_error
     low, high, interval = sample.value - reach, sample.value + reach, Interval.SAMPLING
     lowers = [r.value - r.error for r in references if r.kind is ReferenceKind.LOWER_BOUND]
     uppers = [r.value + r.error for r in references if r.kind is ReferenceKind.UPPER_BOUND]
@@ -57,11 +57,6 @@ def headline(sample: Sample, references: tuple[Reference, ...], tolerance: float
     return Headline(sample.value, sample.standard_error, low, high, interval, "randomised low-discrepancy sampling")
 
 
-def sampling_quantile(randomisations: int, probability: float) -> float:
-    """Two-sided Student quantile for the mean of ``randomisations`` independent estimates.
-
-    ``probability`` is the chance of falling outside.
-    """
-    if randomisations < 2:
-        return 0.0
-    return float(np.abs(stdtrit(randomisations - 1, 0.5 * probability)))
+def sampling_quantile(degrees_of_freedom: int, probability: float) -> float:
+    """Two-sided Student quantile: the estimate falls outside with ``probability``, in standard errors."""
+    return float(np.abs(stdtrit(degrees_of_freedom, 0.5 * probability)))

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import gc
 from collections import defaultdict
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from datetime import date
 from functools import lru_cache
 from pathlib import Path
@@ -47,7 +49,23 @@ def load_book(path: str | Path) -> Book:
     with its own. Raises :class:`InputError` with every problem found when there are no
     trades to read at all.
     """
-    sheets = read_sheets(path, (TRADES, CONSTITUENTS))
+    with _collector_at_rest():
+        return _book(read_sheets(path, (TRADES, CONSTITUENTS)))
+
+
+@contextmanager
+def _collector_at_rest() -> Iterator[None]:
+    """A large book is millions of objects and no cycles: the collector would walk them again and again in vain."""
+    was_enabled = gc.isenabled()
+    gc.disable()
+    try:
+        yield
+    finally:
+        if was_enabled:
+            gc.enable()
+
+
+def _book(sheets: Sheets) -> Book:
     trades, constituents, issues = _tables(sheets)
     legs, strays, stray_refusals = _legs(trades, constituents)
     kept: list[Trade] = []

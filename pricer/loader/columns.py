@@ -47,7 +47,7 @@ class Column:
 
     def read(self, cell: Cell, reading: Reading) -> object:
         """The cell's value; raises :class:`Fault`."""
-        if cell is None or is_blank(cell):
+        if is_blank(cell):
             if self.blank is REQUIRED:
                 raise blank_cell()
             return self.blank
@@ -58,6 +58,8 @@ class Column:
         return core_schema.with_info_plain_validator_function(self._validate)
 
     def _validate(self, cell: Any, info: core_schema.ValidationInfo) -> object:
+        if cell is None and self.blank is not REQUIRED:
+            return self.blank
         reading = info.context or Reading()
         reading.column = info.field_name
         return self.read(cell, reading)

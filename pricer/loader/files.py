@@ -15,7 +15,7 @@ from pricer.loader.text import fold
 from pricer.loader.workbook import read_workbook
 
 #: Sheets of our own templates that hold no data.
-NOT_DATA = ("read me", "examples", "lists")
+NOT_DATA = ("read me", "examples")
 
 
 def read_sheets(path: str | Path, wanted: Sequence[str]) -> Sheets:

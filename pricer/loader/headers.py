@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from itertools import groupby
 
@@ -23,11 +23,6 @@ class Header:
     row: int
     width: int
     positions: Mapping[str, int]
-
-    def named_cells(self, cells: Sequence[Cell]) -> dict[str, Cell]:
-        """The cells of a row by the names of their columns."""
-        n = len(cells)
-        return {name: cells[i] if i < n else None for name, i in self.positions.items()}
 
 
 def find_sheet(sheets: Sheets, name: str, *, required: Severity | None) -> tuple[Sheet | None, list[Issue]]:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, Generic, TypeVar
 
@@ -65,53 +65,59 @@ def read_table(sheet: Sheet, header: Header, model: type[R] | Callable[[Cell], t
     ``model`` is the row model, or a function that chooses it from the cell in column ``by``.
     """
     merged = _merged_rows(sheet, header)
+    choice = header.positions.get(by)
+    readers: dict[type[R], _RowReader[R]] = {}
     rows: list[Row[R]] = []
-    reading = Reading(sheet.typed)
     for number, cells in sheet.rows[1:]:
-        named = header.named_cells(cells)
-        chosen: type[R] = model if isinstance(model, type) else model(named.get(by))
-        columns = columns_of(chosen)
-        own = {name: named.get(name) for name in columns}
-        misfit = [*merged.get(number, ()), *_width_faults(sheet, header, cells)]
-        misfit += [
-            (name, unwanted(in_words(cell), "another product", by))
-            for name, cell in named.items()
-            if name not in columns and not is_blank(cell)
-        ]
-        rows.append(_read_row(sheet, header, number, own, chosen, reading, misfit))
+        faults = [*merged.get(number, ()), *_width_faults(sheet, header, cells)]
+        cells = cells + [None] * (header.width - len(cells))
+        chosen: type[R] = model if isinstance(model, type) else model(None if choice is None else cells[choice])
+        reader = readers.get(chosen)
+        if reader is None:
+            reader = readers[chosen] = _RowReader(sheet, header, chosen, by)
+        rows.append(reader.read(number, cells, faults))
     return Table(sheet, header, rows)
 
 
-def _read_row(
-    sheet: Sheet,
-    header: Header,
-    number: int,
-    cells: dict[str, Cell],
-    model: type[R],
-    reading: Reading,
-    misfit: Sequence[tuple[str | None, Fault]],
-) -> Row[R]:
-    reading.notes.clear()
-    value: R | None = None
-    faults = list(misfit)
-    try:
-        value = model.model_validate(cells, context=reading)
-    except ValidationError as error:
-        faults.extend(_faults(error, cells))
-    if not faults and not reading.notes:
-        return Row(number, value, {}, ())
-    columns = columns_of(model)
+class _RowReader(Generic[R]):
+    """Reads rows of one sheet by one model."""
 
-    def issues(found: Iterable[tuple[str | None, Fault]], severity: Severity) -> list[Issue]:
-        return [
-            _issue(sheet, header, number, name, columns[name].completed(fault) if name in columns else fault, severity)
-            for name, fault in found
+    def __init__(self, sheet: Sheet, header: Header, model: type[R], by: str) -> None:
+        self._sheet, self._header, self._model, self._by = sheet, header, model, by
+        self._columns = columns_of(model)
+        self._own = [(name, at) for name, at in header.positions.items() if name in self._columns]
+        self._foreign = [(name, at) for name, at in header.positions.items() if name not in self._columns]
+        self._absent: dict[str, Cell] = {name: None for name in self._columns if name not in header.positions}
+        self._reading = Reading(sheet.typed)
+
+    def read(self, number: int, cells: Sequence[Cell], misfit: Sequence[tuple[str | None, Fault]]) -> Row[R]:
+        """The row; ``misfit`` are faults of the row as a whole."""
+        reading = self._reading
+        reading.notes.clear()
+        faults = list(misfit)
+        own = {name: cells[at] for name, at in self._own} | self._absent
+        value: R | None = None
+        try:
+            value = self._model.model_validate(own, context=reading)
+        except ValidationError as error:
+            faults += _faults(error, own)
+        faults += [
+            (name, unwanted(in_words(cells[at]), "another product", self._by))
+            for name, at in self._foreign
+            if not is_blank(cells[at])
         ]
+        if not faults and not reading.notes:
+            return Row(number, value, {}, ())
+        told = (*self._issues(number, faults, Severity.ERROR), *self._issues(number, reading.notes, Severity.WARNING))
+        if faults:
+            return Row(number, None, _readable(own, self._columns, self._sheet.typed), told)
+        return Row(number, value, {}, told)
 
-    told = (*issues(faults, Severity.ERROR), *issues(reading.notes, Severity.WARNING))
-    if faults:
-        return Row(number, None, _readable(cells, columns, sheet.typed), told)
-    return Row(number, value, {}, told)
+    def _issues(self, number: int, found: Iterable[tuple[str | None, Fault]], severity: Severity) -> Iterator[Issue]:
+        for name, fault in found:
+            column = self._columns.get(name) if name is not None else None
+            told = fault if column is None else column.completed(fault)
+            yield _issue(self._sheet, self._header, number, name, told, severity)
 
 
 def _faults(error: ValidationError, cells: Mapping[str, Cell]) -> list[tuple[str | None, Fault]]:

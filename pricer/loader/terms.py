@@ -37,22 +37,23 @@ def check_terms(
         )
         return [trades.issue(row.number, "trade_id", fault)]
     columns = columns_of(ConstituentRow)
-    leg_faults = [
-        (leg, column, columns[column].completed(fault)) for leg in legs for column, fault in _leg_faults(row, leg, legs)
-    ]
+    times = Counter(leg.get("underlying") for leg in legs)
     return [
-        *(constituents.issue(leg.number, column, fault) for leg, column, fault in leg_faults),
+        *(
+            constituents.issue(leg.number, column, columns[column].completed(fault))
+            for leg in legs
+            for column, fault in _leg_faults(row, leg, times[leg.get("underlying")])
+        ),
         *(trades.issue(row.number, column, fault) for column, fault in _rank_faults(row, len(legs))),
         *(trades.issue(row.number, column, fault) for column, fault in _weight_faults(row, legs)),
         *(trades.issue(row.number, "trade_id", note, Severity.WARNING) for note in _weight_notes(row, legs)),
     ]
 
 
-def _leg_faults(row: _TradeRow, leg: _Leg, legs: Sequence[_Leg]) -> Iterator[tuple[str, Fault]]:
-    """Faults of one constituent, by column."""
+def _leg_faults(row: _TradeRow, leg: _Leg, times: int) -> Iterator[tuple[str, Fault]]:
+    """Faults of one constituent, by column; its underlying occurs ``times`` times in the trade."""
     aggregate, level = row.get("aggregate"), row.get("underlying_level")
     name, weight, fixing = leg.get("underlying"), leg.get("weight"), leg.get("initial_fixing")
-    times = Counter(other.get("underlying") for other in legs)[name]
     if name is not UNREAD and times > 1:
         found = f"{quoted(name)}, {times} times in this trade"
         yield "underlying", Fault("duplicate-underlying", found, "each underlying once", "Join its rows into one.")

@@ -80,7 +80,7 @@ VALUATIONS: tuple[Column, ...] = (
     ),
     Column("reporting_value", "value ({reporting})", Kind.AMOUNT, "The value in the reporting currency."),
     Column("status", "status", Kind.STATUS, "How the pricing of the trade ended, in one word.", widest=22),
-    _text("method", "method", "How the value was obtained.", 36),
+    _text("method", "method", "How the value was obtained.", 52),
     _text("interval", "kind of interval", "What the lower and upper ends mean; see below.", 16, printed=False),
     Column(
         "reporting_standard_error",
@@ -229,10 +229,12 @@ UNDERLYING_DELTAS: tuple[Column, ...] = (
 CROSS_CHECK: tuple[Column, ...] = (
     _TRADE,
     _PRODUCT,
-    _text("reference_method", "reference", "The method that the engine is compared with.", 34),
+    _text("reference_method", "reference", "The method that the engine is compared with.", 52),
     _text("reference_kind", "kind of reference", "Whether it is exact, a bound or an approximation.", 14),
     _text("currency", "trade currency", "The currency of the amounts.", 9),
-    Column("engine_value", "engine (trade currency)", Kind.AMOUNT, "The sampled value of the position."),
+    Column(
+        "engine_value", "engine (trade currency)", Kind.AMOUNT, "The sampled value of the position, without premium."
+    ),
     Column(
         "engine_standard_error",
         "standard error of engine (trade currency)",

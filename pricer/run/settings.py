@@ -20,7 +20,7 @@ class Settings:
 
     seed: int = 20_000
     precision_bp: float = 1.0
-    delta_precision_bp: float = 10.0
+    delta_precision_bp: float = 1.0
     workers: int = field(default_factory=lambda: os.cpu_count() or 1)
     sampling: SamplingSettings = field(default_factory=SamplingSettings)
 

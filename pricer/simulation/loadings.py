@@ -83,10 +83,10 @@ def cholesky(covariance: NDArray[np.float64], variances: NDArray[np.float64]) ->
     for i in range(left.shape[0]):
         if left[i, i] <= floor:
             continue
-        column = left[:, i] / np.sqrt(left[i, i])
-        column[:i] = 0.0
+        column = np.zeros(left.shape[0])
+        column[i:] = left[i:, i] / np.sqrt(left[i, i])
         columns.append(column)
-        left -= np.outer(column, column)
+        left[i:, i:] -= np.outer(column[i:], column[i:])
     if not columns:
         return np.zeros((covariance.shape[0], 0))
     return np.stack(columns, axis=1)

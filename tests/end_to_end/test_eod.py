@@ -16,7 +16,7 @@ from pricer.cli.app import app
 from pricer.loader import write_tables
 from tests.end_to_end.desk import SAMPLE, sample_maker, small_book, write_desk
 
-TRADES = ("SMD-0001", "SMD-0008", "SMD-0024", "SMD-0042", "SMD-0045")
+TRADES = ("SMD-0001", "SMD-0008", "SMD-0024", "SMD-0041", "SMD-0045")
 VALUATION_COLUMNS = {
     *("trade_id", "product", "currency", "value", "standard_error"),
     *("lower", "upper", "method", "status"),

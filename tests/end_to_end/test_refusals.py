@@ -209,89 +209,99 @@ def test_unknown_columns_and_sheets_are_ignored_with_a_warning(load, workbook):
 
 # Cells, in the words that a person reads
 
+STRIKE = (
+    "Enter the strike, in currency for price options, as a decimal (1.00 = 100 %) for performance options, e.g. 1.00, "
+    "or clear the cell for an exchange option."
+)
+NOTIONAL = "Enter the notional, in the trade's currency, for performance options, e.g. 5000000"
+LAG = "Enter the payment's delay after expiry, in business days, e.g. 2, or clear the cell for 2 days."
+AGGREGATES = "weighted sum, geometric, best of, worst of, k-th best, rank weighted"
+UNSAVED = "Open the workbook in a spreadsheet program, save it there and run again, or type the value."
+
 
 @pytest.mark.parametrize(
-    ("column", "value", "message"),
+    ("column", "value", "cell", "message"),
     [
-        ("strike", "one hundred",
-         'column "strike" (cell K2): found "one hundred"; expected a number. Enter the strike, in currency for '
-         'price options, '
-         "as a decimal (1.00 = 100 %) for performance options, e.g. 1.00, or clear the cell for an exchange option."),
-        ("notional", -5_000_000,
-         'column "notional" (cell F2): found -5000000; expected a number above 0. Enter the notional, in the trade\'s '
-         "currency, for performance options, e.g. 5000000, or clear the cell for a price option."),
-        ("notional", "5,000,000",
-         'column "notional" (cell F2): found "5,000,000"; expected a number above 0. Write 5000000, without '
-         'separators.'),
-        ("strike", "0,95",
-         'column "strike" (cell K2): found "0,95"; expected a number. Write 0.95, with a decimal point.'),
-        ("strike", True,
-         'column "strike" (cell K2): found the truth value TRUE; expected a number. Enter the strike, in '
-         'currency for price '
-         "options, as a decimal (1.00 = 100 %) for performance options, e.g. 1.00, or clear the cell for an "
-         "exchange option."),
-        ("strike", "#N/A",
-         'column "strike" (cell K2): found the spreadsheet error #N/A; expected a number. '
-         "Mend the formula or its source, or type the value."),
-        ("trade_id", "#REF!", None),
-        ("strike", "=K3*1.05",
-         'column "strike" (cell K2): found the formula "=K3*1.05" without a stored result; expected a number. '
-         'Open the workbook '
-         "in a spreadsheet program, save it there and run again, or type the value."),
-        ("strike", 100,
-         'column "strike" (cell K2): found 100; expected a decimal performance (1.00 = 100 %) below 10. '
-         "Did you mean 1 (100 %)?"),
-        ("strike", "nan", 'column "strike" (cell K2): found "nan"; expected a number. Enter the strike, in '
-                          'currency for price '
-         "options, as a decimal (1.00 = 100 %) for performance options, e.g. 1.00, or clear the cell for an "
-         "exchange option."),
-        ("currency", "EUX",
-         'column "currency" (cell S2): found "EUX"; expected a currency code of ISO 4217 such as EUR. '
-         "Enter the currency that the trade pays in, e.g. EUR."),
-        ("aggregate", "wieghted sum",
-         'column "aggregate" (cell G2): found "wieghted sum"; expected one of: weighted sum, geometric, best of, '
-         'worst of, '
-         'k-th best, rank weighted. Did you mean "weighted sum"?'),
-        ("direction", None,
-         'column "direction" (cell C2): found a blank cell; expected one of: long, short. Enter the desk\'s '
-         'side, e.g. long.'),
-        ("notional", None,
-         'column "notional" (cell F2): found a blank cell; expected a number above 0, as performance options need one. '
-         "Enter the notional, in the trade's currency, for performance options, e.g. 5000000."),
-        ("quantity", 20000,
-         'column "quantity" (cell E2): found 20000; expected a blank cell, as this is for price options only. '
-         "Clear the cell, or correct underlying_level."),
-        ("expiry_date", "03/04/2027",
-         'column "expiry_date" (cell P2): found "03/04/2027"; expected a date such as 2026-09-18. '
-         "Write 2027-04-03 or 2027-03-04: the day and the month may be either."),
-        ("expiry_date", datetime(2027, 6, 18, 17, 30),
-         'column "expiry_date" (cell P2): found the time 2027-06-18 17:30:00; expected a date without a time of day. '
-         "Write 2027-06-18."),
-        ("expiry_date", date(2026, 2, 27),
-         'column "expiry_date" (cell P2): found the date 2026-02-27; expected a date from the trade date '
-         '2026-03-02 on. '
-         "Correct one of the two dates."),
-        ("settlement_lag_days", 2.5,
-         'column "settlement_lag_days" (cell Q2): found 2.5; expected a whole number from 0 to 60. Enter the '
-         'payment\'s delay '
-         "after expiry, in business days, e.g. 2, or clear the cell for 2 days."),
+        ("strike", "one hundred", "K2", f'found "one hundred"; expected a number. {STRIKE}'),
+        ("strike", True, "K2", f"found the truth value TRUE; expected a number. {STRIKE}"),
+        ("strike", "nan", "K2", f'found "nan"; expected a number. {STRIKE}'),
+        ("strike", "0,95", "K2", 'found "0,95"; expected a number. Write 0.95, with a decimal point.'),
+        (
+            *("strike", "#N/A", "K2"),
+            "found the spreadsheet error #N/A; expected a number. Mend the formula or its source, or type the value.",
+        ),
+        (
+            *("strike", "=K3*1.05", "K2"),
+            f'found the formula "=K3*1.05" without a stored result; expected a number. {UNSAVED}',
+        ),
+        (
+            *("strike", 100, "K2"),
+            "found 100; expected a decimal performance (1.00 = 100 %) below 10. Did you mean 1 (100 %)?",
+        ),
+        (
+            *("notional", -5_000_000, "F2"),
+            f"found -5000000; expected a number above 0. {NOTIONAL}, or clear the cell for a price option.",
+        ),
+        (
+            *("notional", "5,000,000", "F2"),
+            'found "5,000,000"; expected a number above 0. Write 5000000, without separators.',
+        ),
+        (
+            *("notional", None, "F2"),
+            f"found a blank cell; expected a number above 0, as performance options need one. {NOTIONAL}.",
+        ),
+        (
+            *("quantity", 20000, "E2"),
+            "found 20000; expected a blank cell, as this is for price options only. "
+            "Clear the cell, or correct underlying_level.",
+        ),
+        (
+            *("currency", "EUX", "S2"),
+            'found "EUX"; expected a currency code of ISO 4217 such as EUR. '
+            "Enter the currency that the trade pays in, e.g. EUR.",
+        ),
+        (
+            *("aggregate", "wieghted sum", "G2"),
+            f'found "wieghted sum"; expected one of: {AGGREGATES}. Did you mean "weighted sum"?',
+        ),
+        (
+            *("direction", None, "C2"),
+            "found a blank cell; expected one of: long, short. Enter the desk's side, e.g. long.",
+        ),
+        (
+            *("expiry_date", "03/04/2027", "P2"),
+            'found "03/04/2027"; expected a date such as 2026-09-18. '
+            "Write 2027-04-03 or 2027-03-04: the day and the month may be either.",
+        ),
+        (
+            *("expiry_date", datetime(2027, 6, 18, 17, 30), "P2"),
+            "found the time 2027-06-18 17:30:00; expected a date without a time of day. Write 2027-06-18.",
+        ),
+        (
+            *("expiry_date", date(2026, 2, 27), "P2"),
+            "found the date 2026-02-27; expected a date from the trade date 2026-03-02 on. "
+            "Correct one of the two dates.",
+        ),
+        ("settlement_lag_days", 2.5, "Q2", f"found 2.5; expected a whole number from 0 to 60. {LAG}"),
     ],
-)  # fmt: skip
-def test_a_bad_cell_costs_its_trade_and_is_told_in_full(load, workbook, column, value, message):
+)
+def test_a_bad_cell_costs_its_trade_and_is_told_in_full(load, workbook, column, value, cell, message):
     change(workbook["trades"], column, 2, value)
-    if message is None:
-        book = load(workbook)
-        assert book.refusals[0].trade_id == "row 2"
-        return
-    assert only(load(workbook)) == f"book.xlsx, sheet trades, row 2, {message}"
+    assert only(load(workbook)) == f'book.xlsx, sheet trades, row 2, column "{column}" (cell {cell}): {message}'
+
+
+def test_an_error_in_an_id_costs_the_trade_too(load, workbook):
+    change(workbook["trades"], "trade_id", 2, "#REF!")
+    book = load(workbook)
+    assert [refusal.trade_id for refusal in book.refusals] == ["row 2", "EX-1"]
+    assert len(book) == 5
 
 
 def test_a_missing_weight_is_told_in_full(load, workbook):
     change(workbook["constituents"], "weight", 3, None)
     assert only(load(workbook)) == (
         'book.xlsx, sheet constituents, row 3, column "weight" (cell C3): found a blank cell; expected a number '
-        "other than 0, "
-        "as the trade's aggregate is weighted sum. Enter the weight, for a weighted sum or a geometric "
+        "other than 0, as the trade's aggregate is weighted sum. Enter the weight, for a weighted sum or a geometric "
         "aggregate, e.g. 0.25."
     )
 
@@ -301,11 +311,9 @@ def test_a_repeated_trade_id_is_told_at_each_of_its_rows(load, workbook):
     book = load(workbook)
     assert [str(issue) for refusal in book.refusals for issue in refusal.issues if issue.code == "duplicate-trade"] == [
         'book.xlsx, sheet trades, row 6, column "trade_id" (cell A6): found "EX-5", 2 times (also in row 7); '
-        "expected each "
-        "trade_id once. Give each trade its own id, or delete the repeated row.",
+        "expected each trade_id once. Give each trade its own id, or delete the repeated row.",
         'book.xlsx, sheet trades, row 7, column "trade_id" (cell A7): found "EX-5", 2 times (also in row 6); '
-        "expected each "
-        "trade_id once. Give each trade its own id, or delete the repeated row.",
+        "expected each trade_id once. Give each trade its own id, or delete the repeated row.",
     ]
     assert len(book) == 4
 

@@ -14,7 +14,10 @@ from pricer.contracts.aggregate import Aggregate, AggregateKind
 from pricer.contracts.book import Book, Premium, Trade
 from pricer.contracts.option import EuropeanOption
 from pricer.contracts.profile import Profile, ProfileKind
-from pricer.loader import load_book, write_book
+from pricer.core.issues import Severity
+from pricer.loader import load_book, write_book, write_tables
+from pricer.loader.examples import EXAMPLE_BOOK
+from pricer.loader.schema import BOOK
 from pricer.loader.text import clean, half_width
 from pricer.market.calendars import CURRENCY_CALENDARS, advance
 
@@ -115,3 +118,46 @@ def test_a_book_that_is_written_and_read_again_is_the_same(name, book):
         again = load_book(path)
     assert again.refusals == ()
     assert again.trades == book.trades
+
+
+# What people, and other programs, put into cells
+cells = st.one_of(
+    st.none(),
+    st.booleans(),
+    st.floats(allow_nan=False, allow_infinity=False),
+    st.integers(-(10**18), 10**18),
+    days,
+    names,
+    st.sampled_from(
+        ["#N/A", "nan", "1,5", "1,000", "50%", "03/04/2026", "2026-02-30", "EX-1", "EX-9", "EUR", "GBp", "; ;"]
+    ),
+)
+places = st.sampled_from(
+    [
+        (table, row, column)
+        for table, rows in EXAMPLE_BOOK.items()
+        for row in range(len(rows))
+        for column in BOOK[table].columns
+    ]
+)
+
+
+@pytest.mark.parametrize("name", ["book.xlsx", "book"])
+@settings(max_examples=60, deadline=None, suppress_health_check=[HealthCheck.too_slow])
+@given(changes=st.lists(st.tuples(places, cells), min_size=1, max_size=6))
+def test_whatever_stands_in_the_cells_every_row_is_a_trade_or_a_refusal(name, changes):
+    tables = {table: [dict(row) for row in rows] for table, rows in EXAMPLE_BOOK.items()}
+    for (table, row, column), value in changes:
+        tables[table][row][column] = value
+    with tempfile.TemporaryDirectory() as folder:
+        path = Path(folder) / name
+        write_tables(tables, path)
+        book = load_book(path)
+    rows = sum(any(value not in (None, "") for value in row.values()) for row in tables["trades"])
+    listed = [trade.trade_id for trade in book] + [refusal.trade_id for refusal in book.refusals]
+    assert len(listed) >= rows
+    assert len({trade.trade_id for trade in book}) == len(book)
+    legs = sum(len(trade.contract.underlyings) for trade in book)
+    assert legs <= len(tables["constituents"])
+    assert all(any(issue.severity is not Severity.WARNING for issue in refusal.issues) for refusal in book.refusals)
+    assert all(issue.found and issue.expected and issue.mend.endswith((".", "?")) for issue in book.issues)

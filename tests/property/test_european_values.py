@@ -23,7 +23,7 @@ repeatable = settings(max_examples=25, deadline=None, derandomize=True)
 
 
 def within(difference, *errors):
-    assert abs(difference) <= REACH * float(np.sqrt(np.sum(np.square(errors)))) + 1e-9
+    assert abs(difference) <= REACH * float(np.sqrt(np.sum(np.square(errors)))) + 1e-7
 
 
 @repeatable
@@ -128,16 +128,25 @@ def test_a_delta_is_the_slope_of_the_value(problem):
         within(base.log_deltas[i] - slope, base.log_delta_errors[i], error)
 
 
-def bumped_slope(problem, i, size=1e-3):
-    """Central difference in the logarithm of forward i, on the same draws, and its own error."""
-    values = []
-    for sign in (1, -1):
-        forwards = problem.law.forwards.copy()
-        forwards[i] *= np.exp(sign * size)
-        values.append(value_of(replace(problem, law=replace(problem.law, forwards=forwards))))
-    up, down = values
-    # the error of the difference is far below that of either value; a tenth of it is generous
-    return (up.value - down.value) / (2 * size), 0.1 * up.standard_error
+def bumped_slope(problem, i, size=1e-4):
+    """Slope in the logarithm of forward i, on the same draws, and its own error.
+
+    Central differences at two sizes, extrapolated: the error is of fourth order in the size.
+    """
+    fine, coarse = (central_difference(problem, i, h) for h in (size, 2 * size))
+    # the error of a difference on common draws is far below that of a value; a tenth of it is generous
+    return (4 * fine - coarse) / 3, 0.1 * value_of(problem).standard_error
+
+
+def central_difference(problem, i, size):
+    up, down = (value_of(with_forward(problem, i, np.exp(sign * size))) for sign in (1, -1))
+    return (up.value - down.value) / (2 * size)
+
+
+def with_forward(problem, i, factor):
+    forwards = problem.law.forwards.copy()
+    forwards[i] *= factor
+    return replace(problem, law=replace(problem.law, forwards=forwards))
 
 
 @repeatable

@@ -1,11 +1,14 @@
 """The plain expectation over the common factor, against quadrature and differences."""
 
+from itertools import pairwise
+
 import numpy as np
 import pytest
 from numpy.polynomial.hermite_e import hermegauss
+from scipy.integrate import quad
+
 from pricer.contracts.profile import PiecewiseLinear
 from pricer.simulation.conditional import integrate_factor
-from scipy.integrate import quad
 
 BENT = PiecewiseLinear(1.0, -0.3, (60.0, 90.0, 130.0), (0.5, -1.0, 0.7), (0.0, 0.0, 0.0))
 JUMPY = PiecewiseLinear(1.0, -0.3, (-20.0, 0.0, 30.0), (0.5, -1.0, 0.7), (2.0, 1.0, -3.0))
@@ -23,9 +26,8 @@ def by_quadrature(payoff, v, scaled, outside, weight=lambda w: 1.0):
     def integrand(w):
         return weight(w) * payoff(np.array(np.exp(v * w) * scaled + outside)) * np.exp(-0.5 * w * w)
 
-    return sum(quad(integrand, a, b, epsabs=1e-13)[0] for a, b in zip(cuts, cuts[1:], strict=False)) / np.sqrt(
-        2 * np.pi
-    )
+    parts = [quad(integrand, a, b, epsabs=1e-13)[0] for a, b in pairwise(cuts)]
+    return sum(parts) / np.sqrt(2 * np.pi)
 
 
 CASES = [

@@ -17,7 +17,7 @@ def sampled(value, error, randomisations=16):
     return Sample(
         value=value, standard_error=error, log_deltas=NONE, log_delta_errors=NONE, log_gammas=None,
         log_gamma_errors=None, deviation_vegas=NONE, deviation_vega_errors=NONE, paths=1, randomisations=randomisations,
-        reached=True, ending="",
+        reached=True, ending="", degrees_of_freedom=randomisations - 1,
     )  # fmt: skip
 
 
@@ -27,8 +27,8 @@ def reference(value, kind=ReferenceKind.EXACT, error=0.0):
 
 def test_the_quantile_is_students():
     # two-sided 5 % and 1 %, 15 degrees of freedom: 2.131 and 2.947 (any printed table of Student's t, from memory)
-    assert sampling_quantile(16, 0.05) == pytest.approx(2.131, abs=5e-4)
-    assert sampling_quantile(16, 0.01) == pytest.approx(2.947, abs=5e-4)
+    assert sampling_quantile(15, 0.05) == pytest.approx(2.131, abs=5e-4)
+    assert sampling_quantile(15, 0.01) == pytest.approx(2.947, abs=5e-4)
 
 
 @pytest.mark.parametrize(

@@ -6,6 +6,7 @@ import math
 from copy import deepcopy
 from datetime import date
 
+import openpyxl
 import pytest
 
 from pricer.core.issues import InputError, Severity
@@ -338,3 +339,13 @@ def test_the_quality_gates_point_at_the_cells(load, tables):
     market = load(tables)
     assert [(issue.code, issue.sheet) for issue in market.issues] == [("inconsistent-fx", "fx")]
     assert market.issues[0].cell is not None
+
+
+def test_merged_correlations_are_refused_with_their_range(load, tables, tmp_path):
+    load(tables)
+    workbook = openpyxl.load_workbook(tmp_path / "market.xlsx")
+    workbook["correlations"].merge_cells("B2:C2")
+    workbook.save(tmp_path / "market.xlsx")
+    market = load_market(tmp_path / "market.xlsx")
+    assert market.correlation is None
+    assert [issue.found for issue in market.rejected["correlations"]] == ["the merged cells B2:C2"]

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import subprocess
+import sys
+
 import openpyxl
 import pytest
 
@@ -120,3 +123,9 @@ def test_every_model_describes_itself():
     for model in (ConstituentRow, EuropeanOptionRow, *MARKET_ROWS.values()):
         assert model.__doc__
         assert columns_of(model)
+
+
+def test_importing_the_package_loads_no_spreadsheet_library():
+    code = "import sys, pricer.loader; print(sorted({'openpyxl', 'pydantic', 'pandas', 'numpy'} & set(sys.modules)))"
+    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
+    assert done.stdout.strip() == "[]"

@@ -2,6 +2,7 @@
 
 import numpy as np
 import pytest
+
 from pricer.simulation.loadings import cholesky, common_deviation, principal_components
 
 

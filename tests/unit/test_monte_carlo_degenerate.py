@@ -3,12 +3,13 @@
 import numpy as np
 import pytest
 import QuantLib as ql
+from scipy.integrate import quad
+
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.profile import PiecewiseLinear, Profile, ProfileKind
 from pricer.engines.monte_carlo import Sample, SamplingSettings, sample
 from pricer.engines.problem import EuropeanProblem
 from pricer.market.joint_lognormal import JointLognormal
-from scipy.integrate import quad
 
 CALL = Profile(ProfileKind.CALL, 100.0).payoff()
 DIGITAL = Profile(ProfileKind.CASH_DIGITAL_CALL, 100.0, cash_amount=10.0).payoff()

@@ -6,12 +6,13 @@ from dataclasses import fields
 import numpy as np
 import pytest
 import QuantLib as ql
+from scipy.stats import t as student
+
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.profile import Profile, ProfileKind
 from pricer.engines.monte_carlo import Sample, SamplingSettings, prepare, sample
 from pricer.engines.problem import EuropeanProblem
 from pricer.market.joint_lognormal import JointLognormal
-from scipy.stats import t as student
 
 CALL = Profile(ProfileKind.CALL, 100.0).payoff()
 

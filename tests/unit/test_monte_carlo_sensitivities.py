@@ -3,6 +3,7 @@
 import numpy as np
 import pytest
 import QuantLib as ql
+
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.profile import PiecewiseLinear, Profile, ProfileKind
 from pricer.engines.monte_carlo import Sample, SamplingSettings, sample
@@ -10,7 +11,8 @@ from pricer.engines.problem import EuropeanProblem
 from pricer.market.joint_lognormal import JointLognormal
 
 # Cholesky's loadings do not depend on the forwards, so that bumped runs replay the same paths.
-SETTINGS = SamplingSettings(initial_points=4096, maximum_points=4096, ordering="cholesky")
+SMOOTH = SamplingSettings(initial_points=2**12, maximum_points=2**12, ordering="cholesky")
+RANKED = SamplingSettings(initial_points=2**15, maximum_points=2**15, ordering="cholesky")
 FORWARDS = np.array([95.0, 105.0, 100.0])
 DEVIATIONS = np.array([0.2, 0.3, 0.4])
 CORRELATION = np.array([[1.0, 0.5, 0.2], [0.5, 1.0, -0.3], [0.2, -0.3, 1.0]])
@@ -22,7 +24,8 @@ def law(forwards=FORWARDS, deviations=DEVIATIONS) -> JointLognormal:
 
 def drawn(joint, aggregate, payoff) -> Sample:
     problem = EuropeanProblem(joint, aggregate, payoff, 0.95)
-    return sample(problem, group="bumps", seed=7, value_tolerance=0.0, delta_tolerance=0.0, settings=SETTINGS)
+    settings = RANKED if aggregate.is_ranked else SMOOTH
+    return sample(problem, group="bumps", seed=7, value_tolerance=0.0, delta_tolerance=0.0, settings=settings)
 
 
 def bumped(base: np.ndarray, i: int, factor: float) -> np.ndarray:
@@ -60,19 +63,20 @@ def test_sensitivities_are_those_of_bumped_runs(kind, profile):
     aggregate = AGGREGATES[kind]
     payoff = (NEAR_ZERO if "spread" in kind else PAYOFFS)[profile]
     base = drawn(law(), aggregate, payoff)
+    # where the ranking switches, bumped runs carry a sampling error of their own
+    errors = 8.0 if aggregate.is_ranked else 5.0
     h = 2e-3
     for i in range(3):
         up, down = (drawn(law(forwards=bumped(FORWARDS, i, 1.0 + t)), aggregate, payoff) for t in (h, -h))
-        # ranked aggregates differ path by path where the ranking switches, so both sides carry sampling error
-        noise = 4.0 * (base.log_delta_errors[i] + 1e-5) if aggregate.is_ranked else base.log_delta_errors[i] + 1e-3
-        assert base.log_deltas[i] == pytest.approx((up.value - down.value) / (2 * h), abs=4.0 * noise)
+        allowed = errors * base.log_delta_errors[i] + 1e-4 * np.max(np.abs(base.log_deltas))
+        assert base.log_deltas[i] == pytest.approx((up.value - down.value) / (2 * h), abs=allowed)
         if base.log_gammas is not None:
             difference = (up.log_deltas[i] - down.log_deltas[i]) / (2 * h) - base.log_deltas[i]
-            allowed = 5.0 * base.log_gamma_errors[i] + 2e-3 * np.max(np.abs(base.log_gammas))
+            allowed = errors * base.log_gamma_errors[i] + 1e-3 * np.max(np.abs(base.log_gammas))
             assert base.log_gammas[i] == pytest.approx(difference, abs=allowed)
         up, down = (drawn(law(deviations=bumped(DEVIATIONS, i, 1.0 + t)), aggregate, payoff) for t in (h, -h))
         difference = (up.value - down.value) / (2 * h * DEVIATIONS[i])
-        allowed = 5.0 * base.deviation_vega_errors[i] + 2e-3 * np.max(np.abs(base.deviation_vegas))
+        allowed = errors * base.deviation_vega_errors[i] + 1e-3 * np.max(np.abs(base.deviation_vegas))
         assert base.deviation_vegas[i] == pytest.approx(difference, abs=allowed)
 
 

@@ -4,12 +4,14 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.profile import PiecewiseLinear
 from pricer.market.joint_lognormal import JointLognormal
 from pricer.simulation import plain, sobol
 from pricer.simulation.batch_means import batch_estimate
 from pricer.simulation.design import Design, reflected
+from pricer.simulation.estimates import estimates
 from pricer.simulation.kernels import fused
 from pricer.simulation.sampler import Sampler
 
@@ -138,3 +140,19 @@ def test_a_control_that_stands_still_is_left_out():
     y = rng.normal(size=(16, 2))
     with_control, without = batch_estimate(y, np.full((16, 2), 1e-16)), batch_estimate(y)
     assert with_control[0] == pytest.approx(without[0])
+
+
+@pytest.mark.parametrize("case", ["basket", "spread", "geometric", "best of"])
+def test_rounding_to_single_precision_stays_within_the_error_it_is_granted(case):
+    design = Design.of(LAW, *CASES[case], triangular=False)
+    got = Sampler(design, words(design.dimensions, 4)).extend(4096) / 4096
+    want = plain.sums(design, sobol.random_words(words(design.dimensions, 4), design.dimensions), 0, 4096) / 4096
+    single, double = estimates(design, got), estimates(design, want)
+    assert single.rounding < 1e-6 * abs(single.value) + 1e-5
+    assert abs(np.mean(got[:, 0]) - np.mean(want[:, 0])) < 2.0 * single.rounding
+    assert np.all(np.abs(single.log_deltas - double.log_deltas) < 5.0 * single.log_delta_errors)
+
+
+def test_the_disk_cache_is_keyed_by_the_sources_of_all_kernels():
+    for kernel in (fused.scramble, fused.accumulate):
+        assert fused._sources() in [cell.cell_contents for cell in kernel.py_func.__closure__]

@@ -2,8 +2,9 @@
 
 import numpy as np
 import pytest
-from pricer.simulation import sobol
 from scipy.stats import qmc
+
+from pricer.simulation import sobol
 
 
 def words(seed: int, dimensions: int) -> np.ndarray:
@@ -13,9 +14,7 @@ def words(seed: int, dimensions: int) -> np.ndarray:
 def test_unscrambled_points_are_scipys():
     # SciPy holds Joe & Kuo's (2008) published table new-joe-kuo-6 itself; order within a power of two differs
     dimensions = 150
-    plain = np.zeros((dimensions, sobol.WORDS), dtype=np.uint32)
-    for c in range(32):
-        plain[:, c] = 0  # unit matrix: nothing below the diagonal
+    plain = np.zeros((dimensions, sobol.WORDS), dtype=np.uint32)  # unit matrices, no shift
     ours = sobol.scrambled_points(sobol.directions(dimensions), plain, 0, 256) / 2.0**32
     theirs = qmc.Sobol(dimensions, scramble=False, bits=32).random(256).T
     assert np.array_equal(ours[:, np.lexsort(ours)], theirs[:, np.lexsort(theirs)])

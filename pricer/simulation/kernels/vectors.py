@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from contextlib import suppress
 from typing import Any
 
 import numpy as np
@@ -52,8 +53,10 @@ double_from_bits = _cast(types.int64, types.float64)
 
 def _wide(typing_context: Any) -> Any:
     def generate(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:
-        # llvmlite's own add() admits only attributes without a value
-        set.add(builder.function.attributes, '"prefer-vector-width"="512"')
+        # llvmlite's own add() admits only attributes without a value; a version that keeps them
+        # otherwise goes without the hint
+        with suppress(TypeError, AttributeError):
+            set.add(builder.function.attributes, '"prefer-vector-width"="512"')
         return context.get_dummy_value()
 
     return types.none(), generate
