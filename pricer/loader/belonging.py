@@ -34,7 +34,7 @@ def belongings(rows: Sequence[Row[R]], column: str, known: Container[str]) -> It
     """Each row with what it belongs to by its id in ``column``.
 
     Suspects are the owners of the nearest rows above and below: both of a row without an
-    id, and those with a similar id of a row with an unknown one.
+    id; of a row with an unknown one, those with a similar id, or the one that stands on both sides.
     """
     names = ["" if (name := row.get(column)) is UNREAD else str(name) for row in rows]
     above: list[str | None] = []
@@ -53,4 +53,5 @@ def belongings(rows: Sequence[Row[R]], column: str, known: Container[str]) -> It
             yield row, Belonging(name, name)
             continue
         near = tuple(dict.fromkeys(n for n in (before, after) if n is not None))
-        yield row, Belonging(None, name, tuple(n for n in near if not name or looks_misspelt(name, n)))
+        surrounded = before == after
+        yield row, Belonging(None, name, tuple(n for n in near if not name or surrounded or looks_misspelt(name, n)))

@@ -166,6 +166,6 @@ def _why(issues: tuple[Issue, ...]) -> str:
 def _refused_curve(market: Market) -> str:
     """The reason of a curve that was given but refused: it may be the one that is missing."""
     for name, issues in market.rejected.items():
-        if any((issue.sheet or "").startswith("curve") for issue in issues):
+        if any((issue.sheet or "").casefold().startswith("curve") for issue in issues):
             return f'Curve "{name}" could not be used. {_why(issues)}'
     return ""

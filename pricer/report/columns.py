@@ -224,6 +224,20 @@ UNDERLYING_DELTAS: tuple[Column, ...] = (
         "Errors added in quadrature.",
         like="reporting_vega",
     ),
+    Column(
+        "trades_without_delta",
+        "trades without delta (number)",
+        Kind.COUNT,
+        "Trades whose delta could not be had; where there is one, the book's delta is unknown and left blank.",
+        printed=False,
+    ),
+    Column(
+        "trades_without_vega",
+        "trades without vega (number)",
+        Kind.COUNT,
+        "Trades whose vega could not be had; where there is one, the book's vega is unknown and left blank.",
+        printed=False,
+    ),
 )
 
 CROSS_CHECK: tuple[Column, ...] = (

@@ -54,7 +54,7 @@ INTERVALS: dict[Interval, str] = {
 
 STATUSES: dict[Status, str] = {
     Status.PRICED: "Value and deltas are as precise as asked.",
-    Status.PRECISION_NOT_REACHED: "Priced, but the value or a delta less precisely than asked: read the standard errors.",
+    Status.PRECISION_NOT_REACHED: "Priced, but value or deltas less precisely than asked: read the standard errors.",
     Status.NOT_PRICED: "No value; the reason is in the last column of Valuations and on the sheet Problems.",
 }
 

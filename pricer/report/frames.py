@@ -130,9 +130,8 @@ def deltas(outcome: Outcome) -> Frame:
 
 def underlying_deltas(outcome: Outcome) -> Frame:
     """One row an underlying, largest absolute cash delta first."""
-    frame = _records(
-        underlying_totals(outcome), UnderlyingTotal, text="underlying currency", whole="trades trades_without_gamma"
-    )
+    counts = "trades trades_without_gamma trades_without_delta trades_without_vega"
+    frame = _records(underlying_totals(outcome), UnderlyingTotal, text="underlying currency", whole=counts)
     frame.insert(list(frame).index("cash_delta") + 1, "reporting_currency", outcome.facts.reporting_currency)
     return frame
 

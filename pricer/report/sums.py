@@ -30,15 +30,14 @@ def ratio(amount: float, unit: float) -> float:
     return amount / unit if unit else math.nan
 
 
-def pooled_randomisations(errors: Sequence[float], randomisations: Sequence[int]) -> int:
-    """Randomisations that a sum's standard error is worth, for a quantile of its sampling interval.
+def pooled_degrees_of_freedom(errors: Sequence[float], degrees: Sequence[int]) -> int:
+    """Degrees of freedom of the standard error of a sum, for the quantile of its sampling interval.
 
-    Each error rests on ``randomisations - 1`` degrees of freedom; those of the sum are pooled as in Satterthwaite
-    (1946), Welch (1947): ``(sum s^2)^2 / sum(s^4 / dof)``, rounded down. 0 where nothing was sampled.
+    ``(sum s^2)^2 / sum(s^4 / degrees)``, rounded down (Satterthwaite 1946, Welch 1947); 0 where nothing was sampled.
     """
-    sampled = [(s * s, n - 1) for s, n in zip(errors, randomisations, strict=True) if s > 0.0 and n > 1]
-    weight = sum(square * square / freedom for square, freedom in sampled)
+    sampled = [(s * s, n) for s, n in zip(errors, degrees, strict=True) if s > 0.0 and n > 0]
+    weight = total(square * square / n for square, n in sampled)
     if not weight > 0.0:
         return 0
     # The ratio of equal trades is whole in exact arithmetic: do not let rounding take one off.
-    return int(sum(square for square, _ in sampled) ** 2 / weight * (1.0 + 1e-12)) + 1
+    return int(total(square for square, _ in sampled) ** 2 / weight * (1.0 + 1e-12))

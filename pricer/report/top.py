@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 from statistics import median
 from typing import TypeVar
@@ -45,12 +45,13 @@ def lines_of_groups(totals: Sequence[Total], whole: Total, own_currency: bool = 
     shown, rest = _split(totals)
     lines = [line(item) for item in shown]
     if rest:
+        valued = [t for t in rest if t.priced or t.precision_not_reached]
         numbers = (
             sum(t.trades for t in rest),
             sum(t.not_priced for t in rest),
-            math.nan if own_currency else _known(t.gross_notional for t in rest),
-            _known(t.value for t in rest),
-            quadrature(t.standard_error for t in rest if not math.isnan(t.standard_error)),
+            math.nan if own_currency else total(t.gross_notional for t in valued),
+            total(t.value for t in valued),
+            quadrature(t.standard_error for t in valued),
         )
         lines.append(Line(f"other ({len(rest)})", numbers))
     third = math.nan if own_currency else whole.gross_notional
@@ -59,23 +60,23 @@ def lines_of_groups(totals: Sequence[Total], whole: Total, own_currency: bool = 
 
 
 def lines_of_underlyings(totals: Sequence[UnderlyingTotal]) -> list[Line]:
-    """Trades, share of the gross cash delta in percent, delta in shares, reporting cash delta, its standard error."""
-    gross = _known(abs(t.reporting_cash_delta) for t in totals)
+    """Trades, share of the gross cash delta in percent, delta in shares, reporting cash delta, its standard error.
+
+    Where one delta is unknown, so is every sum that it belongs to.
+    """
+    gross = total(abs(t.reporting_cash_delta) for t in totals)
 
     def line(name: str, items: Sequence[UnderlyingTotal], mark: Mark = Mark.NONE) -> Line:
         one = len(items) == 1 and mark is Mark.NONE
+        cash = total(t.reporting_cash_delta for t in items)
         numbers = (
             items[0].trades if one else math.nan,
-            100.0 * ratio(_known(abs(t.reporting_cash_delta) for t in items), gross),
+            100.0 * ratio(total(abs(t.reporting_cash_delta) for t in items), gross),
             items[0].delta if one else math.nan,  # shares of different underlyings do not add
-            _known(t.reporting_cash_delta for t in items),
-            quadrature(
-                t.reporting_cash_delta_standard_error
-                for t in items
-                if not math.isnan(t.reporting_cash_delta_standard_error)
-            ),
+            cash,
+            quadrature(t.reporting_cash_delta_standard_error for t in items),
         )
-        return Line(name, numbers, mark)
+        return Line(name, numbers, Mark.LOOK if math.isnan(cash) and mark is Mark.NONE else mark)
 
     shown, rest = _split(totals)
     lines = [line(item.underlying, [item]) for item in shown]
@@ -110,7 +111,3 @@ def _split(items: Sequence[_Item]) -> tuple[Sequence[_Item], Sequence[_Item]]:
     if len(items) <= SHOWN + 1:
         return items, ()
     return items[:SHOWN], items[SHOWN:]
-
-
-def _known(amounts: Iterable[float]) -> float:
-    return total(a for a in amounts if not math.isnan(a))

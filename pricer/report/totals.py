@@ -9,7 +9,7 @@ from dataclasses import dataclass
 from pricer.contracts.book import Refusal
 from pricer.engines.selector import COVERAGE, sampling_quantile
 from pricer.report.rates import Rates
-from pricer.report.sums import pooled_randomisations, quadrature, total
+from pricer.report.sums import pooled_degrees_of_freedom, quadrature, total
 from pricer.run.outcome import Outcome, Status, Valuation
 
 
@@ -65,6 +65,8 @@ _BY_REFUSAL: dict[str, Callable[[Refusal], str]] = {
     "netting_set": lambda r: "",
 }
 GROUPINGS = tuple(_BY_VALUATION)
+# Randomisations used up by the mean and by the coefficient of a control variate; one too many without a control.
+_FITTED = 2
 
 
 def priced(outcome: Outcome) -> list[Valuation]:
@@ -77,9 +79,10 @@ def book_total(outcome: Outcome) -> BookTotal:
     rates = Rates.from_outcome(outcome)
     whole = _total("book", outcome.facts.book_name, outcome.valuations, outcome.refusals, rates)
     valuations = priced(outcome)
-    errors = [v.reporting_standard_error for v in valuations]
-    pooled = pooled_randomisations(errors, [v.randomisations for v in valuations])
-    reach = sampling_quantile(pooled, 1.0 - COVERAGE) * whole.standard_error
+    degrees = pooled_degrees_of_freedom(
+        [v.reporting_standard_error for v in valuations], [v.randomisations - _FITTED for v in valuations]
+    )
+    reach = sampling_quantile(degrees, 1.0 - COVERAGE) * whole.standard_error if degrees else 0.0
     return BookTotal(
         total=whole,
         lower=whole.value - reach,

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from math import isfinite
 
 from pricer.report.rates import Rates
 from pricer.report.sums import quadrature, ratio, total
@@ -17,7 +18,8 @@ class UnderlyingTotal:
 
     ``delta`` in shares, ``lots`` in lots, ``cash_delta`` in the underlying's currency, ``gamma`` in shares per unit
     of currency of its price over the trades that have one, ``reporting_vega`` in reporting currency per volatility
-    point. Amounts that need facts the outcome does not have are NaN.
+    point. What cannot be formed from the trades' numbers or the outcome's facts is NaN: a delta that one trade lacks
+    makes the book's unknown, and the counts of such trades say why.
     """
 
     underlying: str
@@ -36,6 +38,8 @@ class UnderlyingTotal:
     trades_without_gamma: int
     reporting_vega: float
     reporting_vega_standard_error: float
+    trades_without_delta: int
+    trades_without_vega: int
 
 
 def underlying_totals(outcome: Outcome) -> list[UnderlyingTotal]:
@@ -59,7 +63,7 @@ def _underlying_total(
     name: str, facts: UnderlyingFacts | None, pairs: list[tuple[Valuation, Delta]], rates: Rates
 ) -> UnderlyingTotal:
     deltas = [d for _, d in pairs]
-    gammas = [d.gamma for d in deltas if d.gamma is not None]
+    gammas = [(d.gamma, d.gamma_standard_error or 0.0) for d in deltas if d.gamma is not None and isfinite(d.gamma)]
     spot = facts.spot if facts else deltas[0].spot
     to_reporting = facts.to_reporting if facts else math.nan
     lot_size = facts.lot_size if facts else math.nan
@@ -77,9 +81,11 @@ def _underlying_total(
         cash_delta=delta * spot,
         reporting_cash_delta=delta * spot * to_reporting,
         reporting_cash_delta_standard_error=error * spot * to_reporting,
-        gamma=total(gammas),
-        gamma_standard_error=quadrature(d.gamma_standard_error or 0.0 for d in deltas if d.gamma is not None),
+        gamma=total(gamma for gamma, _ in gammas),
+        gamma_standard_error=quadrature(error for _, error in gammas),
         trades_without_gamma=len(deltas) - len(gammas),
         reporting_vega=total(rates.reporting(d.vega, v.currency) for v, d in pairs),
         reporting_vega_standard_error=quadrature(rates.reporting(d.vega_standard_error, v.currency) for v, d in pairs),
+        trades_without_delta=sum(not isfinite(d.delta) for d in deltas),
+        trades_without_vega=sum(not isfinite(d.vega) for d in deltas),
     )

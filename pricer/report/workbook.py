@@ -65,20 +65,20 @@ def _tables(outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> list[Ta
         Table(
             "Deltas by trade",
             "Deltas by trade",
-            "One row a priced trade and underlying. Standard errors are one standard deviation.",
+            "One row a priced trade and underlying. A marked row lacks delta or vega.",
             columns.DELTAS,
             frames["deltas"],
-            [Mark.NONE] * len(frames["deltas"]),
+            _marks_of_gaps(frames["deltas"], "delta", "vega"),
             empty="No priced trade has sensitivities.",
             frozen=2,
         ),
         Table(
             "Deltas by underlying",
             "Deltas by underlying",
-            "Sums over the priced trades, largest cash delta first. Standard errors add in quadrature.",
+            "Sums over the priced trades, largest cash delta first; errors in quadrature. A marked row lacks a sum.",
             columns.UNDERLYING_DELTAS,
             frames["underlying_deltas"],
-            [Mark.NONE] * len(frames["underlying_deltas"]),
+            _marks_of_gaps(frames["underlying_deltas"], "reporting_cash_delta", "reporting_vega"),
             empty="No priced trade has sensitivities.",
             total=_underlying_total(frames["underlying_deltas"]),
         ),
@@ -105,6 +105,11 @@ def _tables(outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> list[Ta
 
 _STATUS_MARKS = {Status.NOT_PRICED: Mark.REFUSED, Status.PRECISION_NOT_REACHED: Mark.LOOK}
 _SEVERITY_MARKS = {Severity.FATAL: Mark.LOOK, Severity.ERROR: Mark.LOOK, Severity.WARNING: Mark.NONE}
+
+
+def _marks_of_gaps(frame: pandas.DataFrame, *needed: str) -> list[Mark]:
+    """A row that lacks one of the ``needed`` numbers is marked."""
+    return [Mark.LOOK if gap else Mark.NONE for gap in frame[list(needed)].isna().any(axis=1)]
 
 
 def _valuations_note(whole: Total) -> str:

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections import defaultdict
 from dataclasses import replace
+from functools import partial
 
 from pricer.contracts.book import Book, Refusal, Trade
 from pricer.core.issues import Issue, Severity
@@ -20,9 +20,8 @@ def admit(book: Book, market: Market) -> Book:
     kept: list[Trade] = []
     refused: list[Refusal] = []
     found: list[Issue] = []
-    places = _places_by_trade(book)
     for trade in book.trades:
-        issues = coverage(trade, market, places[trade.trade_id].get)
+        issues = coverage(trade, market, partial(_place, book, trade))
         found.extend(issues)
         errors = tuple(issue for issue in issues if issue.severity is not Severity.WARNING)
         if errors:
@@ -42,8 +41,5 @@ def refusal(trade: Trade, issues: tuple[Issue, ...]) -> Refusal:
     return Refusal(trade.trade_id, issues, trade.contract.product, trade.currency, trade.counterparty, trade.strategy)
 
 
-def _places_by_trade(book: Book) -> dict[str, dict[str, Place]]:
-    places: dict[str, dict[str, Place]] = defaultdict(dict)
-    for (trade_id, column), place in book.places.items():
-        places[trade_id][column] = place
-    return places
+def _place(book: Book, trade: Trade, column: str) -> Place | None:
+    return book.places.get((trade.trade_id, column))

@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 import re
 import zipfile
+from dataclasses import replace
 from datetime import datetime
 
 import openpyxl
@@ -368,3 +369,17 @@ def test_a_value_that_is_not_a_number_is_never_passed_over_in_silence(tmp_path):
     column = column_of(sheet, "value (trade currency)")
     assert [sheet.cell(HEADING + i, column).value for i in (1, 2)] == [None, "inf"]
     assert json.loads((tmp_path / "may" / "run.json").read_text())["total"]["value"] is None
+
+
+def test_an_underlying_whose_delta_is_unknown_is_marked_and_makes_the_total_unknown(tmp_path):
+    trade = valuation(1)
+    broken = replace(trade, deltas=(replace(trade.deltas[0], delta=float("nan")), *trade.deltas[1:]))
+    workbook = opened(outcome(0, refused=(), valuations=(broken,)), tmp_path / "may")
+    sheet = workbook["Deltas by underlying"]
+    last = sheet.max_row - 1
+    assert sheet.cell(last, 1).value == trade.deltas[0].underlying
+    assert sheet.cell(last, 1).fill.fill_type == "solid"
+    column = column_of(sheet, "cash delta (EUR)")
+    assert sheet.cell(last, column).value is None
+    assert sheet.cell(last + 1, column).value is None
+    assert workbook["Deltas by trade"].cell(HEADING + 1, 1).fill.fill_type == "solid"

@@ -14,7 +14,8 @@ from pricer.engines.closed_form.exchange import EXCHANGE
 from pricer.engines.closed_form.extremes import TWO_ASSET_EXTREMES
 from pricer.engines.closed_form.kirk import KIRK
 from pricer.engines.closed_form.lognormal_sum import LognormalSum
-from pricer.engines.closed_form.one_factor_sum import ONE_FACTOR_SUM
+from pricer.engines.closed_form.one_factor_sum import ONE_FACTOR_SUM, OneFactorSum
+from pricer.engines.closed_form.quadrature import integrate, normal_density
 from pricer.engines.closed_form.ranked_quadrature import RankedLevels
 from pricer.engines.closed_form.two_asset_sum import TWO_ASSET_SUM, TwoAssetSum
 from tests.unit.closed_form_cases import QuantLibMarket, equal_correlation, law, problem
@@ -91,7 +92,7 @@ def test_an_exchange_option_agrees_with_quantlib(rho):
 
 
 @pytest.mark.parametrize("strike", [80.0, 100.0])
-def test_a_spread_put_agrees_with_two_dimensional_finite_differences(strike):
+def test_a_put_on_the_worst_of_two_agrees_with_two_dimensional_finite_differences(strike):
     m = market(0.4)
     payoff = ql.MinBasketPayoff(ql.PlainVanillaPayoff(ql.Option.Put, strike))
     grid = ql.Fd2dBlackScholesVanillaEngine(*m.processes, 0.4, 150, 150, 40)
@@ -147,12 +148,9 @@ def test_perfectly_correlated_assets_agree_with_the_one_factor_formula(rho):
 
 
 def test_a_sum_on_one_factor_that_crosses_its_strike_three_times_is_exact():
-    # Rises, falls and rises again in the factor: amounts of signs -, +, -, + by exponent.
-    from pricer.engines.closed_form.one_factor_sum import OneFactorSum
-    from pricer.engines.closed_form.quadrature import integrate, normal_density
-
-    total = OneFactorSum(0.0, np.array([100.0, -260.0, 330.0]), np.array([1.6, 0.9, 0.35]))
-    strike = 140.0
+    # Rises, falls and rises again in the factor.
+    total = OneFactorSum(0.0, np.array([110.0, -252.0, 238.0]), np.array([1.97, 1.37, 0.64]))
+    strike = 102.0
     assert len(total.roots(strike)) == 3
 
     def density(w):

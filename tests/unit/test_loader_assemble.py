@@ -155,6 +155,11 @@ def test_a_constituent_without_an_id_costs_both_trades_it_may_belong_to(load, ta
     assert [refusal.trade_id for refusal in load(tables).refusals] == ["EX-1", "EX-2"]
 
 
+def test_an_unknown_id_amid_the_rows_of_one_trade_costs_that_trade(load, tables):
+    tables["constituents"][1]["trade_id"] = "EX-9"
+    assert [refusal.trade_id for refusal in load(tables).refusals] == ["EX-1"]
+
+
 def test_a_trade_next_door_with_another_number_is_not_suspected(load, tables):
     tables["trades"].pop(1)
     book = load(tables)

@@ -10,7 +10,7 @@ from hypothesis import strategies as st
 from scipy import stats
 
 from pricer.report.styles import decimals_for
-from pricer.report.sums import pooled_randomisations, quadrature, ratio, total
+from pricer.report.sums import pooled_degrees_of_freedom, quadrature, ratio, total
 
 AMOUNTS = st.lists(st.floats(-1e12, 1e12), min_size=1, max_size=40)
 
@@ -47,16 +47,16 @@ def test_pooled_degrees_of_freedom_agree_with_welchs_test(seed):
     one, two = draws.normal(size=16), 3.0 * draws.normal(size=7)
     errors = [float(stats.sem(one)), float(stats.sem(two))]
     freedom = stats.ttest_ind(one, two, equal_var=False).df
-    assert pooled_randomisations(errors, [16, 7]) == math.floor(freedom) + 1
+    assert pooled_degrees_of_freedom(errors, [15, 6]) == math.floor(freedom)
 
 
 def test_equal_trades_pool_all_their_degrees_of_freedom():
-    assert pooled_randomisations([0.1] * 30, [16] * 30) == 30 * 15 + 1
+    assert pooled_degrees_of_freedom([0.1] * 30, [15] * 30) == 30 * 15
 
 
-def test_one_sampled_trade_keeps_its_own_randomisations():
-    assert pooled_randomisations([0.0, 0.37], [16, 16]) == 16
-    assert pooled_randomisations([0.0], [16]) == 0
+def test_one_sampled_trade_keeps_its_own_degrees_of_freedom():
+    assert pooled_degrees_of_freedom([0.0, 0.37], [15, 14]) == 14
+    assert pooled_degrees_of_freedom([0.0], [15]) == 0
 
 
 @pytest.mark.parametrize(

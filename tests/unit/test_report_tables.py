@@ -11,7 +11,6 @@ from hypothesis import strategies as st
 
 from pricer.contracts.book import Refusal
 from pricer.core.issues import Severity
-from pricer.engines.selector import sampling_quantile
 from pricer.report import tables
 from pricer.report.rates import Rates
 from pricer.report.totals import GROUPINGS, book_total, group_totals
@@ -140,11 +139,28 @@ def test_the_book_total_adds_values_and_squares_of_errors():
     assert headline.upper - 13.0 == pytest.approx(13.0 - headline.lower)
 
 
-def test_the_interval_of_a_book_of_one_trade_is_the_trades_own():
+def test_the_interval_of_a_book_of_one_trade_is_students():
+    """16 randomisations less mean and control leave 14 degrees of freedom: 2.9768 (common table of Student's t)."""
     trade = valuation(1)
-    reach = sampling_quantile(trade.randomisations, 0.01) * trade.reporting_standard_error
     headline = book_total(empty(valuations=(trade,)))
-    assert headline.upper == pytest.approx(trade.reporting_value + reach, rel=1e-12)
+    reach = (headline.upper - trade.reporting_value) / trade.reporting_standard_error
+    assert reach == pytest.approx(2.9768, abs=5e-5)
+
+
+def test_a_book_without_sampling_has_an_interval_of_no_width():
+    headline = book_total(empty(valuations=(simple("A", 10.0, 0.0),)))
+    assert (headline.lower, headline.upper) == (10.0, 10.0)
+
+
+def test_a_delta_that_one_trade_lacks_is_not_passed_over_in_the_books():
+    facts = UnderlyingFacts("TARNWELL", "CHF", 50.0, 20.0, 1.1)
+    known = simple("A", 1.0, 0.1, deltas=(delta("TARNWELL", 300.0, 3.0, gamma=2.0),))
+    unknown = simple("B", 1.0, 0.1, deltas=(delta("TARNWELL", math.nan, math.nan, gamma=math.nan, vega=1.0),))
+    row = tables(empty(valuations=(known, unknown), underlyings=(facts,)))["underlying_deltas"].iloc[0]
+    assert row[["delta", "lots", "cash_delta", "reporting_cash_delta"]].isna().all()
+    assert (row["trades_without_delta"], row["trades_without_vega"], row["trades_without_gamma"]) == (1, 0, 1)
+    assert row["gamma"] == 2.0
+    assert row["reporting_vega"] == 1.0
 
 
 def test_the_interval_of_a_large_book_is_the_normal_one():

@@ -125,7 +125,11 @@ def _by_common_factor(h: NDArray[np.float64], loading: NDArray[np.float64]) -> E
         given = np.prod(ndtr(level - slope * z[:, None]), axis=1)
         return np.asarray(normal_density(z) * given)
 
-    found = integrate(density, np.linspace(start, end, 9), 1e-14)
+    # A loading near 1 makes a step, which needs edges of its own.
+    steep = np.abs(slope) > 20.0
+    middle, width = level[steep] / slope[steep], 8.0 / np.abs(slope[steep])
+    edges = np.concatenate((np.linspace(start, end, 9), middle - width, middle, middle + width))
+    found = integrate(density, np.unique(edges[(edges >= start) & (edges <= end)]), 1e-14)
     return Estimate(found.value, found.error + 1e-15)
 
 

@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side
 from pricer.engines.closed_form.lognormal import Numbers, black, exceedance
 from pricer.engines.closed_form.lognormal_sum import LognormalSum
+from pricer.engines.closed_form.one_factor_sum import OneFactorSum
 from pricer.engines.closed_form.quadrature import integrate, normal_density
 from pricer.engines.problem import EuropeanProblem, ReferenceKind
 
@@ -53,9 +54,23 @@ class TwoAssetSum:
             return normal_density(z) * formula(forward, left * np.sign(first), own, mirrored)
 
         # A lognormal payment moves the weight of the integrand by its own loading.
-        low, high = min(0.0, loading), max(deviation, loading)
-        found = integrate(density, np.linspace(low - _RANGE, high + _RANGE, 9), _RELATIVE_TOLERANCE * scale)
+        low, high = min(0.0, loading) - _RANGE, max(deviation, loading) + _RANGE
+        edges = np.concatenate((np.linspace(low, high, 9), self._kinks(strike, loading, deviation, own)))
+        edges = np.unique(edges[(edges >= low) & (edges <= high)])
+        found = integrate(density, edges, _RELATIVE_TOLERANCE * scale)
         return Estimate(max(found.value, 0.0), found.error + 1e-15 * scale)
+
+    def _kinks(self, strike: float, loading: float, deviation: float, own: float) -> NDArray[np.float64]:
+        """Where the conditional option is at the money, and the edges of the layer around it."""
+        second, excess = float(self.total.coefficients[1]), strike - self.total.shift
+        given = OneFactorSum(0.0, self.total.coefficients, np.array([loading, deviation]))
+        edges = []
+        for root in given.roots(excess):
+            moving = second * math.exp(deviation * root - 0.5 * deviation * deviation)
+            slope = abs(loading + deviation * moving / (excess - moving)) if excess != moving else 0.0
+            width = 8.0 * own / slope if slope > 0.0 else math.inf
+            edges += [root - width, root, root + width]
+        return np.array(edges)
 
 
 def _law(problem: EuropeanProblem) -> AggregateLaw | None:
