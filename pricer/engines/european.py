@@ -53,7 +53,8 @@ def appraise(
     """Sample the trade and evaluate every reference that applies to it.
 
     The precisions are targets for the standard errors of the value and of each cash delta
-    (delta times spot), in basis points of notional.
+    (delta times spot), in basis points of notional; for cash deltas, of their gross sum where
+    that is larger.
     """
     started = time.perf_counter()
     problem = problem_of(trade, market)
@@ -66,6 +67,7 @@ def appraise(
         seed=seed,
         value_tolerance=tolerance,
         delta_tolerance=delta_precision_bp * 1e-4 * unit_notional,
+        delta_fraction=delta_precision_bp * 1e-4,
         settings=settings,
     )
     known = references(problem)

@@ -35,7 +35,7 @@ class SamplingSettings:
 
     randomisations: int = 16
     initial_points: int = 1024  # per randomisation, a power of two
-    maximum_points: int = 2**17  # per randomisation, a power of two
+    maximum_points: int = 2**19  # per randomisation, a power of two
     ordering: Literal["automatic", "principal components", "cholesky"] = "automatic"
 
     def __post_init__(self) -> None:
@@ -84,11 +84,14 @@ def sample(
     seed: int,
     value_tolerance: float,
     delta_tolerance: float,
+    delta_fraction: float = 0.0,
     settings: SamplingSettings = _DEFAULT,
 ) -> Sample:
     """Sample until the standard errors of the value and of every log-delta are within tolerance.
 
-    Tolerances are per unit, discounted. Raises ValueError where log-levels are too wide for
+    Tolerances are per unit, discounted. For log-deltas the tolerance is ``delta_tolerance`` or
+    ``delta_fraction`` of their gross sum, whichever is larger: a digital near its strike moves
+    by many times the amount it pays. Raises ValueError where log-levels are too wide for
     single precision (a deviation above 13 over the whole time). Safe to call from several
     threads. Bits also depend on the processor, and for some 100 assets or more on the number
     of threads the linear algebra library may use: hold it to one.
@@ -111,7 +114,8 @@ def sample(
         found = estimates(design, sampler.extend(points) / points)
         error = df * found.value_error
         delta_error = 0.0 if no_deltas else df * float(np.max(found.log_delta_errors))
-        reached = error <= value_tolerance and delta_error <= delta_tolerance
+        delta_limit = max(delta_tolerance, delta_fraction * df * float(np.sum(np.abs(found.log_deltas))))
+        reached = error <= value_tolerance and delta_error <= delta_limit
         # without smoothing, paths that all miss the kinks look certain: only their number tells
         blind = unsmoothed and found.value_error <= 2.0 * found.rounding
         if (reached and not blind) or points >= settings.maximum_points:
@@ -119,7 +123,7 @@ def sample(
         points *= 2
 
     paths = settings.randomisations * points
-    notes = ["precision reached"] if reached else [_miss(error, value_tolerance, delta_error, delta_tolerance)]
+    notes = ["precision reached"] if reached else [_miss(error, value_tolerance, delta_error, delta_limit)]
     if reached and blind:
         notes.append(f"no path in {paths} came past a kink, whose chance is below 3 in {paths}")
     if no_deltas:

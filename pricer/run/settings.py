@@ -14,7 +14,8 @@ class Settings:
 
     ``seed`` : whole number >= 0; the same seed gives the same numbers to the last bit.
     ``precision_bp`` : target standard error of each value, in basis points of notional.
-    ``delta_precision_bp`` : the same for each cash delta (delta times spot).
+    ``delta_precision_bp`` : the same for each cash delta (delta times spot), of the trade's
+    notional or of its gross cash delta, whichever is larger.
     ``workers`` : threads that price trades side by side; no number depends on it.
     """
 

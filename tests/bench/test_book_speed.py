@@ -103,12 +103,16 @@ def test_a_thousand_trades_with_all_deltas_and_the_report(tmp_path):
     facts = json.loads((tmp_path / "out" / "run.json").read_text())
     valuations, deltas = (pd.read_csv(tmp_path / "out" / f"{name}.csv") for name in ("valuations", "deltas"))
     worst_value = (valuations["sampled_standard_error"] / valuations["notional"]).max() * 1e4
-    worst_delta = (deltas["standard_error"] * deltas["spot"]).max() / 1_000_000 * 1e4
+    errors = deltas["standard_error"] * deltas["spot"]
+    gross = (deltas["delta"] * deltas["spot"]).abs().groupby(deltas["trade_id"]).sum()
+    scale = gross.combine(valuations.set_index("trade_id")["notional"], max)
+    worst_delta = (errors / deltas["trade_id"].map(scale)).max() * 1e4
     print(
         f"\n{TRADES} trades, {len(deltas)} deltas: {seconds:.1f} s in all, pricing {facts['seconds']:.1f} s, "
         f"peak {peak:.2f} GiB; largest standard error of a value {worst_value:.2f} bp, "
-        f"of a cash delta {worst_delta:.2f} bp of notional"
+        f"of a cash delta {worst_delta:.2f} bp of notional or gross"
     )
     assert (valuations["status"] == "priced").all()
     assert worst_value <= 1.0
+    assert worst_delta <= 1.0 + 1e-9
     assert peak <= 2.0

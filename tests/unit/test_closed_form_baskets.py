@@ -11,6 +11,7 @@ import QuantLib as ql
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.profile import ProfileKind
 from pricer.engines.closed_form.basket_quadrature import BASKET_QUADRATURE, BasketQuadrature, split_along
+from pricer.engines.closed_form.forward import FORWARD
 from pricer.engines.closed_form.geometric_basket import GEOMETRIC_BASKET
 from pricer.engines.closed_form.lognormal_sum import LognormalSum
 from pricer.engines.closed_form.lower_bound import LOWER_BOUND
@@ -252,7 +253,7 @@ def test_a_basket_too_large_for_the_quadrature_still_has_its_forward_and_bounds(
     joint = law(np.full(40, 100.0), np.full(40, 0.3), equal_correlation(40, 0.4))
     aggregate = Aggregate.weighted_sum((1 / 40,) * 40)
     assert BASKET_QUADRATURE.reference(problem(joint, aggregate, ProfileKind.CALL, 100.0)) is None
-    forward = BASKET_QUADRATURE.reference(problem(joint, aggregate, ProfileKind.FORWARD, 90.0))
+    forward = FORWARD.reference(problem(joint, aggregate, ProfileKind.FORWARD, 90.0))
     assert forward.value == pytest.approx(10.0)
     call = problem(joint, aggregate, ProfileKind.CALL, 100.0)
     lower, upper = LOWER_BOUND.reference(call), UPPER_BOUND.reference(call)

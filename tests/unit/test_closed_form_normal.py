@@ -10,6 +10,7 @@ from scipy.stats import multivariate_normal
 from pricer.engines.closed_form import one_factor
 from pricer.engines.closed_form.multivariate_normal import cdf, within
 from pricer.engines.closed_form.normal_kernels import bivariate, multivariate
+from pricer.engines.closed_form.normal_lattice import by_lattice
 from pricer.engines.closed_form.quadrature import gauss_legendre, integrate, normal_density
 from tests.unit.closed_form_cases import equal_correlation, random_correlation
 
@@ -112,14 +113,12 @@ def test_infinite_limits_drop_out_or_decide():
 
 @pytest.mark.parametrize("n", [7, 9])
 def test_the_lattice_covers_the_one_factor_value_and_repeats_itself(n):
-    from pricer.engines.closed_form.multivariate_normal import _by_lattice
-
     rng = np.random.default_rng(n)
     loading = rng.uniform(0.3, 0.9, n)
     r = np.outer(loading, loading)
     np.fill_diagonal(r, 1.0)
     h = rng.normal(0.8, 0.5, n)
-    first, second = _by_lattice(h, r), _by_lattice(h, r)
+    first, second = by_lattice(h, r), by_lattice(h, r)
     assert first == second
     assert abs(first.value - cdf(h, r).value) <= first.error
     assert first.error < 5e-5

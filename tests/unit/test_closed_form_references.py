@@ -78,10 +78,10 @@ TWO_ASSET = "two-asset sum, one-dimensional quadrature"
         (problem(JOINT2, SPREAD, ProfileKind.CALL, 0.1, cap=0.2), [TWO_ASSET, *APPROXIMATIONS]),
         (problem(JOINT2, Aggregate.best_of(2), ProfileKind.PUT, 1.0), ["best or worst of two, bivariate normal"]),
         (problem(JOINT2, Aggregate.kth_best(2, 2), ProfileKind.PUT, 1.0), ["best or worst of two, bivariate normal"]),
-        (problem(JOINT2, Aggregate.rank_weighted((0.5, 0.5)), ProfileKind.FORWARD, 1.0), [TWO_ASSET]),
+        (problem(JOINT2, Aggregate.rank_weighted((0.5, 0.5)), ProfileKind.FORWARD, 1.0), ["forward"]),
         (problem(JOINT3, BASKET, ProfileKind.PUT, 1.0), [QUADRATURE, *BOUNDS, "two moments, lognormal"]),
         (problem(JOINT3, BASKET, ProfileKind.ASSET_DIGITAL_PUT, 1.0), [QUADRATURE, "two moments, lognormal"]),
-        (problem(JOINT3, BASKET, ProfileKind.FORWARD, 1.0), [QUADRATURE]),
+        (problem(JOINT3, BASKET, ProfileKind.FORWARD, 1.0), ["forward"]),
         (problem(JOINT3, Aggregate.worst_of(3), ProfileKind.CASH_DIGITAL_PUT, 1.0), [JOHNSON]),
         (
             problem(JOINT3, Aggregate.kth_best(2, 3), ProfileKind.CALL, 1.0),

@@ -14,6 +14,7 @@ from pricer.engines.closed_form.black_scholes import BLACK_SCHOLES
 from pricer.engines.closed_form.exchange import EXCHANGE
 from pricer.engines.closed_form.extremes import EXTREMES, TWO_ASSET_EXTREMES
 from pricer.engines.closed_form.family import Family
+from pricer.engines.closed_form.forward import FORWARD
 from pricer.engines.closed_form.geometric_basket import GEOMETRIC_BASKET
 from pricer.engines.closed_form.kirk import KIRK
 from pricer.engines.closed_form.known_level import KNOWN_LEVEL
@@ -33,6 +34,7 @@ __all__ = ["FAMILIES", "Family", "best_exact", "references"]
 FAMILIES: tuple[Family, ...] = (
     KNOWN_LEVEL,
     BLACK_SCHOLES,
+    FORWARD,
     GEOMETRIC_BASKET,
     EXCHANGE,
     TWO_ASSET_EXTREMES,

@@ -46,8 +46,6 @@ class BasketQuadrature:
     def _expectation(self, strike: float, side: Side, probability: bool, scale: float) -> Estimate | None:
         from pricer.engines.closed_form.sum_kernels import conditional  # compiled only when needed
 
-        if self.total.n_terms > _LARGEST:
-            return None
         split = split_along(self.total, strike)
         if split is None:
             return None
@@ -97,8 +95,8 @@ def split_along(total: LognormalSum, strike: float) -> tuple[NDArray[np.float64]
 
 
 def _law(problem: EuropeanProblem) -> AggregateLaw | None:
-    as_sum = LognormalSum.of(problem)
-    return BasketQuadrature(as_sum) if as_sum is not None and as_sum.n_terms >= 3 else None
+    as_sum = LognormalSum.of(problem) if problem.payoff.knots else None
+    return BasketQuadrature(as_sum) if as_sum is not None and 3 <= as_sum.n_terms <= _LARGEST else None
 
 
 BASKET_QUADRATURE = Family(

@@ -31,7 +31,7 @@ def directions(total: LognormalSum, strike: float) -> list[Direction]:
     """Directions of growing fitness for ``strike``; empty where the first-order sum has no variance.
 
     The first is that of the sum's first-order change at the forwards; each next one that of
-    the change at the boundary which the last one found (Carmona & Durrleman 2003).
+    the change at the boundary which the last one found (Carmona & Durrleman 2005).
     """
     root = total.root()
     found: list[Direction] = []

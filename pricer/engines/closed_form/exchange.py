@@ -44,7 +44,7 @@ class Exchange:
 
 
 def _law(problem: EuropeanProblem) -> AggregateLaw | None:
-    spread = Spread.of(problem)
+    spread = Spread.of(problem) if problem.payoff.knots else None
     return None if spread is None else Exchange(spread)
 
 

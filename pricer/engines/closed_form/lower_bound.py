@@ -40,6 +40,6 @@ def _law(problem: EuropeanProblem) -> AggregateLaw | None:
 LOWER_BOUND = Family(
     "conditional mean",
     ReferenceKind.LOWER_BOUND,
-    "Rogers & Shi (1995); Curran (1994); Carmona & Durrleman (2003)",
+    "Rogers & Shi (1995); Curran (1994); Carmona & Durrleman (2005)",
     _law,
 )

@@ -7,11 +7,11 @@ from itertools import product
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.special import ndtr, ndtri
+from scipy.special import ndtr
 
-from pricer.core.randomness import Purpose, stream
 from pricer.engines.closed_form import one_factor
 from pricer.engines.closed_form.family import Estimate
+from pricer.engines.closed_form.normal_lattice import by_lattice
 from pricer.engines.closed_form.quadrature import integrate, normal_density
 
 RECURSION_LIMIT = 6  # dimensions up to which the recursive quadrature is quick (milliseconds)
@@ -19,9 +19,6 @@ RECURSION_LIMIT = 6  # dimensions up to which the recursive quadrature is quick 
 _SAME = 4e-15  # correlations this near to +-1 are +-1 up to rounding
 _FAR = 38.0  # normal probabilities beyond are below the smallest double
 _RANGE = 9.0  # integrals over a common factor stop here: what lies beyond is below 1e-18
-_SHIFTS = 12
-_POINTS = 4096
-_SHIFT_QUANTILE = 4.0  # standard errors; 99.8 % two-sided for Student's law with 11 degrees
 
 
 def cdf(limits: NDArray[np.float64], correlation: NDArray[np.float64]) -> Estimate:
@@ -104,7 +101,7 @@ def _one_sided(h: NDArray[np.float64], r: NDArray[np.float64]) -> Estimate:
         # The kernel's estimate supposes smooth integrands; nearly singular ones have a kink.
         kinked = n > 2 and float(np.linalg.eigvalsh(r)[0]) < 1e-6
         return Estimate(float(value), (10.0 if kinked else 2.0) * float(error))
-    return _by_lattice(h, r)
+    return by_lattice(h, r)
 
 
 def _by_common_factor(h: NDArray[np.float64], loading: NDArray[np.float64]) -> Estimate:
@@ -131,64 +128,3 @@ def _by_common_factor(h: NDArray[np.float64], loading: NDArray[np.float64]) -> E
     edges = np.concatenate((np.linspace(start, end, 9), middle - width, middle, middle + width))
     found = integrate(density, np.unique(edges[(edges >= start) & (edges <= end)]), 1e-14)
     return Estimate(found.value, found.error + 1e-15)
-
-
-def _by_lattice(h: NDArray[np.float64], r: NDArray[np.float64]) -> Estimate:
-    """Separation of variables and randomly shifted lattice points (Genz 1992; Genz & Bretz 2002).
-
-    The shifts come from a stream of fixed key, so that a probability is always the same number.
-    """
-    factor, limits = _ordered_cholesky(h, r)
-    n = h.size
-    rng = stream(0, "multivariate normal cdf", Purpose.PRICE, 0)
-    shifts = rng.random((_SHIFTS, n - 1))
-    generator = np.sqrt(_primes(n - 1))  # Richtmyer's irrational lattice
-    steps = np.arange(1, _POINTS + 1)[:, None] * generator
-    u = np.abs(2.0 * ((steps + shifts[:, None, :]) % 1.0) - 1.0).reshape(-1, n - 1)
-    y = np.empty((u.shape[0], n))
-    probability = np.ones(u.shape[0])
-    for i in range(n):
-        distance = limits[i] - y[:, :i] @ factor[i, :i]
-        reached = ndtr(distance / factor[i, i]) if factor[i, i] > 0.0 else (distance >= 0.0).astype(float)
-        probability *= reached
-        if i < n - 1:
-            y[:, i] = ndtri(np.clip(u[:, i] * reached, 1e-300, 1.0 - 1e-16))
-    means = probability.reshape(_SHIFTS, _POINTS).mean(axis=1)
-    error = _SHIFT_QUANTILE * float(means.std(ddof=1)) / math.sqrt(_SHIFTS)
-    return Estimate(float(means.mean()), error + 1e-15)
-
-
-def _ordered_cholesky(
-    h: NDArray[np.float64], r: NDArray[np.float64]
-) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-    """Lower factor and limits with the most restrictive variables first (Gibson, Glasbey & Elston 1994)."""
-    n = h.size
-    r, h = r.copy(), h.copy()
-    factor = np.zeros((n, n))
-    expected = np.zeros(n)
-    for i in range(n):
-        spare = np.maximum(np.diag(r)[i:] - (factor[i:, :i] ** 2).sum(axis=1), 0.0)
-        shifted = h[i:] - factor[i:, :i] @ expected[:i]
-        safe = np.where(spare > 1e-13, np.sqrt(np.where(spare > 1e-13, spare, 1.0)), 1e-7)
-        best = i + int(np.argmin(shifted / safe))
-        order = np.arange(n)
-        order[[i, best]] = order[[best, i]]
-        r, h, factor = r[np.ix_(order, order)], h[order], factor[order]
-        pivot = spare[best - i]
-        if pivot > 1e-13:
-            factor[i, i] = math.sqrt(pivot)
-            factor[i + 1 :, i] = (r[i + 1 :, i] - factor[i + 1 :, :i] @ factor[i, :i]) / factor[i, i]
-            d = (h[i] - factor[i, :i] @ expected[:i]) / factor[i, i]
-            # Mean of a standard normal cut off at d, with its limit far in the tail.
-            expected[i] = d if d < -30.0 else -math.exp(-0.5 * d * d) / math.sqrt(2.0 * math.pi) / float(ndtr(d))
-    return factor, h
-
-
-def _primes(count: int) -> NDArray[np.float64]:
-    found: list[int] = []
-    candidate = 2
-    while len(found) < count:
-        if all(candidate % p for p in found):
-            found.append(candidate)
-        candidate += 1
-    return np.array(found, dtype=float)

@@ -134,7 +134,7 @@ def _between(lo: NDArray[np.float64], hi: NDArray[np.float64]) -> NDArray[np.flo
 
 
 def _law(problem: EuropeanProblem) -> AggregateLaw | None:
-    as_sum = LognormalSum.of(problem)
+    as_sum = LognormalSum.of(problem) if problem.payoff.knots else None
     if as_sum is None or as_sum.n_terms < 2:
         return None
     deviations = as_sum.deviations

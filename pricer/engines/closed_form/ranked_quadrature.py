@@ -166,6 +166,6 @@ def _law(problem: EuropeanProblem) -> AggregateLaw | None:
 RANKED_QUADRATURE = Family(
     "weights on sorted levels, quadrature over their gaps",
     ReferenceKind.EXACT,
-    "independent least-variance combination, as in Dunnett & Sobel (1955)",
+    "derived here: conditioning on the gaps between sorted levels",
     _law,
 )

@@ -74,7 +74,7 @@ class TwoAssetSum:
 
 
 def _law(problem: EuropeanProblem) -> AggregateLaw | None:
-    as_sum = LognormalSum.of(problem)
+    as_sum = LognormalSum.of(problem) if problem.payoff.knots else None
     return TwoAssetSum(as_sum) if as_sum is not None and as_sum.n_terms == 2 else None
 
 
