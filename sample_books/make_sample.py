@@ -91,9 +91,7 @@ def market_tables() -> dict[str, list[Row]]:
             for u, row in UNDERLYINGS.items()
             for day in VOLATILITY_DATES
         ],
-        "correlations": [
-            {"underlying": a, **{b: _correlation(a, b) for b in ids}} for a in ids
-        ],
+        "correlations": [{"underlying": a, **{b: _correlation(a, b) for b in ids}} for a in ids],
         "curves": [
             {"curve": name, "currency": ccy, "collateral": collateral, "day_count": count, "calendar": calendar}
             for name, (ccy, collateral, count, calendar, _, _) in CURVES.items()
@@ -162,7 +160,9 @@ def _fixed(underlying: str, percent_of_spot: float = 96.0) -> float:
     return round(UNDERLYINGS[underlying][1] * percent_of_spot / 100.0, 3)
 
 
-def _price(profile: str, quantity: float, legs: dict[str, float | None], strategy: str, **terms: Any) -> tuple[Row, Any]:
+def _price(
+    profile: str, quantity: float, legs: dict[str, float | None], strategy: str, **terms: Any
+) -> tuple[Row, Any]:
     row = {"underlying_level": "price", "profile": profile, "quantity": quantity, "strategy": strategy, **terms}
     row.setdefault("aggregate", "weighted sum")
     return row, [(u, w, None) for u, w in legs.items()]
@@ -301,7 +301,7 @@ def broken(book: dict[str, list[Row]]) -> dict[str, list[Row]]:
         {"notional": None},
         {"aggregate": "wieghted sum"},
         {"collateral": "JPY"},
-        {"counterparty": "=HYPERLINK(\"a\")", "strike": "#N/A"},
+        {"counterparty": '=HYPERLINK("a")', "strike": "#N/A"},
     ]
     for row, mistake in zip(trades, mistakes, strict=False):
         row.update(mistake)

@@ -53,7 +53,7 @@ def eod(
     from pricer.core.issues import InputError
     from pricer.report import default_folder, write_report
     from pricer.run.pricing import price
-    from pricer.run.settings import Settings
+    from pricer.run.settings import Settings, available_cores
 
     try:
         trades, snapshot = read_inputs(book, market, valuation_date)
@@ -61,7 +61,7 @@ def eod(
         console.show_problems(error.issues, every=every_problem)
         raise typer.Exit(2) from None
 
-    settings = Settings(seed=seed, precision_bp=precision, **({} if workers is None else {"workers": workers}))
+    settings = Settings(seed=seed, precision_bp=precision, workers=workers or available_cores())
     outcome = price(trades, snapshot, settings, console.progress(quiet=quiet))
     folder = out if out is not None else default_folder(outcome, Path("reports"))
     try:

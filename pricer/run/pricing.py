@@ -105,7 +105,10 @@ def _facts(
         settings=(
             ("model", "correlated lognormal, volatility flat in strike"),
             ("target standard error of a value (bp of notional)", f"{settings.precision_bp:g}"),
-            ("target standard error of a cash delta (bp of notional or of gross cash delta)", f"{settings.delta_precision_bp:g}"),
+            (
+                "target standard error of a cash delta (bp of notional or of gross cash delta)",
+                f"{settings.delta_precision_bp:g}",
+            ),
             ("independent randomisations", str(sampling.randomisations)),
             ("points a randomisation: first, at most", f"{sampling.initial_points}, {sampling.maximum_points}"),
             ("order of random factors", sampling.ordering),

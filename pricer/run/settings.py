@@ -8,6 +8,11 @@ from dataclasses import dataclass, field
 from pricer.engines.monte_carlo import SamplingSettings
 
 
+def available_cores() -> int:
+    """Cores this process may use, at least 1."""
+    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
+
+
 @dataclass(frozen=True, slots=True)
 class Settings:
     """Settings of a run.
@@ -22,7 +27,7 @@ class Settings:
     seed: int = 20_000
     precision_bp: float = 1.0
     delta_precision_bp: float = 1.0
-    workers: int = field(default_factory=lambda: os.cpu_count() or 1)
+    workers: int = field(default_factory=available_cores)
     sampling: SamplingSettings = field(default_factory=SamplingSettings)
 
     def __post_init__(self) -> None:

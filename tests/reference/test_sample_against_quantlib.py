@@ -7,10 +7,10 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from pricer.engines.monte_carlo import sample
 
 from pricer.engines.closed_form import best_exact, references
 from pricer.engines.european import problem_of
+from pricer.engines.monte_carlo import sample
 from pricer.loader import load_book, load_market
 from tests.reference.quantlib_engines import can_express, independent_value
 

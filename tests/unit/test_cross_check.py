@@ -4,9 +4,9 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from pricer.engines.monte_carlo import Sample
 
 from pricer.engines.cross_check import ALARMS, Verdict, compare
+from pricer.engines.monte_carlo import Sample
 from pricer.engines.problem import Reference, ReferenceKind
 from pricer.engines.selector import Interval, headline, sampling_quantile
 
