@@ -6,10 +6,10 @@ from dataclasses import replace
 
 import numpy as np
 from hypothesis import strategies as st
-from pricer.engines.monte_carlo import SamplingSettings, sample
 
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.profile import Profile, ProfileKind
+from pricer.engines.monte_carlo import SamplingSettings, sample
 from pricer.engines.problem import EuropeanProblem
 from pricer.market.joint_lognormal import JointLognormal
 
