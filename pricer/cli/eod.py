@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from pathlib import Path
 from typing import Annotated
 
@@ -47,6 +48,9 @@ def eod(
         raise typer.BadParameter(
             f"{out} exists; an earlier run is never overwritten. Name another folder.", param_hint="--out"
         )
+    target = out if out is not None else Path("reports") / "new"
+    if not os.access(next(parent for parent in target.absolute().parents if parent.exists()), os.W_OK):
+        raise typer.BadParameter(f"{target.parent} cannot be written. Name another folder.", param_hint="--out")
 
     from pricer.cli import console
     from pricer.cli.inputs import read_inputs

@@ -25,6 +25,7 @@ class Appraisal:
     sample: Sample
     references: tuple[Reference, ...]
     unit_notional: float
+    tolerance: float  # standard error asked of the value
     seconds: float
 
 
@@ -72,5 +73,11 @@ def appraise(
     )
     known = references(problem)
     return Appraisal(
-        trade, headline(drawn, known, tolerance), drawn, known, unit_notional, time.perf_counter() - started
+        trade=trade,
+        headline=headline(drawn, known, tolerance),
+        sample=drawn,
+        references=known,
+        unit_notional=unit_notional,
+        tolerance=tolerance,
+        seconds=time.perf_counter() - started,
     )

@@ -111,7 +111,7 @@ def sample(
     no_deltas = unsmoothed and not design.payoff.is_continuous
     points = settings.initial_points
     while True:
-        found = estimates(design, sampler.extend(points) / points)
+        found = estimates(design, sampler.extend(points) / points, points)
         error = df * found.value_error
         delta_error = 0.0 if no_deltas else df * float(np.max(found.log_delta_errors))
         delta_limit = max(delta_tolerance, delta_fraction * df * float(np.sum(np.abs(found.log_deltas))))
@@ -152,7 +152,7 @@ def _miss(error: float, tolerance: float, delta_error: float, delta_tolerance: f
 def _exact(problem: EuropeanProblem, design: Design) -> Sample:
     """One path, where the common factor is all there is to integrate or nothing moves at all."""
     means = np.tile(path_sums(design, np.zeros((0, 1))), (4, 1))
-    found = estimates(design, means)
+    found = estimates(design, means, 1)
     ending = "exact: nothing is left to sample"
     if design.common == 0.0 and _on_an_edge(design):
         found = _without(found, first_order=True)

@@ -17,7 +17,7 @@ class Status(StrEnum):
     """How the pricing of one trade ended."""
 
     PRICED = "priced"
-    PRECISION_NOT_REACHED = "precision not reached"  # priced, but less precisely than asked
+    PRECISION_NOT_REACHED = "precision not reached"  # priced, but the value's error is above what was asked
     NOT_PRICED = "not priced"
 
 
@@ -86,9 +86,10 @@ class Valuation:
     sampled_standard_error: float
     paths: int
     randomisations: int
+    degrees_of_freedom: int  # of the sampled standard error: take Student's t
     seconds: float
     status: Status
-    ending: str  # in words: how the work on this trade ended
+    ending: str  # in words: how sampling ended, that of the deltas included
     deltas: tuple[Delta, ...]
 
 

@@ -49,8 +49,9 @@ def valuation(appraisal: Appraisal, market: Market) -> Valuation:
         sampled_standard_error=size * drawn.standard_error,
         paths=drawn.paths,
         randomisations=drawn.randomisations,
+        degrees_of_freedom=drawn.degrees_of_freedom,
         seconds=appraisal.seconds,
-        status=Status.PRICED if drawn.reached else Status.PRECISION_NOT_REACHED,
+        status=Status.PRICED if lead.standard_error <= appraisal.tolerance else Status.PRECISION_NOT_REACHED,
         ending=drawn.ending,
         deltas=deltas(appraisal, market),
     )

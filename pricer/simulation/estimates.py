@@ -38,8 +38,8 @@ class Estimates(NamedTuple):
     degrees_of_freedom: int  # of the value's error
 
 
-def estimates(design: Design, means: Array) -> Estimates:
-    """From the means of each randomisation's sums, (randomisations, 3 + 5 n).
+def estimates(design: Design, means: Array, points: int) -> Estimates:
+    """From the means of each randomisation's sums over ``points``, (randomisations, 3 + 5 n).
 
     With z the normals and w the common factor, ``ln X_i = ln F_i - s_i^2 / 2 + y_i + c w``
     for an asset that the factor scales, and ``(y_i + c w) / s_i`` is the standard normal
@@ -47,6 +47,10 @@ def estimates(design: Design, means: Array) -> Estimates:
 
     Controls: the aggregate's own forward for the value, each asset's forward for its delta
     and vega; both are known exactly. Ranked aggregates have none.
+
+    Where the aggregate switches between legs, deltas and vegas jump. Evenly spread points can
+    fall on the same side of a switch in every randomisation, whose spread then says nothing:
+    errors are never below that of one point on the wrong side, uniform over a point's width.
     """
     value, scaled, outside = (means[:, [k]] for k in range(_HEAD))
     legs = means[:, _HEAD:].reshape(len(means), design.n_assets, _PER_LEG)
@@ -72,19 +76,27 @@ def estimates(design: Design, means: Array) -> Estimates:
     g, g_error = batch_estimate(gammas)
     w, w_error = batch_estimate(vegas, leg_controls)
     rounding = _ROUNDING * (abs(float(v)) + float(np.abs(d).sum()))
+    # a jump is at most about twice the mean: an option pays more where its legs switch than elsewhere
+    jump = 2.0 * float(np.abs(d).sum()) if _switches(design) else 0.0
+    one_point = jump / (points * np.sqrt(12.0 * len(means)))
     place = np.argsort(design.order)
     return Estimates(
         float(v),
         float(np.hypot(v_error, rounding)),
         d[place],
-        np.hypot(d_error, _ROUNDING * np.abs(d))[place],
+        np.hypot(d_error, _ROUNDING * np.abs(d) + one_point)[place],
         g[place],
         g_error[place],
         w[place],
-        w_error[place],
+        np.hypot(w_error, one_point)[place],
         rounding,
         len(means) - (1 if control is None else 2),
     )
+
+
+def _switches(design: Design) -> bool:
+    """Does a leg's share of the aggregate, or an unsmoothed payoff's slope, jump from path to path?"""
+    return bool(np.any(np.diff(design.rank_weights))) or (design.common == 0.0 and bool(design.payoff.knots))
 
 
 def _geometric_forward(design: Design) -> float:

@@ -36,7 +36,7 @@ def test_twenty_deltas_and_vegas_cost_less_than_a_third_more(aggregate):
             start = time.perf_counter()
             sampler.extend(POINTS)
             seconds[i] = min(seconds[i], time.perf_counter() - start)
-    found = estimates(design, samplers[1].sums / POINTS)
+    found = estimates(design, samplers[1].sums / POINTS, POINTS)
     price, both = (f"{t * 1e3:.2f} ms" for t in seconds)
     print(
         f"\n{aggregate.kind}: price alone {price}, with {N} deltas and {N} vegas {both}:"

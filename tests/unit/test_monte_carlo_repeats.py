@@ -138,4 +138,9 @@ def test_intervals_cover_the_truth_as_often_as_they_claim(case):
             abs(got.value - want) < limit * got.standard_error,
             abs(got.log_deltas[0] - first_delta) < limit * got.log_delta_errors[0],
         ]
-    assert hits / 300 == pytest.approx(0.95, abs=0.05)
+    covered = hits / 300
+    assert covered[0] == pytest.approx(0.95, abs=0.05)
+    if aggregate.is_ranked:  # its error is held above that of one point on the wrong side of the switch
+        assert covered[1] >= 0.95
+    else:
+        assert covered[1] == pytest.approx(0.95, abs=0.05)

@@ -6,14 +6,17 @@ import math
 from dataclasses import replace
 from datetime import date
 
+import numpy as np
 import pytest
 
+from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.book import Book, Premium
 from pricer.core.issues import Severity
 from pricer.core.progress import Silent
 from pricer.engines import european
 from pricer.engines.closed_form import best_exact, references
 from pricer.engines.european import problem_of
+from pricer.market.correlation import checked
 from pricer.run import pricing
 from pricer.run.local import map_groups
 from pricer.run.outcome import Interval, Status
@@ -136,11 +139,37 @@ def test_an_expiry_today_pays_on_todays_spot_and_says_so():
     assert [issue.code for issue in outcome.issues] == ["expires-today"]
 
 
+def ranked(*weights):
+    """A trade without any exact value: rank weights on as many underlyings as there are weights."""
+    trade = basket("ARVENNE", "BELCOR", "DORNACH", "ELSTRA")
+    return replace(trade, contract=replace(trade.contract, aggregate=Aggregate.rank_weighted(weights)))
+
+
+def wide_market():
+    market = small_market()
+    ids = ("ARVENNE", "BELCOR", "DORNACH", "ELSTRA")
+    more = {name: replace(market.underlyings["BELCOR"], underlying_id=name) for name in ids[2:]}
+    correlation = checked(
+        ids, np.array([[1, 0.5, 0.4, 0.1], [0.5, 1, 0.3, 0.6], [0.4, 0.3, 1, 0.2], [0.1, 0.6, 0.2, 1]])
+    )
+    return replace(market, underlyings={**market.underlyings, **more}, correlation=correlation[0])
+
+
 def test_less_precision_than_asked_is_said():
-    best = basket("ARVENNE", "BELCOR")
     tight = replace(Settings().sampling, maximum_points=1024)
-    (v,) = priced(best, precision_bp=1e-6, sampling=tight).valuations
+    trade, market = ranked(0.5, 0.3, 0.15, 0.05), wide_market()
+    (v,) = priced(trade, market=market, precision_bp=1e-4, sampling=tight).valuations
     assert v.status is Status.PRECISION_NOT_REACHED
+    assert v.ending.startswith("budget of points spent: standard error")
+    (v,) = priced(trade, market=market).valuations
+    assert (v.status, v.interval) == (Status.PRICED, Interval.SAMPLING)
+    assert v.standard_error <= 1e-4 * v.notional
+
+
+def test_an_exact_value_is_priced_whatever_sampling_reaches():
+    tight = replace(Settings().sampling, maximum_points=1024)
+    (v,) = priced(basket("ARVENNE", "BELCOR"), precision_bp=1e-4, sampling=tight).valuations
+    assert (v.status, v.interval) == (Status.PRICED, Interval.EXACT)
     assert v.ending.startswith("budget of points spent")
 
 

@@ -147,7 +147,7 @@ def test_rounding_to_single_precision_stays_within_the_error_it_is_granted(case)
     design = Design.of(LAW, *CASES[case], triangular=False)
     got = Sampler(design, words(design.dimensions, 4)).extend(4096) / 4096
     want = plain.sums(design, sobol.random_words(words(design.dimensions, 4), design.dimensions), 0, 4096) / 4096
-    single, double = estimates(design, got), estimates(design, want)
+    single, double = estimates(design, got, 4096), estimates(design, want, 4096)
     assert single.rounding < 1e-6 * abs(single.value) + 1e-5
     assert abs(np.mean(got[:, 0]) - np.mean(want[:, 0])) < 2.0 * single.rounding
     assert np.all(np.abs(single.log_deltas - double.log_deltas) < 5.0 * single.log_delta_errors)
