@@ -21,5 +21,5 @@ def check(book: BookPath, market: MarketPath, date: ValuationDate = None, every_
         raise typer.Exit(2) from None
     console.show_problems(admitted.issues, every=every_problem)
     ready, refused = len(admitted.trades), len(admitted.refusals)
-    console.say(f"{ready} trades can be priced, {refused} cannot.")
+    console.say(f"{ready} trade{'s' if ready != 1 else ''} can be priced, {refused} cannot.")
     raise typer.Exit(2 if not ready else 1 if refused else 0)

@@ -28,18 +28,19 @@ err = Console(stderr=True, highlight=False, soft_wrap=True)
 
 
 def show_problems(issues: Sequence[Issue], *, every: bool = False) -> None:
-    """Print problems on standard error, the gravest first, grouped by kind and counted."""
+    """Print problems on standard error, the gravest first, those of inputs before those of trades, by kind."""
     if not issues:
         return
     counts = Counter(issue.severity for issue in issues)
     err.print(
         f"{len(issues)} problem{'s' if len(issues) != 1 else ''}: " + _counted(counts), style="bold", markup=False
     )
-    groups: dict[tuple[Severity, str], list[Issue]] = defaultdict(list)
+    groups: dict[tuple[Severity, bool, str], list[Issue]] = defaultdict(list)
     for issue in issues:
-        groups[issue.severity, issue.code].append(issue)
-    for severity, code in sorted(groups, key=lambda key: (_ORDER.index(key[0]), key[1])):
-        members = groups[severity, code]
+        groups[issue.severity, issue.trade_id is not None, issue.code].append(issue)
+    # Faults of the inputs come before those of trades, which may follow from them; the sort keeps the rest in order.
+    for key in sorted(groups, key=lambda key: (_ORDER.index(key[0]), key[1])):
+        (severity, _, code), members = key, groups[key]
         err.print(f"\n{severity}: {code.replace('-', ' ')} ({len(members)})", style="bold", markup=False)
         shown = members if every else members[:SHOWN_OF_A_KIND]
         for issue in shown:
@@ -49,7 +50,11 @@ def show_problems(issues: Sequence[Issue], *, every: bool = False) -> None:
 
 
 def _counted(counts: Counter[Severity]) -> str:
-    return ", ".join(f"{counts[severity]} {severity}" for severity in _ORDER if counts[severity])
+    def words(severity: Severity) -> str:
+        plural = "s" if counts[severity] > 1 and severity is not Severity.FATAL else ""
+        return f"{counts[severity]} {severity}{plural}"
+
+    return ", ".join(words(severity) for severity in _ORDER if counts[severity])
 
 
 def progress(*, quiet: bool) -> Progress:
@@ -141,7 +146,7 @@ def show_outcome(outcome: Outcome) -> None:
     lines = [
         f"priced {len(outcome.valuations)}, not priced {len(outcome.refusals)}",
         f"less precise than asked: {imprecise}",
-        f"cross-checks: {len(outcome.cross_checks)}, of which to look at: {alarms}",
+        f"cross-checks: {len(outcome.cross_checks)}, of which disagree: {alarms}",
     ]
     for line in lines:
         out.print(line, markup=False)

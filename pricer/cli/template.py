@@ -18,7 +18,9 @@ def template(
     try:
         written = write_templates(folder)
     except OSError as error:
-        console.complain(f"{error.filename or folder}: {error.strerror or error}. Name a folder that can be written.")
+        # An error of the system has a reason and a file; the refusal to overwrite is a whole sentence.
+        reason = f"{error.filename or folder}: {error.strerror}. Name a folder that can be written."
+        console.complain(reason if error.strerror else str(error))
         raise typer.Exit(2) from None
     for path in written:
         console.say(f"wrote {path}")

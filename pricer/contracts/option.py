@@ -35,6 +35,10 @@ class EuropeanOption:
                 f"{n} underlyings, {len(self.reference_levels)} reference levels and "
                 f"{len(self.aggregate.weights)} weights must be equal in number"
             )
+        if not any(self.aggregate.weights):
+            raise ValueError("at least one weight must differ from 0: the option has no notional")
+        if self._is_cash_digital and not self.profile.cash_amount:
+            raise ValueError("a cash digital must pay an amount other than 0: the option has no notional")
 
     def payoff_on_core(self) -> PiecewiseLinear:
         """The payoff per unit as a function of the aggregate *without* its cash level.
@@ -62,7 +66,7 @@ class EuropeanOption:
         currency; a price option to its aggregate at ``spots`` (n_assets,), with the
         absolute values of the weights of a weighted sum.
         """
-        if self.profile.kind in (ProfileKind.CASH_DIGITAL_CALL, ProfileKind.CASH_DIGITAL_PUT):
+        if self._is_cash_digital:
             return abs(self.profile.cash_amount)
         if self.on_performance:
             return 1.0
@@ -71,6 +75,10 @@ class EuropeanOption:
             weights = tuple(abs(w) for w in weights)
         levels = np.asarray(spots, dtype=float)
         return float(Aggregate(self.aggregate.kind, weights)(levels))
+
+    @property
+    def _is_cash_digital(self) -> bool:
+        return self.profile.kind in (ProfileKind.CASH_DIGITAL_CALL, ProfileKind.CASH_DIGITAL_PUT)
 
     @property
     def product(self) -> str:

@@ -46,7 +46,8 @@ class Issue:
         parts = []
         if self.file is not None:
             parts.append(self.file)
-        if self.sheet is not None:
+        # A .csv file holds one table and is named after it.
+        if self.sheet is not None and not (self.file or "").lower().endswith(".csv"):
             parts.append(f"sheet {self.sheet}")
         if self.row is not None:
             parts.append(f"row {self.row}")

@@ -17,8 +17,8 @@ from pricer.engines.selector import sampling_quantile
 
 #: Probability that a book without any error shows even one false disagreement.
 FALSE_ALARM = 0.01
-#: Differences below this are never called a disagreement, in basis points of notional.
-IMMATERIAL_BP = 0.001
+#: Differences below this part of the standard error asked for are never called a disagreement.
+IMMATERIAL = 0.1
 #: Approximations are called close within this many basis points of notional.
 APPROXIMATION_BP = 10.0
 
@@ -53,8 +53,13 @@ def is_test(reference: Reference) -> bool:
     return reference.kind is not ReferenceKind.APPROXIMATION
 
 
-def compare(sample: Sample, reference: Reference, unit_notional: float, tests_in_book: int) -> Comparison:
-    """Compare, sharing the false-alarm probability among ``tests_in_book`` tests."""
+def compare(
+    sample: Sample, reference: Reference, *, unit_notional: float, asked: float, tests_in_book: int
+) -> Comparison:
+    """Compare one unit's values, sharing the false-alarm probability among ``tests_in_book`` tests.
+
+    ``asked`` is the standard error asked of the sampled value.
+    """
     difference = sample.value - reference.value
     scale = difference / sample.standard_error if sample.standard_error > 0.0 else None
     if not is_test(reference):
@@ -63,7 +68,7 @@ def compare(sample: Sample, reference: Reference, unit_notional: float, tests_in
         return Comparison(difference, scale, tolerance, verdict)
 
     quantile = sampling_quantile(sample.degrees_of_freedom, FALSE_ALARM / max(tests_in_book, 1))
-    tolerance = quantile * sample.standard_error + reference.error + IMMATERIAL_BP * 1e-4 * unit_notional
+    tolerance = quantile * sample.standard_error + reference.error + IMMATERIAL * asked
     match reference.kind:
         case ReferenceKind.LOWER_BOUND:
             verdict = Verdict.WITHIN_BOUND if difference >= -tolerance else Verdict.OUTSIDE_BOUND

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from enum import StrEnum
 
@@ -21,7 +22,7 @@ class Interval(StrEnum):
 
     EXACT = "exact"  # closed form or quadrature, with its numerical error
     BOUNDS = "bounds"  # lower and upper bounds computed without sampling
-    SAMPLING = "99 % sampling"  # two-sided 99 % interval from the standard error
+    SAMPLING = "99 % sampling"  # two-sided 99 % interval from the standard error, cut at a bound if one is nearer
 
 
 @dataclass(frozen=True, slots=True)
@@ -39,22 +40,26 @@ class Headline:
 def headline(sample: Sample, references: tuple[Reference, ...], tolerance: float) -> Headline:
     """The leading value of one unit.
 
-    An exact reference leads when its own numerical error is below ``tolerance`` (the
-    standard error asked of sampling). Otherwise the sampled value leads, and the interval
-    is the narrower of a pair of bounds and the sampling interval.
+    An exact reference leads when its own numerical error is within ``tolerance`` (the
+    standard error asked of sampling) and it lies within every bound. Otherwise the sampled
+    value leads, with the part of its sampling interval that lies within the bounds; where
+    they do not meet at all, the sampling interval stands and the cross-check says so.
     """
-    exact = best_exact(references)
-    if exact is not None and exact.error <= tolerance:
+    floor = max((r.value - r.error for r in references if r.kind is ReferenceKind.LOWER_BOUND), default=-math.inf)
+    ceiling = min((r.value + r.error for r in references if r.kind is ReferenceKind.UPPER_BOUND), default=math.inf)
+    exact = best_exact(r for r in references if r.error <= tolerance)
+    if exact is not None and floor <= exact.value + exact.error and exact.value - exact.error <= ceiling:
         low, high = exact.value - exact.error, exact.value + exact.error
         return Headline(exact.value, 0.0, low, high, Interval.EXACT, exact.method)
 
     reach = sampling_quantile(sample.degrees_of_freedom, 1.0 - COVERAGE) * sample.standard_error
-    low, high, interval = sample.value - reach, sample.value + reach, Interval.SAMPLING
-    lowers = [r.value - r.error for r in references if r.kind is ReferenceKind.LOWER_BOUND]
-    uppers = [r.value + r.error for r in references if r.kind is ReferenceKind.UPPER_BOUND]
-    if lowers and uppers and min(uppers) - max(lowers) < high - low:
-        low, high, interval = max(lowers), min(uppers), Interval.BOUNDS
-    return Headline(sample.value, sample.standard_error, low, high, interval, "randomised low-discrepancy sampling")
+    low, high = max(sample.value - reach, floor), min(sample.value + reach, ceiling)
+    if low > high:
+        low, high = sample.value - reach, sample.value + reach
+    value = min(max(sample.value, low), high)
+    bounded = (low, high) == (floor, ceiling)
+    interval = Interval.BOUNDS if bounded else Interval.SAMPLING
+    return Headline(value, sample.standard_error, low, high, interval, "randomised low-discrepancy sampling")
 
 
 def sampling_quantile(degrees_of_freedom: int, probability: float) -> float:

@@ -41,7 +41,10 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
 
 
 def write_templates(folder: str | Path) -> tuple[Path, ...]:
-    """Write ``book.xlsx`` and ``market.xlsx``, empty and annotated, into ``folder``; return their paths."""
+    """Write ``book.xlsx`` and ``market.xlsx``, empty and annotated, into ``folder``; return their paths.
+
+    Raises FileExistsError when one of them is there: a filled-in workbook is never overwritten.
+    """
     from pricer.loader.template import write_templates as write
 
     return write(folder)

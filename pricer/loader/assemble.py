@@ -76,10 +76,13 @@ def _book(sheets: Sheets) -> Book:
     for row in trades.rows:
         trade_id = _trade_id(row)
         own = legs.get(trade_id, [])
-        found = [*row.issues, *(issue for leg in own for issue in leg.issues), *strays.get(trade_id, ())]
+        found = [*row.issues]
+        if row.number == rows_of[trade_id][0]:
+            found += [*(issue for leg in own for issue in leg.issues), *strays.get(trade_id, ())]
         if len(rows_of[trade_id]) > 1:
+            # Whose the constituents are is not known, so they are not compared with the terms of either row.
             found.append(_duplicate(trades, row.number, trade_id, rows_of[trade_id]))
-        if row.get("trade_id") is not UNREAD:
+        elif row.get("trade_id") is not UNREAD:
             found += check_terms(trades, row, constituents, own)
         found = [issue.for_trade(trade_id) for issue in found]
         issues += found
@@ -113,7 +116,7 @@ def _tables(sheets: Sheets) -> tuple[_TradeTable, _LegTable, list[Issue]]:
     if trade_sheet is not None:
         trade_header, more = match_header(trade_sheet, trade_columns())
         issues += more
-        if trade_header is not None and len(trade_sheet.rows) == 1:
+        if trade_header is not None and not any(trade_header.holds_row(cells) for _, cells in trade_sheet.rows[1:]):
             issues.append(_empty(trade_sheet))
     if leg_sheet is not None:
         leg_header, more = match_header(leg_sheet, columns_of(ConstituentRow))

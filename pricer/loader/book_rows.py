@@ -15,7 +15,7 @@ from pricer.loader.columns import Column, TableRow, columns_of
 from pricer.loader.days import Day
 from pricer.loader.faults import Fault, blank_cell, number_in_words, unwanted
 from pricer.loader.names import CalendarName, Choice, Currency, FreeText, Identifier
-from pricer.loader.numbers import Number, NumberList, WholeNumber
+from pricer.loader.numbers import Number, NumberList, WholeNumber, as_percentage_points
 from pricer.loader.sheets import Cell
 from pricer.loader.text import quoted
 from pricer.market.calendars import CURRENCY_CALENDARS
@@ -26,6 +26,9 @@ EUROPEAN_OPTION = "european option"
 
 CASH_DIGITALS = (ProfileKind.CASH_DIGITAL_CALL, ProfileKind.CASH_DIGITAL_PUT)
 WEIGHTED = (AggregateKind.WEIGHTED_SUM, AggregateKind.GEOMETRIC)
+
+#: Payoffs of a performance option beyond these sizes are percentage points typed where a decimal belongs.
+HIGHEST_PAYOFFS = {"cash_amount": 3.0, "floor": 1.0, "cap": 10.0}
 
 _LEVEL_UNIT = "in currency for price options, as a decimal (1.00 = 100 %) for performance options"
 _PAYOFF_UNIT = "per unit of the option, in currency or as a decimal like the strike"
@@ -228,6 +231,14 @@ class EuropeanOptionRow(TradeRow):
         elif profile is not None:
             _only_for("cash digitals", profile in CASH_DIGITALS, amount, "profile")
         return amount
+
+    @field_validator("cash_amount", "floor", "cap")
+    @classmethod
+    def check_payoff_is_decimal(cls, payoff: float | None, info: ValidationInfo) -> float | None:
+        limit = HIGHEST_PAYOFFS[info.field_name or ""]
+        if payoff is not None and payoff > limit and info.data.get("underlying_level") == PERFORMANCE:
+            raise as_percentage_points(payoff, f"a decimal payoff (0.08 = 8 %) of at most {limit:g}")
+        return payoff
 
     @field_validator("cash_level")
     @classmethod

@@ -19,13 +19,16 @@ from pricer.loader.text import nearest, quoted
 
 _CORRELATION = Number(at_least=-1.0, at_most=1.0, percent=True, decimal_limit=2.0)
 _REMEDY = "Enter a correlation as a decimal, e.g. 0.45, or clear one cell of a mirrored pair."
-#: Mirrored entries may differ by rounding, and no more.
-ROUNDING = 1e-10
+#: Mirrored entries that differ by rounding are averaged, those that differ by a little more are told too.
+ROUNDING, SLIGHT = 1e-8, 1e-4
 
 
 @dataclass(frozen=True, slots=True)
 class CorrelationTable:
-    """The matrix (n, n) of the ids that could be read completely, and everything found on the way."""
+    """The matrix (n, n) of the ids that could be read completely, and everything found on the way.
+
+    ``refused`` says of the ids that were left out which issues cost them their correlations.
+    """
 
     ids: tuple[str, ...]
     matrix: NDArray[np.float64]
@@ -33,6 +36,7 @@ class CorrelationTable:
     sheet: Sheet
     rows: dict[str, int]
     columns: dict[str, int]
+    refused: dict[str, tuple[Issue, ...]]
 
     def place(self, first: str, second: str) -> Place | None:
         """The cell of a pair."""
@@ -60,7 +64,7 @@ class _Matrix:
         self._rows: dict[str, int] = {}  # id -> row number
         self._cells: dict[str, list[Cell]] = {}
         self._columns: dict[str, int] = {}  # id -> position, counted from 0
-        self._spoilt: list[tuple[str, str]] = []  # pairs without a usable number, the row's id first
+        self._spoilt: list[tuple[str, str, Issue]] = []  # pairs without a usable number, the row's id first
 
     def read(self, known: Collection[str]) -> CorrelationTable:
         self._read_names()
@@ -72,8 +76,18 @@ class _Matrix:
                 matrix[i, j] = matrix[j, i] = self._pair(a, b, values[a, b], values[b, a])
         kept = self._complete(ids)
         index = [ids.index(name) for name in kept]
+        refused: dict[str, tuple[Issue, ...]] = {}
+        for a, b, issue in self._spoilt:
+            for name in {a, b}.difference(kept):
+                refused[name] = (*refused.get(name, ()), issue)
         return CorrelationTable(
-            tuple(kept), matrix[np.ix_(index, index)], tuple(self._issues), self._sheet, self._rows, self._columns
+            ids=tuple(kept),
+            matrix=matrix[np.ix_(index, index)],
+            issues=tuple(self._issues),
+            sheet=self._sheet,
+            rows=self._rows,
+            columns=self._columns,
+            refused=refused,
         )
 
     def _read_names(self) -> None:
@@ -81,15 +95,13 @@ class _Matrix:
         for position, cell in enumerate(header[1:], start=1):
             name = self._name(header_row, position, cell)
             if name is not None and name in self._columns:
-                self._tell(header_row, position, _twice(name, "column"))
-                self._spoilt.append((name, name))
+                self._spoil(name, name, self._tell(header_row, position, _twice(name, "column")))
             elif name is not None:
                 self._columns[name] = position
         for row, cells in self._sheet.rows[1:]:
             name = self._name(row, 0, cells[0] if cells else None)
             if name is not None and name in self._rows:
-                self._tell(row, 0, _twice(name, "row"))
-                self._spoilt.append((name, name))
+                self._spoil(name, name, self._tell(row, 0, _twice(name, "row")))
             elif name is not None:
                 self._rows[name], self._cells[name] = row, cells
         for name in [
@@ -103,7 +115,7 @@ class _Matrix:
             found = f"the {there} {quoted(name)} without a {missing} of that name"
             expected = "the same underlyings in rows and columns"
             mend = f"{hint}Add the {missing}, or correct the name."
-            self._tell(row, position, Fault("not-square", found, expected, mend))
+            self._spoil(name, name, self._tell(row, position, Fault("not-square", found, expected, mend)))
 
     def _name(self, row: int, position: int, cell: Cell) -> str | None:
         if is_blank(cell):
@@ -142,8 +154,8 @@ class _Matrix:
                 raise Fault("out-of-range", number_in_words(number), "1 on the diagonal", "Enter 1, or clear the cell.")
         except Fault as fault:
             expected = fault.expected or _CORRELATION.words()
-            self._tell(self._rows[a], position, Fault(fault.code, fault.found, expected, fault.mend or _REMEDY))
-            self._spoilt.append((a, b))
+            told = Fault(fault.code, fault.found, expected, fault.mend or _REMEDY)
+            self._spoil(a, b, self._tell(self._rows[a], position, told))
             return float("nan")
         self._tell_notes(self._rows[a], position, reading)
         return number
@@ -151,41 +163,48 @@ class _Matrix:
     def _pair(self, a: str, b: str, one: float | None, other: float | None) -> float:
         """The correlation of a pair from its two cells."""
         given = [value for value in (one, other) if value is not None]
+        here = self._rows[a], self._columns[b]
         if not given:
             found, expected = "a blank cell, and so is its mirror image", "the correlation in at least one of the two"
-            self._spoil(a, b, Fault("blank-cell", found, expected, _REMEDY))
+            self._spoil(a, b, self._tell(*here, Fault("blank-cell", found, expected, _REMEDY)))
             return float("nan")
-        if abs(given[0] - given[-1]) > ROUNDING:
+        difference = abs(given[0] - given[-1])
+        if difference > ROUNDING:
             mirror = f"{letters(self._columns[a] + 1)}{self._rows[b]}"
             found = f"{number_in_words(given[0])}, but {number_in_words(given[1])} in cell {mirror}"
             expected = "the same correlation in both cells"
-            self._spoil(a, b, Fault("not-symmetric", found, expected, "Correct one of them, or clear it."))
-        return given[0]
+            mend = "Correct one of them, or clear it."
+            if difference > SLIGHT:
+                self._spoil(a, b, self._tell(*here, Fault("not-symmetric", found, expected, mend)))
+            else:
+                note = Fault("not-symmetric", found, expected, f"Their average is used. {mend}")
+                self._tell(*here, note, Severity.WARNING)
+        return 0.5 * (given[0] + given[-1])
 
     def _complete(self, ids: list[str]) -> list[str]:
         """The ids that are left when those with spoilt pairs are taken out, the most spoilt first."""
         kept = list(ids)
-        while spoilt := [pair for pair in self._spoilt if set(pair) <= set(kept)]:
+        while spoilt := [(a, b) for a, b, _ in self._spoilt if {a, b} <= set(kept)]:
             counts = Counter(name for pair in spoilt for name in set(pair))
             # Of equally spoilt ones, that of the row: a bad row costs its own underlying.
             kept.remove(max([*(row for row, _ in spoilt), *counts], key=counts.__getitem__))
         return kept
 
-    def _spoil(self, a: str, b: str, fault: Fault) -> None:
-        self._spoilt.append((a, b))
-        self._tell(self._rows[a], self._columns[b], fault)
+    def _spoil(self, a: str, b: str, issue: Issue) -> None:
+        self._spoilt.append((a, b, issue))
 
     def _tell_notes(self, row: int, position: int, reading: Reading) -> None:
         for _, note in reading.notes:
             self._tell(row, position, note, Severity.WARNING)
 
-    def _tell(self, row: int, position: int, fault: Fault, severity: Severity = Severity.ERROR) -> None:
+    def _tell(self, row: int, position: int, fault: Fault, severity: Severity = Severity.ERROR) -> Issue:
         column = (
             next((name for name, at in self._columns.items() if at == position), None) if position else "underlying"
         )
         where = (self._sheet.file, self._sheet.name, row, column or letters(position + 1))
         told = (fault.code, fault.found, fault.expected, fault.mend, severity)
         self._issues.append(Issue(*told, *where, f"{letters(position + 1)}{row}"))
+        return self._issues[-1]
 
 
 def _twice(name: str, what: str) -> Fault:

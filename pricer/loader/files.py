@@ -17,11 +17,15 @@ from pricer.loader.workbook import read_workbook
 #: Sheets of our own templates that hold no data.
 NOT_DATA = ("read me", "examples")
 
+#: What the template calls everybody's book: the folder it lies in says more.
+TEMPLATE_BOOK = "book"
+
 
 def read_sheets(path: str | Path, wanted: Sequence[str]) -> Sheets:
     """The ``wanted`` tables of the workbook or folder at ``path``.
 
-    Digest and cells come from the same bytes: each file is read once. Raises
+    They are named after the file or folder; one that is called ``book`` after the folder it
+    lies in. Digest and cells come from the same bytes: each file is read once. Raises
     :class:`InputError` when the input cannot be read.
     """
     path = Path(path)
@@ -33,7 +37,7 @@ def read_sheets(path: str | Path, wanted: Sequence[str]) -> Sheets:
         sheets, others = read_workbook(data, shown, wanted)
     except UnreadableError as error:
         raise InputError([_unreadable(error, shown)]) from error
-    return Sheets(path.stem, shown, _by_name(sheets), _unread(others), (SourceFile(shown, _sha256(data)),))
+    return Sheets(_name(path), shown, _by_name(sheets), _unread(others), (SourceFile(shown, _sha256(data)),))
 
 
 def _read_folder(folder: Path, shown: str, wanted: Sequence[str]) -> Sheets:
@@ -63,7 +67,13 @@ def _read_folder(folder: Path, shown: str, wanted: Sequence[str]) -> Sheets:
     if issues:
         raise InputError(issues)
     others = [entry.stem for entry in files if fold(entry.stem) not in asked]
-    return Sheets(shown, shown, _by_name(sheets), _unread(others), tuple(sources))
+    return Sheets(_name(folder), shown, _by_name(sheets), _unread(others), tuple(sources))
+
+
+def _name(path: Path) -> str:
+    whole = path.resolve()
+    own = whole.name if path.is_dir() else whole.stem
+    return (whole.parent.name if own.casefold() == TEMPLATE_BOOK else "") or own or str(path)
 
 
 def _bytes(path: Path, shown: str) -> bytes:

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from bisect import bisect_left
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from itertools import groupby
 
@@ -10,7 +11,7 @@ from pricer.core.issues import Issue, Severity
 from pricer.loader.columns import Column
 from pricer.loader.faults import in_words
 from pricer.loader.sheets import Cell, Merged, Sheet, Sheets, is_blank, letters
-from pricer.loader.text import clean, fold, nearest, quoted
+from pricer.loader.text import clean, fold, nearest, quoted, slip_of
 
 #: From this likeness on, an unknown column next to a missing optional one is taken for a slip of the finger.
 SURELY_MEANT = 0.85
@@ -23,6 +24,10 @@ class Header:
     row: int
     width: int
     positions: Mapping[str, int]
+
+    def holds_row(self, cells: Sequence[Cell]) -> bool:
+        """Whether a known column holds something: a note beside or below the table makes no row."""
+        return any(at < len(cells) and not is_blank(cells[at]) for at in self.positions.values())
 
 
 def find_sheet(sheets: Sheets, name: str, *, required: Severity | None) -> tuple[Sheet | None, list[Issue]]:
@@ -118,10 +123,11 @@ def _missing(
     for name, column in columns.items():
         if name in positions:
             continue
-        guess = nearest(name, unknown, likeness=0.6 if column.is_needed else SURELY_MEANT)
+        guess = nearest(name, unknown, likeness=0.6 if column.is_needed else SURELY_MEANT) or slip_of(name, unknown)
         if guess is not None:
             i = unknown.pop(guess)
-            found, mend = f"the column {quoted(guess)}", f'Did you mean "{name}"? Rename the column.'
+            rename = "Rename the column." if column.is_needed else "Rename the column, or delete it."
+            found, mend = f"the column {quoted(guess)}", f'Did you mean "{name}"? {rename}'
             issues.append(_issue(sheet, row, "misspelt-column", found, f"a column {name}", mend, guess, i))
         elif column.is_needed:
             mend = f"Add it: {column.meaning}, e.g. {column.example}."
@@ -167,22 +173,33 @@ def _odd_layout(sheet: Sheet, header: Header) -> list[Issue]:
     if columns:
         text = ", ".join(map(letters, columns))
         odd.append(("hidden-columns", f"hidden columns: {text}", "visible columns", "Read like any other."))
-    nameless = _nameless(sheet) if sheet.typed else []
-    if nameless:
-        text = f"values without a column name in column {', '.join(letters(i + 1) for i in nameless)}"
-        odd.append(("nameless-column", text, "a name in the header row", "Ignored. Name the column, or clear it."))
+    strays = _strays(sheet, header)
+    if strays:
+        more = f" and {len(strays) - 5} more" if len(strays) > 5 else ""
+        cells = f"cell{'s' if len(strays) > 1 else ''} {', '.join(strays[:5])}{more}"
+        text = f"values outside the named columns, in {cells}"
+        mend = "Ignored. Name their column, or clear them."
+        odd.append(("nameless-column", text, "values below a column name only", mend))
     return [
         Issue(code, found, expected, mend, Severity.WARNING, sheet.file, sheet.name)
         for code, found, expected, mend in odd
     ]
 
 
-def _nameless(sheet: Sheet) -> list[int]:
-    """Positions of columns that hold values but no name."""
+def _strays(sheet: Sheet, header: Header) -> list[str]:
+    """Cells that hold something outside the named columns.
+
+    In a .csv file they count up to the header's width only, where they stand beside a row: one that is
+    wider has gained a cell somewhere, which is a fault of its own.
+    """
     named = {i for i, cell in enumerate(sheet.rows[0][1]) if not is_blank(cell)}
-    width = max(len(cells) for _, cells in sheet.rows)
-    candidates = [i for i in range(width) if i not in named]
-    return [i for i in candidates if any(i < len(cells) and not is_blank(cells[i]) for _, cells in sheet.rows)]
+    outside = [i for i in range(max(len(cells) for _, cells in sheet.rows)) if i not in named]
+    found: list[str] = []
+    for number, cells in sheet.rows[1:] if outside else ():
+        end = len(cells) if sheet.typed or not header.holds_row(cells) else min(len(cells), header.width)
+        inside = outside[: bisect_left(outside, end)]
+        found += [f"{letters(i + 1)}{number}" for i in inside if not is_blank(cells[i])]
+    return found
 
 
 def _ranges(numbers: Iterable[int]) -> str:

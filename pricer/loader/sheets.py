@@ -73,7 +73,7 @@ class Sheets:
     name is the user's mistake. ``unread`` names the sheets that no one asked for.
     """
 
-    name: str  # of the workbook without its ending, or of the folder
+    name: str  # of the workbook without its ending, or of the folder; see files.read_sheets
     file: str  # as messages show it
     by_name: Mapping[str, Sequence[Sheet]]
     unread: tuple[str, ...]

@@ -69,6 +69,8 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
     if underlying_rows is None or curve_rows is None or point_rows is None or row is None or tables.are_fatal():
         raise InputError(findings.issues)
 
+    if dividends is None:
+        findings.add([_no_dividends(sheets)])
     today = row.valuation_date
     if valuation_date is not None and valuation_date != today and snapshot is not None:
         mend = f"Valued at {valuation_date} as asked; tenors count from there."
@@ -96,7 +98,8 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
         sources=sheets.sources,
         rejected=findings.rejected,
     )
-    place = _Places(curve_rows, dividends, fx_rows, matrix)
+    place = _Places(snapshot if today == row.valuation_date else None, underlying_rows, curve_rows, dividends, fx_rows,
+                    matrix)  # fmt: skip
     findings.add(quality.gates(market, repair, place))
     return replace(market, issues=tuple(findings.issues))
 
@@ -165,6 +168,10 @@ def _matrix(sheet: Sheet, underlyings: Table[UnderlyingRow], findings: Findings)
     known = [name for row in underlyings.rows if isinstance(name := row.get("underlying"), str)]
     matrix = read_correlations(sheet, known)
     findings.add(matrix.issues)
+    for name, issues in matrix.refused.items():
+        findings.charge(f"{CORRELATIONS}:{name}", issues)
+    if not matrix.ids:
+        findings.charge(CORRELATIONS, matrix.issues)
     return matrix
 
 
@@ -194,6 +201,19 @@ def _checked(
         return None, None
 
 
+def _no_dividends(sheets: Sheets) -> Issue:
+    """They may have been left out on purpose, or forgotten: forwards differ."""
+    return Issue(
+        "no-dividends",
+        "no table dividends",
+        "a table named dividends, which may be empty",
+        "No discrete dividends are known: forwards fall by dividend yields only. Add the table, empty if there are "
+        "none.",
+        Severity.WARNING,
+        sheets.file,
+    )
+
+
 def _nothing_left(sheets: Sheets, what: str) -> Issue:
     return Issue(
         f"no-{what}s",
@@ -210,23 +230,28 @@ class _Places:
 
     def __init__(
         self,
+        snapshot: Table[SnapshotRow] | None,
+        underlyings: Table[UnderlyingRow],
         curves: Table[CurveRow],
         dividends: Table[DividendRow] | None,
         fx: Table[FxRow] | None,
         matrix: CorrelationTable | None,
     ) -> None:
         self._matrix = matrix
-        tables: list[tuple[str, Table[Any] | None, str]] = [
-            ("curve", curves, "curve"),
-            ("dividends", dividends, "underlying"),
-            ("fx", fx, "pair"),
+        tables: list[tuple[str, Table[Any] | None, str, str]] = [  # the key, its id's column, the column shown
+            ("dividend_yield", underlyings, "underlying", "dividend_yield_decimal"),
+            ("curve", curves, "curve", "curve"),
+            ("dividends", dividends, "underlying", "underlying"),
+            ("fx", fx, "pair", "pair"),
         ]
         self._cells = {
-            f"{key}:{row.get(column)}": table.place(row.number, column)
-            for key, table, column in tables
+            f"{key}:{row.get(name)}": table.place(row.number, column)
+            for key, table, name, column in tables
             if table is not None
             for row in reversed(table.rows)
         }
+        if snapshot is not None:
+            self._cells["valuation_date"] = snapshot.place(snapshot.rows[0].number, "valuation_date")
 
     def __call__(self, key: str) -> Place | None:
         kind, _, rest = key.partition(":")

@@ -60,7 +60,7 @@ class Table(Generic[R]):
 
 
 def read_table(sheet: Sheet, header: Header, model: type[R] | Callable[[Cell], type[R]], *, by: str = "") -> Table[R]:
-    """Read every row below the header.
+    """Read every row below the header in which a known column holds something.
 
     ``model`` is the row model, or a function that chooses it from the cell in column ``by``.
     """
@@ -69,6 +69,8 @@ def read_table(sheet: Sheet, header: Header, model: type[R] | Callable[[Cell], t
     readers: dict[type[R], _RowReader[R]] = {}
     rows: list[Row[R]] = []
     for number, cells in sheet.rows[1:]:
+        if not header.holds_row(cells):
+            continue
         faults = [*merged.get(number, ()), *_width_faults(sheet, header, cells)]
         cells = cells + [None] * (header.width - len(cells))
         chosen: type[R] = model if isinstance(model, type) else model(None if choice is None else cells[choice])

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Mapping, Sequence
 from datetime import date
 from pathlib import Path
@@ -46,19 +47,25 @@ _RULES = (
 
 
 def write_templates(folder: str | Path) -> tuple[Path, ...]:
-    """Write ``book.xlsx`` and ``market.xlsx`` into ``folder``, which is made if needed; return their paths."""
+    """Write ``book.xlsx`` and ``market.xlsx`` into ``folder``, which is made if needed; return their paths.
+
+    Raises FileExistsError, and writes neither, when one of them is there: it may be filled in.
+    """
     folder = Path(folder)
+    parts = {
+        folder / "book.xlsx": ("A book of multi-asset options", BOOK, EXAMPLE_BOOK),
+        folder / "market.xlsx": ("A market snapshot", MARKET, EXAMPLE_MARKET),
+    }
+    for path in parts:
+        if os.path.lexists(path):
+            raise FileExistsError(
+                f"{path} exists and may be filled in, so no template is written over it. Name another folder, or move "
+                "the file away."
+            )
     folder.mkdir(parents=True, exist_ok=True)
-    parts = (
-        ("book", "A book of multi-asset options", BOOK, EXAMPLE_BOOK),
-        ("market", "A market snapshot", MARKET, EXAMPLE_MARKET),
-    )
-    paths = []
-    for name, title, tables, rows in parts:
-        path = folder / f"{name}.xlsx"
+    for path, (title, tables, rows) in parts.items():
         _template(title, tables, rows).save(path)
-        paths.append(path)
-    return tuple(paths)
+    return tuple(parts)
 
 
 def _template(title: str, tables: Mapping[str, TableSchema], rows: Tables) -> Workbook:

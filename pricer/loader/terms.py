@@ -16,8 +16,8 @@ from pricer.loader.table import UNREAD, Row, Table
 from pricer.loader.text import quoted
 
 #: A strike this many times the sum of the weights' sizes is no performance: 100 was typed for 100 %.
-HIGHEST_PERFORMANCE = 10.0
-#: Weights of a performance basket that miss 1 by more than this are reported.
+HIGHEST_PERFORMANCE = 4.0
+#: Weights of a performance or a geometric aggregate that miss 1 by more than this are reported.
 WEIGHT_ROUNDING = 1e-3
 
 _TradeRow = Row[EuropeanOptionRow]
@@ -46,7 +46,7 @@ def check_terms(
         ),
         *(trades.issue(row.number, column, fault) for column, fault in _rank_faults(row, len(legs))),
         *(trades.issue(row.number, column, fault) for column, fault in _weight_faults(row, legs)),
-        *(trades.issue(row.number, "trade_id", note, Severity.WARNING) for note in _weight_notes(row, legs)),
+        *(trades.issue(row.number, column, note, Severity.WARNING) for column, note in _weight_notes(row, legs)),
     ]
 
 
@@ -79,7 +79,8 @@ def _rank_faults(row: _TradeRow, n: int) -> Iterator[tuple[str, Fault]]:
         yield "rank", Fault("terms-do-not-fit", str(rank), f"a rank from 1 to {n}, the number of underlyings", mend)
     if isinstance(weights, tuple) and len(weights) != n:
         mend = "Give one weight per underlying, best first, or correct the table constituents."
-        yield "rank_weights", Fault("terms-do-not-fit", f"{len(weights)} weights", f"{n}, one per underlying", mend)
+        found = f"{len(weights)} weight{'s' if len(weights) != 1 else ''}"
+        yield "rank_weights", Fault("terms-do-not-fit", found, f"{n}, one per underlying", mend)
 
 
 def _weight_faults(row: _TradeRow, legs: Sequence[_Leg]) -> Iterator[tuple[str, Fault]]:
@@ -100,20 +101,22 @@ def _weight_faults(row: _TradeRow, legs: Sequence[_Leg]) -> Iterator[tuple[str, 
             yield column, Fault("out-of-range", number_in_words(amount), expected, "Correct the sign.")
         limit = HIGHEST_PERFORMANCE * sum(map(abs, weights))
         if row.get("underlying_level") == PERFORMANCE and abs(amount) > limit:
-            yield column, as_percentage_points(amount, f"a decimal performance (1.00 = 100 %) below {limit:g}")
+            yield column, as_percentage_points(amount, f"a decimal performance (1.00 = 100 %) of at most {limit:g}")
 
 
-def _weight_notes(row: _TradeRow, legs: Sequence[_Leg]) -> Iterator[Fault]:
-    """What is allowed, but rarely meant."""
-    weights = _weights(row, legs)
-    if weights is None or row.get("aggregate") not in WEIGHTED or row.get("underlying_level") != PERFORMANCE:
+def _weight_notes(row: _TradeRow, legs: Sequence[_Leg]) -> Iterator[tuple[str, Fault]]:
+    """What is allowed, but rarely meant, by the column to look at."""
+    weights, aggregate = _weights(row, legs), row.get("aggregate")
+    on_performance = row.get("underlying_level") == PERFORMANCE
+    # Prices are weighted by numbers of shares, except in a geometric mean.
+    if weights is None or not (on_performance or aggregate is AggregateKind.GEOMETRIC):
         return
     total = sum(weights)
-    if min(weights) > 0.0 and abs(total - 1.0) > WEIGHT_ROUNDING:
+    if min(weights) >= 0.0 and abs(total - 1.0) > WEIGHT_ROUNDING:
+        expected = f"{'performance' if on_performance else 'geometric'} weights that add up to 1"
         mend = "Used as given. Check the weights: 25 % is entered as 0.25."
-        yield Fault(
-            "weights-off-one", f"weights that add up to {total:g}", "performance weights that add up to 1", mend
-        )
+        column = "rank_weights" if aggregate is AggregateKind.RANK_WEIGHTED else "trade_id"
+        yield column, Fault("weights-off-one", f"weights that add up to {total:g}", expected, mend)
 
 
 def _weights(row: _TradeRow, legs: Sequence[_Leg]) -> tuple[float, ...] | None:

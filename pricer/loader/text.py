@@ -44,6 +44,33 @@ def nearest(name: str, names: Iterable[str], *, likeness: float = 0.6) -> str | 
     return by_folded[found[0]] if found else None
 
 
+def slip_of(name: str, names: Iterable[str]) -> str | None:
+    """The one of ``names`` that is ``name`` with one slip of the finger, or two from 6 letters on; None if none is.
+
+    Likeness is a poor measure of short names: "kap" shares only two letters of three with "cap".
+    """
+    folded = fold(name)
+    candidates = [(_slips(fold(candidate), folded), candidate) for candidate in names]
+    slips, candidate = min(candidates, default=(len(folded), ""))
+    return candidate if slips <= (1 if len(folded) < 6 else 2) else None
+
+
+def _slips(a: str, b: str) -> int:
+    """Letters inserted, left out, changed, or swapped with their neighbour between ``a`` and ``b``.
+
+    The restricted edit distance of Damerau (1964), row by row.
+    """
+    before, last = [0] * (len(b) + 1), list(range(len(b) + 1))
+    for i, x in enumerate(a):
+        row = [i + 1]
+        for j, y in enumerate(b):
+            row.append(min(last[j] + (x != y), last[j + 1] + 1, row[j] + 1))
+            if i and j and x == b[j - 1] and y == a[i - 1]:
+                row[-1] = min(row[-1], before[j - 1] + 1)
+        before, last = last, row
+    return last[-1]
+
+
 def quoted(text: str, *, limit: int = 60) -> str:
     """The text in quotation marks, shortened so that a message stays one line."""
     shown = clean(text)[0]

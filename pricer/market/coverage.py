@@ -9,20 +9,22 @@ from pricer.core.issues import Issue
 from pricer.market.date_coverage import date_coverage
 from pricer.market.findings import Locate, did_you_mean, error, words
 from pricer.market.market import CORRELATIONS, Market
+from pricer.market.size_coverage import size_coverage
 
 
 def coverage(trade: Trade, market: Market, place: Locate) -> tuple[Issue, ...]:
     """Everything that keeps ``trade`` from being priced on ``market`` (errors), or qualifies its price (warnings).
 
     ``place`` gives the cell from which a column of the trade was read ("trade_id", "currency",
-    "collateral", "expiry_date", "payment_date", "premium_date", and "underlying:ID" for a
-    constituent), or None. Every issue carries the trade's id.
+    "collateral", "strike", "expiry_date", "payment_date", "trade_date", "premium_date", and
+    "underlying:ID" and "initial_fixing:ID" for a constituent), or None. Every issue carries the trade's id.
     """
     issues = [
         *_currencies(trade, market, place),
         *_underlyings(trade, market, place),
         *_correlations(trade, market, place),
         *date_coverage(trade, market, place),
+        *size_coverage(trade, market, place),
     ]
     return tuple(issue.for_trade(trade.trade_id) for issue in issues)
 
@@ -36,8 +38,9 @@ def _currencies(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
             "unknown-currency",
             f'currency "{currency}"',
             f"a currency of the market: {words(known, 'or')}",
-            f"{did_you_mean(currency, known)}Correct the currency, or add its curve to the curves table and its rate "
-            "to the fx table of the market.",
+            _refused_pair(market, currency, other=False)
+            or f"{did_you_mean(currency, known)}Correct the currency, or add its curve to the curves table and its "
+            "rate to the fx table of the market.",
         )
         return  # what else is missing follows from this
     if not _converts(market, currency):
@@ -46,7 +49,8 @@ def _currencies(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
             "no-fx-route",
             f"currency {currency}, which no quoted pairs link to the reporting currency {reporting}",
             f"a chain of exchange rates from {currency} to {reporting}",
-            f"Add the pair {reporting}{currency} or {currency}{reporting} to the fx table of the market.",
+            _refused_pair(market, currency, other=True)
+            or f"Add the pair {reporting}{currency} or {currency}{reporting} to the fx table of the market.",
         )
     if (currency, "") not in market.curves:
         yield error(
@@ -137,7 +141,8 @@ def _correlations(trade: Trade, market: Market, place: Locate) -> Iterator[Issue
                 "missing-correlation",
                 f'no correlation of underlying "{name}" with {words(others)}',
                 "a correlation for every pair of the trade's underlyings",
-                f'Add a row and a column "{name}" to the correlations table of the market.',
+                _why(market.rejected.get(f"{CORRELATIONS}:{name}", ()))
+                or f'Add a row and a column "{name}" to the correlations table of the market.',
             )
 
 
@@ -169,3 +174,15 @@ def _refused_curve(market: Market) -> str:
         if any((issue.sheet or "").casefold().startswith("curve") for issue in issues):
             return f'Curve "{name}" could not be used. {_why(issues)}'
     return ""
+
+
+def _refused_pair(market: Market, currency: str, *, other: bool) -> str:
+    """The reason of an exchange rate that was given but refused: one of the currency, else any ``other``."""
+    refused = {
+        name: issues
+        for name, issues in market.rejected.items()
+        if any((issue.sheet or "").casefold() == "fx" for issue in issues)
+    }
+    own = [name for name in refused if currency in (name[:3], name[3:])]
+    chosen = own or (list(refused) if other else [])
+    return _why(refused[chosen[0]]) if chosen else ""

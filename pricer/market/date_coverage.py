@@ -63,6 +63,22 @@ def _order(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
             "an expiry after the valuation date",
             "The option is valued at the market's spots; compare them with the official fixings.",
         )
+    if trade.trade_date is not None and trade.trade_date > market.valuation_date:
+        yield warning(
+            place("trade_date"),
+            "traded-later",
+            f"trade date {trade.trade_date}, after the valuation date {market.valuation_date}",
+            "a trade date on or before the valuation date",
+            "The trade is valued all the same; correct the date, or take the trade out until it is done.",
+        )
+    if trade.premium is not None and trade.premium.payment_date > payment:
+        yield warning(
+            place("premium_date"),
+            "premium-after-payment",
+            f"premium date {trade.premium.payment_date}, after the payment date {payment}",
+            "a premium paid before the payoff, or with it",
+            "The premium is discounted from its date as given; correct the date if it is wrong.",
+        )
     if payment < expiry:
         yield error(
             place("payment_date") or place("expiry_date"),

@@ -32,8 +32,10 @@ class Market:
 
     ``curves`` is keyed by (currency, collateral), with collateral "" for the currency's
     standard curve. ``rejected`` says of underlyings and curves (by their ids) and of the
-    correlation matrix (as ``CORRELATIONS``) that were given but cannot be used, why;
-    an underlying that lost only its volatility may stand in both ``underlyings`` and ``rejected``.
+    correlation matrix (as ``CORRELATIONS``) that were given but cannot be used, why, of
+    exchange rates by their pairs, and of an underlying left out of the matrix as
+    ``CORRELATIONS:ID``. An underlying that lost only its volatility may stand in both
+    ``underlyings`` and ``rejected``.
     """
 
     name: str

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from datetime import timedelta
+from datetime import date, timedelta
 from itertools import combinations, pairwise
 
 from pricer.core.issues import Issue
@@ -16,6 +16,8 @@ from pricer.market.underlying import Underlying
 
 #: Zero rates outside this range are reported.
 PLAUSIBLE_ZERO_RATES = (-0.05, 0.30)
+#: Continuous dividend yields, which may hold a repo margin, outside this range are reported.
+PLAUSIBLE_YIELDS = (-0.05, 0.25)
 #: Proportional dividends of one underlying that add up to more than this within a year are reported.
 PLAUSIBLE_DIVIDENDS = 0.50
 #: A quoted exchange rate that differs by more than this from its cross is reported.
@@ -25,16 +27,30 @@ TRIANGLE_TOLERANCE = 0.01
 def gates(market: Market, repair: Repair | None = None, place: Locate = nowhere) -> tuple[Issue, ...]:
     """Warnings about ``market``, and about the ``repair`` its correlation matrix took.
 
-    ``place`` gives the cell of "curve:ID", "dividends:UNDERLYING", "fx:EURUSD" or
-    "correlation:A:B", or None.
+    ``place`` gives the cell of "valuation_date", "curve:ID", "dividend_yield:UNDERLYING",
+    "dividends:UNDERLYING", "fx:EURUSD" or "correlation:A:B", or None.
     """
-    issues: list[Issue] = [] if repair is None else [_repair(repair, place)]
+    issues: list[Issue] = [*_weekend(market.valuation_date, place)]
+    if repair is not None:
+        issues.append(_repair(repair, place))
     for curve in market.curves.values():
         issues.extend(_curve(curve, place))
     for underlying in market.underlyings.values():
+        issues.extend(_dividend_yield(underlying, place))
         issues.extend(_dividends(underlying, place))
     issues.extend(_triangles(market.fx, place))
     return tuple(issues)
+
+
+def _weekend(day: date, place: Locate) -> Iterator[Issue]:
+    if day.weekday() >= 5:
+        yield warning(
+            place("valuation_date"),
+            "weekend-valuation",
+            f"the valuation date {day}, a {'Saturday' if day.weekday() == 5 else 'Sunday'}",
+            "a day on which markets close",
+            "Check the date; the book is valued to it as given.",
+        )
 
 
 def _repair(repair: Repair, place: Locate) -> Issue:
@@ -78,6 +94,18 @@ def _curve(curve: DiscountCurve, place: Locate) -> Iterator[Issue]:
             f"a forward rate of {percent(rate, 2)}{others}",
             "discount factors that fall with time, unless rates are negative",
             "Check the curve's points around these dates; they are used as given.",
+        )
+
+
+def _dividend_yield(underlying: Underlying, place: Locate) -> Iterator[Issue]:
+    (low, high), rate = PLAUSIBLE_YIELDS, underlying.dividends.yield_rate
+    if not low <= rate <= high:
+        yield warning(
+            place(f"dividend_yield:{underlying.underlying_id}"),
+            "implausible-dividend-yield",
+            f"a dividend yield of {percent(rate, 1)} for {underlying.underlying_id}",
+            f"dividend yields between {percent(low)} and {percent(high)}",
+            "Check the unit: 2.1 % is entered as 0.021. The yield is used as given.",
         )
 
 

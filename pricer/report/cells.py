@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, cast
 
 from pricer.report.columns import Kind
 from pricer.report.styles import Mark, body_style
-from pricer.report.text import clean
+from pricer.report.text import clean, looks_like_formula
 
 if TYPE_CHECKING:
     from openpyxl import Workbook
@@ -16,12 +16,14 @@ if TYPE_CHECKING:
 
 
 def put_text(sheet: Worksheet, row: int, column: int, text: str, style: str = "label") -> Cell:
-    """A text cell: never a formula, whatever it begins with. An empty text leaves a styled blank."""
+    """A text cell: never a formula, whatever it begins with, nor made one by editing. An empty text leaves a blank."""
     cell = cast("Cell", sheet.cell(row, column))
     if text:
         cell.value = clean(text)
         cell.data_type = "s"
     cell.style = style
+    if looks_like_formula(text):
+        cell.quotePrefix = True
     return cell
 
 

@@ -15,7 +15,10 @@ _SCALES = ((1e8, "million ", "#,##0,,"), (1e5, "thousand ", "#,##0,"), (10.0, ""
 
 
 def bar_chart(title: str, unit: str, names: Reference, values: Reference, largest: float) -> BarChart:
-    """Horizontal bars, the first on top; negative ones run to the left in the same colour."""
+    """Horizontal bars, the first on top; negative ones run to the left in the same colour.
+
+    Title and scale count in the same unit: thousands or millions of ``unit`` where ``largest`` asks for it.
+    """
     from openpyxl.chart import BarChart, Series
     from openpyxl.chart.data_source import AxDataSource, StrRef
 
@@ -23,13 +26,14 @@ def bar_chart(title: str, unit: str, names: Reference, values: Reference, larges
     chart = BarChart()
     chart.type = "bar"
     chart.gapWidth = 40
+    unit = count + unit
     series = Series(values, title=title)
     series.graphicalProperties.solidFill = BLUE
     series.graphicalProperties.line.solidFill = INK
     series.invertIfNegative = False
     chart.series.append(series)
     series.cat = AxDataSource(strRef=StrRef(f=str(names)))
-    _dress(chart, title, x_title="", y_title=f"{count}{unit}")
+    _dress(chart, f"{title} ({unit})", x_title="", y_title=unit)
     chart.legend = None
     chart.x_axis.scaling.orientation = "maxMin"  # the first row of the table on top
     chart.x_axis.tickLblPos = "low"  # names stay left of negative bars

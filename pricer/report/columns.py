@@ -20,11 +20,12 @@ class Kind(Enum):
     COUNT = "count"
     AMOUNT = "amount"  # as many decimals as the column's size asks for
     FIXED = "fixed"  # two decimals
+    PRICE = "price"  # two decimals, more where the price has them
 
     @property
     def numeric(self) -> bool:
         """Whether cells are numbers, set to the right."""
-        return self in (Kind.COUNT, Kind.AMOUNT, Kind.FIXED)
+        return self in (Kind.COUNT, Kind.AMOUNT, Kind.FIXED, Kind.PRICE)
 
 
 @dataclass(frozen=True, slots=True)
@@ -80,7 +81,13 @@ VALUATIONS: tuple[Column, ...] = (
     ),
     Column("reporting_value", "value ({reporting})", Kind.AMOUNT, "The value in the reporting currency."),
     Column("status", "status", Kind.STATUS, "How the pricing of the trade ended, in one word.", widest=22),
-    _text("method", "method", "How the value was obtained.", 52),
+    _text(
+        "method",
+        "method, or why not priced",
+        "How the value was obtained. For a trade without a value the first reason in short; the plain file leaves it "
+        "blank and has every reason under ending.",
+        72,
+    ),
     _text("interval", "kind of interval", "What the lower and upper ends mean; see below.", 16, printed=False),
     Column(
         "reporting_standard_error",
@@ -123,6 +130,13 @@ VALUATIONS: tuple[Column, ...] = (
         "Independent scramblings of the points, from whose spread the standard error comes.",
         printed=False,
     ),
+    Column(
+        "degrees_of_freedom",
+        "degrees of freedom (number)",
+        Kind.COUNT,
+        "Of the sampled standard error: those of Student's quantile in a sampling interval.",
+        printed=False,
+    ),
     Column("seconds", "time (seconds)", Kind.FIXED, "Time spent on the trade.", printed=False),
     _text("ending", "how the work ended", "In words; for a trade without a value, every reason.", 60, printed=False),
 )
@@ -136,7 +150,7 @@ DELTAS: tuple[Column, ...] = (
     ),
     Column("lots", "delta (lots)", Kind.FIXED, "Delta divided by the underlying's lot size."),
     _text("underlying_currency", "underlying's currency", "The currency of the underlying's price.", 12),
-    Column("spot", "spot (underlying's currency)", Kind.AMOUNT, "The price used."),
+    Column("spot", "spot (underlying's currency)", Kind.PRICE, "The price used."),
     Column("cash_delta", "cash delta (underlying's currency)", Kind.AMOUNT, "Delta times spot."),
     Column(
         "cash_delta_standard_error",
@@ -162,17 +176,17 @@ DELTAS: tuple[Column, ...] = (
     ),
     _text("vega_currency", "trade currency", "The currency of vega.", 9),
     Column(
-        "vega",
+        "vega_per_vol_point",
         "vega (trade currency per vol point)",
         Kind.AMOUNT,
         "Change of the position's value when the underlying's volatility rises by one point, say from 20 % to 21 %.",
     ),
     Column(
-        "vega_standard_error",
+        "vega_per_vol_point_standard_error",
         "standard error of vega (trade currency per vol point)",
         Kind.AMOUNT,
         "Sampling error of the vega.",
-        like="vega",
+        like="vega_per_vol_point",
     ),
     _text("method", "method", "How the sensitivities were obtained.", 44, printed=False),
 )
@@ -180,7 +194,7 @@ DELTAS: tuple[Column, ...] = (
 UNDERLYING_DELTAS: tuple[Column, ...] = (
     _text("underlying", "underlying", "The underlying's id in the market snapshot.", 18),
     _text("currency", "underlying's currency", "The currency of the underlying's price.", 12),
-    Column("spot", "spot (underlying's currency)", Kind.AMOUNT, "The price used."),
+    Column("spot", "spot (underlying's currency)", Kind.PRICE, "The price used."),
     Column("trades", "trades (number)", Kind.COUNT, "Priced trades that depend on the underlying."),
     Column("delta", "delta (shares)", Kind.AMOUNT, "Sum of the trades' deltas."),
     Column(
@@ -212,17 +226,17 @@ UNDERLYING_DELTAS: tuple[Column, ...] = (
     ),
     Column("trades_without_gamma", "trades without gamma (number)", Kind.COUNT, "Trades that the gamma leaves out."),
     Column(
-        "reporting_vega",
+        "reporting_vega_per_vol_point",
         "vega ({reporting} per vol point)",
         Kind.AMOUNT,
         "Sum of the trades' vegas, converted from the trades' currencies.",
     ),
     Column(
-        "reporting_vega_standard_error",
+        "reporting_vega_per_vol_point_standard_error",
         "standard error of vega ({reporting} per vol point)",
         Kind.AMOUNT,
         "Errors added in quadrature.",
-        like="reporting_vega",
+        like="reporting_vega_per_vol_point",
     ),
     Column(
         "trades_without_delta",
@@ -247,7 +261,10 @@ CROSS_CHECK: tuple[Column, ...] = (
     _text("reference_kind", "kind of reference", "Whether it is exact, a bound or an approximation.", 14),
     _text("currency", "trade currency", "The currency of the amounts.", 9),
     Column(
-        "engine_value", "engine (trade currency)", Kind.AMOUNT, "The sampled value of the position, without premium."
+        "engine_value",
+        "engine without premium (trade currency)",
+        Kind.AMOUNT,
+        "The sampled value of the position, without premium.",
     ),
     Column(
         "engine_standard_error",
@@ -258,7 +275,7 @@ CROSS_CHECK: tuple[Column, ...] = (
     ),
     Column(
         "reference_value",
-        "reference (trade currency)",
+        "reference without premium (trade currency)",
         Kind.AMOUNT,
         "The same position by the reference.",
         like="engine_value",
@@ -288,7 +305,7 @@ CROSS_CHECK: tuple[Column, ...] = (
     Column("tolerance_bp", "tolerance (bp of notional)", Kind.FIXED, "The tolerance again.", printed=False),
     Column(
         "reference_percent",
-        "reference (% of notional)",
+        "reference without premium (% of notional)",
         Kind.FIXED,
         "The reference value again: the horizontal axis of the summary's chart.",
         printed=False,

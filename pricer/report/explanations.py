@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from pricer.core.issues import Severity
+from pricer.report.verdicts import NO_SAMPLING
 from pricer.run.outcome import Interval, Status, Verdict
 
 CAUTION = (
@@ -17,6 +18,11 @@ READING: tuple[tuple[str, str], ...] = (
         "standard errors of totals",
         "Every trade is sampled with draws of its own, so standard errors are added in quadrature (the root of the sum "
         "of squares).",
+    ),
+    (
+        "sums over underlyings",
+        "No standard error is shown for sums over several underlyings: one trade's sensitivities come from the same "
+        "draws, so their errors do not add in quadrature. Sums over trades for one underlying do.",
     ),
     (
         "99 % sampling interval",
@@ -35,8 +41,7 @@ READING: tuple[tuple[str, str], ...] = (
     ("1 bp of notional", "0.01 % of the trade's notional."),
     (
         "reporting currency",
-        "Converted at the snapshot's spot rates. Groups with many members show the largest twelve "
-        "and one line for the rest.",
+        "Converted at the snapshot's spot rates. The summary shows the largest groups, and one line for the rest.",
     ),
     ("blank cell", "The number does not exist for this row, or could not be formed from what is known."),
     (
@@ -48,22 +53,24 @@ READING: tuple[tuple[str, str], ...] = (
 
 INTERVALS: dict[Interval, str] = {
     Interval.EXACT: "Closed form or quadrature; the ends are the value less and plus its numerical error.",
-    Interval.BOUNDS: "Lower and upper bounds computed without sampling, narrower than the sampling interval.",
-    Interval.SAMPLING: "Two-sided 99 % interval: Student's quantile for the number of randomisations.",
+    Interval.BOUNDS: "Bounds computed without sampling, both nearer than the ends of the sampling interval.",
+    Interval.SAMPLING: "Two-sided 99 % interval by Student's quantile, cut at a bound if one is nearer.",
 }
 
 STATUSES: dict[Status, str] = {
-    Status.PRICED: "Value and deltas are as precise as asked.",
-    Status.PRECISION_NOT_REACHED: "Priced, but value or deltas less precisely than asked: read the standard errors.",
-    Status.NOT_PRICED: "No value; the reason is in the last column of Valuations and on the sheet Problems.",
+    Status.PRICED: "The value is as precise as asked; its deltas' errors stand beside them.",
+    Status.PRECISION_NOT_REACHED: "Priced, but the value less precisely than asked: read its standard error.",
+    Status.DISPUTED: "Priced, but a cross-check of the trade disagrees: find out why before using the number.",
+    Status.NOT_PRICED: "No value; Valuations has the reason, short in place of the method and in full at the end.",
 }
 
-VERDICTS: dict[Verdict, str] = {
+VERDICTS: dict[str, str] = {
     Verdict.DIFFERS: "Engine and exact reference differ by more than the tolerance: find out why before using either.",
     Verdict.OUTSIDE_BOUND: "The engine's value lies beyond a bound by more than the tolerance: find out why.",
-    Verdict.FAR: "An approximation is far from the engine's value; that by itself says nothing against the engine.",
     Verdict.AGREES: "Engine and exact reference agree within the tolerance.",
+    NO_SAMPLING: "Verdict “agrees” where the engine left nothing to sampling either: no test of the sampling.",
     Verdict.WITHIN_BOUND: "The engine's value respects the bound within the tolerance.",
+    Verdict.FAR: "An approximation is far from the engine's value; that by itself says nothing against the engine.",
     Verdict.CLOSE: "An approximation lies close to the engine's value.",
 }
 

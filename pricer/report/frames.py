@@ -15,25 +15,19 @@ from pricer.contracts.book import Refusal
 from pricer.core.issues import Issue, Severity
 from pricer.report.rates import Rates
 from pricer.report.sums import ratio
+from pricer.report.text import shorten
 from pricer.report.totals import GROUPINGS, Total, group_totals, priced
 from pricer.report.underlying_totals import UnderlyingTotal, underlying_totals
-from pricer.run.outcome import CrossCheck, Outcome, Status, Valuation, Verdict
+from pricer.report.verdicts import ORDER
+from pricer.run.outcome import CrossCheck, Outcome, Status, Valuation
 
 if TYPE_CHECKING:
     import pandas
 
     Frame = pandas.DataFrame
 
+_SHORT = 72  # characters of a short reason
 _SEVERITIES = (Severity.FATAL, Severity.ERROR, Severity.WARNING)
-# What a reader should see first comes first.
-_VERDICTS = (
-    Verdict.DIFFERS,
-    Verdict.OUTSIDE_BOUND,
-    Verdict.FAR,
-    Verdict.AGREES,
-    Verdict.WITHIN_BOUND,
-    Verdict.CLOSE,
-)
 
 
 def tables(outcome: Outcome) -> Mapping[str, Frame]:
@@ -89,11 +83,12 @@ def valuations(outcome: Outcome) -> Frame:
             "expiry_date": known("expiry_date"),
             "paths": number("paths"),
             "randomisations": number("randomisations"),
+            "degrees_of_freedom": number("degrees_of_freedom"),
             "ending": [reason(item) if isinstance(item, Refusal) else item.ending for item in items],
         },
         text="trade_id product currency interval method status reporting_currency counterparty strategy netting_set "
         "ending",
-        whole="paths randomisations",
+        whole="paths randomisations degrees_of_freedom",
         dates="expiry_date",
     )
 
@@ -111,10 +106,10 @@ def deltas(outcome: Outcome) -> Frame:
             "standard_error": [d.standard_error for _, d, _ in pairs],
             "gamma": [d.gamma for _, d, _ in pairs],
             "gamma_standard_error": [d.gamma_standard_error for _, d, _ in pairs],
-            "vega": [d.vega for _, d, _ in pairs],
-            "vega_standard_error": [d.vega_standard_error for _, d, _ in pairs],
+            "vega_per_vol_point": [d.vega for _, d, _ in pairs],
+            "vega_per_vol_point_standard_error": [d.vega_standard_error for _, d, _ in pairs],
             "vega_currency": [v.currency for v, _, _ in pairs],
-            "reporting_vega": [rates.reporting(d.vega, v.currency) for v, d, _ in pairs],
+            "reporting_vega_per_vol_point": [rates.reporting(d.vega, v.currency) for v, d, _ in pairs],
             "lots": [ratio(d.delta, u.lot_size) if u else None for _, d, u in pairs],
             "underlying_currency": [u.currency if u else None for _, _, u in pairs],
             "spot": [d.spot for _, d, _ in pairs],
@@ -139,7 +134,7 @@ def underlying_deltas(outcome: Outcome) -> Frame:
 def summaries(outcome: Outcome) -> Frame:
     """One row a group of each grouping (currency, product, strategy, counterparty, netting set)."""
     totals = [t for grouping in GROUPINGS for t in group_totals(outcome, grouping)]
-    whole = "trades priced precision_not_reached not_priced"
+    whole = "trades priced precision_not_reached disputed not_priced"
     frame = _records(totals, Total, text="grouping group own_currency", whole=whole)
     frame.insert(2, "reporting_currency", outcome.facts.reporting_currency)
     return frame.rename(
@@ -155,9 +150,9 @@ def summaries(outcome: Outcome) -> Frame:
 
 
 def cross_check(outcome: Outcome) -> Frame:
-    """One row a comparison: disagreements first, then approximations that are far off, then the rest."""
+    """One row a comparison: disagreements first, then agreements, approximations last."""
     by_id = {v.trade_id: v for v in outcome.valuations}
-    checks = sorted(outcome.cross_checks, key=lambda c: _VERDICTS.index(c.verdict))
+    checks = sorted(outcome.cross_checks, key=lambda c: ORDER.index(c.verdict))
     owners = [by_id.get(c.trade_id) for c in checks]
     notionals = [abs(owner.notional) if owner else math.nan for owner in owners]
     frame = _records(checks, CrossCheck, text="trade_id product reference_method reference_kind verdict source")
@@ -179,8 +174,7 @@ def problems(outcome: Outcome) -> Frame:
 
 def not_priced(outcome: Outcome) -> Frame:
     """One row a trade without a value, with what could be read of it and every reason in words."""
-    items: list[Valuation | Refusal] = [v for v in outcome.valuations if v.status is Status.NOT_PRICED]
-    items += outcome.refusals
+    items = without_value(outcome)
     names = ("trade_id", "product", "currency", "counterparty", "strategy")
     columns: dict[str, Sequence[Any]] = {name: [getattr(item, name) for item in items] for name in names}
     columns["issues"] = [len(item.issues) if isinstance(item, Refusal) else 0 for item in items]
@@ -196,11 +190,26 @@ def seconds(outcome: Outcome) -> Frame:
     )
 
 
+def without_value(outcome: Outcome) -> list[Valuation | Refusal]:
+    """What has no value to show: failed valuations, then refusals."""
+    return [*(v for v in outcome.valuations if v.status is Status.NOT_PRICED), *outcome.refusals]
+
+
 def reason(item: Valuation | Refusal) -> str:
     """Why a trade has no value, in words."""
     if isinstance(item, Valuation):
         return item.ending
     return "; ".join(str(issue) for issue in item.issues) or "no reason was recorded"
+
+
+def short_reason(item: Valuation | Refusal) -> str:
+    """The first reason in a few words: what stands in which column, and what should."""
+    if isinstance(item, Valuation) or not item.issues:
+        return shorten(reason(item), _SHORT)
+    first, more = item.issues[0], len(item.issues) - 1
+    others = f" (and {more} more)" if more else ""
+    column = f"{first.column}: " if first.column else ""
+    return shorten(f"{column}found {first.found}; expected {first.expected}", _SHORT - len(others)) + others
 
 
 def _status(item: Valuation | Refusal) -> Status:

@@ -1,4 +1,7 @@
-"""Where things go on the summary: two blocks of six columns, packed on landscape A4 so that nothing is cut in two."""
+"""Where things go on the summary: two blocks of six columns, packed on landscape A4 so that nothing is cut in two.
+
+A heading covers two rows of the usual height, so that tables side by side need not begin in the same row.
+"""
 
 from __future__ import annotations
 
@@ -8,8 +11,9 @@ from typing import TYPE_CHECKING
 
 from pricer.report.cells import put_number, put_text, workbook_of
 from pricer.report.columns import Kind
-from pricer.report.page import BOTTOM, PAPER_HEIGHT, PAPER_WIDTH, SIDE, TOP
+from pricer.report.page import page_height
 from pricer.report.styles import body_style, decimals_for
+from pricer.report.text import shorten
 from pricer.report.top import Line
 
 if TYPE_CHECKING:
@@ -17,16 +21,16 @@ if TYPE_CHECKING:
 
 LEFT, RIGHT = 2, 9  # first columns of the two blocks
 LAST = 14
-_BLOCK = (27.0, 10.0, 12.0, 17.0, 17.0, 15.0)
+THIRDS = ((2, 4), (6, 4), (10, 5))  # first column and columns of three charts about equally wide
+HALVES = ((LEFT, 6), (RIGHT, 6))
+_BLOCK = (29.0, 9.0, 11.5, 17.0, 17.0, 16.5)
+_NAME_LENGTH = 34  # characters that the first column of a block holds
 N_COLUMNS = len(_BLOCK)
 _WIDTHS = (1.5, *_BLOCK, 3.0, *_BLOCK)
 ROW_HEIGHT = 14.0  # points
-HEADING_HEIGHT = 28.0
-_POINTS_PER_MM = 72.0 / 25.4
-# A character is 7 pixels wide, 96 pixels to the inch. Where columns come out wider the scale is smaller, and more fits.
-_SCALE = (PAPER_WIDTH - 2.0 * SIDE) / (sum(_WIDTHS) * 7.0 / 96.0 * 25.4)
-_PAGE_HEIGHT = 0.97 * (PAPER_HEIGHT - TOP - BOTTOM) * _POINTS_PER_MM / _SCALE
-_CHART_ROWS = (13, 24)  # fewest and most rows of a chart
+_PAGE_HEIGHT = page_height(sum(_WIDTHS))
+_CHART_ROWS = (13, 34)  # fewest and most rows of a chart
+_ABOVE_LINES = 3  # rows of a table's title and heading
 
 
 @dataclass(frozen=True, slots=True)
@@ -41,13 +45,9 @@ class BlockTable:
     decimals: int | None = None  # of the last two columns; chosen by their size if None
 
     @property
-    def height(self) -> float:
-        """Height in points, with the row of air below it."""
-        return HEADING_HEIGHT + ROW_HEIGHT * (2 + max(1, len(self.lines)))
-
-    @property
     def n_rows(self) -> int:
-        return 3 + max(1, len(self.lines))
+        """Rows with title, heading and the row of air below."""
+        return _ABOVE_LINES + max(1, len(self.lines)) + 1
 
 
 class Canvas:
@@ -64,21 +64,22 @@ class Canvas:
 
     def reserve(self, height: float) -> None:
         """Begin a new page unless ``height`` points are left on this one."""
+        if height > self._left_on_page and self.row > 1:
+            self._begin_page()
+
+    def _begin_page(self) -> None:
         from openpyxl.worksheet.pagebreak import Break
 
-        if height > self._left_on_page and self.row > 1:
-            self.sheet.row_breaks.append(Break(id=self.row - 1))
-            self._left_on_page = _PAGE_HEIGHT
+        self.sheet.row_breaks.append(Break(id=self.row - 1))
+        self._left_on_page = _PAGE_HEIGHT
 
     def chart_rows(self) -> int:
         """Rows for a chart on the rest of the page, or on a new page if too little is left; see ``take_rows``."""
-        self.reserve(self.least_chart_height)
-        return min(_CHART_ROWS[1], int(self._left_on_page / ROW_HEIGHT) - 2)
+        self.reserve((_CHART_ROWS[0] + 2) * ROW_HEIGHT)  # with its title and a row of air
+        return min(_CHART_ROWS[1], self._rows_left() - 2)
 
-    @property
-    def least_chart_height(self) -> float:
-        """Points that the smallest chart needs, with its title and a row of air."""
-        return (_CHART_ROWS[0] + 2) * ROW_HEIGHT
+    def _rows_left(self) -> int:
+        return int(self._left_on_page / ROW_HEIGHT)
 
     def take(self, height: float = ROW_HEIGHT) -> int:
         """The next row, made ``height`` points high."""
@@ -100,31 +101,42 @@ class Canvas:
         for i in range(n_columns):
             put_text(self.sheet, row, column + i, title if i == 0 else "", "section")
 
-    def tables(self, left: BlockTable, right: BlockTable) -> int:
-        """Two tables side by side; returns the first row of their lines."""
-        self.reserve(max(left.height, right.height))
-        first = self.row
-        self.take()
-        self.take(HEADING_HEIGHT)
-        self.take_rows(max(left.n_rows, right.n_rows) - 2)
-        for table, column in ((left, LEFT), (right, RIGHT)):
-            self.put(table, first, column)
-        return first + 2
+    def stacks(self, left: Sequence[BlockTable], right: Sequence[BlockTable]) -> dict[str, int]:
+        """Two stacks of tables side by side, on new pages as needed; returns the first row of each table's lines."""
+        first_lines: dict[str, int] = {}
+        waiting = {LEFT: list(left), RIGHT: list(right)}
+        self.reserve(ROW_HEIGHT * max(tables[0].n_rows for tables in waiting.values()))
+        while True:
+            room, used = self._rows_left(), 0
+            for column, tables in waiting.items():
+                taken = 0
+                while tables and (taken + tables[0].n_rows <= room or not taken):
+                    self.put(tables[0], self.row + taken, column)
+                    first_lines[tables[0].title] = self.row + taken + _ABOVE_LINES
+                    taken += tables.pop(0).n_rows
+                used = max(used, taken)
+            self.take_rows(used)
+            if not any(waiting.values()):
+                return first_lines
+            self._begin_page()
 
     def put(self, table: BlockTable, row: int, column: int) -> None:
-        """Write a table whose rows have been taken."""
+        """Write a table into rows that are taken for it."""
         self.section(row, column, table.title)
         if not table.lines:
             put_text(self.sheet, row + 1, column, table.empty, "note")
             return
         decimals = _decimals(table)
         for i, heading in enumerate(table.headings):
-            put_text(self.sheet, row + 1, column + i, heading, "heading number" if i else "heading")
+            for below in (1, 2):
+                text, style = heading if below == 1 else "", "heading number" if i else "heading"
+                put_text(self.sheet, row + below, column + i, text, style)
+            self.sheet.merge_cells(start_row=row + 1, end_row=row + 2, start_column=column + i, end_column=column + i)
         for j, line in enumerate(table.lines):
             style = body_style(workbook_of(self.sheet), Kind.STATUS, mark=line.mark)
-            put_text(self.sheet, row + 2 + j, column, line.name, style)
+            put_text(self.sheet, row + _ABOVE_LINES + j, column, shorten(line.name, _NAME_LENGTH), style)
             for i, (number, kind) in enumerate(zip(line.numbers, table.kinds, strict=True)):
-                put_number(self.sheet, row + 2 + j, column + 1 + i, number, kind, decimals[i], line.mark)
+                put_number(self.sheet, row + _ABOVE_LINES + j, column + 1 + i, number, kind, decimals[i], line.mark)
 
 
 def _decimals(table: BlockTable) -> list[int]:

@@ -15,6 +15,18 @@ if TYPE_CHECKING:
 PAPER_WIDTH, PAPER_HEIGHT = 297.0, 210.0
 SIDE, TOP, BOTTOM = 12.0, 13.0, 17.0
 _INCH = 25.4
+_POINTS_PER_INCH = 72.0
+# A character of a column's width is 7 pixels wide, 96 pixels to the inch.
+_CHARACTER = 7.0 / 96.0 * _INCH
+
+
+def page_height(width: float) -> float:
+    """Points of rows that fill a page of columns ``width`` characters wide in all.
+
+    Where a program makes columns wider the scale is smaller, and more fits.
+    """
+    scale = min(1.0, (PAPER_WIDTH - 2.0 * SIDE) / (width * _CHARACTER))
+    return 0.97 * (PAPER_HEIGHT - TOP - BOTTOM) / _INCH * _POINTS_PER_INCH / scale
 
 
 def set_up_page(sheet: Worksheet, facts: RunFacts) -> None:

@@ -12,6 +12,7 @@ from pricer.core.issues import Severity
 from pricer.report.explanations import CAUTION
 from pricer.report.text import CSV_RULE, clean
 from pricer.report.totals import book_total
+from pricer.report.verdicts import without_sampling
 from pricer.run.outcome import Outcome, Verdict
 
 FORMAT = 1  # raised when a key changes its meaning or goes
@@ -41,8 +42,10 @@ def run_facts(outcome: Outcome, severities: Counter[str]) -> dict[str, Any]:
             "trades": whole.trades,
             "priced": whole.priced,
             "precision_not_reached": whole.precision_not_reached,
+            "disputed": whole.disputed,
             "not_priced": whole.not_priced,
             "cross_checks": {verdict.value: verdicts[verdict] for verdict in Verdict},
+            "cross_checks_without_sampling": sum(map(without_sampling, outcome.cross_checks)),
             "problems": {severity.value: severities[severity.value] for severity in Severity},
         },
         "seed": facts.seed,

@@ -27,6 +27,8 @@ HEADING_FILL = "DCE5EC"
 FLAG_FILL = "FBE5C8"
 REFUSED_FILL = "DADADA"
 LINE = "CBD5DC"
+PRICE_DECIMALS = 6  # at most
+PRICE_FORMAT = "#,##0.00" + "#" * (PRICE_DECIMALS - 2)
 
 
 class Mark(Enum):
@@ -116,7 +118,9 @@ def number_format(kind: Kind, decimals: int = 0) -> str:
     """The number format of a kind of cell."""
     if kind is Kind.AMOUNT:
         return "#,##0" + ("." + "0" * decimals if decimals else "")
-    return {Kind.DATE: "yyyy-mm-dd", Kind.COUNT: "#,##0", Kind.FIXED: "#,##0.00"}.get(kind, "@")
+    return {Kind.DATE: "yyyy-mm-dd", Kind.COUNT: "#,##0", Kind.FIXED: "#,##0.00", Kind.PRICE: PRICE_FORMAT}.get(
+        kind, "@"
+    )
 
 
 def decimals_for(base: Iterable[float], errors: Iterable[float] = ()) -> int:

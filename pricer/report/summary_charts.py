@@ -47,7 +47,7 @@ def add_bars(
     last = first + len(bars) - 1
     names = Reference(sheet, min_col=column, min_row=first, max_row=last)
     values = Reference(sheet, min_col=column + _VALUE_COLUMN, min_row=first, max_row=last)
-    _place(sheet, bar_chart(f"{what} ({currency})", currency, names, values, largest), area)
+    _place(sheet, bar_chart(what, currency, names, values, largest), area)
 
 
 def add_scatter(sheet: Worksheet, area: Area, source: Worksheet, checks: pandas.DataFrame) -> None:
@@ -68,7 +68,7 @@ def add_scatter(sheet: Worksheet, area: Area, source: Worksheet, checks: pandas.
         return Reference(source, min_col=place, min_row=HEADING_ROW + 1, max_row=HEADING_ROW + len(checks))
 
     chart = scatter_chart(
-        "engine less exact reference (beyond ±1 tolerance: differs)",
+        "engine less exact reference",
         "reference value (% of notional)",
         "difference (tolerances)",
         x=column("reference_percent"),
@@ -84,11 +84,13 @@ def _limits(sheet: Worksheet, area: Area, lowest: float, highest: float) -> list
     from openpyxl.chart import Reference
 
     first = area.row + 3
-    put_text(sheet, first - 1, area.column, "limits drawn (% of notional; tolerances)", "note")
+    put_text(sheet, first - 1, area.column + 1, "limits drawn (% of notional; tolerances)", "note")
     for i, percent in enumerate((lowest, highest)):
         for j, number in enumerate((percent, 1.0, -1.0)):
-            put_number(sheet, first + i, area.column + j, number, Kind.FIXED)
-    x, upper, lower = (Reference(sheet, min_col=area.column + j, min_row=first, max_row=first + 1) for j in range(3))
+            put_number(sheet, first + i, area.column + 1 + j, number, Kind.FIXED)
+    x, upper, lower = (
+        Reference(sheet, min_col=area.column + 1 + j, min_row=first, max_row=first + 1) for j in range(3)
+    )
     return [(x, upper), (x, lower)]
 
 
@@ -99,7 +101,7 @@ def _place(sheet: Worksheet, chart: BarChart | ScatterChart, area: Area) -> None
     placed: Any = chart  # its anchor may be a cell or, as here, a pair of them
     placed.anchor = TwoCellAnchor(
         editAs="oneCell",
-        _from=AnchorMarker(col=area.column - 1, row=area.row - 1, rowOff=40_000),
+        _from=AnchorMarker(col=area.column - 1, row=area.row - 1, colOff=60_000, rowOff=40_000),
         to=AnchorMarker(col=area.column - 1 + area.n_columns, row=area.row - 1 + area.n_rows),
     )
     sheet.add_chart(chart)

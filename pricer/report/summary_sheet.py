@@ -12,24 +12,25 @@ from pricer.core.issues import Severity
 from pricer.engines.cross_check import ALARMS
 from pricer.report.cells import put_number, put_text, workbook_of
 from pricer.report.columns import Kind
-from pricer.report.layout import LAST, LEFT, N_COLUMNS, RIGHT, ROW_HEIGHT, Canvas
+from pricer.report.layout import HALVES, LAST, LEFT, N_COLUMNS, RIGHT, ROW_HEIGHT, THIRDS, Canvas
 from pricer.report.page import set_up_page
 from pricer.report.styles import Mark, body_style, decimals_for
 from pricer.report.summary_charts import Area, add_bars, add_scatter
 from pricer.report.summary_tables import group_table, underlying_table, verdict_table
 from pricer.report.text import shorten
 from pricer.report.totals import BookTotal, book_total, priced
+from pricer.run.outcome import Outcome, Status
 
 if TYPE_CHECKING:
     import pandas
     from openpyxl import Workbook
     from openpyxl.cell.cell import Cell
 
-    from pricer.run.outcome import Outcome
 
 TITLE = "Summary"
+_GROUPINGS = ("currency", "strategy", "counterparty", "product")
 _REASONS_SHOWN = 5
-_REASON_LENGTH = 125  # what one line between the list's third column and the page's edge holds
+_REASON_LENGTH = 140  # what one line between the list's third column and the page's edge holds
 
 
 def add_summary_sheet(workbook: Workbook, outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> None:
@@ -40,33 +41,37 @@ def add_summary_sheet(workbook: Workbook, outcome: Outcome, frames: Mapping[str,
     _heading(canvas, outcome)
     _key_figures(canvas, outcome, whole, frames["problems"])
     _not_priced(canvas, frames["not_priced"])
-    n_rows = canvas.chart_rows() if priced(outcome) else 0
-    row = canvas.row
-    if n_rows:
-        canvas.take_rows(n_rows + 2)
-        canvas.section(row, LEFT, "Value by strategy")
-        canvas.section(row, RIGHT, "Cash delta by underlying")
-    canvas.tables(group_table(outcome, whole, "currency"), group_table(outcome, whole, "product"))
-    strategies = group_table(outcome, whole, "strategy")
-    first_strategy = canvas.tables(strategies, group_table(outcome, whole, "counterparty"))
-    underlyings, verdicts = underlying_table(outcome), verdict_table(outcome)
-    if outcome.cross_checks:  # keep their chart on the same page
-        canvas.reserve(max(underlyings.height, verdicts.height) + canvas.least_chart_height)
-    first_underlying = canvas.tables(underlyings, verdicts)
-    if n_rows:
-        currency = outcome.facts.reporting_currency
-        left, right = (Area(row + 1, column, n_rows, N_COLUMNS) for column in (LEFT, RIGHT))
-        add_bars(sheet, left, "value", currency, strategies.lines, first_strategy, LEFT)
-        add_bars(sheet, right, "cash delta", currency, underlyings.lines, first_underlying, LEFT)
-    if outcome.cross_checks:
-        n_rows = canvas.chart_rows()
-        row = canvas.take_rows(n_rows + 2)
-        canvas.section(row, LEFT, "Engine against exact references", LAST - LEFT + 1)
-        area = Area(row + 1, LEFT, n_rows, LAST - LEFT + 1)
-        add_scatter(sheet, area, workbook["Cross-check"], frames["cross_check"])
+    chart_areas = _chart_areas(canvas, outcome)
+    by = {grouping: group_table(outcome, whole, grouping) for grouping in _GROUPINGS}
+    underlyings = underlying_table(outcome)
+    first = canvas.stacks(
+        (by["currency"], by["strategy"], by["counterparty"], verdict_table(outcome)), (by["product"], underlyings)
+    )
+    if chart_areas:
+        bars = (("value", by["strategy"], LEFT), ("cash delta", underlyings, RIGHT))
+        for area, (what, table, column) in zip(chart_areas, bars, strict=False):
+            currency = outcome.facts.reporting_currency
+            add_bars(sheet, area, what, currency, table.lines, first[table.title], column)
+    if len(chart_areas) == len(THIRDS):
+        add_scatter(sheet, chart_areas[-1], workbook["Cross-check"], frames["cross_check"])
     sheet.print_area = f"A1:{sheet.cell(1, LAST).column_letter}{canvas.row - 1}"
     set_up_page(sheet, outcome.facts)
     sheet.sheet_view.showGridLines = False
+
+
+def _chart_areas(canvas: Canvas, outcome: Outcome) -> list[Area]:
+    """Where the charts go, side by side under their titles; none without a priced trade."""
+    if not priced(outcome):
+        return []
+    n_rows = canvas.chart_rows()
+    row = canvas.take_rows(n_rows + 2)
+    titles = ["Value by strategy", "Cash delta by underlying"]
+    if outcome.cross_checks:
+        titles.append("Engine against exact references")
+    places = THIRDS if len(titles) == len(THIRDS) else HALVES
+    for title, (column, n_columns) in zip(titles, places, strict=True):
+        canvas.section(row, column, title, n_columns)
+    return [Area(row + 1, column, n_rows, n_columns) for column, n_columns in places]
 
 
 def _heading(canvas: Canvas, outcome: Outcome) -> None:
@@ -104,9 +109,9 @@ def _key_figures(canvas: Canvas, outcome: Outcome, whole: BookTotal, problems: p
         ("trades in the book", total.trades, False),
         ("priced to the precision asked for", total.priced, False),
         ("priced, precision not reached", total.precision_not_reached, True),
+        ("priced, disputed by a cross-check", total.disputed, True),
         ("not priced, left out of every total", total.not_priced, True),
-        ("cross-checks made", len(outcome.cross_checks), False),
-        ("cross-checks that disagree", flagged, True),
+        (f"cross-checks that disagree, of {len(outcome.cross_checks):,} made", flagged, True),
         ("problems found (number)", sum(severities), True),
     )
     decimals = decimals_for([total.value], [total.standard_error])
@@ -167,6 +172,6 @@ def _not_priced(canvas: Canvas, missing: pandas.DataFrame) -> None:
         for column in range(LEFT, LAST + 1):
             put_text(canvas.sheet, row, column, texts.get(column, ""), text_style)
     if rest:
-        text = f"and {rest:,} more: sheet Valuations, status “not priced”, last column"
+        text = f"and {rest:,} more: sheet Valuations, status “{Status.NOT_PRICED}”, and sheet Problems"
         put_text(canvas.sheet, canvas.take(), LEFT, text, "note")
     canvas.take(8.0)

@@ -5,16 +5,24 @@ from __future__ import annotations
 from pricer.report.columns import Kind
 from pricer.report.layout import BlockTable
 from pricer.report.styles import decimals_for
-from pricer.report.top import lines_of_groups, lines_of_underlyings, lines_of_verdicts
+from pricer.report.top import SHOWN, lines_of_groups, lines_of_underlyings, lines_of_verdicts
 from pricer.report.totals import BookTotal, group_totals
 from pricer.report.underlying_totals import underlying_totals
 from pricer.run.outcome import Outcome
+
+_PRODUCTS_SHOWN = 20  # no chart has to hold them, and a book has many
 
 
 def group_table(outcome: Outcome, whole: BookTotal, grouping: str) -> BlockTable:
     """Trades, notional, value and standard error by one grouping; by currency with the value in that currency."""
     currency = outcome.facts.reporting_currency
     own = grouping == "currency"
+    lines = lines_of_groups(
+        group_totals(outcome, grouping),
+        whole.total,
+        own_currency=own,
+        shown=_PRODUCTS_SHOWN if grouping == "product" else SHOWN,
+    )
     return BlockTable(
         title=f"Value by {grouping}",
         headings=(
@@ -26,7 +34,7 @@ def group_table(outcome: Outcome, whole: BookTotal, grouping: str) -> BlockTable
             f"standard error ({currency})",
         ),
         kinds=(Kind.COUNT, Kind.COUNT, Kind.AMOUNT, Kind.AMOUNT, Kind.AMOUNT),
-        lines=lines_of_groups(group_totals(outcome, grouping), whole.total, own_currency=own),
+        lines=lines,
         empty="The book has no trades.",
         decimals=decimals_for([whole.total.value], [whole.total.standard_error]),
     )

@@ -12,7 +12,9 @@ from pricer.report.bulk import Bulk, BulkColumn
 from pricer.report.cells import put_text
 from pricer.report.columns import Column, Kind
 from pricer.report.page import set_up_page
-from pricer.report.styles import Mark, body_style, decimals_for
+from pricer.report.styles import PRICE_DECIMALS, Mark, body_style, decimals_for
+from pricer.report.text import looks_like_formula
+from pricer.report.widths import fits, heading_lines, plain_width
 
 if TYPE_CHECKING:
     import pandas
@@ -23,7 +25,8 @@ if TYPE_CHECKING:
 HEADING_ROW = 4
 _FIRST_ROW = HEADING_ROW + 1
 _HEADING_LINES = 4
-_LINE_HEIGHT = 13.0
+_LINE_HEIGHT = 13.0  # points; also the height of a row of one line
+_INDENT = 1.3  # of text, in characters
 
 
 @dataclass(frozen=True, slots=True)
@@ -51,15 +54,20 @@ def add_table_sheet(workbook: Workbook, table: Table, facts: RunFacts) -> Bulk |
     put_text(sheet, 2, 1, table.note, "subtitle")
     values = {column.name: _values(table, column) for column in table.columns}
     decimals = {column.name: _decimals(table.columns, column, values) for column in table.columns}
-    widths = [_width(column, _shown(column, values, decimals), facts) for column in table.columns]
-    lines = 1
-    for i, (letter, column, width) in enumerate(zip(letters, table.columns, widths, strict=True), 1):
-        header = column.header.format(reporting=facts.reporting_currency)
+    headers = [column.header.format(reporting=facts.reporting_currency) for column in table.columns]
+    widths, lines = [], 1
+    for i, (letter, column, header) in enumerate(zip(letters, table.columns, headers, strict=True), 1):
+        # Printed columns come first: those for the screen get no taller heading than they have.
+        most = _HEADING_LINES if column.printed else lines
+        width = _width(column, header, _shown(column, values, decimals), most)
+        widths.append(width)
+        lines = max(lines, len(heading_lines(header, width, _indent(column))))
         put_text(sheet, HEADING_ROW, i, header, "heading number" if column.kind.numeric else "heading")
         sheet.column_dimensions[letter].width = width
-        lines = max(lines, len(_wrapped(header, width)))
     # A little more than the headings need: the filter's button sits there.
     sheet.row_dimensions[HEADING_ROW].height = _LINE_HEIGHT * (lines + 0.75)
+    sheet.sheet_format.defaultRowHeight = _LINE_HEIGHT
+    sheet.sheet_format.customHeight = True
     sheet.row_dimensions[1].height = 24.0
     n_rows = len(table.frame)
     sheet.freeze_panes = f"{get_column_letter(table.frozen + 1)}{_FIRST_ROW}"
@@ -79,7 +87,9 @@ def add_table_sheet(workbook: Workbook, table: Table, facts: RunFacts) -> Bulk |
         _FIRST_ROW,
         tuple(
             BulkColumn(
-                letter, values[column.name], _style_indices(workbook, column, decimals[column.name], marks, vertical)
+                letter,
+                values[column.name],
+                _style_indices(workbook, column, decimals[column.name], marks, values[column.name], vertical),
             )
             for letter, column in zip(letters, table.columns, strict=True)
         ),
@@ -116,16 +126,19 @@ def _heights(prose: Sequence[tuple[list[Any], float]], n_rows: int) -> list[floa
 
 
 def _style_indices(
-    workbook: Workbook, column: Column, decimals: int, marks: Sequence[Mark], vertical: str
+    workbook: Workbook, column: Column, decimals: int, marks: Sequence[Mark], values: Sequence[Any], vertical: str
 ) -> list[int]:
     from openpyxl.cell import WriteOnlyCell
 
-    index: dict[Mark, int] = {}
-    for mark in set(marks):
+    wanted = [(mark, isinstance(x, str) and looks_like_formula(x)) for mark, x in zip(marks, values, strict=True)]
+    index: dict[tuple[Mark, bool], int] = {}
+    for mark, quoted in dict.fromkeys(wanted):
         cell = WriteOnlyCell(workbook.worksheets[0])  # belongs to no sheet: it only looks the index up
         cell.style = body_style(workbook, column.kind, decimals, mark, vertical)
-        index[mark] = cell.style_id
-    return [index[mark] for mark in marks]
+        if quoted:
+            cell.quotePrefix = True
+        index[mark, quoted] = cell.style_id
+    return [index[key] for key in wanted]
 
 
 def _shown(column: Column, values: Mapping[str, list[Any]], decimals: Mapping[str, int]) -> int:
@@ -134,29 +147,24 @@ def _shown(column: Column, values: Mapping[str, list[Any]], decimals: Mapping[st
     if not cells:
         return 0
     if column.kind.numeric:
-        places = {Kind.AMOUNT: decimals[column.name], Kind.FIXED: 2}.get(column.kind, 0)
+        places = {Kind.AMOUNT: decimals[column.name], Kind.FIXED: 2, Kind.PRICE: PRICE_DECIMALS}.get(column.kind, 0)
         finite = [cell for cell in cells if math.isfinite(cell)] or [0.0]
         return max(len(f"{extreme:,.{places}f}") for extreme in (min(finite), max(finite)))
     if column.kind is Kind.DATE:
         return 10
-    return max(_text_width(cell) for cell in set(cells))
+    return max(plain_width(cell) for cell in set(cells))
 
 
-def _text_width(text: str) -> int:
-    """Width in digits: capitals are wider than digits, the other letters a little narrower."""
-    return len(text) + math.ceil(0.25 * sum(c.isupper() for c in text))
-
-
-def _width(column: Column, shown: int, facts: RunFacts) -> float:
+def _width(column: Column, header: str, shown: int, most_lines: int) -> float:
     """Width in characters: the content up to the column's cap, and a heading of few lines."""
-    header = column.header.format(reporting=facts.reporting_currency)
     content = shown + 1 if column.kind.numeric else min(shown, column.widest)
-    width = max(content + 2, max(len(word) for word in header.split()) + 3, 6)
-    while len(_wrapped(header, width)) > (_HEADING_LINES if column.printed else 3):
+    width, indent = max(content + 2, 6), _indent(column)
+    while True:
+        lines = heading_lines(header, width, indent)
+        if len(lines) <= most_lines and fits(lines, width, indent):
+            return float(width)
         width += 1
-    return float(width)
 
 
-def _wrapped(text: str, width: float) -> list[str]:
-    """The lines of a bold heading in a column ``width`` characters wide, with air beside it."""
-    return textwrap.wrap(text, max(1, int(width) - 3)) or [""]
+def _indent(column: Column) -> float:
+    return 0.0 if column.kind.numeric else _INDENT

@@ -24,10 +24,15 @@ def clean(text: str) -> str:
     return _UNWRITABLE.sub("\ufffd", _LINE_BREAK.sub("\n", text))
 
 
+def looks_like_formula(text: str) -> bool:
+    """Whether a spreadsheet program may take ``text`` for a formula when a person edits or imports it."""
+    return _FORMULA.match(text) is not None
+
+
 def csv_text(text: str) -> str:
     """``text`` as it stands in a CSV cell, under :data:`CSV_RULE`."""
     text = clean(text)
-    return "'" + text if _FORMULA.match(text) else text
+    return "'" + text if looks_like_formula(text) else text
 
 
 def shorten(text: str, length: int) -> str:

@@ -13,9 +13,10 @@ from pricer.report.styles import Mark
 from pricer.report.sums import quadrature, ratio, total
 from pricer.report.totals import Total
 from pricer.report.underlying_totals import UnderlyingTotal
-from pricer.run.outcome import CrossCheck, Verdict
+from pricer.report.verdicts import MEASURED_IN_ERRORS, by_verdict
+from pricer.run.outcome import CrossCheck
 
-SHOWN = 12
+SHOWN = 12  # groups of a table that a chart draws, or that stands beside one
 NONE_STATED = "(none stated)"
 
 _Item = TypeVar("_Item")
@@ -30,10 +31,12 @@ class Line:
     mark: Mark = Mark.NONE
 
 
-def lines_of_groups(totals: Sequence[Total], whole: Total, own_currency: bool = False) -> list[Line]:
+def lines_of_groups(
+    totals: Sequence[Total], whole: Total, own_currency: bool = False, shown: int = SHOWN
+) -> list[Line]:
     """Trades, trades not priced, gross notional (or value in own currency), value, standard error; then the total.
 
-    ``totals`` come largest first; of more than :data:`SHOWN` the rest is one line, errors added in quadrature.
+    ``totals`` come largest first; of more than ``shown`` the rest is one line, errors added in quadrature.
     """
 
     def line(item: Total) -> Line:
@@ -42,10 +45,10 @@ def lines_of_groups(totals: Sequence[Total], whole: Total, own_currency: bool = 
 
     if not totals:
         return []
-    shown, rest = _split(totals)
-    lines = [line(item) for item in shown]
+    largest, rest = _split(totals, shown)
+    lines = [line(item) for item in largest]
     if rest:
-        valued = [t for t in rest if t.priced or t.precision_not_reached]
+        valued = [t for t in rest if t.trades > t.not_priced]
         numbers = (
             sum(t.trades for t in rest),
             sum(t.not_priced for t in rest),
@@ -62,7 +65,8 @@ def lines_of_groups(totals: Sequence[Total], whole: Total, own_currency: bool = 
 def lines_of_underlyings(totals: Sequence[UnderlyingTotal]) -> list[Line]:
     """Trades, share of the gross cash delta in percent, delta in shares, reporting cash delta, its standard error.
 
-    Where one delta is unknown, so is every sum that it belongs to.
+    Where one delta is unknown, so is every sum that it belongs to. A sum over several underlyings has no standard
+    error: the sensitivities of one trade come from the same draws, so quadrature would be wrong.
     """
     gross = total(abs(t.reporting_cash_delta) for t in totals)
 
@@ -74,12 +78,12 @@ def lines_of_underlyings(totals: Sequence[UnderlyingTotal]) -> list[Line]:
             100.0 * ratio(total(abs(t.reporting_cash_delta) for t in items), gross),
             items[0].delta if one else math.nan,  # shares of different underlyings do not add
             cash,
-            quadrature(t.reporting_cash_delta_standard_error for t in items),
+            items[0].reporting_cash_delta_standard_error if one else math.nan,
         )
         return Line(name, numbers, Mark.LOOK if math.isnan(cash) and mark is Mark.NONE else mark)
 
-    shown, rest = _split(totals)
-    lines = [line(item.underlying, [item]) for item in shown]
+    largest, rest = _split(totals, SHOWN)
+    lines = [line(item.underlying, [item]) for item in largest]
     if rest:
         lines.append(line(f"other ({len(rest)})", rest))
     return [*lines, line("total", totals, Mark.TOTAL)] if totals else []
@@ -87,14 +91,16 @@ def lines_of_underlyings(totals: Sequence[UnderlyingTotal]) -> list[Line]:
 
 def lines_of_verdicts(checks: Sequence[CrossCheck]) -> list[Line]:
     """Number, share in percent, median and largest absolute difference in basis points of notional, and the largest
-    in standard errors; every verdict has a line, so that none that did not occur is left unsaid."""
+    in standard errors where that says something; every verdict has a line, so that none that did not occur is left
+    unsaid."""
     if not checks:
         return []
     lines = []
-    for verdict in Verdict:
-        mine = [c for c in checks if c.verdict is verdict]
+    for name, verdict, mine in by_verdict(checks):
         sizes = [abs(c.difference_bp) for c in mine]
         errors = [abs(c.difference_standard_errors) for c in mine if c.difference_standard_errors is not None]
+        if verdict not in MEASURED_IN_ERRORS:
+            errors = []
         numbers = (
             len(mine),
             100.0 * len(mine) / len(checks),
@@ -102,12 +108,12 @@ def lines_of_verdicts(checks: Sequence[CrossCheck]) -> list[Line]:
             max(sizes, default=math.nan),
             max(errors, default=math.nan),
         )
-        lines.append(Line(str(verdict), numbers, Mark.LOOK if mine and verdict in ALARMS else Mark.NONE))
+        lines.append(Line(name, numbers, Mark.LOOK if mine and verdict in ALARMS else Mark.NONE))
     return lines
 
 
-def _split(items: Sequence[_Item]) -> tuple[Sequence[_Item], Sequence[_Item]]:
+def _split(items: Sequence[_Item], shown: int) -> tuple[Sequence[_Item], Sequence[_Item]]:
     """The lines to show and the rest; a rest of one is shown instead of being called other."""
-    if len(items) <= SHOWN + 1:
+    if len(items) <= shown + 1:
         return items, ()
-    return items[:SHOWN], items[SHOWN:]
+    return items[:shown], items[shown:]

@@ -26,6 +26,7 @@ class Total:
     trades: int
     priced: int
     precision_not_reached: int
+    disputed: int
     not_priced: int
     gross_notional: float
     own_currency: str
@@ -65,8 +66,6 @@ _BY_REFUSAL: dict[str, Callable[[Refusal], str]] = {
     "netting_set": lambda r: "",
 }
 GROUPINGS = tuple(_BY_VALUATION)
-# Randomisations used up by the mean and by the coefficient of a control variate; one too many without a control.
-_FITTED = 2
 
 
 def priced(outcome: Outcome) -> list[Valuation]:
@@ -80,7 +79,7 @@ def book_total(outcome: Outcome) -> BookTotal:
     whole = _total("book", outcome.facts.book_name, outcome.valuations, outcome.refusals, rates)
     valuations = priced(outcome)
     degrees = pooled_degrees_of_freedom(
-        [v.reporting_standard_error for v in valuations], [v.randomisations - _FITTED for v in valuations]
+        [v.reporting_standard_error for v in valuations], [v.degrees_of_freedom for v in valuations]
     )
     reach = sampling_quantile(degrees, 1.0 - COVERAGE) * whole.standard_error if degrees else 0.0
     return BookTotal(
@@ -118,6 +117,7 @@ def _total(
         trades=len(valuations) + len(refusals),
         priced=sum(v.status is Status.PRICED for v in numbers),
         precision_not_reached=sum(v.status is Status.PRECISION_NOT_REACHED for v in numbers),
+        disputed=sum(v.status is Status.DISPUTED for v in numbers),
         not_priced=len(valuations) - len(numbers) + len(refusals),
         gross_notional=total(rates.reporting(abs(v.notional), v.currency) for v in numbers),
         own_currency=currencies.pop() if own else "",

@@ -17,9 +17,9 @@ class UnderlyingTotal:
     """Sensitivities of the whole book to one underlying; standard errors add in quadrature.
 
     ``delta`` in shares, ``lots`` in lots, ``cash_delta`` in the underlying's currency, ``gamma`` in shares per unit
-    of currency of its price over the trades that have one, ``reporting_vega`` in reporting currency per volatility
-    point. What cannot be formed from the trades' numbers or the outcome's facts is NaN: a delta that one trade lacks
-    makes the book's unknown, and the counts of such trades say why.
+    of currency of its price over the trades that have one, ``reporting_vega_per_vol_point``
+    in reporting currency. What cannot be formed from the trades' numbers or the outcome's facts is NaN: a delta that
+    one trade lacks makes the book's unknown, and the counts of such trades say why.
     """
 
     underlying: str
@@ -36,8 +36,8 @@ class UnderlyingTotal:
     gamma: float
     gamma_standard_error: float
     trades_without_gamma: int
-    reporting_vega: float
-    reporting_vega_standard_error: float
+    reporting_vega_per_vol_point: float
+    reporting_vega_per_vol_point_standard_error: float
     trades_without_delta: int
     trades_without_vega: int
 
@@ -84,8 +84,10 @@ def _underlying_total(
         gamma=total(gamma for gamma, _ in gammas),
         gamma_standard_error=quadrature(error for _, error in gammas),
         trades_without_gamma=len(deltas) - len(gammas),
-        reporting_vega=total(rates.reporting(d.vega, v.currency) for v, d in pairs),
-        reporting_vega_standard_error=quadrature(rates.reporting(d.vega_standard_error, v.currency) for v, d in pairs),
+        reporting_vega_per_vol_point=total(rates.reporting(d.vega, v.currency) for v, d in pairs),
+        reporting_vega_per_vol_point_standard_error=quadrature(
+            rates.reporting(d.vega_standard_error, v.currency) for v, d in pairs
+        ),
         trades_without_delta=sum(not isfinite(d.delta) for d in deltas),
         trades_without_vega=sum(not isfinite(d.vega) for d in deltas),
     )

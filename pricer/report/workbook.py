@@ -11,12 +11,14 @@ from pricer.core.issues import Severity
 from pricer.engines.cross_check import ALARMS
 from pricer.report import columns
 from pricer.report.bulk import Bulk, save_with_bulk
+from pricer.report.frames import short_reason, without_value
 from pricer.report.run_sheet import add_run_sheet
 from pricer.report.styles import Mark, define_styles
 from pricer.report.summary_sheet import add_summary_sheet
-from pricer.report.sums import quadrature, total
+from pricer.report.sums import total
 from pricer.report.table_sheet import Table, add_table_sheet
 from pricer.report.totals import Total, book_total
+from pricer.report.verdicts import by_verdict
 from pricer.run.outcome import Outcome, Status, Verdict
 
 if TYPE_CHECKING:
@@ -51,6 +53,9 @@ def _tables(outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> list[Ta
     # Times are kept out of the tidy table, which must not change from run to run; here they belong.
     seconds = [v.seconds for v in outcome.valuations] + [None] * len(outcome.refusals)
     valuations["seconds"] = seconds
+    # Its place in print tells why there is no value; the plain table keeps methods and reasons apart.
+    missing = valuations["status"] == Status.NOT_PRICED
+    valuations.loc[missing, "method"] = [short_reason(item) for item in without_value(outcome)]
     checks, problems = frames["cross_check"], frames["problems"]
     return [
         Table(
@@ -68,17 +73,18 @@ def _tables(outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> list[Ta
             "One row a priced trade and underlying. A marked row lacks delta or vega.",
             columns.DELTAS,
             frames["deltas"],
-            _marks_of_gaps(frames["deltas"], "delta", "vega"),
+            _marks_of_gaps(frames["deltas"], "delta", "vega_per_vol_point"),
             empty="No priced trade has sensitivities.",
             frozen=2,
         ),
         Table(
             "Deltas by underlying",
             "Deltas by underlying",
-            "Sums over the priced trades, largest cash delta first; errors in quadrature. A marked row lacks a sum.",
+            "Sums over priced trades, largest cash delta first; errors in quadrature, none for the total: see Run. "
+            "A marked row lacks a sum.",
             columns.UNDERLYING_DELTAS,
             frames["underlying_deltas"],
-            _marks_of_gaps(frames["underlying_deltas"], "reporting_cash_delta", "reporting_vega"),
+            _marks_of_gaps(frames["underlying_deltas"], *_ADDABLE),
             empty="No priced trade has sensitivities.",
             total=_underlying_total(frames["underlying_deltas"]),
         ),
@@ -103,7 +109,8 @@ def _tables(outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> list[Ta
     ]
 
 
-_STATUS_MARKS = {Status.NOT_PRICED: Mark.REFUSED, Status.PRECISION_NOT_REACHED: Mark.LOOK}
+_ADDABLE = ("reporting_cash_delta", "reporting_vega_per_vol_point")  # across underlyings
+_STATUS_MARKS = {Status.DISPUTED: Mark.LOOK, Status.NOT_PRICED: Mark.REFUSED, Status.PRECISION_NOT_REACHED: Mark.LOOK}
 _SEVERITY_MARKS = {Severity.FATAL: Mark.LOOK, Severity.ERROR: Mark.LOOK, Severity.WARNING: Mark.NONE}
 
 
@@ -114,13 +121,17 @@ def _marks_of_gaps(frame: pandas.DataFrame, *needed: str) -> list[Mark]:
 
 def _valuations_note(whole: Total) -> str:
     note = f"{whole.trades:,} trades: {whole.priced:,} priced, {whole.precision_not_reached:,} precision not reached"
-    return f"{note}, {whole.not_priced:,} not priced. More columns on screen, right of what prints."
+    note = f"{note}, {whole.disputed:,} disputed, {whole.not_priced:,} not priced"
+    return f"{note}. More columns on screen, right of what prints."
 
 
 def _cross_check_note(outcome: Outcome) -> str:
-    counts = {verdict: sum(check.verdict is verdict for check in outcome.cross_checks) for verdict in Verdict}
-    found = ", ".join(f"{verdict} {n:,}" for verdict, n in counts.items() if n)
-    return f"{found}. Disagreements first; more columns on screen, right of what prints." if found else ""
+    found = "; ".join(f"{name} {len(checks):,}" for name, _, checks in by_verdict(outcome.cross_checks) if checks)
+    return (
+        f"{found}. Disagreements first, approximations last; more columns on screen, right of what prints."
+        if found
+        else ""
+    )
 
 
 def _with_clouds(checks: pandas.DataFrame) -> pandas.DataFrame:
@@ -132,10 +143,9 @@ def _with_clouds(checks: pandas.DataFrame) -> pandas.DataFrame:
 
 
 def _underlying_total(frame: pandas.DataFrame) -> dict[str, object] | None:
-    """Sums of what adds up across underlyings: amounts in the reporting currency."""
+    """Sums of amounts in the reporting currency; without errors, as underlyings of one trade share their draws."""
     if frame.empty:
         return None
-    amounts = {name: total(frame[name].tolist()) for name in ("reporting_cash_delta", "reporting_vega")}
-    errors = {f"{name}_standard_error": quadrature(frame[f"{name}_standard_error"].tolist()) for name in amounts}
-    numbers = {name: None if math.isnan(number) else number for name, number in (amounts | errors).items()}
+    amounts = {name: total(frame[name].tolist()) for name in _ADDABLE}
+    numbers = {name: None if math.isnan(number) else number for name, number in amounts.items()}
     return {"underlying": "total", **numbers}

@@ -18,6 +18,7 @@ class Status(StrEnum):
 
     PRICED = "priced"
     PRECISION_NOT_REACHED = "precision not reached"  # priced, but the value's error is above what was asked
+    DISPUTED = "disputed"  # priced, but its cross-check disagrees
     NOT_PRICED = "not priced"
 
 

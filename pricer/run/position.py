@@ -19,7 +19,7 @@ _MIRRORED = {
 }
 
 
-def valuation(appraisal: Appraisal, market: Market) -> Valuation:
+def valuation(appraisal: Appraisal, market: Market, *, disputed: bool = False) -> Valuation:
     """The position's value, errors and sensitivities, with its unpaid premium inside the value."""
     trade, lead, drawn = appraisal.trade, appraisal.headline, appraisal.sample
     size = abs(trade.position)
@@ -51,10 +51,18 @@ def valuation(appraisal: Appraisal, market: Market) -> Valuation:
         randomisations=drawn.randomisations,
         degrees_of_freedom=drawn.degrees_of_freedom,
         seconds=appraisal.seconds,
-        status=Status.PRICED if lead.standard_error <= appraisal.tolerance else Status.PRECISION_NOT_REACHED,
+        status=_status(appraisal, disputed=disputed),
         ending=drawn.ending,
         deltas=deltas(appraisal, market),
     )
+
+
+def _status(appraisal: Appraisal, *, disputed: bool) -> Status:
+    if disputed:
+        return Status.DISPUTED
+    if appraisal.headline.standard_error > appraisal.tolerance:
+        return Status.PRECISION_NOT_REACHED
+    return Status.PRICED
 
 
 def unpaid_premium(trade: Trade, market: Market) -> float:
@@ -105,7 +113,13 @@ def cross_checks(appraisal: Appraisal, tests_in_book: int) -> tuple[CrossCheck, 
     position, size, side = trade.position, abs(trade.position), _side(trade)
     rows = []
     for reference in appraisal.references:
-        found = compare(drawn, reference, appraisal.unit_notional, tests_in_book)
+        found = compare(
+            drawn,
+            reference,
+            unit_notional=appraisal.unit_notional,
+            asked=appraisal.tolerance,
+            tests_in_book=tests_in_book,
+        )
         rows.append(
             CrossCheck(
                 trade_id=trade.trade_id,

@@ -11,7 +11,7 @@ from importlib.metadata import version
 from pricer.contracts.book import Book, Refusal, Trade
 from pricer.core.issues import Issue, Severity
 from pricer.core.progress import Progress, Silent
-from pricer.engines.cross_check import APPROXIMATION_BP, FALSE_ALARM, IMMATERIAL_BP, is_test
+from pricer.engines.cross_check import ALARMS, APPROXIMATION_BP, FALSE_ALARM, IMMATERIAL, is_test
 from pricer.engines.european import Appraisal, appraise
 from pricer.market.market import Market
 from pricer.run.admission import admit, refusal
@@ -44,11 +44,15 @@ def price(book: Book, market: Market, settings: Settings | None = None, progress
     appraisals = [result for result in results if isinstance(result, Appraisal)]
     failures = [result for result in results if isinstance(result, Refusal)]
     tests = sum(is_test(reference) for appraisal in appraisals for reference in appraisal.references)
+    checks = tuple(row for appraisal in appraisals for row in cross_checks(appraisal, tests))
+    disputed = {check.trade_id for check in checks if check.verdict in ALARMS}
 
     return Outcome(
         facts=_facts(book, market, settings, started, time.perf_counter() - clock, appraisals),
-        valuations=tuple(valuation(appraisal, market) for appraisal in appraisals),
-        cross_checks=tuple(row for appraisal in appraisals for row in cross_checks(appraisal, tests)),
+        valuations=tuple(
+            valuation(appraisal, market, disputed=appraisal.trade.trade_id in disputed) for appraisal in appraisals
+        ),
+        cross_checks=checks,
         refusals=(*admitted.refusals, *failures),
         issues=(*admitted.issues, *(issue for failure in failures for issue in failure.issues)),
         underlyings=_underlying_facts(appraisals, market),
@@ -113,7 +117,7 @@ def _facts(
             ("points a randomisation: first, at most", f"{sampling.initial_points}, {sampling.maximum_points}"),
             ("order of random factors", sampling.ordering),
             ("cross-check: chance of one false alarm in the book", f"{FALSE_ALARM:g}"),
-            ("cross-check: never an alarm below (bp of notional)", f"{IMMATERIAL_BP:g}"),
+            ("cross-check: never an alarm below (part of the standard error asked for)", f"{IMMATERIAL:g}"),
             ("cross-check: approximation called close within (bp of notional)", f"{APPROXIMATION_BP:g}"),
         ),
         started=started,

@@ -60,7 +60,7 @@ def test_the_closing_table_shows_totals_and_counts(priced):
     _, result = priced
     assert "total in EUR" in result.output
     assert "priced 5, not priced 0" in result.output
-    assert "of which to look at: 0" in result.output
+    assert "of which disagree: 0" in result.output
 
 
 def test_the_run_file_holds_what_is_needed_to_repeat_it(priced, desk):

@@ -15,7 +15,9 @@ import openpyxl
 import pytest
 from msoffcrypto.format.ooxml import OOXMLFile
 from openpyxl.utils.datetime import CALENDAR_MAC_1904
+from typer.testing import CliRunner
 
+from pricer.cli.app import app
 from pricer.core.issues import InputError, Severity
 from pricer.loader import load_book, load_market, write_tables
 from pricer.loader.examples import EXAMPLE_BOOK, EXAMPLE_MARKET
@@ -72,6 +74,22 @@ def change(sheet, column, row, value):
     cell = sheet.cell(row, header.index(column) + 1)
     cell.value = value
     return cell
+
+
+# A template over a day's work
+
+
+def test_the_template_command_does_not_write_over_a_filled_in_workbook(tmp_path):
+    path = tmp_path / "market.xlsx"
+    path.write_text("a day's work")
+    result = CliRunner().invoke(app, ["template", str(tmp_path)])
+    assert result.exit_code == 2
+    assert result.output == (
+        f"{path} exists and may be filled in, so no template is written over it. Name another folder, or move the file "
+        "away.\n"
+    )
+    assert [found.name for found in tmp_path.iterdir()] == ["market.xlsx"]
+    assert path.read_text() == "a day's work"
 
 
 # Files that are no input at all
@@ -236,7 +254,7 @@ UNSAVED = "Open the workbook in a spreadsheet program, save it there and run aga
         ),
         (
             *("strike", 100, "K2"),
-            "found 100; expected a decimal performance (1.00 = 100 %) below 10. Did you mean 1 (100 %)?",
+            "found 100; expected a decimal performance (1.00 = 100 %) of at most 4. Did you mean 1 (100 %)?",
         ),
         (
             *("notional", -5_000_000, "F2"),
@@ -361,6 +379,45 @@ def test_blank_rows_between_and_after_the_data_do_not_matter(load, workbook):
     assert book.issues == ()
 
 
+def test_notes_beside_and_below_the_tables_are_neither_trades_nor_faults(load, workbook):
+    workbook["trades"]["AD3"] = "ask Guldmar"
+    workbook["trades"]["AC12"] = "checked, 31 March"
+    workbook["constituents"]["G20"] = "sum"
+    book = load(workbook)
+    assert len(book) == 6
+    assert book.refusals == ()
+    assert [str(issue) for issue in book.issues] == [
+        "book.xlsx, sheet trades: found values outside the named columns, in cells AD3, AC12; expected values below a "
+        "column name only. Ignored. Name their column, or clear them.",
+        "book.xlsx, sheet constituents: found values outside the named columns, in cell G20; expected values below a "
+        "column name only. Ignored. Name their column, or clear them.",
+    ]
+
+
+def test_a_book_of_notes_only_is_empty(load, workbook):
+    workbook["trades"].delete_rows(2, 10)
+    workbook["trades"]["AD3"] = "no trades today"
+    with pytest.raises(InputError) as caught:
+        load(workbook)
+    assert "found no trades below the header" in str(caught.value)
+
+
+def test_a_note_beside_the_snapshot_is_no_second_market(tmp_path):
+    write_tables(EXAMPLE_MARKET, tmp_path / "market.xlsx")
+    workbook = openpyxl.load_workbook(tmp_path / "market.xlsx")
+    workbook["snapshot"]["E5"] = "taken at 17:45"
+    workbook.save(tmp_path / "market.xlsx")
+    market = load_market(tmp_path / "market.xlsx")
+    assert [(issue.code, issue.sheet) for issue in market.issues] == [("nameless-column", "snapshot")]
+
+
+def test_a_note_below_a_csv_table_is_no_trade(folder):
+    rewritten(folder, "trades", lambda data: data + b"," * 30 + b"checked\n")
+    book = load_book(folder)
+    assert len(book) == 6
+    assert [issue.found for issue in book.issues] == ["values outside the named columns, in cell AE8"]
+
+
 def test_hidden_rows_are_read_with_a_warning(load, workbook):
     workbook["trades"].row_dimensions[3].hidden = True
     book = load(workbook)
@@ -454,7 +511,7 @@ def test_decimal_commas_between_semicolons_are_refused_with_the_mend(folder):
     book = load_book(folder)
     assert len(book) == 0
     assert str(book.issues[0]) == (
-        'book/constituents.csv, sheet constituents, row 2, column "weight" (cell C2): found "0,5"; '
+        'book/constituents.csv, row 2, column "weight" (cell C2): found "0,5"; '
         "expected a number other than 0. Write 0.5, with a decimal point."
     )
 
@@ -478,7 +535,7 @@ def test_a_csv_file_that_may_have_lost_its_last_digits_is_told(folder):
     book = load_book(folder)
     assert len(book) == 6
     assert [str(issue) for issue in book.issues] == [
-        "book/constituents.csv, sheet constituents: found a last row without a line break; expected a line break after "
+        "book/constituents.csv: found a last row without a line break; expected a line break after "
         "every row. Check that the last row is whole: the file may have been cut short."
     ]
 
@@ -518,3 +575,48 @@ def test_a_market_given_as_a_book_and_a_book_given_as_a_market(tmp_path, tables)
         issue.expected for issue in refused(tmp_path / "book.xlsx", load_market).issues if issue.code == "missing-sheet"
     ]
     assert "a table named snapshot" in missing
+
+
+def checked_with(tmp_path, tables, market):
+    """What the command says of a book and a market, without the spaces of a terminal's layout."""
+    write_tables(tables, tmp_path / "book.xlsx")
+    write_tables(market, tmp_path / "market.xlsx")
+    return CliRunner().invoke(app, ["check", str(tmp_path / "book.xlsx"), str(tmp_path / "market.xlsx")])
+
+
+def test_what_the_market_refused_is_told_first_and_its_trades_say_what_to_mend(tmp_path, tables):
+    market = deepcopy(dict(EXAMPLE_MARKET))
+    market["correlations"][1]["ORLUMA"] = 0.35
+    market["fx"] = [{"pair": "EURUSD", "spot": 0.0}]
+    market["curves"].append({"curve": "USD", "currency": "USD", "day_count": "ACT/360"})
+    market["curve_points"].append({"curve": "USD", "tenor": "5Y", "zero_rate_decimal": 0.03})
+    tables["trades"] = tables["trades"][:2]
+    tables["trades"][1]["currency"] = "USD"
+    tables["trades"][1]["collateral"] = None
+    tables["constituents"] = tables["constituents"][:4]
+    result = checked_with(tmp_path, tables, market)
+    assert result.exit_code == 2
+    headings = [line for line in result.output.splitlines() if line.startswith(("error", "warning"))]
+    assert headings == [
+        "error: out of range (1)",
+        "error: not symmetric (1)",
+        "error: missing correlation (1)",
+        "error: no fx route (1)",
+        "error: other currency (1)",
+    ]
+    assert (
+        'Mend the market first: market.xlsx, sheet correlations, row 3, column "ORLUMA" (cell B3): found 0.35, but '
+        "0.55 in cell C2; expected the same correlation in both cells."
+    ) in result.output
+    assert (
+        'Mend the market first: market.xlsx, sheet fx, row 2, column "spot" (cell B2): found 0; expected a number '
+        "above 0."
+    ) in result.output
+    assert result.output.startswith("5 problems: 5 errors\n")
+
+
+def test_one_trade_is_counted_in_the_singular(tmp_path, tables):
+    tables["trades"] = tables["trades"][:1]
+    tables["constituents"] = tables["constituents"][:3]
+    result = checked_with(tmp_path, tables, EXAMPLE_MARKET)
+    assert result.output == "1 trade can be priced, 0 cannot.\n"

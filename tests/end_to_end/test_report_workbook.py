@@ -15,6 +15,8 @@ from openpyxl.utils import get_column_letter, range_boundaries
 
 from pricer.report import columns, tables, write_report
 from pricer.report.explanations import CAUTION
+from pricer.report.text import looks_like_formula
+from pricer.report.widths import heading_lines, heading_width
 from tests.unit.report_outcomes import WARNINGS, empty, facts, outcome, refusals, valuation
 
 SHEETS = ["Summary", "Valuations", "Deltas by trade", "Deltas by underlying", "Cross-check", "Problems", "Run"]
@@ -82,7 +84,7 @@ def test_the_summary_leads_with_the_total_and_what_it_leaves_out(workbook, folde
     assert beside(summary, "trades in the book") == 43
     assert beside(summary, "priced, precision not reached") == 2
     assert beside(summary, "not priced, left out of every total") == 3
-    assert beside(summary, "cross-checks that disagree") == 2
+    assert beside(summary, "cross-checks that disagree, of 120 made") == 2
     assert summary["B1"].value == "Saltmarsh & Fen, structured desk"
     assert any("Read the cautions on the sheet Run" in text for text in texts(summary))
 
@@ -101,7 +103,7 @@ def test_the_parts_on_the_summary_add_up_to_the_total(workbook, folder):
         places = [cell for row in rows for cell in row if cell.value == title]
         head = places[-1]  # the first one of "Value by strategy" is the chart's
         values = []
-        row = head.row + 2
+        row = head.row + 3
         while summary.cell(row, head.column).value != "total":
             values.append(summary.cell(row, head.column + 4).value)
             row += 1
@@ -119,6 +121,8 @@ def test_every_sheet_shows_its_whole_table_under_headings_with_units(workbook, r
             continue
         for j, wanted in enumerate(frame[column.name]):
             found = sheet.cell(HEADING + 1 + j, i).value
+            if column.name == "method" and name == "valuations" and frame["status"][j] == "not priced":
+                continue  # the reason stands there
             if pd.isna(wanted) or wanted == "":
                 assert found is None
             elif isinstance(found, datetime):
@@ -162,6 +166,39 @@ def test_rows_without_a_value_are_marked_by_a_tint_and_a_bold_word(workbook):
     assert (plain[1], coarse[1], missing[1]) == (False, True, True)
 
 
+def test_a_trade_that_was_not_priced_says_why_in_print(workbook):
+    sheet = workbook["Valuations"]
+    _, _, last_printed, _ = range_boundaries(sheet.print_area.split("!")[1].replace("$", ""))
+    row = next(row for row in sheet.iter_rows() if row[0].value == "SMF-2001")
+    assert "strike: found 0; expected a price above 0" in [cell.value for cell in row[:last_printed]]
+
+
+def test_amounts_of_cross_checks_say_that_they_leave_the_premium_out(workbook):
+    headings = [cell.value for cell in workbook["Cross-check"][HEADING]]
+    for what in ("engine", "reference"):
+        assert f"{what} without premium (trade currency)" in headings
+
+
+@pytest.mark.parametrize("title", ["Deltas by trade", "Deltas by underlying"])
+def test_a_spot_is_shown_with_the_decimals_that_it_has(workbook, title):
+    """In these formats a # is a digit shown only where there is one (ECMA-376, part 1, 18.8.31)."""
+    sheet = workbook[title]
+    cell = sheet.cell(HEADING + 1, column_of(sheet, "spot (underlying's currency)"))
+    assert cell.number_format == "#,##0.00####"
+
+
+@pytest.mark.parametrize("title", TABLE_SHEETS)
+def test_headings_do_not_touch_and_their_row_is_no_taller_than_they_need(workbook, title):
+    sheet = workbook[title]
+    tallest = 0
+    for cell, column in zip(sheet[HEADING], TABLE_SHEETS[title][1], strict=True):
+        width, indent = sheet.column_dimensions[cell.column_letter].width, 0.0 if column.kind.numeric else 1.3
+        lines = heading_lines(cell.value, width, indent)
+        assert max(map(heading_width, lines)) < width - indent - 1.0, cell.value
+        tallest = max(tallest, len(lines) if column.printed else 0)
+    assert sheet.row_dimensions[HEADING].height < 13.0 * (tallest + 1)
+
+
 def test_disagreements_lead_the_cross_checks_and_are_marked(workbook):
     sheet = workbook["Cross-check"]
     verdict = column_of(sheet, "verdict")
@@ -178,6 +215,10 @@ def test_totals_by_underlying_stand_below_the_filter(workbook, run):
     column = column_of(sheet, "cash delta (EUR)")
     amounts = [sheet.cell(row, column).value for row in range(HEADING + 1, last)]
     assert sheet.cell(last, column).value == pytest.approx(sum(amounts))
+    for heading in ("standard error of cash delta (EUR)", "standard error of vega (EUR per vol point)"):
+        column = column_of(sheet, heading)
+        assert sheet.cell(last, column).value is None  # underlyings share draws
+        assert sheet.cell(last - 1, column).value > 0.0
     assert sheet.auto_filter.ref == f"A4:{get_column_letter(sheet.max_column)}{last - 1}"
 
 
@@ -252,6 +293,28 @@ def test_the_charts_draw_cells_of_this_workbook(workbook):
     assert all(chart.anchor.to.row <= last_printed for chart in summary._charts)
 
 
+def test_the_title_of_a_chart_counts_in_the_unit_of_its_scale(workbook):
+    def words(title):
+        return "".join(run.t for paragraph in title.tx.rich.p for run in paragraph.r or ())
+
+    for chart in workbook["Summary"]._charts[:2]:
+        assert words(chart.title).endswith(f"({words(chart.y_axis.title)})")
+    assert words(workbook["Summary"]._charts[0].y_axis.title) == "thousand EUR"
+
+
+def test_the_summary_takes_two_pages_and_the_run_sheet_prints_no_explanation_of_columns(workbook):
+    assert len(workbook["Summary"].row_breaks.brk) == 1
+    sheet = workbook["Run"]
+    last = int(sheet.print_area.rpartition("$")[2])
+    first = [cell.value for cell in sheet["A"]]
+    assert any(str(text).startswith("Columns of") for text in first[last:])
+    assert not any(str(text).startswith(("Columns of", "Methods")) for text in first[:last])
+    assert len(sheet.row_breaks.brk) == 1
+    for page in sheet.row_breaks.brk:  # a title stays with its lines: air, then the title
+        assert sheet.cell(page.id + 1, 1).value is None
+        assert sheet.cell(page.id + 2, 1).style == "section"
+
+
 def test_no_page_break_cuts_a_chart(workbook):
     summary = workbook["Summary"]
     breaks = [found.id for found in summary.row_breaks.brk]
@@ -285,6 +348,11 @@ def test_no_cell_holds_a_formula_whatever_the_text(tmp_path):
         issues=WARNINGS,
     )
     workbook = opened(run, tmp_path / "may")
+    for sheet in workbook:
+        for row in sheet.iter_rows():
+            for cell in row:  # a cell so marked stays text when a person edits it
+                if isinstance(cell.value, str):
+                    assert bool(cell.quotePrefix) == looks_like_formula(cell.value), cell.value
     kinds = {
         cell.data_type for sheet in workbook for row in sheet.iter_rows() for cell in row if cell.value is not None
     }
@@ -332,7 +400,7 @@ def test_empty_parts_say_so(run, tmp_path):
         assert workbook["Summary"]._charts == []
 
 
-def test_a_large_book_shows_its_twelve_largest_groups_and_the_rest_in_one_line(tmp_path):
+def test_a_large_book_shows_its_largest_groups_and_the_rest_in_one_line(tmp_path):
     trades = tuple(
         valuation(i, strategy=f"strategy {i % 20}", product=f"product {i % 13}", counterparty=f"name {i % 300}")
         for i in range(300)
@@ -342,7 +410,7 @@ def test_a_large_book_shows_its_twelve_largest_groups_and_the_rest_in_one_line(t
     assert "other (8)" in found
     assert "other (288)" in found
     assert sum(text.startswith("strategy ") for text in found) == 12
-    assert sum(text.startswith("product ") for text in found) == 13  # a rest of one is shown by its name
+    assert sum(text.startswith("product ") for text in found) == 13  # more than other tables have room for
 
 
 def test_many_refusals_are_counted_and_the_first_are_shown(tmp_path):

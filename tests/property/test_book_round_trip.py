@@ -37,7 +37,7 @@ names = st.one_of(
 ids = names.filter(lambda text: text == half_width(text))
 days = st.dates(date(2026, 1, 1), date(2060, 12, 31))
 positive = st.floats(1e-6, 1e12)
-small = st.floats(1e-3, 9.0)
+small = st.floats(1e-3, 3.0)
 
 
 @st.composite
@@ -71,7 +71,7 @@ def trades(draw, trade_id: str) -> Trade:
     floor = draw(st.none() | st.floats(-1.0, 1.0))
     profile = Profile(
         kind,
-        strike=0.0 if kind is ProfileKind.EXCHANGE else draw(st.floats(0.0, 9.0)) * scale,
+        strike=0.0 if kind is ProfileKind.EXCHANGE else draw(st.floats(0.0, 4.0)) * scale,
         cash_amount=draw(small) if kind in DIGITALS else 1.0,
         floor=floor,
         cap=draw(st.none() | st.floats(1.5, 10.0)),

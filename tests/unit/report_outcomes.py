@@ -97,6 +97,7 @@ def valuation(i: int = 0, **changes) -> Valuation:
         sampled_standard_error=error or notional * 4e-5,
         paths=65_536 if i % 2 else 131_072,
         randomisations=16,
+        degrees_of_freedom=14,
         seconds=draw.uniform(0.01, 0.9),
         status=Status.PRECISION_NOT_REACHED if missed else Status.PRICED,
         ending="largest number of points reached" if missed else "target standard error reached",

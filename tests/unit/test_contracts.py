@@ -88,3 +88,10 @@ def test_products_have_everyday_names():
 def test_weights_must_match_the_underlyings():
     with pytest.raises(ValueError, match="equal in number"):
         option(Aggregate.best_of(2), Profile(ProfileKind.CALL, 1.0))
+
+
+def test_an_option_without_a_notional_is_refused():
+    with pytest.raises(ValueError, match="at least one weight"):
+        option(Aggregate.rank_weighted((0.0, 0.0, 0.0)), Profile(ProfileKind.CALL, 1.0))
+    with pytest.raises(ValueError, match="amount other than 0"):
+        option(Aggregate.best_of(3), Profile(ProfileKind.CASH_DIGITAL_PUT, 1.0, cash_amount=0.0))

@@ -22,6 +22,11 @@ def test_an_issue_reads_as_a_sentence_with_its_place():
     )
 
 
+def test_a_csv_file_needs_no_sheet_to_be_named():
+    issue = Issue("x", "a", "b", "C.", file="may/trades.csv", sheet="trades", row=3)
+    assert str(issue) == "may/trades.csv, row 3: found a; expected b. C."
+
+
 def test_an_issue_of_a_whole_trade_names_the_trade():
     issue = Issue("x", "a", "b", "C.", trade_id="T1")
     assert str(issue) == "trade T1: found a; expected b. C."

@@ -190,6 +190,10 @@ def test_constituents_must_fit_their_trade(load, tables, row, changes, column, c
         (4, {"rank": 3}, "rank", "terms-do-not-fit"),
         (3, {"rank_weights": "0.6; 0.4"}, "rank_weights", "terms-do-not-fit"),
         (0, {"strike": 100.0}, "strike", "not-a-decimal"),
+        (0, {"strike": 4.1}, "strike", "not-a-decimal"),
+        (0, {"cap": 30.0}, "cap", "not-a-decimal"),
+        (3, {"cash_amount": 8.0}, "cash_amount", "not-a-decimal"),
+        (4, {"floor": 2.0}, "floor", "not-a-decimal"),
         (0, {"strike": -1.0}, "strike", "out-of-range"),
         (5, {"cash_level": 100.0}, "cash_level", "not-a-decimal"),
     ],
@@ -219,6 +223,88 @@ def test_performance_weights_that_miss_one_are_used_with_a_warning(load, tables)
     assert [(issue.code, issue.severity, issue.trade_id) for issue in book.issues] == [
         ("weights-off-one", Severity.WARNING, "EX-1")
     ]
+
+
+def test_the_strike_of_a_performance_option_grows_with_its_weights(load, tables):
+    tables["trades"][0]["strike"] = 4.1
+    for row in tables["constituents"][:3]:
+        row["weight"] *= 2.0
+    assert load(tables).trades[0].contract.profile.strike == 4.1
+
+
+@pytest.mark.parametrize(("weights", "total"), [("60; 30; 10", "100"), ("0.6; 0.3; 0", "0.9")])
+def test_rank_weights_of_a_performance_that_miss_one_are_used_with_a_warning(load, tables, weights, total):
+    tables["trades"][3]["rank_weights"] = weights
+    book = load(tables)
+    assert [(str(issue), issue.severity, issue.trade_id) for issue in book.issues] == [
+        (
+            'book.xlsx, sheet trades, row 5, column "rank_weights" (cell I5): found weights that add up to '
+            f"{total}; expected performance weights that add up to 1. Used as given. Check the weights: 25 % is "
+            "entered as 0.25.",
+            Severity.WARNING,
+            "EX-4",
+        )
+    ]
+    assert len(book) == 6
+
+
+def test_rank_weights_of_both_signs_need_not_add_up_to_one(load, tables):
+    tables["trades"][3]["rank_weights"] = "1; 0; -1"
+    assert load(tables).issues == ()
+
+
+@pytest.mark.parametrize("level", ["price", "performance"])
+def test_geometric_weights_that_miss_one_are_used_with_a_warning(load, tables, level):
+    tables["trades"][0]["aggregate"] = "geometric"
+    tables["constituents"][0]["weight"] = 1.5
+    if level == "price":
+        tables["trades"][0].update(underlying_level="price", notional=None, quantity=10.0)
+        for row in tables["constituents"][:3]:
+            row["initial_fixing"] = None
+    (issue,) = load(tables).issues
+    assert (issue.code, issue.severity, issue.found) == (
+        "weights-off-one",
+        Severity.WARNING,
+        "weights that add up to 2",
+    )
+
+
+def test_weights_of_prices_are_numbers_of_shares(load, tables):
+    tables["trades"][2].update(profile="call", strike=500.0)
+    tables["constituents"][6]["weight"] = 2.5
+    assert load(tables).issues == ()
+
+
+def test_one_weight_is_counted_in_the_singular(load, tables):
+    tables["trades"][3]["rank_weights"] = "1"
+    (refusal,) = load(tables).refusals
+    assert (refusal.issues[0].found, refusal.issues[0].expected) == ("1 weight", "3, one per underlying")
+
+
+def test_a_repeated_id_breeds_no_false_errors_and_the_cells_at_fault_are_told_once(load, tables):
+    # Together the two trades would have five constituents, and ORLUMA and TESKIR twice.
+    tables["trades"][1].update(trade_id="EX-1", strike="low")
+    for row in tables["constituents"][3:5]:
+        row["trade_id"] = "EX-1"
+    tables["constituents"][0]["initial_fixing"] = -1.0
+    book = load(tables)
+    assert [(refusal.trade_id, codes(refusal.issues)) for refusal in book.refusals] == [
+        ("EX-1", ["out-of-range", "duplicate-trade"]),
+        ("EX-1", ["not-a-number", "duplicate-trade"]),
+    ]
+    assert len(book.issues) == 4
+
+
+@pytest.mark.parametrize("ending", [".xlsx", ""])
+def test_a_book_called_book_is_named_after_the_folder_it_lies_in(tables, tmp_path, ending, monkeypatch):
+    path = tmp_path / "saltmarsh_desk" / f"Book{ending}"
+    path.parent.mkdir()
+    write_tables(tables, path)
+    assert load_book(path).name == "saltmarsh_desk"
+    monkeypatch.chdir(path.parent)
+    assert load_book(path.name).name == "saltmarsh_desk"
+    other = path.rename(path.with_name(f"night{ending}"))
+    assert load_book(other).name == "night"
 
 
 def test_text_that_looks_like_a_formula_stays_text(load, tables):

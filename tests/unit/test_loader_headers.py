@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import pytest
+
 from pricer.core.issues import Severity
+from pricer.loader.book_rows import trade_columns
 from pricer.loader.columns import columns_of
 from pricer.loader.headers import find_sheet, match_header, unread_sheets
 from pricer.loader.market_rows import CurveRow, FxRow
@@ -54,6 +57,38 @@ def test_an_optional_column_that_is_surely_meant_is_not_ignored():
     header, issues = match_header(sheet(["curve", "currency", "day_count", "colateral"]), CURVES)
     assert header is None
     assert [(issue.code, issue.severity) for issue in issues] == [("misspelt-column", Severity.FATAL)]
+
+
+@pytest.mark.parametrize(
+    ("text", "meant"),
+    [
+        ("kap", "cap"),
+        ("flor", "floor"),
+        ("folor", "floor"),
+        ("rnak", "rank"),
+        ("Caps", "cap"),
+        ("notonial", "notional"),
+        ("qantty", "quantity"),
+        ("premum-dates", "premium_date"),
+        ("stratgey", "strategy"),
+    ],
+)
+def test_one_slip_in_a_short_optional_name_and_two_in_a_longer_one_are_not_ignored(text, meant):
+    names = [name for name in trade_columns() if name != meant]
+    header, issues = match_header(sheet([*names, text], name="trades"), trade_columns())
+    assert header is None
+    assert [(issue.code, issue.severity, issue.column) for issue in issues] == [
+        ("misspelt-column", Severity.FATAL, text)
+    ]
+    assert issues[0].mend == f'Did you mean "{meant}"? Rename the column, or delete it.'
+
+
+@pytest.mark.parametrize(("text", "absent"), [("gaps", "cap"), ("books", "rank"), ("desk", "cap"), ("amount", "floor")])
+def test_a_column_of_the_desks_own_is_not_taken_for_a_slip(text, absent):
+    names = [name for name in trade_columns() if name != absent]
+    header, issues = match_header(sheet([*names, text], name="trades"), trade_columns())
+    assert header is not None
+    assert [issue.code for issue in issues] == ["unknown-column"]
 
 
 def test_an_unknown_column_is_ignored_with_a_warning():
@@ -109,7 +144,24 @@ def test_hidden_parts_are_read_with_a_warning():
 
 def test_values_outside_the_named_columns_are_told():
     _, issues = match_header(sheet(["pair", "spot", None], ["EURUSD", 1.1, None, "stray"]), FX)
-    assert [issue.found for issue in issues] == ["values without a column name in column D"]
+    assert [str(issue) for issue in issues] == [
+        "market.xlsx, sheet fx: found values outside the named columns, in cell D2; expected values below a column "
+        "name only. Ignored. Name their column, or clear them."
+    ]
+
+
+def test_many_values_outside_the_named_columns_are_one_warning():
+    notes = [["EURUSD", 1.1, None, "note", "note"] for _ in range(4)]
+    _, issues = match_header(sheet(["pair", "spot"], *notes), FX)
+    assert [issue.found for issue in issues] == [
+        "values outside the named columns, in cells D2, E2, D3, E3, D4 and 3 more"
+    ]
+
+
+def test_in_csv_files_a_row_that_is_too_wide_is_told_as_that_and_a_note_of_its_own_as_a_note():
+    rows = (["pair", "spot", None], ["EURUSD", "1", "1"], ["EURGBP", "0", "9", "8"], [None, None, None, "note"])
+    _, issues = match_header(sheet(*rows, typed=False), FX)
+    assert [issue.found for issue in issues] == ["values outside the named columns, in cells C2, C3, D4"]
 
 
 def test_a_missing_sheet_is_told_with_the_nearest_name():

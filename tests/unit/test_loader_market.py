@@ -84,9 +84,42 @@ def test_a_market_without_volatilities_or_correlations_is_told_and_goes_on(load,
     assert market.underlyings["ORLUMA"].volatility is None
 
 
-def test_dividends_and_fx_may_be_absent(load, tables):
-    del tables["dividends"], tables["fx"]
+def test_fx_may_be_absent_and_dividends_may_be_empty(load, tables):
+    del tables["fx"]
+    tables["dividends"] = []
     assert load(tables).issues == ()
+
+
+def test_a_market_without_the_table_of_dividends_says_that_none_are_known(load, tables):
+    del tables["dividends"]
+    market = load(tables)
+    assert [(str(issue), issue.severity) for issue in market.issues] == [
+        (
+            "market.xlsx: found no table dividends; expected a table named dividends, which may be empty. No discrete "
+            "dividends are known: forwards fall by dividend yields only. Add the table, empty if there are none.",
+            Severity.WARNING,
+        )
+    ]
+    assert market.underlyings["TESKIR"].dividends.proportional == ()
+
+
+def test_a_valuation_date_on_a_weekend_is_told_at_its_cell_unless_another_was_asked_for(load, tables):
+    tables["snapshot"][0]["valuation_date"] = date(2026, 3, 28)
+    (issue,) = load(tables).issues
+    assert (issue.code, issue.cell) == ("weekend-valuation", "A2")
+    assert codes(load(tables, valuation_date=date(2026, 3, 27)).issues) == [("other-valuation-date", "warning")]
+    issues = load(tables, valuation_date=date(2026, 3, 29)).issues
+    assert [(issue.code, issue.cell) for issue in issues] == [
+        ("other-valuation-date", "A2"),
+        ("weekend-valuation", None),
+    ]
+
+
+def test_an_implausible_dividend_yield_is_told_at_its_cell(load, tables):
+    tables["underlyings"][2]["dividend_yield_decimal"] = 0.34
+    market = load(tables)
+    assert [(issue.code, issue.cell) for issue in market.issues] == [("implausible-dividend-yield", "F4")]
+    assert market.underlyings["VADRONE"].dividends.yield_rate == 0.34
 
 
 @pytest.mark.parametrize("rows", [[], [{"valuation_date": date(2026, 3, 31), "reporting_currency": "EUR"}] * 2])
@@ -290,6 +323,62 @@ def test_a_bad_correlation_costs_one_underlyings_correlations_only(load, tables,
     assert code in [issue.code for issue in market.issues]
     assert len(market.correlation.ids) == 2
     assert "VADRONE" in market.correlation
+
+
+def test_mirrored_correlations_that_differ_by_rounding_are_averaged_in_silence(load, tables):
+    set_pair(tables, "TESKIR", "ORLUMA", 0.55, 0.55 + 8e-9)
+    market = load(tables)
+    assert market.issues == ()
+    assert market.correlation.sub(["TESKIR", "ORLUMA"])[0, 1] == pytest.approx(0.55 + 4e-9, abs=1e-15)
+
+
+def test_mirrored_correlations_that_differ_slightly_are_averaged_with_a_warning(load, tables):
+    set_pair(tables, "TESKIR", "ORLUMA", 0.55, 0.55006)
+    market = load(tables)
+    assert [(str(issue), issue.severity) for issue in market.issues] == [
+        (
+            'market.xlsx, sheet correlations, row 3, column "ORLUMA" (cell B3): found 0.55, but 0.55006 in cell C2; '
+            "expected the same correlation in both cells. Their average is used. Correct one of them, or clear it.",
+            Severity.WARNING,
+        )
+    ]
+    assert market.rejected == {}
+    assert market.correlation.sub(["ORLUMA", "TESKIR"])[0, 1] == pytest.approx(0.55003, abs=1e-15)
+
+
+def test_mirrored_correlations_that_differ_by_more_are_refused(load, tables):
+    set_pair(tables, "TESKIR", "ORLUMA", 0.55, 0.5502)
+    assert codes(load(tables).issues) == [("not-symmetric", "error")]
+
+
+@pytest.mark.parametrize(
+    ("a", "b", "there", "back", "code"),
+    [
+        ("TESKIR", "ORLUMA", 0.55, 0.56, "not-symmetric"),
+        ("TESKIR", "ORLUMA", 1.2, 0.55, "out-of-range"),
+        ("TESKIR", "TESKIR", 0.9, 0.9, "out-of-range"),
+    ],
+)
+def test_why_an_underlying_lost_its_correlations_is_kept(load, tables, a, b, there, back, code):
+    set_pair(tables, a, b, there, back)
+    market = load(tables)
+    assert {name: [issue.code for issue in issues] for name, issues in market.rejected.items()} == {
+        "correlations:TESKIR": [code]
+    }
+
+
+def test_why_an_underlying_with_two_rows_of_correlations_lost_them_is_kept(load, tables):
+    tables["correlations"].append(dict(tables["correlations"][1]))
+    market = load(tables)
+    assert [issue.found for issue in market.rejected["correlations:TESKIR"]] == ['a second row "TESKIR"']
+
+
+def test_correlations_of_which_none_is_left_are_explained_as_a_whole(load, tables):
+    for row in tables["correlations"]:
+        row[row["underlying"]] = 0.5
+    market = load(tables)
+    assert market.correlation is None
+    assert [issue.expected for issue in market.rejected["correlations"]] == ["1 on the diagonal"] * 3
 
 
 def test_a_diagonal_that_is_not_one_is_refused(load, tables):

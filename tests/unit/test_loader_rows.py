@@ -103,6 +103,30 @@ def test_terms_that_do_not_fit_are_told_at_the_cell_to_change(changes, column, f
     assert expected is None or told[column][1] == expected
 
 
+@pytest.mark.parametrize(
+    ("changes", "column", "expected", "mend"),
+    [
+        ({"profile": "cash digital put", "cash_amount": 8.0}, "cash_amount", "3", "Did you mean 0.08 (8 %)?"),
+        ({"cap": 30.0}, "cap", "10", "Did you mean 0.3 (30 %)?"),
+        ({"floor": 2.0}, "floor", "1", "Did you mean 0.02 (2 %)?"),
+    ],
+)
+def test_payoffs_of_performance_options_are_decimals(changes, column, expected, mend):
+    fault = faults(EuropeanOptionRow, **GOOD | changes)[column]
+    assert fault.code == "not-a-decimal"
+    assert fault.expected == f"a decimal payoff (0.08 = 8 %) of at most {expected}"
+    assert fault.mend == mend
+    of_price = {"underlying_level": "price", "notional": None, "quantity": 1.0}
+    assert getattr(validated(EuropeanOptionRow, **GOOD | changes | of_price), column) == changes[column]
+
+
+@pytest.mark.parametrize(
+    "changes", [{"profile": "cash digital put", "cash_amount": 3.0}, {"cap": 10.0}, {"floor": 1.0}, {"floor": -2.0}]
+)
+def test_payoffs_of_performance_options_may_be_large(changes):
+    validated(EuropeanOptionRow, **GOOD | changes)
+
+
 def test_rules_are_silent_where_a_cell_they_look_at_is_itself_faulty():
     assert set(trade_faults(underlying_level="prize", quantity=5.0)) == {"underlying_level"}
     assert set(trade_faults(aggregate="wrost of", rank=1.0)) == {"aggregate"}

@@ -24,8 +24,21 @@ def folder(tmp_path_factory):
     return folder
 
 
-def test_both_templates_are_written_and_named(folder):
-    assert [path.name for path in write_templates(folder)] == ["book.xlsx", "market.xlsx"]
+def test_both_templates_are_written_and_named(tmp_path):
+    assert [path.name for path in write_templates(tmp_path)] == ["book.xlsx", "market.xlsx"]
+
+
+@pytest.mark.parametrize("name", ["book.xlsx", "market.xlsx"])
+def test_a_workbook_that_is_there_is_never_overwritten(tmp_path, name):
+    (tmp_path / name).write_text("a day's work")
+    with pytest.raises(FileExistsError) as caught:
+        write_templates(tmp_path)
+    assert str(caught.value) == (
+        f"{tmp_path / name} exists and may be filled in, so no template is written over it. Name another folder, or "
+        "move the file away."
+    )
+    assert [path.name for path in tmp_path.iterdir()] == [name]
+    assert (tmp_path / name).read_text() == "a day's work"
 
 
 @pytest.mark.parametrize(("file", "tables", "_"), PARTS)

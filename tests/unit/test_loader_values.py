@@ -15,6 +15,7 @@ from pricer.loader.names import CalendarName, Choice, Currency, CurrencyPair, Fr
 from pricer.loader.numbers import Number, NumberList, WholeNumber
 from pricer.loader.schema import BOOK, MARKET
 from pricer.loader.sheets import ErrorValue, UncalculatedFormula
+from pricer.loader.text import slip_of
 
 
 def read(kind, cell, *, typed=True):
@@ -273,6 +274,30 @@ def test_tenors_are_a_number_and_a_letter(text, tenor):
 @pytest.mark.parametrize("text", ["3", "M", "0M", "3Q", "1Y6M", "-1Y"])
 def test_other_tenors_are_refused(text):
     assert fault(Tenor(), text).code == "not-a-tenor"
+
+
+@pytest.mark.parametrize(
+    ("name", "typed", "is_slip"),
+    [
+        ("cap", "cap", True),
+        ("cap", "kap", True),
+        ("cap", "acp", True),
+        ("cap", "ca", True),
+        ("cap", "kpa", False),
+        ("floor", "flor", True),
+        ("floor", "flr", False),
+        ("weight", "wieght", True),
+        ("weight", "whieght", True),
+        ("weight", "wihgte", False),
+        ("lot_size", "Lot Sice", True),
+    ],
+)
+def test_a_slip_of_the_finger_is_one_edit_and_two_from_six_letters_on(name, typed, is_slip):
+    assert slip_of(name, ["something else", typed]) == (typed if is_slip else None)
+
+
+def test_a_slip_of_nothing_is_none():
+    assert slip_of("cap", []) is None
 
 
 @pytest.mark.parametrize("typed", [True, False])

@@ -5,7 +5,10 @@ from datetime import date
 
 import pytest
 
+from pricer.contracts.aggregate import Aggregate, AggregateKind
+from pricer.contracts.profile import Profile, ProfileKind
 from pricer.core.issues import Issue, Severity
+from pricer.core.source import Place
 from pricer.market.coverage import coverage
 from pricer.market.fx import FxRates
 from tests.unit.markets import TODAY, basket, cell, curve, small_market
@@ -125,6 +128,23 @@ def test_an_underlying_missing_from_the_correlations():
     assert issues[1].found == 'no correlation of underlying "ELVERUM" with ARVENNE and BELCOR'
 
 
+def test_correlations_that_the_market_refused_are_to_be_mended_there():
+    market = small_market()
+    new = replace(market.underlyings["ARVENNE"], underlying_id="DORNACH")
+    why = Issue("not-symmetric", "0.5, but 0.6 in cell E2", "the same correlation in both cells", "Correct.",
+                file="market.xlsx", sheet="correlations", row=5, column="ARVENNE", cell="B5")  # fmt: skip
+    market = replace(
+        market, underlyings={**market.underlyings, "DORNACH": new}, rejected={"correlations:DORNACH": (why,)}
+    )
+    issue = only(basket("ARVENNE", "DORNACH"), market)
+    assert str(issue) == (
+        CONSTITUENT
+        + 'found no correlation of underlying "DORNACH" with ARVENNE; expected a correlation for every pair '
+        "of the trade's underlyings. Mend the market first: market.xlsx, sheet correlations, row 5, column "
+        '"ARVENNE" (cell B5): found 0.5, but 0.6 in cell E2; expected the same correlation in both cells.'
+    )
+
+
 def test_an_unknown_currency_is_told_once():
     issue = only(basket("ARVENNE", currency="EUX"))
     assert issue.code == "unknown-currency"
@@ -146,6 +166,31 @@ def test_a_currency_without_a_way_to_the_reporting_currency():
         "expected a chain of exchange rates from NOK to EUR. Add the pair EURNOK or NOKEUR to the fx table of the "
         "market."
     )
+
+
+REFUSED = Issue("out-of-range", "0", "a number above 0", "Enter it.", file="market.xlsx", sheet="fx", row=3,
+                column="spot", cell="B3")  # fmt: skip
+MEND = (
+    'Mend the market first: market.xlsx, sheet fx, row 3, column "spot" (cell B3): found 0; expected a number above 0.'
+)
+
+
+@pytest.mark.parametrize("pair", ["EURNOK", "SEKEUR"])
+def test_a_refused_exchange_rate_that_may_be_the_missing_link_is_to_be_mended_in_the_market(pair):
+    # NOK is linked to SEK: either of the two pairs would lead on to EUR.
+    market = small_market()
+    underlyings = {**market.underlyings, "FJORD": replace(market.underlyings["ARVENNE"], currency="NOK")}
+    curves = {**market.curves, ("NOK", ""): curve("NOK-STD", "NOK")}
+    market = replace(market, underlyings=underlyings, curves=curves, rejected={"ZZZ": (), pair: (REFUSED,)})
+    issue = only(basket("FJORD", currency="NOK"), market)
+    assert (issue.code, issue.mend) == ("no-fx-route", MEND)
+
+
+def test_a_currency_known_from_a_refused_exchange_rate_only_is_to_be_mended_in_the_market():
+    issue = only(basket("ARVENNE", currency="CHF"), small_market(rejected={"EURCHF": (REFUSED,)}))
+    assert (issue.code, issue.mend) == ("unknown-currency", MEND)
+    issue = only(basket("ARVENNE", currency="CHF"), small_market(rejected={"EURDKK": (REFUSED,)}))
+    assert "Correct the currency" in issue.mend
 
 
 def test_the_reporting_currency_needs_no_exchange_rates():
@@ -226,6 +271,7 @@ def test_data_that_end_before_the_trade():
     )
     assert {issue.severity for issue in issues} == {Severity.WARNING}
     assert [(issue.code, issue.found) for issue in issues] == [
+        ("premium-after-payment", "premium date 2032-01-05, after the payment date 2031-12-03"),
         ("beyond-curve", "payment date 2031-12-03, after 2031-11-28, where curve EUR-USD ends"),
         ("beyond-curve", "premium date 2032-01-05, after 2031-11-28, where curve EUR-USD ends"),
         ("beyond-curve", "expiry date 2031-12-01, after 2031-11-28, where curve EUR-STD ends"),
@@ -234,14 +280,102 @@ def test_data_that_end_before_the_trade():
             'expiry date 2031-12-01, after 2028-12-15, the last volatility date of underlying "ARVENNE"',
         ),
     ]
-    assert issues[0].mend == "The curve's last forward rate is used beyond its end; add a later point to the curve."
-    assert issues[3].mend == (
+    assert issues[1].mend == "The curve's last forward rate is used beyond its end; add a later point to the curve."
+    assert issues[4].mend == (
         "The last volatility is used beyond its date; add a later expiry to the volatilities table."
     )
 
 
 def test_a_premium_already_paid_needs_no_curve():
     assert told(basket("ARVENNE", premium=TODAY)) == []
+
+
+def test_a_trade_date_after_the_valuation_date():
+    trade = replace(basket("ARVENNE"), trade_date=date(2026, 12, 1))
+    issue = only(trade)
+    assert (issue.code, issue.severity) == ("traded-later", Severity.WARNING)
+    assert str(issue) == (
+        "trade T1: found trade date 2026-12-01, after the valuation date 2026-11-30; expected a trade date on or "
+        "before the valuation date. The trade is valued all the same; correct the date, or take the trade out until it "
+        "is done."
+    )
+    assert told(replace(trade, trade_date=TODAY)) == []
+
+
+def test_a_premium_after_the_payment():
+    issue = only(basket("ARVENNE", payment=date(2027, 12, 21), premium=date(2027, 12, 22)))
+    assert (issue.code, issue.severity) == ("premium-after-payment", Severity.WARNING)
+    assert str(issue) == (
+        "trade T1: found premium date 2027-12-22, after the payment date 2027-12-21; expected a premium paid before "
+        "the payoff, or with it. The premium is discounted from its date as given; correct the date if it is wrong."
+    )
+    assert told(basket("ARVENNE", payment=date(2027, 12, 21), premium=date(2027, 12, 21))) == []
+
+
+def on_performance(*fixings, names=("ARVENNE", "BELCOR")):
+    trade = basket(*names)
+    option = replace(
+        trade.contract, reference_levels=fixings, on_performance=True, profile=Profile(ProfileKind.CALL, 1.0)
+    )
+    return replace(trade, contract=option)
+
+
+def test_an_initial_fixing_far_from_spot():
+    issue = only(on_performance(98.0, 5200.0))
+    assert (issue.code, issue.severity) == ("fixing-far-from-spot", Severity.WARNING)
+    assert str(issue) == (
+        CONSTITUENT + 'found initial fixing 5200 of underlying "BELCOR", whose spot is 50; expected a fixing within a '
+        "factor of 5 of the spot. Pence against pounds, or a split? Check both; they are used as given."
+    )
+    assert only(on_performance(19.9, 50.0)).code == "fixing-far-from-spot"
+    assert told(on_performance(20.0, 250.0)) == []
+
+
+def test_an_initial_fixing_is_told_at_its_own_cell_where_that_is_known():
+    place = Place("book.xlsx", "constituents", 9, "initial_fixing", "D9")
+    (issue,) = coverage(on_performance(100.0, 0.5), small_market(), {"initial_fixing:BELCOR": place}.get)
+    assert issue.cell == "D9"
+
+
+def struck(strike, *weights, kind=AggregateKind.WEIGHTED_SUM, profile=ProfileKind.CALL):
+    trade = basket("ARVENNE", "BELCOR")
+    option = replace(trade.contract, aggregate=Aggregate(kind, weights), profile=Profile(profile, strike))
+    return replace(trade, contract=option)
+
+
+def test_a_strike_far_from_the_aggregate_of_the_forwards():
+    market = small_market()
+    expiry = basket("ARVENNE").contract.expiry_date
+    level = market.forward("ARVENNE", expiry) + market.forward("BELCOR", expiry)
+    issue = only(struck(15000.0, 1.0, 1.0))
+    assert (issue.code, issue.severity) == ("strike-far-from-forward", Severity.WARNING)
+    assert str(issue) == (
+        AT + f'"trade_id" (cell A7): found strike 15000, where the aggregate of the forwards is {level:g}; expected a '
+        "strike within a factor of 5 of the aggregate at forwards. Pence against pounds, or a split? Check the strike, "
+        "the weights and the spots; they are used as given."
+    )
+    assert [code for code, *_ in told(struck(0.199 * level, 1.0, 1.0))] == ["strike-far-from-forward"]
+    assert told(struck(0.201 * level, 1.0, 1.0)) == told(struck(4.99 * level, 1.0, 1.0)) == []
+
+
+@pytest.mark.parametrize(
+    "trade",
+    [
+        struck(0.0, 1.0, 1.0, profile=ProfileKind.FORWARD),
+        struck(2.0, 1.0, -2.0),
+        struck(-40.0, 1.0, -2.0),
+        struck(500.0, 1.0, -2.0, profile=ProfileKind.CASH_DIGITAL_CALL),
+        struck(1.0, 1.0, -1.0, kind=AggregateKind.RANK_WEIGHTED),
+    ],
+)
+def test_a_strike_of_zero_and_the_strike_of_a_spread_are_not_compared(trade):
+    assert told(trade) == []
+
+
+def test_a_strike_is_not_compared_where_the_forwards_are_unknown():
+    market = small_market(curves={("EUR", "USD"): curve("EUR-USD", "EUR", "USD")})
+    assert only(struck(15000.0, 1.0, 1.0), market).code == "no-standard-curve"
+    assert only(replace(basket("ARVENNE", expiry=date(2026, 11, 23)))).code == "expired"
 
 
 def test_an_expiry_on_a_holiday():

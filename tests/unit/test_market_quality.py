@@ -4,6 +4,7 @@ from dataclasses import replace
 from datetime import date
 
 import numpy as np
+import pytest
 
 from pricer.core.issues import Severity
 from pricer.core.source import Place
@@ -82,6 +83,37 @@ def test_dividends_that_eat_the_price_within_a_year():
         "The dividends are used as given."
     )
     assert gates(paying((date(2027, 5, 12), 0.3), (date(2028, 5, 11), 0.3))) == ()
+
+
+@pytest.mark.parametrize("rate", [0.26, -0.06])
+def test_an_implausible_dividend_yield(rate):
+    market = small_market()
+    strange = replace(market.underlyings["ARVENNE"], dividends=Dividends(rate))
+    issue = only(replace(market, underlyings={"ARVENNE": strange}))
+    assert issue.code == "implausible-dividend-yield"
+    assert str(issue) == (
+        f"found a dividend yield of {100 * rate:.1f} % for ARVENNE; expected dividend yields between -5 % and 25 %. "
+        "Check the unit: 2.1 % is entered as 0.021. The yield is used as given."
+    )
+
+
+@pytest.mark.parametrize("rate", [0.25, 0.0, -0.05])
+def test_a_plausible_dividend_yield(rate):
+    market = small_market()
+    assert gates(replace(market, underlyings={
+        "ARVENNE": replace(market.underlyings["ARVENNE"], dividends=Dividends(rate))
+    })) == ()  # fmt: skip
+
+
+@pytest.mark.parametrize(("day", "name"), [(date(2026, 11, 28), "Saturday"), (date(2026, 11, 29), "Sunday")])
+def test_a_valuation_date_on_a_weekend(day, name):
+    issue = only(small_market(valuation_date=day))
+    assert issue.code == "weekend-valuation"
+    assert str(issue) == (
+        f"found the valuation date {day}, a {name}; expected a day on which markets close. Check the date; the book is "
+        "valued to it as given."
+    )
+    assert gates(small_market(valuation_date=date(2026, 11, 27))) == ()
 
 
 def test_exchange_rates_that_disagree_with_their_cross():

@@ -138,6 +138,17 @@ def test_every_float_survives_a_plain_table(tmp_path_factory, values):
     assert [float(row["value"]) for row in rows(path)] == values
 
 
+def test_vega_names_its_unit(written):
+    for name in ("deltas.csv", "underlying_deltas.csv"):
+        vegas = [column for column in rows(written / name)[0] if "vega" in column]
+        without_unit = {column for column in vegas if "per_vol_point" not in column}
+        assert without_unit == ({"vega_currency"} if name == "deltas.csv" else {"trades_without_vega"})
+    row = rows(written / "deltas.csv")[0]
+    assert float(row["vega_per_vol_point_standard_error"]) == pytest.approx(
+        abs(float(row["vega_per_vol_point"])) * 6e-3
+    )
+
+
 def test_trades_that_were_not_priced_have_blank_numbers_in_the_plain_table(written):
     last = rows(written / "valuations.csv")[-1]
     assert (last["trade_id"], last["status"]) == ("SMF-2003", "not priced")
@@ -182,6 +193,8 @@ def test_the_facts_of_the_run_are_complete(run, written):
     assert found["counts"]["problems"] == {"fatal": 0, "error": 4, "warning": 2}
     assert found["counts"]["cross_checks"][Verdict.DIFFERS] == 1
     assert sum(found["counts"]["cross_checks"].values()) == len(run.cross_checks)
+    assert found["counts"]["cross_checks_without_sampling"] == 0
+    assert found["counts"]["disputed"] == 0
     assert found["total"]["value"] == pytest.approx(sum(v.reporting_value for v in run.valuations))
     assert found["trade_seconds"][5] == {"trade_id": "SMF-1005", "seconds": run.valuations[5].seconds}
     assert found["timings"] == dict(run.facts.timings)

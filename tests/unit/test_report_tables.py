@@ -12,6 +12,7 @@ from hypothesis import strategies as st
 from pricer.contracts.book import Refusal
 from pricer.core.issues import Severity
 from pricer.report import tables
+from pricer.report.frames import short_reason
 from pricer.report.rates import Rates
 from pricer.report.totals import GROUPINGS, book_total, group_totals
 from pricer.run.outcome import Delta, Interval, Status, UnderlyingFacts, Verdict
@@ -19,7 +20,7 @@ from tests.unit.report_outcomes import TO_EUR, WARNINGS, empty, issue, outcome, 
 
 NUMBERS = [
     *("value", "standard_error", "lower", "upper", "unpaid_premium", "reporting_value", "reporting_standard_error"),
-    *("sampled_value", "sampled_standard_error", "paths", "randomisations"),
+    *("sampled_value", "sampled_standard_error", "paths", "randomisations", "degrees_of_freedom"),
 ]
 
 
@@ -108,8 +109,8 @@ def test_deltas_of_one_underlying_add_up_and_their_errors_in_quadrature():
     assert row["reporting_cash_delta"] == pytest.approx(11_000.0, rel=1e-15)
     assert row["reporting_cash_delta_standard_error"] == pytest.approx(275.0, rel=1e-15)
     assert (row["gamma"], row["gamma_standard_error"], row["trades_without_gamma"]) == (2.0, 0.3, 1)
-    assert row["reporting_vega"] == 4.0
-    assert row["reporting_vega_standard_error"] == pytest.approx(0.1 * math.sqrt(2.0))
+    assert row["reporting_vega_per_vol_point"] == 4.0
+    assert row["reporting_vega_per_vol_point_standard_error"] == pytest.approx(0.1 * math.sqrt(2.0))
 
 
 def test_underlyings_come_largest_cash_delta_first_and_unknown_ones_last():
@@ -139,12 +140,13 @@ def test_the_book_total_adds_values_and_squares_of_errors():
     assert headline.upper - 13.0 == pytest.approx(13.0 - headline.lower)
 
 
-def test_the_interval_of_a_book_of_one_trade_is_students():
-    """16 randomisations less mean and control leave 14 degrees of freedom: 2.9768 (common table of Student's t)."""
-    trade = valuation(1)
+@pytest.mark.parametrize(("degrees", "quantile"), [(14, 2.9768), (9, 3.2498)])
+def test_the_interval_of_a_book_of_one_trade_is_students(degrees, quantile):
+    """Two-sided 99 % quantiles from the common table of Student's t."""
+    trade = valuation(1, degrees_of_freedom=degrees)
     headline = book_total(empty(valuations=(trade,)))
     reach = (headline.upper - trade.reporting_value) / trade.reporting_standard_error
-    assert reach == pytest.approx(2.9768, abs=5e-5)
+    assert reach == pytest.approx(quantile, abs=5e-5)
 
 
 def test_a_book_without_sampling_has_an_interval_of_no_width():
@@ -160,7 +162,7 @@ def test_a_delta_that_one_trade_lacks_is_not_passed_over_in_the_books():
     assert row[["delta", "lots", "cash_delta", "reporting_cash_delta"]].isna().all()
     assert (row["trades_without_delta"], row["trades_without_vega"], row["trades_without_gamma"]) == (1, 0, 1)
     assert row["gamma"] == 2.0
-    assert row["reporting_vega"] == 1.0
+    assert row["reporting_vega_per_vol_point"] == 1.0
 
 
 def test_the_interval_of_a_large_book_is_the_normal_one():
@@ -178,6 +180,22 @@ def test_the_parts_of_every_grouping_add_up_to_the_book(run, grouping):
     assert sum(part.not_priced for part in parts) == whole.not_priced
     assert math.fsum(part.value for part in valued) == pytest.approx(whole.value, rel=1e-12)
     assert math.hypot(*(part.standard_error for part in valued)) == pytest.approx(whole.standard_error, rel=1e-12)
+
+
+def test_a_disputed_trade_is_in_the_total_and_counted_by_its_own_name():
+    run = empty(valuations=(simple("A", 10.0, 3.0), simple("B", -4.0, 4.0, status=Status.DISPUTED)))
+    whole = book_total(run).total
+    assert whole.value == 6.0
+    assert (whole.trades, whole.priced, whole.disputed, whole.not_priced) == (2, 1, 1, 0)
+
+
+def test_the_short_reason_names_column_and_fault_and_counts_the_others():
+    short = [short_reason(refusal) for refusal in refusals()]
+    assert short[0] == "strike: found 0; expected a price above 0"
+    assert short[1] == 'expiry_date: found "31/02/2027"; expected a date (and 1 more)'
+    assert all(len(text) <= 72 for text in short)
+    assert short_reason(simple("A", 1.0, 0.1, status=Status.NOT_PRICED, ending="stopped")) == "stopped"
+    assert short_reason(Refusal("A", ())) == "no reason was recorded"
 
 
 def test_a_group_without_a_price_has_no_value_instead_of_zero():
@@ -211,6 +229,9 @@ def test_rates_come_from_underlyings_and_else_from_a_trades_two_values():
 def test_disagreements_lead_the_cross_checks(frames):
     verdicts = list(frames["cross_check"]["verdict"])
     assert verdicts[:2] == [Verdict.DIFFERS, Verdict.OUTSIDE_BOUND]
+    assert list(dict.fromkeys(verdicts)) == [
+        *(Verdict.DIFFERS, Verdict.OUTSIDE_BOUND, Verdict.AGREES, Verdict.WITHIN_BOUND, Verdict.FAR, Verdict.CLOSE)
+    ]
     assert verdicts == sorted(verdicts, key=verdicts.index)  # equal verdicts stand together
 
 

@@ -16,10 +16,11 @@ from pricer.core.progress import Silent
 from pricer.engines import european
 from pricer.engines.closed_form import best_exact, references
 from pricer.engines.european import problem_of
+from pricer.engines.problem import Reference, ReferenceKind
 from pricer.market.correlation import checked
 from pricer.run import pricing
 from pricer.run.local import map_groups
-from pricer.run.outcome import Interval, Status
+from pricer.run.outcome import Interval, Status, Verdict
 from pricer.run.pricing import price
 from pricer.run.settings import Settings
 from tests.unit.markets import TODAY, basket, small_market
@@ -130,6 +131,14 @@ def test_an_engine_failure_costs_one_trade_and_is_told(monkeypatch):
     assert (issue.code, issue.trade_id, issue.severity) == ("engine-failed", "BAD", Severity.ERROR)
     assert "ZeroDivisionError: boom" in issue.found
     assert outcome.exit_status == 1
+
+
+def test_a_trade_whose_cross_check_disagrees_is_disputed(monkeypatch):
+    wrong = Reference("wrong formula", ReferenceKind.EXACT, 1.0, 0.0, "nowhere")
+    monkeypatch.setattr(european, "references", lambda problem: (wrong,))
+    outcome = priced(basket("ARVENNE", "BELCOR"))
+    assert outcome.valuations[0].status is Status.DISPUTED
+    assert outcome.cross_checks[0].verdict is Verdict.DIFFERS
 
 
 def test_an_expiry_today_pays_on_todays_spot_and_says_so():
