@@ -13,7 +13,21 @@ from enum import StrEnum
 from itertools import pairwise
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
+
+#: A level that differs from a knot by no more than this share of its terms is *at* the knot:
+#: in which order weights were multiplied and added must not decide whether a digital pays.
+TIE = 1e-12
+
+
+def is_above(level: ArrayLike, knot: ArrayLike, gross: ArrayLike = 0.0) -> NDArray[np.bool_]:
+    """Whether known levels are above ``knot``, so that a jump there is paid; all arguments broadcast.
+
+    ``gross`` is the sum of the absolute terms that made up the level, where they may cancel.
+    """
+    level, knot = np.asarray(level, dtype=float), np.asarray(knot, dtype=float)
+    size = np.maximum(np.maximum(np.abs(level), np.abs(knot)), gross)
+    return np.asarray(level - knot > TIE * size)
 
 
 class ProfileKind(StrEnum):
@@ -63,6 +77,14 @@ class PiecewiseLinear:
         out = self.intercept + self.slope * a
         for knot, bend, jump in zip(self.knots, self.bends, self.jumps, strict=True):
             out = out + bend * np.maximum(a - knot, 0.0) + jump * (a > knot)
+        return out
+
+    def of_known(self, a: NDArray[np.float64], gross: ArrayLike = 0.0) -> NDArray[np.float64]:
+        """The payoff at levels without variance, any shape: a tie counts as *at* the knot (see :func:`is_above`)."""
+        a = np.asarray(a, dtype=float)
+        out = self.intercept + self.slope * a
+        for knot, bend, jump in zip(self.knots, self.bends, self.jumps, strict=True):
+            out = out + bend * np.maximum(a - knot, 0.0) + jump * is_above(a, knot, gross)
         return out
 
     def pieces(self) -> tuple[NDArray[np.float64], NDArray[np.float64]]:

@@ -15,6 +15,8 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
+from pricer.contracts.aggregate import AggregateKind
+from pricer.contracts.profile import is_above
 from pricer.core.randomness import Purpose, stream
 from pricer.engines.problem import EuropeanProblem
 from pricer.simulation.design import Design
@@ -33,7 +35,7 @@ class SamplingSettings:
     serves these better and at half the cost.
     """
 
-    randomisations: int = 16
+    randomisations: int = 32
     initial_points: int = 1024  # per randomisation, a power of two
     maximum_points: int = 2**19  # per randomisation, a power of two
     ordering: Literal["automatic", "principal components", "cholesky"] = "automatic"
@@ -104,10 +106,9 @@ def sample(
 
     from pricer.simulation.sampler import Sampler  # compiles the kernels: only when they are needed
 
-    streams = [stream(seed, group, Purpose.PRICE, r) for r in range(settings.randomisations)]
-    sampler = Sampler(design, streams)
+    sampler = Sampler(design, stream(seed, group, Purpose.PRICE, 0), settings.randomisations)
     df = problem.discount_factor
-    unsmoothed = design.common == 0.0 and bool(design.payoff.knots)
+    unsmoothed = not design.is_smoothed and bool(design.payoff.knots)
     no_deltas = unsmoothed and not design.payoff.is_continuous
     points = settings.initial_points
     while True:
@@ -116,16 +117,14 @@ def sample(
         delta_error = 0.0 if no_deltas else df * float(np.max(found.log_delta_errors))
         delta_limit = max(delta_tolerance, delta_fraction * df * float(np.sum(np.abs(found.log_deltas))))
         reached = error <= value_tolerance and delta_error <= delta_limit
-        # without smoothing, paths that all miss the kinks look certain: only their number tells
-        blind = unsmoothed and found.value_error <= 2.0 * found.rounding
-        if (reached and not blind) or points >= settings.maximum_points:
+        if reached or points >= settings.maximum_points:
             break
         points *= 2
 
     paths = settings.randomisations * points
     notes = ["precision reached"] if reached else [_miss(error, value_tolerance, delta_error, delta_limit)]
-    if reached and blind:
-        notes.append(f"no path in {paths} came past a kink, whose chance is below 3 in {paths}")
+    if found.few_decide:
+        notes.append(f"few of {paths} paths came past a kink: errors include what all may have missed")
     if no_deltas:
         notes.append("sensitivities not available: the payoff jumps and the covariance leaves no factor to smooth it")
     elif unsmoothed and not ranked:
@@ -154,22 +153,24 @@ def _exact(problem: EuropeanProblem, design: Design) -> Sample:
     means = np.tile(path_sums(design, np.zeros((0, 1))), (4, 1))
     found = estimates(design, means, 1)
     ending = "exact: nothing is left to sample"
-    if design.common == 0.0 and _on_an_edge(design):
-        found = _without(found, first_order=True)
-        ending += "; sensitivities not available: the aggregate stands on a kink, a jump or a tie"
     zero = np.zeros(design.n_assets)
     found = found._replace(value_error=0.0, log_delta_errors=zero, log_gamma_errors=zero, vega_errors=zero)
+    if not design.is_smoothed and _on_an_edge(design):
+        found = _without(found, first_order=True)
+        ending += "; sensitivities not available: the aggregate stands on a kink, a jump or a tie"
     return _result(problem, found, 1, 1, True, ending)
 
 
 def _on_an_edge(design: Design) -> bool:
     """Does an aggregate that cannot move stand where its payoff, or its ranking, has a corner?"""
     head = path_sums(design, np.zeros((0, 1)))
-    level = head[1] + head[2]
-    if any(abs(level - knot) <= 1e-12 * max(1.0, abs(knot)) for knot in design.payoff.knots):
-        return True
+    level, knots = head[1] + head[2], np.array(design.payoff.knots)
     best_first = -np.sort(-design.forwards)
-    tied = best_first[:-1] - best_first[1:] <= 1e-12 * best_first[:-1]
+    summed = design.kind is AggregateKind.WEIGHTED_SUM
+    gross = float(np.abs(design.weights) @ design.forwards if summed else np.abs(design.rank_weights) @ best_first)
+    if np.any(~is_above(level, knots, gross) & ~is_above(knots, level, gross)):
+        return True
+    tied = ~is_above(best_first[:-1], best_first[1:])
     return bool(np.any(tied & (np.diff(design.rank_weights) != 0.0)))
 
 

@@ -26,7 +26,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import ndtr
 
-from pricer.contracts.profile import PiecewiseLinear
+from pricer.contracts.profile import PiecewiseLinear, is_above
 
 _FAR = 37.0
 _TINY = 1e-200
@@ -45,11 +45,14 @@ class Integrated(NamedTuple):
     by_outside_twice: Array
 
 
-def integrate_factor(payoff: PiecewiseLinear, v: float, scaled: Array, outside: Array) -> Integrated:
+def integrate_factor(
+    payoff: PiecewiseLinear, v: float, scaled: Array, outside: Array, gross: Array | float = 0.0
+) -> Integrated:
     """``E[payoff(exp(v w) scaled + outside)]`` and derivatives.
 
-    ``v = 0`` gives the payoff itself and its slope; second derivatives and the effect of
-    jumps on first ones are then missing.
+    ``v = 0`` gives the payoff itself and its slope, at a knot those from its left; second
+    derivatives and the effect of jumps on first ones are then missing. ``gross`` : sum of the
+    absolute terms behind the level, beside which a level is at a knot (see ``is_above``).
     """
     growth = np.exp(0.5 * v * v)
     ones = np.ones(np.broadcast_shapes(scaled.shape, outside.shape))
@@ -80,7 +83,7 @@ def integrate_factor(payoff: PiecewiseLinear, v: float, scaled: Array, outside: 
             by_outside = by_outside + bend * above + landing
             by_outside_twice = by_outside_twice + (bend * spread + landing * (v - d) / v) / k
         else:
-            above = np.where(scaled > threshold, 1.0, 0.0)
+            above = np.where(is_above(scaled + outside, knot, gross), 1.0, 0.0)
             value = value + (bend * (scaled - threshold) + jump) * above
             by_scaled = by_scaled + bend * above
             by_outside = by_outside + bend * above

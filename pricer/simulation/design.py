@@ -5,8 +5,10 @@ a chosen group of assets equally is split off and integrated exactly (see
 ``conditional``); only the rest, of covariance ``C - c^2 1 1'``, is sampled. Its rank is one
 less, and payoffs with kinks and jumps become smooth functions of what is sampled.
 
-The group is everything for ranked and geometric aggregates, which are homogeneous; for a
-weighted sum it is the positive or the negative legs, whichever the factor moves more.
+The group is everything for ranked aggregates, which are homogeneous; for a weighted sum it
+is the positive or the negative legs, whichever the factor moves more, or one leg alone.
+A geometric aggregate is lognormal by itself: its factor is its own logarithm, and as the
+rest of the log-levels is independent of it, nothing is left to draw.
 """
 
 from __future__ import annotations
@@ -19,7 +21,7 @@ from numpy.typing import NDArray
 from pricer.contracts.aggregate import Aggregate, AggregateKind
 from pricer.contracts.profile import PiecewiseLinear
 from pricer.market.joint_lognormal import JointLognormal
-from pricer.simulation.loadings import cholesky, common_deviation, principal_components
+from pricer.simulation.loadings import cholesky, common_deviations, principal_components
 
 Array = NDArray[np.float64]
 
@@ -28,6 +30,9 @@ _LOG2_E = 1.0 / np.log(2.0)
 #: Base-2 log-levels beyond this would leave the range of single precision.
 _WIDEST = 120.0
 _LARGEST_NORMAL = 6.4  # of a 32-bit fraction
+
+#: How many times more than the legs of a sign a single leg must move the aggregate to be preferred.
+_ALONE = 3.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -46,8 +51,8 @@ class Design:
     forwards: Array  # (n,)
     deviations: Array  # (n,) of the log-levels
     n_common: int  # assets that the common factor scales
-    common: float  # deviation c of the common factor in a log-level; 0: none
-    degree: float  # degree of homogeneity of the aggregate in the scaled assets
+    direction: Array  # (n,) deviation of the factor in each log-level; zeros: none
+    factor_deviation: float  # of the log of the scaled part, over the factor
     loadings: Array  # (n, dims) of the base-2 log-levels on independent normals
 
     @property
@@ -60,9 +65,9 @@ class Design:
         return int(self.loadings.shape[1])
 
     @property
-    def factor_deviation(self) -> float:
-        """Deviation v of the log of the scaled part over the common factor."""
-        return self.degree * self.common
+    def is_smoothed(self) -> bool:
+        """Is there a factor to integrate over?"""
+        return self.factor_deviation > 0.0
 
     @property
     def drifted(self) -> Array:
@@ -88,22 +93,20 @@ class Design:
         n = law.n_assets
         weights = np.array(aggregate.weights, dtype=float)
         rank_weights = np.zeros(n)
-        degree = 1.0
         if aggregate.is_ranked:
             weights, rank_weights = np.ones(n), weights
             importance = np.ones(n)
-        elif aggregate.kind is AggregateKind.GEOMETRIC:
-            degree = float(weights.sum())
-            importance = weights
         else:
             importance = np.abs(weights) * law.forwards
+        if aggregate.kind is AggregateKind.GEOMETRIC:
+            return cls._geometric(law, weights, payoff)
         if aggregate.kind is AggregateKind.WEIGHTED_SUM:
             members, common = _best_group(law, weights)
             if common > 0.0 and np.all(weights[members] < 0.0):
                 weights, payoff = -weights, reflected(payoff)
         else:
             members = np.ones(n, dtype=bool)
-            common = common_deviation(law.covariance, members)
+            common = float(common_deviations(law.covariance, members[None, :])[0])
         if common == 0.0:
             members = np.ones(n, dtype=bool)
         order = np.argsort(~members, kind="stable")
@@ -127,9 +130,28 @@ class Design:
             forwards=law.forwards[order],
             deviations=law.deviations[order],
             n_common=int(members.sum()),
-            common=common,
-            degree=degree,
+            direction=direction[order],
+            factor_deviation=common,
             loadings=loadings,
+        )
+
+    @classmethod
+    def _geometric(cls, law: JointLognormal, weights: Array, payoff: PiecewiseLinear) -> Design:
+        n = law.n_assets
+        covariances = law.covariance @ weights  # of each log-level with the aggregate's logarithm
+        deviation = float(np.sqrt(max(float(weights @ covariances), 0.0)))
+        return cls(
+            kind=AggregateKind.GEOMETRIC,
+            payoff=payoff,
+            order=np.arange(n),
+            weights=weights,
+            rank_weights=np.zeros(n),
+            forwards=law.forwards,
+            deviations=law.deviations,
+            n_common=n,
+            direction=covariances / deviation if deviation > 0.0 else np.zeros(n),
+            factor_deviation=deviation,
+            loadings=np.zeros((n, 0)),
         )
 
 
@@ -146,14 +168,18 @@ def reflected(payoff: PiecewiseLinear) -> PiecewiseLinear:
 
 
 def _best_group(law: JointLognormal, weights: Array) -> tuple[NDArray[np.bool_], float]:
-    """The legs of one sign, failing these a single leg, that a common factor moves most; and its c."""
-    n = len(weights)
+    """The legs of one sign, or a single leg, that a common factor moves most; and its c.
+
+    What it moves is c times the exposure of the group. A single leg must move several times as
+    much as the legs of a sign to be chosen: it leaves the others outside.
+    """
     live = law.deviations > 0.0
-    by_sign = [(weights > 0.0) & live, (weights < 0.0) & live]
-    alone = [live & (np.arange(n) == i) for i in range(n) if weights[i] != 0.0]
-    for candidates in (by_sign, alone):
-        found = [(common_deviation(law.covariance, members), members) for members in candidates]
-        c, members = max(found, key=lambda f: f[0] * float(np.abs(weights[f[1]]) @ law.forwards[f[1]]))
-        if c > 0.0:
-            return members, c
-    return np.ones(n, dtype=bool), 0.0
+    alone = np.diag(live & (weights != 0.0))
+    groups = np.vstack([(weights > 0.0) & live, (weights < 0.0) & live, alone])
+    c = common_deviations(law.covariance, groups)
+    moved = c * (groups @ (np.abs(weights) * law.forwards))
+    moved[2:] /= _ALONE
+    best = int(np.argmax(moved))
+    if c[best] == 0.0:
+        return np.ones(len(weights), dtype=bool), 0.0
+    return groups[best], float(c[best])

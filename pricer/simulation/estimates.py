@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 from pricer.contracts.aggregate import AggregateKind
 from pricer.simulation.batch_means import batch_estimate
 from pricer.simulation.design import Design
+from pricer.simulation.unseen import Unseen, few_paths_decide
 
 Array = NDArray[np.float64]
 
@@ -35,71 +36,76 @@ class Estimates(NamedTuple):
     vegas: Array
     vega_errors: Array
     rounding: float  # part of the value's error that more paths do not lower
+    few_decide: bool  # errors hold what all paths may have missed
     degrees_of_freedom: int  # of the value's error
 
 
 def estimates(design: Design, means: Array, points: int) -> Estimates:
     """From the means of each randomisation's sums over ``points``, (randomisations, 3 + 5 n).
 
-    With z the normals and w the common factor, ``ln X_i = ln F_i - s_i^2 / 2 + y_i + c w``
-    for an asset that the factor scales, and ``(y_i + c w) / s_i`` is the standard normal
-    that moves with ``s_i``, so ``dV/ds_i = E[f'(A) dA/d ln X_i ((y_i + c w) / s_i - s_i)]``.
+    With z the normals and w the common factor, ``ln X_i = ln F_i - s_i^2 / 2 + y_i + c_i w``,
+    and ``(y_i + c_i w) / s_i`` is the standard normal that moves with ``s_i``, so
+    ``dV/ds_i = E[f'(A) dA/d ln X_i ((y_i + c_i w) / s_i - s_i)]``.
 
-    Controls: the aggregate's own forward for the value, each asset's forward for its delta
-    and vega; both are known exactly. Ranked aggregates have none.
+    Controls: the aggregate's own forward for the value of a sum, each asset's forward for its
+    delta and vega; both are known exactly. Ranked aggregates have none.
 
-    Where the aggregate switches between legs, deltas and vegas jump. Evenly spread points can
-    fall on the same side of a switch in every randomisation, whose spread then says nothing:
-    errors are never below that of one point on the wrong side, uniform over a point's width.
+    Where an unsmoothed payoff jumps, so does what is sampled; where the aggregate switches
+    between legs, deltas and vegas do. Evenly spread points can fall on the same side of a jump
+    in every randomisation, whose spread then says nothing: errors are never below that of
+    one point on the wrong side, uniform over a point's width. See ``unseen`` for paths that
+    all miss a part of the payoff.
     """
     value, scaled, outside = (means[:, [k]] for k in range(_HEAD))
     legs = means[:, _HEAD:].reshape(len(means), design.n_assets, _PER_LEG)
     by_level, by_log, by_factor, second, level = (legs[:, :, k] for k in range(_PER_LEG))
-    scales, s, c = design.scales, design.deviations, design.common
-    growth = np.exp(0.5 * design.factor_deviation**2)
+    scales, s, v = design.scales, design.deviations, design.factor_deviation
+    growth = np.exp(0.5 * v**2)
     deltas = scales * by_level
     gammas = scales**2 * second
     per_deviation = np.where(s > 0.0, 1.0 / np.where(s > 0.0, s, 1.0), 0.0)
-    vegas = scales * (by_log * np.log(2.0) + c * by_factor) * per_deviation - s * deltas
+    vegas = scales * (by_log * np.log(2.0) + design.direction * by_factor) * per_deviation - s * deltas
+    aggregate = growth * scaled + outside
     control = leg_controls = None
     if design.kind is AggregateKind.GEOMETRIC:
         gammas = gammas + (scales - 1.0) * deltas
-        control = growth * scaled / _geometric_forward(design) - 1.0
-        leg_controls = np.broadcast_to(control, deltas.shape)
     elif design.kind is AggregateKind.WEIGHTED_SUM:
         forwards = design.weights * design.forwards
-        control = (growth * scaled + outside - forwards.sum()) / np.abs(forwards).sum()
+        control = (aggregate - forwards.sum()) / np.abs(forwards).sum()
         leg_growth = np.where(np.arange(design.n_assets) < design.n_common, growth, 1.0)
         leg_controls = leg_growth * level * design.drifted / design.forwards - 1.0
-    (v,), (v_error,) = batch_estimate(value, control)
-    d, d_error = batch_estimate(deltas, leg_controls)
+    (found,), (error,) = batch_estimate(value, control, _ROUNDING)
+    d, d_error = batch_estimate(deltas, leg_controls, _ROUNDING)
     g, g_error = batch_estimate(gammas)
-    w, w_error = batch_estimate(vegas, leg_controls)
-    rounding = _ROUNDING * (abs(float(v)) + float(np.abs(d).sum()))
-    # a jump is at most about twice the mean: an option pays more where its legs switch than elsewhere
-    jump = 2.0 * float(np.abs(d).sum()) if _switches(design) else 0.0
-    one_point = jump / (points * np.sqrt(12.0 * len(means)))
+    w, w_error = batch_estimate(vegas, leg_controls, _ROUNDING)
+    gross = float(np.abs(d).sum())
+    rounding = _ROUNDING * (abs(float(found)) + gross)
+    # levels rounded in proportion move a delta by its gamma, and a gamma by up to its own part over v
+    by_gamma = 2.0 * _ROUNDING * np.abs(g)
+    steepness = 1.0 / v if v > 0.0 else 0.0
+    width = 1.0 / (points * np.sqrt(12.0 * len(means)))
+    smoothed = design.is_smoothed
+    at_jump = 0.0 if smoothed else width * float(np.abs(design.payoff.jumps).sum())
+    at_switch = 2.0 * gross * width if _switches(design) else 0.0  # a jump is at most about twice the mean: an
+    # option pays more where its legs switch than elsewhere
+    few = few_paths_decide(design.payoff, value, aggregate, rounding)
+    unseen = Unseen.of(design, points * len(means)) if few else Unseen.nothing(design.n_assets)
     place = np.argsort(design.order)
     return Estimates(
-        float(v),
-        float(np.hypot(v_error, rounding)),
+        float(found),
+        float(np.linalg.norm([error, rounding, at_jump, unseen.value])),
         d[place],
-        np.hypot(d_error, _ROUNDING * np.abs(d) + one_point)[place],
+        np.hypot(d_error, _ROUNDING * np.abs(d) + by_gamma + at_switch + unseen.log_deltas)[place],
         g[place],
-        g_error[place],
+        np.hypot(g_error, by_gamma * (1.0 + steepness) + unseen.log_gammas)[place],
         w[place],
-        np.hypot(w_error, one_point)[place],
+        np.hypot(w_error, by_gamma + at_switch + unseen.vegas)[place],
         rounding,
+        few,
         len(means) - (1 if control is None else 2),
     )
 
 
 def _switches(design: Design) -> bool:
     """Does a leg's share of the aggregate, or an unsmoothed payoff's slope, jump from path to path?"""
-    return bool(np.any(np.diff(design.rank_weights))) or (design.common == 0.0 and bool(design.payoff.knots))
-
-
-def _geometric_forward(design: Design) -> float:
-    """Expectation of a geometric aggregate, which is lognormal."""
-    sampled = float(np.sum((design.weights @ design.loadings) ** 2)) * np.log(2.0) ** 2
-    return float(2.0**design.log2_scale * np.exp(0.5 * (sampled + design.factor_deviation**2)))
+    return bool(np.any(np.diff(design.rank_weights))) or (not design.is_smoothed and bool(design.payoff.knots))

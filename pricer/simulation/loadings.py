@@ -16,29 +16,31 @@ _NARROW = 3e-3
 _LEADING = 16
 
 
-def common_deviation(covariance: NDArray[np.float64], members: NDArray[np.bool_]) -> float:
-    """The largest c for which ``covariance - c^2 1 1'`` stays positive semi-definite, or 0.
+def common_deviations(covariance: NDArray[np.float64], groups: NDArray[np.bool_]) -> NDArray[np.float64]:
+    """For each group the largest c for which ``covariance - c^2 1 1'`` stays positive semi-definite, or 0.
 
-    ``1`` has ones at ``members`` (n,) and zeros elsewhere: c is the deviation of a factor
-    that moves all members' log-levels equally and no other. c^2 = 1 / (1' covariance^-1 1)
-    where 1 lies in the range of ``covariance`` (the matrix determinant lemma), else 0.
-    0 too where c is too small to be of use.
+    ``groups`` (m, n): ``1`` has ones at a group's members and zeros elsewhere, c (m,) is the
+    deviation of a factor that moves all members' log-levels equally and no other. c^2 = 1 /
+    (1' covariance^-1 1) where 1 lies in the range of ``covariance`` (the matrix determinant
+    lemma), else 0. 0 too where c is too small to be of use, or a group has no members.
     """
     deviations = np.sqrt(np.diag(covariance))
-    if not np.any(members) or np.min(deviations[members]) <= 0.0:
-        return 0.0
+    out = np.zeros(len(groups))
     live = deviations > 0.0
+    possible = np.any(groups, axis=1) & ~np.any(groups & ~live, axis=1)
+    if not np.any(possible):
+        return out
     s = deviations[live]
-    target = np.where(members[live], 1.0 / s, 0.0)
+    targets = np.where(groups[possible][:, live], 1.0 / s, 0.0)  # (m, n)
     values, vectors = np.linalg.eigh(covariance[np.ix_(live, live)] / np.outer(s, s))
-    cut = len(s) * 1e-13
-    parts = vectors.T @ target
-    outside = float(np.linalg.norm(parts[values <= cut]))
-    if outside > 1e-6 * float(np.linalg.norm(target)):
-        return 0.0
-    inside = values > cut
-    c = 1.0 / np.sqrt(float(np.sum(parts[inside] ** 2 / values[inside])))
-    return c if c > _NARROW * float(np.max(s)) else 0.0
+    inside = values > len(s) * 1e-13
+    parts = targets @ vectors
+    outside = np.linalg.norm(parts[:, ~inside], axis=1)
+    lost = outside > 1e-6 * np.linalg.norm(targets, axis=1)
+    inverse = np.where(lost, np.inf, np.sum(parts[:, inside] ** 2 / values[inside], axis=1))
+    c = 1.0 / np.sqrt(inverse)
+    out[possible] = np.where(c > _NARROW * float(np.max(s)), c, 0.0)
+    return out
 
 
 def principal_components(

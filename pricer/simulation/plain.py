@@ -20,7 +20,7 @@ Array = NDArray[np.float64]
 def sums(design: Design, words: NDArray[np.uint32], first: int, last: int) -> Array:
     """Sums over points ``first`` to ``last`` of each randomisation, (randomisations, 3 + 5 n).
 
-    ``words`` : (randomisations, dims, WORDS) random.
+    ``words`` : (randomisations, dims, WORDS) random. Geometric aggregates leave nothing to sample.
     """
     numbers = sobol.directions(design.dimensions)
     points = [sobol.scrambled_points(numbers, w, first, last) for w in words]
@@ -39,18 +39,21 @@ def path_sums(design: Design, normals: Array) -> Array:
     inside = (np.arange(design.n_assets) < design.n_common)[:, None]
     outside = np.zeros(normals.shape[1])
     moved = np.ones(normals.shape[1])
+    gross: Array | float = 0.0
     if design.kind is AggregateKind.GEOMETRIC:
         scaled = 2.0 ** (design.log2_scale + design.scales @ logs)
         levels, moved = np.ones_like(levels), scaled
     elif design.kind is AggregateKind.WEIGHTED_SUM:
         legs = design.scales[:, None] * levels
         scaled, outside = (np.where(side, legs, 0.0).sum(axis=0) for side in (inside, ~inside))
+        gross = np.abs(legs).sum(axis=0)
     else:
         best_first = np.argsort(-design.scales[:, None] * levels, axis=0, kind="stable")
         ranks = np.argsort(best_first, axis=0)
         levels = levels * design.rank_weights[ranks]
         scaled = design.scales @ levels
-    out = integrate_factor(design.payoff, design.factor_deviation, scaled, outside)
+        gross = np.abs(design.scales) @ np.abs(levels)
+    out = integrate_factor(design.payoff, design.factor_deviation, scaled, outside, gross)
     by_level = np.where(inside, out.by_scaled * moved, out.by_outside) * levels
     by_factor = np.where(inside, out.by_factor * moved, 0.0) * levels
     second = np.where(inside, out.by_scaled_twice * moved**2, out.by_outside_twice) * levels**2

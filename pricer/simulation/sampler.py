@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-
 import numpy as np
 from numpy.typing import NDArray
 
@@ -16,7 +14,6 @@ from pricer.simulation.kernels.vectors import BLOCK, aligned
 
 _KINDS = {
     AggregateKind.WEIGHTED_SUM: payoffs.SUM,
-    AggregateKind.GEOMETRIC: payoffs.GEOMETRIC,
     AggregateKind.BEST_OF: payoffs.BEST,
     AggregateKind.WORST_OF: payoffs.WORST,
     AggregateKind.KTH_BEST: payoffs.RANKED,
@@ -32,14 +29,16 @@ class Sampler:
     One instance belongs to one thread; the work itself holds no interpreter lock.
     """
 
-    def __init__(self, design: Design, streams: Sequence[np.random.Generator], *, with_ratios: bool = True) -> None:
-        """``streams`` are the randomisations' generators; ``with_ratios`` also sums sensitivities."""
+    def __init__(
+        self, design: Design, stream: np.random.Generator, randomisations: int, *, with_ratios: bool = True
+    ) -> None:
+        """``stream`` scrambles all randomisations; ``with_ratios`` also sums sensitivities."""
         n, dims = design.loadings.shape
         padded = -(-dims // 4) * 4
         self._design = design
         self._with_ratios = with_ratios
-        self._words = sobol.random_words(streams, dims)
-        self._columns = np.empty((len(streams), dims, sobol.BITS), dtype=np.uint32)
+        self._words = sobol.random_words(stream, randomisations, dims)
+        self._columns = np.empty((randomisations, dims, sobol.BITS), dtype=np.uint32)
         fused.scramble(sobol.directions(dims), self._words, self._columns)
         self._loadings = aligned((n, padded), np.float32)
         self._loadings[:, :dims] = design.loadings / np.sqrt(1.0 + NORMAL_VARIANCE_EXCESS)
@@ -55,7 +54,7 @@ class Sampler:
         self._levels = aligned((n, BLOCK), np.float32)
         self._paths = aligned((payoffs.PATH_ROWS * BLOCK,), np.float64)
         self.points = 0
-        self.sums = np.zeros((len(streams), fused.HEAD_SUMS + fused.LEG_SUMS * n))
+        self.sums = np.zeros((randomisations, fused.HEAD_SUMS + fused.LEG_SUMS * n))
 
     def extend(self, points: int) -> NDArray[np.float64]:
         """Go on to ``points`` per randomisation; the sums so far (randomisations, 3 + 5 n).
@@ -78,7 +77,6 @@ class Sampler:
             _KINDS[design.kind],
             design.n_common,
             design.factor_deviation,
-            design.log2_scale,
             self._profile,
             self._with_ratios,
             self._table,

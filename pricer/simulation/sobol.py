@@ -6,7 +6,6 @@ net's equidistribution and has the variance of Owen's full scrambling (Owen 2003
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from functools import lru_cache
 
 import numpy as np
@@ -15,8 +14,9 @@ from numpy.typing import NDArray
 #: Direction numbers per dimension: sequences may have up to 2^24 points.
 BITS = 24
 
-#: Random words drawn per dimension: 32 columns of the scrambling matrix and one digital shift.
-WORDS = 33
+#: Random words drawn per dimension: the scrambling matrix's columns that direction numbers meet,
+#: and one digital shift.
+WORDS = BITS + 1
 
 _SIZES = (32, 128, 512, 1799)  # QuantLib fills further dimensions at random
 
@@ -54,10 +54,9 @@ def _directions(dimensions: int) -> NDArray[np.uint32]:
     return out
 
 
-def random_words(streams: Sequence[np.random.Generator], dimensions: int) -> NDArray[np.uint32]:
-    """One draw per stream, (n_streams, dimensions, WORDS): the scrambles of all randomisations."""
-    draws = [s.integers(0, 2**32, size=(dimensions, WORDS), dtype=np.uint32) for s in streams]
-    return np.ascontiguousarray(np.stack(draws))
+def random_words(stream: np.random.Generator, randomisations: int, dimensions: int) -> NDArray[np.uint32]:
+    """The scrambles of all randomisations, (randomisations, dimensions, WORDS)."""
+    return stream.integers(0, 2**32, size=(randomisations, dimensions, WORDS), dtype=np.uint32)
 
 
 def scrambled_columns(direction_numbers: NDArray[np.uint32], words: NDArray[np.uint32]) -> NDArray[np.uint32]:
@@ -66,7 +65,7 @@ def scrambled_columns(direction_numbers: NDArray[np.uint32], words: NDArray[np.u
     ``words`` (dimensions, WORDS): word c holds column c below its unit diagonal.
     """
     out = np.zeros_like(direction_numbers)
-    for c in range(32):
+    for c in range(BITS):
         top = np.uint32(1 << (31 - c))
         column = (words[:, c] & (top - np.uint32(1))) | top
         bit = (direction_numbers >> np.uint32(31 - c)) & np.uint32(1)
@@ -80,7 +79,7 @@ def scrambled_points(
     """Points ``first`` to ``last`` in natural order as 32-bit fractions, (dimensions, last - first)."""
     columns = scrambled_columns(direction_numbers, words)
     index = np.arange(first, last, dtype=np.uint64)
-    out = np.repeat(words[:, 32:33], last - first, axis=1)
+    out = np.repeat(words[:, BITS : BITS + 1], last - first, axis=1)
     for b in range(columns.shape[1]):
         bit = ((index >> np.uint64(b)) & np.uint64(1)).astype(np.uint32)
         out ^= bit[None, :] * columns[:, b : b + 1]

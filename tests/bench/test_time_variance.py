@@ -2,7 +2,8 @@
 
 The figure of merit of a sampler: what it costs to reach an error. It depends on the error
 for low-discrepancy points, so each ratio names the error at which it was taken. Our side
-is the public ``sample`` with everything it computes, preparation included; QuantLib's
+is the public ``sample`` with everything it computes, preparation included, and its variance
+is the one seen across fresh seeds; the errors claimed stand beside it. QuantLib's
 is one long run, whose seconds times variance does not depend on its length.
 Run alone: ``python -m pytest -m bench -s tests/bench/test_time_variance.py``.
 """
@@ -25,6 +26,7 @@ from pricer.market.joint_lognormal import JointLognormal
 pytestmark = pytest.mark.bench
 
 SEEDS = range(12)
+FRESH_SEEDS = range(100, 140)  # their variance is known within a quarter
 
 
 def law_of(n: int, spread: float) -> JointLognormal:
@@ -103,16 +105,20 @@ def test_seconds_times_variance(case):
         fixed = SamplingSettings(initial_points=points, maximum_points=points)
         fresh = [
             sample(problem, group="fresh", seed=seed, value_tolerance=0.0, delta_tolerance=0.0, settings=fixed)
-            for seed in SEEDS
+            for seed in FRESH_SEEDS
         ]
-    error = float(np.mean([s.standard_error**2 for s in fresh])) ** 0.5
+    claimed = float(np.mean([s.standard_error**2 for s in fresh])) ** 0.5
+    error = float(np.std([s.value for s in fresh], ddof=1))
     value = float(np.mean([s.value for s in fresh]))
     ours = float(np.median(seconds)) * error**2
     print(
         f"\n{case}: quantlib {their_value:.4f} +- {their_error:.1e}, ours {value:.6f} +- {error:.1e}"
         f" ({error / value:.1e} of the price) on {fresh[0].paths} paths in {np.median(seconds) * 1e3:.1f} ms;"
-        f"\n  seconds times variance {theirs / ours:,.0f} times smaller"
+        f"\n  seconds times variance {theirs / ours:,.0f} times smaller; by the error claimed, {claimed:.1e},"
+        f" {theirs / ours * (error / claimed) ** 2:,.0f} times"
     )
     assert error < 2.0 * target
+    # 40 seeds: a claim below the truth by more than two fifths would be seen; it is wider where means are skewed
+    assert error < 1.4 * claimed
     assert abs(value - their_value) < 5 * their_error
     assert theirs / ours >= least

@@ -190,6 +190,27 @@ def test_many_assets_with_equal_correlation_agree_with_sampling():
         assert exact.error < 1e-6
 
 
+@pytest.mark.parametrize("kind", [ProfileKind.CALL, ProfileKind.ASSET_DIGITAL_PUT, ProfileKind.STRADDLE])
+def test_levels_decades_apart_are_ranked_on_their_own_scale(kind):
+    forwards, deviations = np.array([0.27, 790.0, 210.0, 1.9e-4]), np.array([0.208, 0.0014, 0.0069, 0.0014])
+    loading = np.array([0.5, -0.3, 0.8, 0.6])
+    correlation = np.outer(loading, loading)
+    np.fill_diagonal(correlation, 1.0)
+    joint = law(forwards, deviations, correlation)
+    for rank in range(1, 5):
+        level = float(np.sort(forwards)[-rank])
+        p = problem(joint, aggregate_of_rank(rank, 4), kind, 0.9995 * level)
+        exact = (EXTREMES if rank in (1, 4) else ORDER_STATISTICS).reference(p)
+        found = ONE_FACTOR_RANKS.reference(p)
+        # Far apart, the ranked level is one asset: Black's formula knows it too.
+        single = tuple(1.0 if f == level else 0.0 for f in forwards)
+        alone = BLACK_SCHOLES.reference(problem(joint, Aggregate.weighted_sum(single), kind, 0.9995 * level))
+        assert found.value == pytest.approx(alone.value, abs=found.error + 1e-13 * level)
+        assert found.error < 1e-9 * level
+        if rank == 4:
+            agree(found, exact)
+
+
 def test_the_families_apply_where_they_should():
     four = law(np.ones(4), np.full(4, 0.2), random_correlation(np.random.default_rng(1), 4))
     eight = law(np.ones(8), np.full(8, 0.2), random_correlation(np.random.default_rng(1), 8))

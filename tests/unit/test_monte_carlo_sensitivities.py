@@ -119,6 +119,26 @@ def test_an_exchange_has_margrabes_sensitivities():
     assert np.max(got.log_delta_errors) < 1e-4 * f[0]
 
 
+@pytest.mark.parametrize("kind", ["call", "cash digital", "asset digital"])
+def test_a_geometric_aggregate_has_black_scholes_sensitivities_of_its_legs(kind):
+    w = np.array([0.3, 0.5, 0.21])
+
+    def value(forwards, deviations):
+        covariance = CORRELATION * np.outer(deviations, deviations)
+        variance = w @ covariance @ w
+        forward = np.exp(w @ (np.log(forwards) - 0.5 * deviations**2) + 0.5 * variance)
+        return black(kind, float(forward), float(np.sqrt(variance)))
+
+    got = drawn(law(), Aggregate.geometric(tuple(w)), PAYOFFS[kind])
+    h = 1e-3
+    for i in range(3):
+        up, middle, down = (value(bumped(FORWARDS, i, 1 + t), DEVIATIONS) for t in (h, 0.0, -h))
+        assert got.log_deltas[i] == pytest.approx((up - down) / (2 * h), rel=1e-4)
+        assert got.log_gammas[i] == pytest.approx((up - 2 * middle + down) / h**2, rel=1e-3)
+        up, down = (value(FORWARDS, bumped(DEVIATIONS, i, 1 + t)) for t in (h, -h))
+        assert got.deviation_vegas[i] == pytest.approx((up - down) / (2 * h * DEVIATIONS[i]), rel=1e-4)
+
+
 @pytest.mark.parametrize("kind", AGGREGATES)
 def test_log_deltas_of_a_homogeneous_aggregate_add_up(kind):
     # scaling all levels and the strike scales a call: sum of log-deltas = V - K dV/dK (Euler)

@@ -8,7 +8,7 @@ from pricer.simulation import sobol
 
 
 def words(seed: int, dimensions: int) -> np.ndarray:
-    return sobol.random_words([np.random.default_rng(seed)], dimensions)[0]
+    return sobol.random_words(np.random.default_rng(seed), 1, dimensions)[0]
 
 
 def test_unscrambled_points_are_scipys():

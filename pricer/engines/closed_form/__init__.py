@@ -6,6 +6,7 @@ puts and digitals on its own kind of aggregate; any payoff is composed of those.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable
 
 from pricer.engines.closed_form.basket_quadrature import BASKET_QUADRATURE
@@ -30,7 +31,9 @@ from pricer.engines.problem import EuropeanProblem, Reference, ReferenceKind
 
 __all__ = ["FAMILIES", "Family", "best_exact", "references"]
 
-#: All families, in the order in which their references are listed.
+#: All families, in the order in which their references are listed. Those that claim to be
+#: exact come first, the most trusted ones in front: formulas; integrals over one variable;
+#: normal probabilities of several dimensions; integrals over several variables.
 FAMILIES: tuple[Family, ...] = (
     KNOWN_LEVEL,
     BLACK_SCHOLES,
@@ -38,12 +41,12 @@ FAMILIES: tuple[Family, ...] = (
     GEOMETRIC_BASKET,
     EXCHANGE,
     TWO_ASSET_EXTREMES,
-    EXTREMES,
-    ONE_FACTOR_RANKS,
-    ORDER_STATISTICS,
-    RANKED_QUADRATURE,
     ONE_FACTOR_SUM,
     TWO_ASSET_SUM,
+    ONE_FACTOR_RANKS,
+    EXTREMES,
+    ORDER_STATISTICS,
+    RANKED_QUADRATURE,
     BASKET_QUADRATURE,
     LOWER_BOUND,
     UPPER_BOUND,
@@ -59,7 +62,11 @@ def references(problem: EuropeanProblem) -> tuple[Reference, ...]:
     return tuple(reference for reference in found if reference is not None)
 
 
-def best_exact(refs: Iterable[Reference]) -> Reference | None:
-    """The exact reference with the smallest error; of equals the first."""
-    exact = [reference for reference in refs if reference.kind is ReferenceKind.EXACT]
-    return min(exact, key=lambda reference: reference.error, default=None)
+def best_exact(refs: Iterable[Reference], tolerance: float = math.inf) -> Reference | None:
+    """The most trusted exact reference whose error is within ``tolerance``; None where there is none.
+
+    ``refs`` are in the order of ``FAMILIES``. The smallest claimed error is no ground for
+    trust: it would favour the method whose claims are the least cautious.
+    """
+    exact = (reference for reference in refs if reference.kind is ReferenceKind.EXACT)
+    return next((reference for reference in exact if reference.error <= tolerance), None)

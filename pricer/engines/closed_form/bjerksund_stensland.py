@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from scipy.special import ndtr
 
-from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side
+from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side, other
 from pricer.engines.closed_form.spread import Spread
 from pricer.engines.problem import EuropeanProblem, ReferenceKind
 
@@ -27,7 +27,7 @@ class BjerksundStensland:
     def option(self, strike: float, side: Side) -> Estimate:
         s, excess = self.spread, strike - self.spread.shift
         if excess < 0.0:
-            return BjerksundStensland(s.mirrored()).option(-strike, -1 if side == 1 else 1)
+            return BjerksundStensland(s.mirrored()).option(-strike, other(side))
         power = s.short / (s.short + excess)
         covariance, half_square = power * s.covariance, 0.5 * power * power * s.short_variance
         variance = s.long_variance - 2.0 * covariance + 2.0 * half_square

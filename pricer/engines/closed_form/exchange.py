@@ -6,11 +6,9 @@ import math
 from dataclasses import dataclass
 
 from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side
-from pricer.engines.closed_form.lognormal import black, exceedance
+from pricer.engines.closed_form.lognormal import ROUNDING, black, exceedance
 from pricer.engines.closed_form.spread import Spread
 from pricer.engines.problem import EuropeanProblem, ReferenceKind
-
-_ROUNDING = 4e-16
 
 
 @dataclass(frozen=True, slots=True)
@@ -27,7 +25,7 @@ class Exchange:
         if strike != s.shift:
             return None
         value = black(s.long, s.short, math.sqrt(self._variance), side)
-        return Estimate(float(value), _ROUNDING * (s.long + s.short))
+        return Estimate(float(value), ROUNDING * (s.long + s.short))
 
     def digital(self, strike: float, side: Side) -> Estimate | None:
         s = self.spread
@@ -35,7 +33,7 @@ class Exchange:
             return None
         # The ratio's forward under the payment measure, not with a level as numeraire.
         ratio_forward = s.long / s.short * math.exp(s.short_variance - s.covariance)
-        return Estimate(float(exceedance(ratio_forward, 1.0, math.sqrt(self._variance), side)), _ROUNDING)
+        return Estimate(float(exceedance(ratio_forward, 1.0, math.sqrt(self._variance), side)), ROUNDING)
 
     @property
     def _variance(self) -> float:

@@ -20,6 +20,11 @@ from pricer.engines.problem import EuropeanProblem, Reference, ReferenceKind
 Side = Literal[1, -1]
 
 
+def other(side: Side) -> Side:
+    """The opposite side: a call's put, the complement of "above"."""
+    return -1 if side == 1 else 1
+
+
 @dataclass(frozen=True, slots=True)
 class Estimate:
     """A number and a bound on its numerical error."""

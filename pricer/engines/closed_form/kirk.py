@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 
-from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side
+from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side, other
 from pricer.engines.closed_form.lognormal import black
 from pricer.engines.closed_form.spread import Spread
 from pricer.engines.problem import EuropeanProblem, ReferenceKind
@@ -23,7 +23,7 @@ class Kirk:
     def option(self, strike: float, side: Side) -> Estimate:
         s, excess = self.spread, strike - self.spread.shift
         if excess < 0.0:  # a call on the spread is a put on its mirror image
-            return Kirk(s.mirrored()).option(-strike, -1 if side == 1 else 1)
+            return Kirk(s.mirrored()).option(-strike, other(side))
         share = s.short / (s.short + excess)
         variance = s.long_variance - 2.0 * share * s.covariance + share * share * s.short_variance
         return Estimate(float(black(s.long, s.short + excess, math.sqrt(max(variance, 0.0)), side)))

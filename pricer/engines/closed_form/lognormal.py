@@ -9,11 +9,13 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import ndtr
 
-from pricer.engines.closed_form.family import Estimate, Side
+from pricer.contracts.profile import is_above
+from pricer.engines.closed_form.family import Estimate, Side, other
 
 Numbers: TypeAlias = float | NDArray[np.float64]
 
-_ROUNDING = 4e-16  # relative to forward plus strike
+#: Error of a formula of the normal distribution function, relative to forward plus strike.
+ROUNDING = 4e-16
 
 
 def black(forward: Numbers, strike: Numbers, deviation: Numbers, side: Side) -> NDArray[np.float64]:
@@ -32,7 +34,7 @@ def exceedance(forward: Numbers, strike: Numbers, deviation: Numbers, side: Side
     """``P(X > strike)`` for side +1, ``P(X <= strike)`` for side -1; arguments as for :func:`black`."""
     f, k, s = np.broadcast_arrays(forward, strike, deviation)
     _, d2 = _arguments(f, k, s)
-    certain = (f > k) if side == 1 else (f <= k)
+    certain = is_above(f, k) == (side == 1)
     return np.asarray(np.where(s > 0.0, ndtr(side * d2), certain.astype(float)))
 
 
@@ -62,14 +64,14 @@ class ShiftedLognormal:
 
     def option(self, strike: float, side: Side) -> Estimate:
         size, level, mirrored = self._mirror(strike, side)
-        return Estimate(float(black(size, level, self.deviation, mirrored)), _ROUNDING * (size + abs(level)))
+        return Estimate(float(black(size, level, self.deviation, mirrored)), ROUNDING * (size + abs(level)))
 
     def digital(self, strike: float, side: Side) -> Estimate:
         size, level, mirrored = self._mirror(strike, side)
-        return Estimate(float(exceedance(size, level, self.deviation, mirrored)), _ROUNDING)
+        return Estimate(float(exceedance(size, level, self.deviation, mirrored)), ROUNDING)
 
     def _mirror(self, strike: float, side: Side) -> tuple[float, float, Side]:
         """The same question about ``|coefficient| X`` alone."""
         if self.coefficient > 0.0:
             return self.coefficient, strike - self.shift, side
-        return -self.coefficient, self.shift - strike, 1 if side == -1 else -1
+        return -self.coefficient, self.shift - strike, other(side)

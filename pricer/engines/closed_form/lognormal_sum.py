@@ -45,7 +45,8 @@ class LognormalSum:
                     break
             else:
                 terms.append(int(i))
-        chosen = np.array([i for i in terms if sizes[i] != 0.0], dtype=np.intp)
+        rounding = _SAME * float(np.abs(coefficients).sum())  # what is left of terms that cancel
+        chosen = np.array([i for i in terms if abs(sizes[i]) > rounding], dtype=np.intp)
         return cls(shift, sizes[chosen], problem.law.covariance[np.ix_(chosen, chosen)])
 
     @property

@@ -9,16 +9,16 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import ndtr
 
+from pricer.contracts.profile import TIE
 from pricer.engines.closed_form import one_factor
 from pricer.engines.closed_form.family import Estimate
 from pricer.engines.closed_form.normal_lattice import by_lattice
-from pricer.engines.closed_form.quadrature import integrate, normal_density
+from pricer.engines.closed_form.quadrature import LAYER, RANGE, edges_between, integrate, normal_density
 
 RECURSION_LIMIT = 6  # dimensions up to which the recursive quadrature is quick (milliseconds)
 
 _SAME = 4e-15  # correlations this near to +-1 are +-1 up to rounding
 _FAR = 38.0  # normal probabilities beyond are below the smallest double
-_RANGE = 9.0  # integrals over a common factor stop here: what lies beyond is below 1e-18
 
 
 def cdf(limits: NDArray[np.float64], correlation: NDArray[np.float64]) -> Estimate:
@@ -49,14 +49,14 @@ def within(
 ) -> Estimate:
     """``P(rows @ x <= limits)`` for ``x`` normal with mean 0; rows (m, n), limits (m,), strict (m,).
 
-    A row without variance is certain: it holds where its limit is above 0, or is 0 and the
-    row is not ``strict``.
+    A row without variance is certain: it holds where its limit is above 0, or is 0 up to a
+    relative ``TIE`` of the levels (whose logs the rows compare) and the row is not ``strict``.
     """
     between = rows @ covariance @ rows.T
     variance = np.diag(between)
     gross = np.abs(rows) @ np.sqrt(np.diag(covariance))
     certain = variance <= 1e-15 * gross * gross
-    if np.any(certain & ((limits < 0.0) | (strict & (limits == 0.0)))):
+    if np.any(certain & (limits <= np.where(strict, TIE, -TIE))):
         return Estimate(0.0)
     uncertain = ~certain
     deviation = np.sqrt(variance[uncertain])
@@ -108,7 +108,7 @@ def _by_common_factor(h: NDArray[np.float64], loading: NDArray[np.float64]) -> E
     """One integral over the common factor (Dunnett & Sobel 1955; Curnow & Dunnett 1962)."""
     own = np.sqrt(np.maximum(1.0 - loading**2, 0.0))
     tied = own < 1e-7
-    start, end = -_RANGE, _RANGE
+    start, end = -RANGE, RANGE
     for limit, b in zip(h[tied], loading[tied], strict=True):
         if b > 0.0:
             end = min(end, limit / b)
@@ -124,7 +124,6 @@ def _by_common_factor(h: NDArray[np.float64], loading: NDArray[np.float64]) -> E
 
     # A loading near 1 makes a step, which needs edges of its own.
     steep = np.abs(slope) > 20.0
-    middle, width = level[steep] / slope[steep], 8.0 / np.abs(slope[steep])
-    edges = np.concatenate((np.linspace(start, end, 9), middle - width, middle, middle + width))
-    found = integrate(density, np.unique(edges[(edges >= start) & (edges <= end)]), 1e-14)
+    edges = edges_between(start, end, 8, level[steep] / slope[steep], LAYER / np.abs(slope[steep]))
+    found = integrate(density, edges, 1e-14)
     return Estimate(found.value, found.error + 1e-15)

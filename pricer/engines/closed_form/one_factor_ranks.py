@@ -16,21 +16,20 @@ from scipy.special import ndtr
 
 from pricer.engines.closed_form import one_factor
 from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side
-from pricer.engines.closed_form.quadrature import integrate, normal_density
+from pricer.engines.closed_form.quadrature import ACCEPTED, RANGE, edges_between, integrate, normal_density
 from pricer.engines.closed_form.ranks import SingleRank, scaled
 from pricer.engines.problem import EuropeanProblem, ReferenceKind
 from pricer.market.joint_lognormal import JointLognormal
 
-_RANGE = 9.0
+_FALL = 4.0  # deviations on either side of its median in which a level's distribution function rises
 _STEP = 0.5  # of the trapezoidal rule, in units of the narrowest transition along the factor
 _MOST_NODES = 800
-_RELATIVE_TOLERANCE = 1e-10
-_ACCEPTED = 1e-6  # relative error up to which the result counts as exact
+_TOLERANCE = 1e-10
 
 
 @dataclass(frozen=True, slots=True)
 class OneFactorRank:
-    """The law of the level of rank ``rank`` (1 is the best).
+    """The law of the level of rank ``rank`` (1 is the best), in units of the forward of that rank.
 
     ``loadings`` (n,) on the factor; ``own`` (n,) > 0 deviations of the logs given it;
     ``nodes`` (2 m,) an equally spaced grid of the factor.
@@ -62,24 +61,40 @@ class OneFactorRank:
             rough = max(rough, float((np.exp(y) * gap).max()))
             return np.exp(y) * probability
 
-        scale = float(self.law.forwards.max())
-        found = integrate(density, np.linspace(start, end, 5), _RELATIVE_TOLERANCE * scale, 4_000)
-        error = found.error + (end - start) * rough + 1e-14 * scale
-        return Estimate(found.value + certain, error) if error <= _ACCEPTED * scale else None
+        edges = edges_between(start, end, 1, *self._transitions())
+        found = integrate(density, edges, _TOLERANCE, max(4_000, 48 * edges.size))
+        error = found.error + (end - start) * rough + 1e-14
+        return Estimate(found.value + certain, error) if error <= ACCEPTED else None
 
     def digital(self, strike: float, side: Side) -> Estimate | None:
         if strike <= 0.0:
             return Estimate(1.0 if side == 1 else 0.0)
         probability, gap = self._beyond(np.array([math.log(strike)]), side)
         error = float(gap[0]) + 1e-14
-        return Estimate(float(probability[0]), error) if error <= _ACCEPTED else None
+        return Estimate(float(probability[0]), error) if error <= ACCEPTED else None
 
     def _reach(self) -> tuple[float, float]:
         """Log-levels outside of which the ranked level practically never is."""
         deviation = self.law.deviations
         middle = np.log(self.law.forwards) - 0.5 * deviation**2
-        width = _RANGE * deviation
-        return float((middle - width).min()), float((middle + width + deviation**2).max())
+        low, high = middle - RANGE * deviation, middle + RANGE * deviation + deviation**2
+        return float(np.sort(low)[-self.rank]), float(np.sort(high)[-self.rank])
+
+    def _transitions(self) -> tuple[list[float], list[float]]:
+        """Where the chance of each log-level's being above ``y`` falls, and the half width of its fall.
+
+        Of levels that fall together, one stands for all; the narrowest come first.
+        """
+        deviation = self.law.deviations
+        middle = np.log(self.law.forwards) - 0.5 * deviation**2
+        centres: list[float] = []
+        widths: list[float] = []
+        for i in np.argsort(deviation, kind="stable"):
+            width = _FALL * float(deviation[i])
+            if all(abs(middle[i] - c) > 0.5 * width or width > 2.0 * w for c, w in zip(centres, widths, strict=True)):
+                centres.append(float(middle[i]))
+                widths.append(width)
+        return centres, widths
 
     def _beyond(self, y: NDArray[np.float64], side: Side) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
         """Probability that the ranked level is above (below) ``exp(y)`` (m,), and its quadrature error."""
@@ -108,12 +123,14 @@ def _law(problem: EuropeanProblem) -> AggregateLaw | None:
         return None
     steepest = float(np.max(np.abs(loadings) / own))
     # A lognormal payment moves the weight of the integrand by its own loading.
-    low, high = min(0.0, float(loadings.min())) - _RANGE, max(0.0, float(loadings.max())) + _RANGE
+    low, high = min(0.0, float(loadings.min())) - RANGE, max(0.0, float(loadings.max())) + RANGE
     count = math.ceil((high - low) * max(1.0, steepest) / _STEP)
     if count > _MOST_NODES:
         return None
     nodes = np.linspace(low, high, 2 * count)
-    return scaled(OneFactorRank(single.law, single.rank, loadings, own, nodes), single.weight)
+    unit = float(np.sort(single.law.forwards)[-single.rank])  # levels may be decades apart, and far from 1
+    law = JointLognormal(single.law.forwards / unit, single.law.covariance)
+    return scaled(OneFactorRank(law, single.rank, loadings, own, nodes), single.weight * unit)
 
 
 ONE_FACTOR_RANKS = Family(

@@ -6,9 +6,16 @@ from collections.abc import Callable
 from functools import lru_cache
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
 from pricer.engines.closed_form.family import Estimate
+
+#: Deviations beyond which a standard normal has less than 1e-18.
+RANGE = 9.0
+#: Half width, in deviations, of the layer in which a conditional option is neither certain nor worthless.
+LAYER = 8.0
+#: Error, relative to the scale of the payoff, up to which a quadrature counts as exact.
+ACCEPTED = 1e-6
 
 _ORDER = 16
 _HIDDEN = 1e-4  # share of a panel's difference that may be left, unseen, when its halves show none
@@ -64,6 +71,15 @@ def integrate(
         again = np.concatenate((~done, ~done))
         left, right, coarse, before = lo[again], hi[again], fine[again], np.tile(gap, 2)[again]
     return Estimate(value, error)
+
+
+def edges_between(
+    low: float, high: float, panels: int, centres: ArrayLike = (), widths: ArrayLike = ()
+) -> NDArray[np.float64]:
+    """Edges of ``panels`` equal panels, and of layers that reach ``widths`` to both sides of their ``centres``."""
+    middle, width = np.asarray(centres, dtype=float), np.asarray(widths, dtype=float)
+    edges = np.concatenate((np.linspace(low, high, panels + 1), middle - width, middle, middle + width))
+    return np.unique(edges[(edges >= low) & (edges <= high)])
 
 
 @lru_cache(maxsize=64)

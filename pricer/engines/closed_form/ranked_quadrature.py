@@ -16,17 +16,15 @@ from itertools import permutations
 import numpy as np
 from numpy.typing import NDArray
 
-from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side
+from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side, other
 from pricer.engines.closed_form.lognormal import Numbers, black, exceedance
-from pricer.engines.closed_form.quadrature import gauss_legendre, integrate
+from pricer.engines.closed_form.quadrature import ACCEPTED, RANGE, gauss_legendre, integrate, normal_density
 from pricer.engines.closed_form.ranks import is_sum
 from pricer.engines.problem import EuropeanProblem, ReferenceKind
 from pricer.market.joint_lognormal import JointLognormal
 
-_RANGE = 9.0
 _INNER = (24, 36)  # nodes of the inner integral: their difference is its error
 _RELATIVE_TOLERANCE = 1e-10
-_ACCEPTED = 1e-6  # relative error up to which the result counts as exact
 
 _Formula = Callable[[Numbers, Numbers, Numbers, Side], NDArray[np.float64]]
 
@@ -62,7 +60,7 @@ class RankedLevels:
             else:
                 part = cone.over_two_gaps(formula, strike, side, _RELATIVE_TOLERANCE * scale)
             total = total + part
-        if total.error > _ACCEPTED * scale:
+        if total.error > ACCEPTED * scale:
             return None
         return Estimate(total.value, total.error + 1e-14 * scale)
 
@@ -102,8 +100,8 @@ class _Cone:
         sign = np.where(shape < 0.0, -1.0, 1.0)
         size = np.maximum(np.abs(shape), 1e-300) * self.level
         same = formula(size, strike * sign, self.deviation, side)
-        other = formula(size, strike * sign, self.deviation, -1 if side == 1 else 1)
-        return np.where(sign > 0.0, same, other)
+        opposite = formula(size, strike * sign, self.deviation, other(side))
+        return np.where(sign > 0.0, same, opposite)
 
     def over_one_gap(self, formula: _Formula, strike: float, side: Side, tolerance: float) -> Estimate:
         mean, deviation = float(self.mean[0]), math.sqrt(self.covariance[0, 0])
@@ -121,7 +119,7 @@ class _Cone:
         def inner(first: NDArray[np.float64], nodes: int) -> NDArray[np.float64]:
             x, w = gauss_legendre(nodes)
             middle = float(self.mean[1]) + slope * (first - mean)
-            low, high = np.maximum(middle - _RANGE * own, 0.0), np.maximum(middle + _RANGE * own, 0.0)
+            low, high = np.maximum(middle - RANGE * own, 0.0), np.maximum(middle + RANGE * own, 0.0)
             half = 0.5 * (high - low)[:, None]
             second = low[:, None] + half * (1.0 + x)
             gaps = np.stack((np.broadcast_to(first[:, None], second.shape).ravel(), second.ravel()), axis=1)
@@ -143,13 +141,12 @@ class _Cone:
 
     def _edges(self, mean: float, deviation: float) -> NDArray[np.float64]:
         # A lognormal payment moves the weight of the integrand by at most a few deviations more.
-        reach = (_RANGE + 2.0 * deviation) * deviation
+        reach = (RANGE + 2.0 * deviation) * deviation
         return np.linspace(max(mean - reach, 0.0), max(mean + reach, 0.0), 5)
 
 
 def _density(x: NDArray[np.float64], mean: Numbers, deviation: float) -> NDArray[np.float64]:
-    z = (x - mean) / deviation
-    return np.asarray(np.exp(-0.5 * z * z) / (deviation * math.sqrt(2.0 * math.pi)))
+    return normal_density((x - mean) / deviation) / deviation
 
 
 def _law(problem: EuropeanProblem) -> AggregateLaw | None:

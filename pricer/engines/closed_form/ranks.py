@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from pricer.contracts.aggregate import AggregateKind
-from pricer.engines.closed_form.family import AggregateLaw, Estimate, Side
+from pricer.engines.closed_form.family import AggregateLaw, Estimate, Side, other
 from pricer.engines.problem import EuropeanProblem
 from pricer.market.joint_lognormal import JointLognormal
 
@@ -53,7 +53,7 @@ class Scaled:
         return self.inner.digital(strike / self.factor, self._side(side))
 
     def _side(self, side: Side) -> Side:
-        return side if self.factor > 0.0 else (-1 if side == 1 else 1)
+        return side if self.factor > 0.0 else other(side)
 
 
 def scaled(law: AggregateLaw, factor: float) -> AggregateLaw:

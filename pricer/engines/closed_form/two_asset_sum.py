@@ -13,14 +13,13 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side
+from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side, other
 from pricer.engines.closed_form.lognormal import Numbers, black, exceedance
 from pricer.engines.closed_form.lognormal_sum import LognormalSum
 from pricer.engines.closed_form.one_factor_sum import OneFactorSum
-from pricer.engines.closed_form.quadrature import integrate, normal_density
+from pricer.engines.closed_form.quadrature import LAYER, RANGE, edges_between, integrate, normal_density
 from pricer.engines.problem import EuropeanProblem, ReferenceKind
 
-_RANGE = 9.0  # beyond this many deviations lies less than 1e-18
 _RELATIVE_TOLERANCE = 1e-14
 
 _Formula = Callable[[Numbers, Numbers, Numbers, Side], NDArray[np.float64]]
@@ -46,7 +45,7 @@ class TwoAssetSum:
         deviation = math.sqrt(v[1, 1])
         loading = v[0, 1] / deviation
         own = math.sqrt(max(v[0, 0] - loading * loading, 0.0))
-        mirrored: Side = side if first > 0.0 else (-1 if side == 1 else 1)
+        mirrored = side if first > 0.0 else other(side)
 
         def density(z: NDArray[np.float64]) -> NDArray[np.float64]:
             forward = abs(first) * np.exp(loading * z - 0.5 * loading * loading)
@@ -54,23 +53,21 @@ class TwoAssetSum:
             return normal_density(z) * formula(forward, left * np.sign(first), own, mirrored)
 
         # A lognormal payment moves the weight of the integrand by its own loading.
-        low, high = min(0.0, loading) - _RANGE, max(deviation, loading) + _RANGE
-        edges = np.concatenate((np.linspace(low, high, 9), self._kinks(strike, loading, deviation, own)))
-        edges = np.unique(edges[(edges >= low) & (edges <= high)])
+        low, high = min(0.0, loading) - RANGE, max(deviation, loading) + RANGE
+        edges = edges_between(low, high, 8, *self._layers(strike, loading, deviation, own))
         found = integrate(density, edges, _RELATIVE_TOLERANCE * scale)
         return Estimate(max(found.value, 0.0), found.error + 1e-15 * scale)
 
-    def _kinks(self, strike: float, loading: float, deviation: float, own: float) -> NDArray[np.float64]:
-        """Where the conditional option is at the money, and the edges of the layer around it."""
+    def _layers(self, strike: float, loading: float, deviation: float, own: float) -> tuple[list[float], list[float]]:
+        """Where the conditional option is at the money, and the half width of the layer around each."""
         second, excess = float(self.total.coefficients[1]), strike - self.total.shift
         given = OneFactorSum(0.0, self.total.coefficients, np.array([loading, deviation]))
-        edges = []
-        for root in given.roots(excess):
+        roots, widths = given.roots(excess), []
+        for root in roots:
             moving = second * math.exp(deviation * root - 0.5 * deviation * deviation)
             slope = abs(loading + deviation * moving / (excess - moving)) if excess != moving else 0.0
-            width = 8.0 * own / slope if slope > 0.0 else math.inf
-            edges += [root - width, root, root + width]
-        return np.array(edges)
+            widths.append(LAYER * own / slope if slope > 0.0 else math.inf)
+        return roots, widths
 
 
 def _law(problem: EuropeanProblem) -> AggregateLaw | None:

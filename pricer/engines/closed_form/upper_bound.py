@@ -16,10 +16,10 @@ from numpy.typing import NDArray
 from pricer.engines.closed_form.conditioning import directions
 from pricer.engines.closed_form.family import AggregateLaw, Estimate, Family, Side
 from pricer.engines.closed_form.lognormal_sum import LognormalSum
-from pricer.engines.closed_form.quadrature import integrate, normal_density
+from pricer.engines.closed_form.one_factor_sum import OneFactorSum
+from pricer.engines.closed_form.quadrature import LAYER, RANGE, edges_between, integrate, normal_density
 from pricer.engines.problem import EuropeanProblem, ReferenceKind
 
-_RANGE = 9.0
 _RELATIVE_TOLERANCE = 1e-10
 _EVALUATIONS = 3_000
 
@@ -48,8 +48,20 @@ class ConditionalBound:
 
         low, high = min(0.0, float(loadings.min())), max(0.0, float(loadings.max()))
         scale = self.total.gross + abs(strike)
-        edges = np.linspace(low - _RANGE, high + _RANGE, 7)
-        return integrate(density, edges, _RELATIVE_TOLERANCE * scale, _EVALUATIONS)
+        edges = edges_between(low - RANGE, high + RANGE, 6, *self._layers(loadings, strike))
+        bound = integrate(density, edges, _RELATIVE_TOLERANCE * scale, _EVALUATIONS)
+        return Estimate(bound.value, bound.error + 1e-15 * scale)
+
+    def _layers(self, loadings: NDArray[np.float64], strike: float) -> tuple[list[float], list[float]]:
+        """Where the conditional mean crosses the strike, and the half width of the layer around each.
+
+        With little variance left given the variable, the bound all but has a kink there.
+        """
+        roots = OneFactorSum(self.total.shift, self.total.coefficients, loadings).roots(strike)
+        terms, variance = conditional_moments(self.total, loadings, np.array(roots))
+        slope = np.abs(terms @ loadings)
+        widths = np.sqrt(variance) / np.where(slope > 0.0, slope, np.inf)
+        return roots, [LAYER * float(width) for width in widths]
 
     def digital(self, strike: float, side: Side) -> None:
         return None
@@ -71,11 +83,18 @@ def mean_variance(
     total: LognormalSum, loadings: NDArray[np.float64], w: NDArray[np.float64], strike: float, side: Side
 ) -> NDArray[np.float64]:
     """Bound (b); arguments as for :func:`comonotonic`."""
-    terms = total.coefficients * np.exp(np.multiply.outer(w, loadings) - 0.5 * loadings**2)
-    left = np.expm1(total.covariance - np.outer(loadings, loadings))
-    variance = np.maximum(((terms @ left) * terms).sum(axis=1), 0.0)
+    terms, variance = conditional_moments(total, loadings, w)
     excess = side * (terms.sum(axis=1) + total.shift - strike)
     return np.asarray(0.5 * (np.sqrt(variance + excess * excess) + excess))
+
+
+def conditional_moments(
+    total: LognormalSum, loadings: NDArray[np.float64], w: NDArray[np.float64]
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Given each of ``w`` (m,): the terms' means (m, n) and the variance of their sum (m,)."""
+    terms = total.coefficients * np.exp(np.multiply.outer(w, loadings) - 0.5 * loadings**2)
+    left = np.expm1(total.covariance - np.outer(loadings, loadings))
+    return terms, np.maximum(((terms @ left) * terms).sum(axis=1), 0.0)
 
 
 def _law(problem: EuropeanProblem) -> AggregateLaw | None:

@@ -1,18 +1,14 @@
-"""The fused kernel: points, normals, levels, payoff and sums in one pass over cache-sized blocks.
-
-Numba's disk cache notices edits in the file of the function it stores, but not in what that
-function calls: a newer version of this package would silently run older kernels. It does
-look at the values a function closes over, so a digest of the kernels' sources is one.
-"""
+"""The fused kernel: points, normals, levels, payoff and sums in one pass over cache-sized blocks."""
 
 from __future__ import annotations
 
-import hashlib
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
 from numba import njit, types
 
+from pricer.core.stored_code import digest_of, stored_under
 from pricer.simulation.kernels.levels import (
     log_levels,
     low_table,
@@ -27,7 +23,6 @@ from pricer.simulation.kernels.payoffs import (
     BY_OUTSIDE_TWICE,
     BY_SCALED,
     BY_SCALED_TWICE,
-    GEOMETRIC,
     OUTSIDE,
     RANKED,
     SCALED,
@@ -35,7 +30,6 @@ from pricer.simulation.kernels.payoffs import (
     VALUE,
     WORST,
     extreme,
-    geometric,
     integrate_factor,
     rank_weighted,
     weighted_sum,
@@ -91,20 +85,6 @@ def _add_legs(paths: Any, levels: Any, logs: Any, n_common: int, m: int, sums: A
         sums[k + 4] += s4
 
 
-@njit(**OPTIONS)
-def _level_free(levels: Any, paths: Any) -> None:
-    """A geometric aggregate moves by its own level, whichever asset moves: levels become 1."""
-    use_wide_vectors()
-    for i in range(levels.shape[0]):
-        for p in range(BLOCK):
-            levels[i, p] = 1.0
-    for p in range(BLOCK):
-        scaled = paths[SCALED + p]
-        paths[BY_SCALED + p] *= scaled
-        paths[BY_FACTOR + p] *= scaled
-        paths[BY_SCALED_TWICE + p] *= scaled * scaled
-
-
 _SCRAMBLE = types.void(types.uint32[:, ::1], types.uint32[:, :, ::1], types.uint32[:, :, ::1])
 
 _ACCUMULATE = types.void(
@@ -119,7 +99,6 @@ _ACCUMULATE = types.void(
     types.int64,
     types.int64,
     types.float64,
-    types.float64,
     types.float64[::1],
     types.boolean,
     types.uint32[:, ::1],
@@ -131,94 +110,82 @@ _ACCUMULATE = types.void(
 )
 
 
-def _sources() -> int:
-    """A digest of all kernel sources; never 0."""
-    digest = hashlib.sha256()
-    for path in sorted(Path(__file__).parent.glob("*.py")):
-        digest.update(path.read_bytes())
-    return int.from_bytes(digest.digest()[:7], "big") + 1
+#: Kernels import from each other: a change in any of their files renews those on disk.
+_SOURCES = digest_of(Path(__file__).parent.glob("*.py"))
 
 
-def _compiled(sources: int) -> tuple[Any, Any]:
-    """The two kernels; their bodies mention ``sources`` only to close over it."""
+def _stored(signature: Any) -> Callable[[Callable[..., Any]], Any]:
+    """Compile for exactly this signature and keep the result on disk."""
 
-    @njit(_SCRAMBLE, cache=True, **OPTIONS)
-    def scramble(directions: Any, words: Any, columns: Any) -> None:
-        """Scrambled direction numbers of every randomisation.
+    def compile_stored(function: Callable[..., Any]) -> Any:
+        return njit(signature, cache=True, **OPTIONS)(stored_under(_SOURCES, function))
 
-        ``directions`` : (dims, bits); ``words`` : (randomisations, dims, 33) random;
-        ``columns`` : (randomisations, dims, bits), result. All uint32.
-        """
-        if sources == 0:
-            return
-        for r in range(words.shape[0]):
-            scrambled_columns(directions, words[r], columns[r])
-
-    @njit(_ACCUMULATE, cache=True, **OPTIONS)
-    def accumulate(
-        first: int,
-        last: int,
-        columns: Any,
-        words: Any,
-        loadings: Any,
-        widths: Any,
-        scales: Any,
-        rank_weights: Any,
-        kind: int,
-        n_common: int,
-        v: float,
-        log2_scale: float,
-        profile: Any,
-        with_ratios: bool,
-        table: Any,
-        normals: Any,
-        logs: Any,
-        levels: Any,
-        paths: Any,
-        sums: Any,
-    ) -> None:
-        """Add points ``first`` to ``last`` of every randomisation to ``sums``.
-
-        ``first`` is a multiple of ``BLOCK``; ``last`` is one too, or lies in the first block.
-        ``columns`` : (randomisations, dims, bits) scrambled direction numbers; ``words`` : word 32
-        is the digital shift. ``loadings`` : (n, dims padded to 4) float32, base-2 log-levels per
-        normal; ``widths`` : (n,) as in ``log_levels``. ``scales`` : (n,) level of each asset at
-        zero normals times its weight (for a geometric aggregate the exponents). ``rank_weights``
-        : (n,) float32. ``kind``, ``n_common``, ``v``, ``log2_scale``, ``profile``: see ``payoffs``.
-        Scratch: ``table`` (dims, BLOCK), ``normals`` (dims padded, BLOCK; padding 0), ``logs`` and
-        ``levels`` (n, BLOCK), ``paths`` (PATH_ROWS * BLOCK,).
-        ``sums`` : (randomisations, HEAD_SUMS + LEG_SUMS n): value, scaled part, outside part; per
-        asset the sums of ``_add_legs``. Blocks are added in order.
-        """
-        if sources == 0:
-            return
-        for r in range(columns.shape[0]):
-            low_table(columns[r], table)
-            for start in range(first, last, BLOCK):
-                normals_of_block(start // BLOCK, columns[r], words[r], table, normals)
-                log_levels(loadings, widths, normals, logs)
-                if kind == GEOMETRIC:
-                    geometric(logs, scales, log2_scale, paths)
-                else:
-                    powers(logs, levels)
-                    if kind == SUM:
-                        weighted_sum(levels, scales, n_common, paths)
-                    elif kind == BEST:
-                        extreme(levels, scales, 1.0, paths)
-                    elif kind == WORST:
-                        extreme(levels, scales, -1.0, paths)
-                    elif kind == RANKED:
-                        # normals are no longer needed: their rows hold the ranks
-                        rank_weighted(levels, scales, rank_weights, normals, paths)
-                integrate_factor(profile, v, with_ratios, paths)
-                m = min(BLOCK, last - start)
-                _add_head(paths, m, sums[r])
-                if with_ratios:
-                    if kind == GEOMETRIC:
-                        _level_free(levels, paths)
-                    _add_legs(paths, levels, logs, n_common, m, sums[r])
-
-    return scramble, accumulate
+    return compile_stored
 
 
-scramble, accumulate = _compiled(_sources())
+@_stored(_SCRAMBLE)
+def scramble(directions: Any, words: Any, columns: Any) -> None:
+    """Scrambled direction numbers of every randomisation.
+
+    ``directions`` : (dims, bits); ``words`` : (randomisations, dims, bits + 1) random;
+    ``columns`` : (randomisations, dims, bits), result. All uint32.
+    """
+    for r in range(words.shape[0]):
+        scrambled_columns(directions, words[r], columns[r])
+
+
+@_stored(_ACCUMULATE)
+def accumulate(
+    first: int,
+    last: int,
+    columns: Any,
+    words: Any,
+    loadings: Any,
+    widths: Any,
+    scales: Any,
+    rank_weights: Any,
+    kind: int,
+    n_common: int,
+    v: float,
+    profile: Any,
+    with_ratios: bool,
+    table: Any,
+    normals: Any,
+    logs: Any,
+    levels: Any,
+    paths: Any,
+    sums: Any,
+) -> None:
+    """Add points ``first`` to ``last`` of every randomisation to ``sums``.
+
+    ``first`` is a multiple of ``BLOCK``; ``last`` is one too, or lies in the first block.
+    ``columns`` : (randomisations, dims, bits) scrambled direction numbers; ``words`` : the last
+    one is the digital shift. ``loadings`` : (n, dims padded to 4) float32, base-2 log-levels per
+    normal; ``widths`` : (n,) as in ``log_levels``. ``scales`` : (n,) level of each asset at
+    zero normals times its weight. ``rank_weights`` : (n,) float32. ``kind``, ``n_common``,
+    ``v``, ``profile``: see ``payoffs``.
+    Scratch: ``table`` (dims, BLOCK), ``normals`` (dims padded, BLOCK; padding 0), ``logs`` and
+    ``levels`` (n, BLOCK), ``paths`` (PATH_ROWS * BLOCK,).
+    ``sums`` : (randomisations, HEAD_SUMS + LEG_SUMS n): value, scaled part, outside part; per
+    asset the sums of ``_add_legs``. Blocks are added in order.
+    """
+    for r in range(columns.shape[0]):
+        low_table(columns[r], table)
+        for start in range(first, last, BLOCK):
+            normals_of_block(start // BLOCK, columns[r], words[r], table, normals)
+            log_levels(loadings, widths, normals, logs)
+            powers(logs, levels)
+            if kind == SUM:
+                weighted_sum(levels, scales, n_common, paths)
+            elif kind == BEST:
+                extreme(levels, scales, 1.0, paths)
+            elif kind == WORST:
+                extreme(levels, scales, -1.0, paths)
+            elif kind == RANKED:
+                # normals are no longer needed: their rows hold the ranks
+                rank_weighted(levels, scales, rank_weights, normals, paths)
+            integrate_factor(profile, v, with_ratios, paths)
+            m = min(BLOCK, last - start)
+            _add_head(paths, m, sums[r])
+            if with_ratios:
+                _add_legs(paths, levels, logs, n_common, m, sums[r])

@@ -18,19 +18,20 @@ def scrambled_columns(directions: Any, words: Any, columns: Any) -> None:
     """Direction numbers times a random lower triangular binary matrix (Matousek 1998).
 
     ``directions`` : (dims, bits) uint32, highest bit first.
-    ``words`` : (dims, 33) uint32, random; word c fills column c below its unit diagonal.
+    ``words`` : (dims, bits + 1) uint32, random; word c fills column c below its unit diagonal.
     ``columns`` : (dims, bits) uint32, result.
     """
+    use_wide_vectors()
     dims, bits = directions.shape
     for j in range(dims):
         for b in range(bits):
-            v = directions[j, b]
-            out = _U(0)
-            for c in range(b + 1):  # direction number b has no lower bits
-                if (v >> _U(31 - c)) & _U(1):
-                    top = _U(1 << (31 - c))
-                    out = _U(out ^ _U(top | _U(words[j, c] & _U(top - _U(1)))))
-            columns[j, b] = out
+            columns[j, b] = _U(0)
+        for c in range(bits):  # direction numbers have no lower bits than these
+            top = _U(_U(1) << _U(31 - c))
+            column = _U(top | _U(words[j, c] & _U(top - _U(1))))
+            for b in range(bits):
+                bit = _U(_U(directions[j, b] >> _U(31 - c)) & _U(1))
+                columns[j, b] = _U(columns[j, b] ^ _U(column * bit))
 
 
 @njit(**OPTIONS)
@@ -55,7 +56,7 @@ def normals_of_block(block: int, columns: Any, words: Any, table: Any, normals: 
     """
     use_wide_vectors()
     for j in range(columns.shape[0]):
-        high = words[j, 32]
+        high = words[j, words.shape[1] - 1]
         rest = block
         b = BLOCK_BITS
         while rest > 0:

@@ -12,7 +12,6 @@ import numpy as np
 from numba import njit
 
 from pricer.simulation.kernels.elementary import (
-    exp2_double,
     log_double,
     normal_density,
     normal_distribution,
@@ -21,8 +20,8 @@ from pricer.simulation.kernels.vectors import BLOCK, OPTIONS, use_wide_vectors
 
 _F = np.float32
 
-# Kinds of aggregate.
-SUM, GEOMETRIC, BEST, WORST, RANKED = 0, 1, 2, 3, 4
+# Kinds of aggregate; geometric ones leave nothing to sample.
+SUM, BEST, WORST, RANKED = 0, 1, 2, 3
 
 # Rows of the per-path array.
 SCALED = 0 * BLOCK  # the part of the aggregate that the common factor scales
@@ -61,21 +60,6 @@ def weighted_sum(levels: Any, scales: Any, n_common: int, paths: Any) -> None:
         else:
             for p in range(BLOCK):
                 paths[OUTSIDE + p] += a * levels[i, p]
-
-
-@njit(**OPTIONS)
-def geometric(logs: Any, weights: Any, log2_scale: float, paths: Any) -> None:
-    """``SCALED = 2 ** (log2_scale + weights . logs)``."""
-    use_wide_vectors()
-    for p in range(BLOCK):
-        paths[SCALED + p] = log2_scale
-        paths[OUTSIDE + p] = 0.0
-    for i in range(logs.shape[0]):
-        a = weights[i]
-        for p in range(BLOCK):
-            paths[SCALED + p] += a * logs[i, p]
-    for p in range(BLOCK):
-        paths[SCALED + p] = exp2_double(paths[SCALED + p])
 
 
 @njit(**OPTIONS)
