@@ -16,8 +16,8 @@ from pricer.engines.problem import EuropeanProblem, ReferenceKind
 from pricer.market.joint_lognormal import JointLognormal
 from tests.property.problems import laws, problems, struck, value_of
 
-# Standard errors from 16 randomisations are themselves estimated (Student, 15 degrees of
-# freedom): 8 of them are exceeded with probability 1e-6, so a hundred examples stay quiet.
+# Standard errors from 32 randomisations are themselves estimated (Student, 30 degrees of
+# freedom): 8 of them are exceeded with probability 1e-8, so a thousand examples stay quiet.
 REACH = 8.0
 repeatable = settings(max_examples=25, deadline=None, derandomize=True)
 
