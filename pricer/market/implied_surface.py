@@ -145,7 +145,7 @@ class ImpliedSurface:
         inside = (high[0] - low[0]) / span
         outside = (variance - 0.5 * x * slope) / nodes[-1]
         speed = np.where(beyond, outside, inside)
-        return SurfaceDerivatives(stretch * variance, np.sqrt(stretch) * slope, curvature + 0.0 * speed, speed)
+        return SurfaceDerivatives(stretch * variance, np.sqrt(stretch) * slope, curvature, speed)
 
     def fit_errors(self) -> tuple[Array, ...]:
         """Per expiry: surface less quote in annualised volatility (0.001 is 0.1 vol points), (n,) each."""

@@ -18,10 +18,9 @@ USUAL_CORRELATION = 0.7
 class JumpWings:
     """A slice in terms a trader quotes (SVI-JW; Gatheral & Jacquier 2014, section 3.3).
 
-    ``variance`` v: variance per year at the forward. ``skew`` psi: slope at the forward of
-    the volatility's square root of total variance. ``put_wing`` p and ``call_wing`` c: slopes of the
-    wings, over the root of the total variance at the forward. ``minimum_variance`` v~: least variance per year.
-    ``time`` in years.
+    ``variance`` v: variance per year at the forward. ``skew`` psi: slope in k, at the forward, of the root of
+    total variance. ``put_wing`` p and ``call_wing`` c: slopes of the wings over that root at the forward.
+    ``minimum_variance`` v~: least variance per year. ``time`` in years.
     """
 
     variance: float

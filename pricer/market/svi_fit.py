@@ -44,12 +44,14 @@ def fit_slice(
 ) -> SviSlice:
     """The slice nearest to ``quotes`` of an expiry in ``time`` years, in weighted squares of volatility.
 
-    Weights fall with distance from the forward like the vega of a strike, to a tenth at most;
-    a quote that alone spoils the fit of the others is left out. ``before`` is the slice of the expiry before: total variance is kept above it within
-    ``RANGE`` standard deviations. ``later`` are (log-moneyness, total variance) of later expiries' quotes: this
-    slice is kept below them where its own quotes leave the choice. One quote gives a flat
-    slice; two a sloped, three a curved one through the quotes. Where bounds and quotes contradict each other, the
-    bounds win.
+    Weights fall with distance from the forward like a strike's vega, to a tenth at most; a quote that alone
+    spoils the fit of the others is left out. ``before`` is the slice of the expiry before: total variance is kept
+    above it within ``RANGE`` standard deviations. ``later`` are (log-moneyness, total variance) of later expiries'
+    quotes: the slice is held below them, against its own quotes only as far as squares balance.
+
+    One quote gives a flat slice, two a sloped and three a curved one through the quotes. Where bounds and quotes
+    contradict each other the bounds win. A slice always comes back; where even the last resort (the repair of
+    Gatheral & Jacquier, or the slice before carried on in time) leaves arbitrage, ``arbitrage`` reports it.
     """
     k, volatilities = quotes.log_moneyness, quotes.volatilities
     variances = volatilities**2 * time
@@ -66,8 +68,7 @@ def fit_slice(
     wings = np.zeros(2) if before is None else np.minimum(np.array(before.wings) / s, 0.99 * _steepest(s))
     later_k = np.concatenate([np.empty(0), *(points for points, _ in later)])
     later_w = np.concatenate([np.empty(0), *(totals for _, totals in later)])
-    near = np.abs(later_k) <= RANGE * s
-    bounds = (GRID, floor, later_k[near] / s, np.sqrt(later_w[near]) / s, s * s, _steepest(s), wings)
+    bounds = (GRID, floor, later_k / s, np.sqrt(later_w) / s, s * s, _steepest(s), wings)
     anchor = _free(prior, s)
     starts = [anchor, *(_free(start, s) for start in _starts(x, roots, weights, s))]
     found: list[SviSlice | None] = []

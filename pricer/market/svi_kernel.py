@@ -1,9 +1,9 @@
 """Least squares for one raw SVI slice under soft no-arbitrage bounds: compiled, a fraction of a millisecond.
 
-All in units of the standard deviation at the forward, s: x = k / s, W(x) = w(s x) / s^2. Five
-free numbers make every admissible slice (Gatheral's parameters in terms of what bounds them):
-``exp(p0)`` the least W, ``bound / (1 + exp(-p1))`` and ``bound / (1 + exp(-p2))`` the slopes of the left and
-right wing, ``p3`` the centre m, and the logarithm of the width sigma between those of NARROWEST and WIDEST the same way from ``p4``.
+All in units of the standard deviation at the forward, s: x = k / s, W(x) = w(s x) / s^2. Five free
+numbers make every admissible slice: ``exp(p0)`` is the least W, ``bound / (1 + exp(-p1))`` and
+``bound / (1 + exp(-p2))`` the slopes of the left and right wing, ``p3`` the centre m, and ``p4`` places the
+logarithm of the width sigma between those of NARROWEST and WIDEST in the same manner.
 """
 
 from __future__ import annotations
@@ -55,8 +55,9 @@ def residuals(
     """Fill ``out`` (n + 2 g + l + 7,) and return its sum of squares.
 
     Quotes: weighted differences of sqrt(W) from ``roots`` at ``x`` (n,). Bounds, active only where
-    broken and times ``stiffness``: g at least LEAST_BUTTERFLY and sqrt(W) at least ``floor`` on ``grid``
-    (g,), sqrt(W) at most ``later_roots`` at ``later_x`` (l,), wings at least as steep as ``least_wings`` (2,). Ridge: ``ridge`` times the distance from ``prior`` (5,).
+    broken and times ``stiffness``: g at least LEAST_BUTTERFLY and sqrt(W) at least ``floor`` on ``grid`` (g,),
+    sqrt(W) at most ``later_roots`` at ``later_x`` (l,), wings at least as steep as ``least_wings`` (2,). Ridge:
+    ``ridge`` times the distance from ``prior`` (5,). ``variance`` is s^2.
     """
     a, b, rho, m, sigma = scaled_slice(p, bound)
     n, g, later = x.size, grid.size, later_x.size
@@ -76,7 +77,7 @@ def residuals(
     for i in range(later):
         z = later_x[i] - m
         w = a + b * (rho * z + math.sqrt(z * z + sigma * sigma))
-        out[n + 2 * g + i] = 0.1 * stiffness * max(math.sqrt(max(w, 0.0)) - later_roots[i], 0.0)
+        out[n + 2 * g + i] = stiffness * max(math.sqrt(max(w, 0.0)) - later_roots[i], 0.0)
     out[n + 2 * g + later] = stiffness * max(least_wings[0] - b * (1.0 - rho), 0.0)
     out[n + 2 * g + later + 1] = stiffness * max(least_wings[1] - b * (1.0 + rho), 0.0)
     for i in range(5):

@@ -103,4 +103,5 @@ class LocalVolPlan:
     @property
     def lognormal_volatilities(self) -> Array:
         """(n,) annualised."""
-        return self.design.deviations / np.sqrt(self.years)
+        out: Array = self.design.deviations / np.sqrt(self.years)
+        return out

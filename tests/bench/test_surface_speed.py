@@ -32,7 +32,8 @@ def test_the_surfaces_of_fifty_underlyings_are_built_in_two_seconds(noise):
     fit, dupire, check = np.diff(marks)
     errors = 100.0 * np.abs(np.concatenate([e for surface in surfaces for e in surface.fit_errors()]))
     print(
-        f"\nnoise {100 * noise:.1f} vol points: fit {fit:.2f} s, local volatility {dupire:.2f} s, checks {check:.2f} s; "
+        f"\nnoise {100 * noise:.1f} vol points: fit {fit:.2f} s, local volatility {dupire:.2f} s, "
+        f"checks {check:.2f} s; "
         f"error in vol points: median {np.median(errors):.3f}, largest {errors.max():.3f}; "
         f"{sum(map(len, found))} violations; table {local[0].values.shape}"
     )

@@ -75,7 +75,7 @@ def test_the_repairs_printed_in_example_5_1_are_reached_from_their_jump_wings():
 
 
 def test_our_repair_moves_the_smile_no_further_than_the_published_optimum():
-    """Distance: squares of total variance within two standard deviations, which the paper's optimum does not minimise."""
+    """Distance: squares of total variance within two standard deviations; the paper minimises another one."""
     ours = repaired(VOGT, 1.0, 3.0)
     theirs = slice_of(next(row for row in ROWS if row["case_id"] == "SV-Vopt-ming"))
     near = np.linspace(-2.0, 2.0, 41) * np.sqrt(float(VOGT.total_variance(0.0)))

@@ -10,6 +10,7 @@ import numpy as np
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.profile import PiecewiseLinear
 from pricer.engines.local_vol_monte_carlo import LocalVolProblem
+from pricer.simulation.local_vol_plan import LocalVolPlan
 
 
 @dataclass(frozen=True)
@@ -47,7 +48,9 @@ def power(volatility: float, exponent: float, growth: float = 0.0, cap: float = 
 
 def smile(volatility: float, skew: float, curvature: float):
     """An invented smile that flattens with time."""
-    return lambda t, k: volatility * np.exp(skew * np.tanh(2.0 * k) / np.sqrt(0.25 + t)) * (1.0 + curvature * np.tanh(k) ** 2)
+    return lambda t, k: (
+        volatility * np.exp(skew * np.tanh(2.0 * k) / np.sqrt(0.25 + t)) * (1.0 + curvature * np.tanh(k) ** 2)
+    )
 
 
 def skewed(
@@ -79,6 +82,14 @@ def skewed(
 def flat(problem: LocalVolProblem) -> LocalVolProblem:
     """The same problem with the lognormal volatilities as flat surfaces."""
     surfaces = tuple(
-        tabulated(lambda t, k, v=v: np.full(np.broadcast(t, k).shape, v), v, problem.years) for v in problem.volatilities
+        tabulated(lambda t, k, v=v: np.full(np.broadcast(t, k).shape, v), v, problem.years)
+        for v in problem.volatilities
     )
     return replace(problem, surfaces=surfaces)
+
+
+def plan_of(problem: LocalVolProblem, *, triangular: bool = False) -> LocalVolPlan:
+    """The plan as the engine makes it."""
+    shares = problem.scales / (problem.scales + problem.floors)
+    law, aggregate, payoff = problem.lognormal.law, problem.aggregate, problem.payoff
+    return LocalVolPlan.of(law, problem.surfaces, shares, problem.years, aggregate, payoff, triangular=triangular)

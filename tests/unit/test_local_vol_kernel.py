@@ -9,12 +9,11 @@ from pricer.simulation import local_vol_plain as plain
 from pricer.simulation import sobol
 from pricer.simulation.kernels import local_vol_paths, local_vol_tables
 from pricer.simulation.kernels.sources import digest
-from pricer.simulation.local_vol_plan import LocalVolPlan
 from pricer.simulation.local_vol_sampler import LocalVolSampler, local_vol_levels
 from pricer.simulation.local_vol_tables import StepRows
 from pricer.simulation.path_noise import PathNoise
 from pricer.simulation.time_grid import TimeGrid
-from tests.unit.local_vol_cases import Table, power, skewed, tabulated
+from tests.unit.local_vol_cases import Table, plan_of, power, skewed, tabulated
 
 N = 6
 NEAR_100 = PiecewiseLinear(1.0, -0.3, (60.0, 95.0, 130.0), (0.5, -1.0, 0.7), (20.0, 0.0, -30.0))
@@ -33,12 +32,6 @@ CASES = {
 
 def generators(n: int = 2) -> list[np.random.Generator]:
     return [np.random.default_rng([5, i]) for i in range(n)]
-
-
-def plan_of(problem, *, triangular: bool = False) -> LocalVolPlan:
-    shares = problem.scales / (problem.scales + problem.floors)
-    law, aggregate, payoff = problem.lognormal.law, problem.aggregate, problem.payoff
-    return LocalVolPlan.of(law, problem.surfaces, shares, problem.years, aggregate, payoff, triangular=triangular)
 
 
 @pytest.mark.parametrize("coarse", [False, True])

@@ -130,7 +130,12 @@ def test_a_sound_slice_is_not_repaired():
 
 
 @pytest.mark.parametrize(
-    "smile", [SviSlice(0.0, 2.0, -0.5, 0.0, 0.1), SviSlice(-0.041, 0.1331, 0.306, 0.3586, 0.4153), SviSlice(0.001, 0.3, -0.6, 0.4, 0.05)]
+    "smile",
+    [
+        SviSlice(0.0, 2.0, -0.5, 0.0, 0.1),
+        SviSlice(-0.041, 0.1331, 0.306, 0.3586, 0.4153),
+        SviSlice(0.001, 0.3, -0.6, 0.4, 0.05),
+    ],
 )
 def test_a_repaired_slice_has_no_butterfly_arbitrage_and_the_level_it_had(smile):
     assert not is_butterfly_free(smile, 3.0)

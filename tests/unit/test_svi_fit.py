@@ -163,7 +163,7 @@ def test_the_kernels_bounds_are_g_and_total_variance_of_the_slice():
     n = GRID.size
     np.testing.assert_allclose(out[1 : 1 + n], 3.0 * np.maximum(svi_kernel.LEAST_BUTTERFLY - g, 0.0), atol=1e-12)
     np.testing.assert_allclose(out[1 + n : 1 + 2 * n], 3.0 * np.maximum(1.2 - root, 0.0), atol=1e-12)
-    np.testing.assert_allclose(out[1 + 2 * n : 3 + 2 * n], 0.3 * np.maximum(later - later_roots, 0.0), atol=1e-12)
+    np.testing.assert_allclose(out[1 + 2 * n : 3 + 2 * n], 3.0 * np.maximum(later - later_roots, 0.0), atol=1e-12)
     np.testing.assert_allclose(
         out[3 + 2 * n : 5 + 2 * n], 3.0 * np.maximum(least - np.array(scaled.wings), 0.0), atol=1e-12
     )

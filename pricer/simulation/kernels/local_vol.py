@@ -31,6 +31,9 @@ _U = np.uint32
 _L = np.uint64
 _LOG2_E = 1.4426950408889634
 
+#: Base-2 logarithms are kept within this: single precision ends at 126. Levels near 0 stay where no payoff sees them.
+_WIDEST = _F(60.0)
+
 
 @njit(**OPTIONS)
 def walk(at: Any, left: Any, right: Any, weights: Any, n: int, walks: Any) -> None:
@@ -204,8 +207,8 @@ def last_levels(deviations: Any, noise: Any, shift: Any, n_common: int, starts: 
         inside = 1.0 if i < n_common else 0.0
         for p in range(BLOCK):
             s = deviations[i, p]
-            move = s * noise[i, p] - _F(0.5) * s * s - _F(inside * shift[p])
-            levels[i, p] = starts[i, p] * exp2_single(_F(_LOG2_E) * move)
+            move = _F(_LOG2_E) * (s * noise[i, p] - _F(0.5) * s * s - _F(inside * shift[p]))
+            levels[i, p] = starts[i, p] * exp2_single(min(max(move, -_WIDEST), _WIDEST))
 
 
 @njit(**OPTIONS)

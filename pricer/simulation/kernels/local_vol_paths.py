@@ -43,6 +43,7 @@ from pricer.simulation.kernels.vectors import BLOCK, OPTIONS, SUM_OPTIONS, use_w
 _F = np.float32
 _LN2 = 0.6931471805599453
 _LOG2_E = 1.4426950408889634
+_WIDEST = _F(60.0)  # base-2 log-levels are kept within this: single precision ends at 126
 
 #: Planes (n, BLOCK) of single-precision scratch.
 STATES, TANGENTS, NOISE, STARTS, DEVIATIONS, LEVEL_SLOPES, DEVIATION_SLOPES, LEVELS, LOGS = range(9)
@@ -62,7 +63,7 @@ def _before_last(
     use_wide_vectors()
     fixed = _F(1.0 - share)
     for p in range(BLOCK):
-        moving = _F(share) * exp2_single(levels[p])
+        moving = _F(share) * exp2_single(min(max(levels[p], -_WIDEST), _WIDEST))
         price = moving + fixed
         part = moving / price
         slope = _F(_LN2) * level_slopes[p] * tangents[p]
@@ -474,7 +475,7 @@ def _compiled(sources: int) -> tuple[Any, Any]:
                             low, scale = lowest[s, i], per_node[s, i]
                             look_up(levels[date, i], low, scale, planes[LOGS, i], log, slope, places, fetched)
                             for p in range(BLOCK):
-                                out[r, date, i, start - first + p] = exp2_single(log[p])
+                                out[r, date, i, start - first + p] = exp2_single(min(max(log[p], -_WIDEST), _WIDEST))
                         date += 1
                     if s < uses.shape[0] - 1:
                         evolve(moves[s], lowest[s], per_node[s], noise, states, tangents, False, places, fetched)
