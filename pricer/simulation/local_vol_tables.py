@@ -33,7 +33,7 @@ class LocalVolatility(Protocol):
 
     ``times`` : (m + 1,) from 0; cell i ends at ``times[i + 1]``, the last cell holds ever after.
     ``values`` : (m, n) annualised, at log-levels ``widths[i] * y``, y equidistant in
-    ``[-reach, reach]``; constant beyond. ``pricer.market.local_vol_surface`` makes them.
+    ``[-reach, reach]``, linear between, constant beyond. ``pricer.market.local_vol_surface`` makes them.
     """
 
     @property
@@ -76,7 +76,8 @@ class StepRows:
                 row = np.interp(widths[s] * y, surface.widths[cell] * y, surface.values[cell])
                 variance += shares[cell] * row * row
             centre = float(np.interp(0.0, y, variance))
-            values[s] = np.sqrt(np.maximum(variance, max(_LEAST**2 * centre, 1e-8)))
+            least = max(_LEAST * np.sqrt(centre), 1e-4)
+            values[s] = np.maximum(_smooth(np.sqrt(variance)), least)
         return cls(widths, surface.reach, values)
 
     @property
@@ -139,6 +140,17 @@ class LocalVolTables:
             starts=starts[:, 0].astype(np.float32),
             start_slopes=starts[:, 1].astype(np.float32),
         )
+
+
+def _smooth(row: Array) -> Array:
+    """Nodes of a smooth curve with the mean, cell by cell, of the straight pieces between ``row``, to fourth order.
+
+    Paths follow a smooth curve through the nodes, a surface is straight between them. In between, straight
+    pieces of a curved smile lie higher: by 0.02 points of implied volatility at 0.2 deviations a node.
+    """
+    out = row.copy()
+    out[1:-1] += (row[:-2] - 2.0 * row[1:-1] + row[2:]) / 12.0
+    return out
 
 
 def _nodes(central: Array, lengths: Array) -> tuple[Array, Array]:

@@ -32,7 +32,7 @@ def test_simulated_options_have_the_surfaces_own_implied_volatilities(name):
     smiles = [SmileParameters(TODAY + timedelta(days=d), *p) for d, p in zip(DAYS, SMILES[name], strict=True)]
     surface = ImpliedSurface.from_quotes(TODAY, smiles)
     local = LocalVolSurface.from_implied(surface)
-    levels = local_vol_levels([local], np.eye(1), surface.times, steps=20, points=2**14, streams=streams()).astype(
+    levels = local_vol_levels([local], np.eye(1), surface.times, steps=40, points=2**14, streams=streams()).astype(
         float
     )
     off = []

@@ -30,13 +30,32 @@ _HIGHEST = 300.0  # of a log-price: its square is still a double
 
 
 @njit(**_OPTIONS)
-def _slopes(values: Any, spacing: float, out: Any) -> None:
-    """Slopes that keep a cubic between neighbouring values (Fritsch & Butland 1984), equidistant nodes."""
+def _centred_slopes(values: Any, spacing: float, out: Any) -> None:
+    """Slopes of a smooth function from its neighbours, of fourth order inside."""
     n = len(values)
-    out[0] = out[n - 1] = 0.0
+    for j in range(n):
+        if 2 <= j < n - 2:
+            out[j] = (8.0 * (values[j + 1] - values[j - 1]) - values[j + 2] + values[j - 2]) / (12.0 * spacing)
+        elif 1 <= j < n - 1:
+            out[j] = (values[j + 1] - values[j - 1]) / (2.0 * spacing)
+    out[0] = (values[1] - values[0]) / spacing
+    out[n - 1] = (values[n - 1] - values[n - 2]) / spacing
+
+
+@njit(**_OPTIONS)
+def _volatility_slopes(values: Any, spacing: float, out: Any) -> None:
+    """Slopes of a positive function at equidistant nodes, of fourth order where it is smooth.
+
+    Elsewhere limited to three times the lesser of the neighbouring rises (Hyman 1983), and to a value
+    per spacing: the cubic then stays close to its nodes and positive.
+    """
+    _centred_slopes(values, spacing, out)
+    n = len(values)
+    out[0] = out[n - 1] = 0.0  # flat beyond
     for j in range(1, n - 1):
-        a, b = (values[j] - values[j - 1]) / spacing, (values[j + 1] - values[j]) / spacing
-        out[j] = 2.0 * a * b / (a + b) if a * b > 0.0 else 0.0
+        least = min(abs(values[j] - values[j - 1]), abs(values[j + 1] - values[j]))
+        most = min(3.0 * least, values[j]) / spacing
+        out[j] = min(max(out[j], -most), most)
 
 
 @njit(**_OPTIONS)
@@ -55,19 +74,6 @@ def _cubic(values: Any, slopes: Any, low: float, spacing: float, x: float) -> An
     bump = a + (b - a) * t
     value = values[j] + t * rise + t * (1.0 - t) * bump
     return value, (rise + (1.0 - 2.0 * t) * bump + t * (1.0 - t) * (b - a)) / spacing
-
-
-@njit(**_OPTIONS)
-def _centred_slopes(values: Any, spacing: float, out: Any) -> None:
-    """Slopes of a smooth function from its neighbours, of fourth order inside."""
-    n = len(values)
-    for j in range(n):
-        if 2 <= j < n - 2:
-            out[j] = (8.0 * (values[j + 1] - values[j - 1]) - values[j + 2] + values[j - 2]) / (12.0 * spacing)
-        elif 1 <= j < n - 1:
-            out[j] = (values[j + 1] - values[j - 1]) / (2.0 * spacing)
-    out[0] = (values[1] - values[0]) / spacing
-    out[n - 1] = (values[n - 1] - values[n - 2]) / spacing
 
 
 @njit(**_OPTIONS)
@@ -226,7 +232,7 @@ def _compiled(sources: int) -> Any:
         means = np.empty((n_steps, 2, n))
         mean_slopes = np.empty((n_steps, 2, n))
         for s in range(n_steps):
-            _slopes(rows[s], spacings[s], slopes)
+            _volatility_slopes(rows[s], spacings[s], slopes)
             _to_log_level(rows[s], slopes, lows[s], spacings[s], lengths[s], edges[s], steps[s], levels[s])
             _centred_slopes(levels[s], steps[s], level_slopes[s])
             _log_means(levels[s], level_slopes[s], edges[s], steps[s], lengths[s], nodes, weights, means[s])
