@@ -24,11 +24,17 @@ def batch_estimate(means: Array, controls: Array | None = None) -> tuple[Array, 
 
     ``controls`` (randomisations, m), one per column, of mean 0 and order 1; None for none.
     """
+    estimate, error, _ = batch_regression(means, controls)
+    return estimate, error
+
+
+def batch_regression(means: Array, controls: Array | None = None) -> tuple[Array, Array, Array]:
+    """As ``batch_estimate``, and the slopes (m,): by how much an error in a control's mean would enter."""
     n = means.shape[0]
     centre = means.mean(axis=0)
     off = means - centre
     if controls is None:
-        return centre, np.sqrt((off * off).sum(axis=0) / (n * (n - 1)))
+        return centre, np.sqrt((off * off).sum(axis=0) / (n * (n - 1))), np.zeros_like(centre)
     control_centre = controls.mean(axis=0)
     control_off = controls - control_centre
     spread = (control_off * control_off).sum(axis=0)
@@ -38,4 +44,4 @@ def batch_estimate(means: Array, controls: Array | None = None) -> tuple[Array, 
     residual = off - slope * control_off
     variance = (residual * residual).sum(axis=0) / (n - 2)
     leverage = 1.0 / n + np.where(moving, control_centre**2 / safe, 0.0)
-    return centre - slope * control_centre, np.sqrt(variance * leverage)
+    return centre - slope * control_centre, np.sqrt(variance * leverage), slope

@@ -45,10 +45,10 @@ class Integrated(NamedTuple):
     by_outside_twice: Array
 
 
-def integrate_factor(payoff: PiecewiseLinear, v: float, scaled: Array, outside: Array) -> Integrated:
-    """``E[payoff(exp(v w) scaled + outside)]`` and derivatives.
+def integrate_factor(payoff: PiecewiseLinear, v: float | Array, scaled: Array, outside: Array) -> Integrated:
+    """``E[payoff(exp(v w) scaled + outside)]`` and derivatives; ``v`` one for all or of the shape of ``scaled``.
 
-    ``v = 0`` gives the payoff itself and its slope; second derivatives and the effect of
+    ``v = 0`` throughout gives the payoff itself and its slope; second derivatives and the effect of
     jumps on first ones are then missing.
     """
     growth = np.exp(0.5 * v * v)
@@ -63,7 +63,7 @@ def integrate_factor(payoff: PiecewiseLinear, v: float, scaled: Array, outside: 
     sign = np.where(scaled < 0.0, -1.0, 1.0)
     for knot, bend, jump in zip(payoff.knots, payoff.bends, payoff.jumps, strict=True):
         threshold = knot - outside
-        if v > 0.0:
+        if np.all(np.asarray(v) > 0.0):
             k = np.maximum(np.abs(threshold), _TINY)
             d = np.clip(np.log(size / k) / v, -_FAR, _FAR)
             d = np.where((scaled < 0.0) != (threshold < 0.0), _FAR, d)

@@ -13,6 +13,7 @@ from pricer.simulation.batch_means import batch_estimate
 from pricer.simulation.design import Design, reflected
 from pricer.simulation.estimates import estimates
 from pricer.simulation.kernels import fused
+from pricer.simulation.kernels.sources import digest
 from pricer.simulation.sampler import Sampler
 
 N = 6
@@ -155,4 +156,4 @@ def test_rounding_to_single_precision_stays_within_the_error_it_is_granted(case)
 
 def test_the_disk_cache_is_keyed_by_the_sources_of_all_kernels():
     for kernel in (fused.scramble, fused.accumulate):
-        assert fused._sources() in [cell.cell_contents for cell in kernel.py_func.__closure__]
+        assert digest() in [cell.cell_contents for cell in kernel.py_func.__closure__]

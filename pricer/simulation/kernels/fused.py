@@ -1,14 +1,10 @@
 """The fused kernel: points, normals, levels, payoff and sums in one pass over cache-sized blocks.
 
-Numba's disk cache notices edits in the file of the function it stores, but not in what that
-function calls: a newer version of this package would silently run older kernels. It does
-look at the values a function closes over, so a digest of the kernels' sources is one.
+The compiled functions close over a digest of all kernel sources (see ``sources``).
 """
 
 from __future__ import annotations
 
-import hashlib
-from pathlib import Path
 from typing import Any
 
 from numba import njit, types
@@ -34,12 +30,15 @@ from pricer.simulation.kernels.payoffs import (
     SUM,
     VALUE,
     WORST,
+    constant_factor,
     extreme,
     geometric,
     integrate_factor,
+    level_free,
     rank_weighted,
     weighted_sum,
 )
+from pricer.simulation.kernels.sources import digest
 from pricer.simulation.kernels.vectors import BLOCK, OPTIONS, SUM_OPTIONS, use_wide_vectors
 
 #: Sums per randomisation: three of the aggregate, then ``LEG_SUMS`` per asset.
@@ -91,20 +90,6 @@ def _add_legs(paths: Any, levels: Any, logs: Any, n_common: int, m: int, sums: A
         sums[k + 4] += s4
 
 
-@njit(**OPTIONS)
-def _level_free(levels: Any, paths: Any) -> None:
-    """A geometric aggregate moves by its own level, whichever asset moves: levels become 1."""
-    use_wide_vectors()
-    for i in range(levels.shape[0]):
-        for p in range(BLOCK):
-            levels[i, p] = 1.0
-    for p in range(BLOCK):
-        scaled = paths[SCALED + p]
-        paths[BY_SCALED + p] *= scaled
-        paths[BY_FACTOR + p] *= scaled
-        paths[BY_SCALED_TWICE + p] *= scaled * scaled
-
-
 _SCRAMBLE = types.void(types.uint32[:, ::1], types.uint32[:, :, ::1], types.uint32[:, :, ::1])
 
 _ACCUMULATE = types.void(
@@ -129,14 +114,6 @@ _ACCUMULATE = types.void(
     types.float64[::1],
     types.float64[:, ::1],
 )
-
-
-def _sources() -> int:
-    """A digest of all kernel sources; never 0."""
-    digest = hashlib.sha256()
-    for path in sorted(Path(__file__).parent.glob("*.py")):
-        digest.update(path.read_bytes())
-    return int.from_bytes(digest.digest()[:7], "big") + 1
 
 
 def _compiled(sources: int) -> tuple[Any, Any]:
@@ -192,6 +169,7 @@ def _compiled(sources: int) -> tuple[Any, Any]:
         """
         if sources == 0:
             return
+        constant_factor(v, paths)
         for r in range(columns.shape[0]):
             low_table(columns[r], table)
             for start in range(first, last, BLOCK):
@@ -210,15 +188,15 @@ def _compiled(sources: int) -> tuple[Any, Any]:
                     elif kind == RANKED:
                         # normals are no longer needed: their rows hold the ranks
                         rank_weighted(levels, scales, rank_weights, normals, paths)
-                integrate_factor(profile, v, with_ratios, paths)
+                integrate_factor(profile, v > 0.0, with_ratios, paths)
                 m = min(BLOCK, last - start)
                 _add_head(paths, m, sums[r])
                 if with_ratios:
                     if kind == GEOMETRIC:
-                        _level_free(levels, paths)
+                        level_free(levels, paths)
                     _add_legs(paths, levels, logs, n_common, m, sums[r])
 
     return scramble, accumulate
 
 
-scramble, accumulate = _compiled(_sources())
+scramble, accumulate = _compiled(digest())
