@@ -26,6 +26,7 @@ _WORK = 400_000  # nodes times terms, and
 _RULES = 1_000  # tensor rules: some tens of milliseconds
 _LARGEST = 20  # terms; with more, the time runs out long before the error is small
 _TRAPEZOID = 2  # variables across, up to which all of them get a fine rule
+_RISE = 0.1  # of a term along the direction, in its deviation, times the cosine to the best direction
 _ALIGNED = 1e-6  # share of the first-order effect across that counts as none
 _WIDEST = 1.5  # deviation of a log across, beyond which a sparse grid's changes are no guide to its error
 
@@ -93,21 +94,35 @@ def split_along(total: LognormalSum, strike: float) -> tuple[NDArray[np.float64]
     if not found:
         return None
     root, signs = total.root(), np.sign(total.coefficients)
-    unit = found[-1].unit
-    if np.any(signs * found[-1].loadings < 0.0):
-        from scipy.optimize import nnls  # slow to import, and seldom needed
-
-        # Nearest direction with signs * (root @ u) >= 0: the projection on a cone, by its dual.
-        multipliers, _ = nnls(root.T * signs, -unit)
-        unit = unit + (root.T * signs) @ multipliers
-        size = float(np.linalg.norm(unit))
-        if size < 1e-6:
-            return None
-        unit = unit / size
+    unit = _rising(found[-1].unit, signs[:, None] * root, total.deviations)
+    if unit is None:
+        return None
     loadings = signs * np.maximum(signs * (root @ unit), 0.0)
     others = np.linalg.svd(unit[None, :])[2][1:]  # an orthonormal basis of what is left
     rest = root @ others.T
     return loadings, rest @ _axes(rest, found[-1].sensitivities)
+
+
+def _rising(
+    unit: NDArray[np.float64], rows: NDArray[np.float64], deviations: NDArray[np.float64]
+) -> NDArray[np.float64] | None:
+    """The direction nearest to ``unit`` (rank,) along which no term falls, ``rows @ u >= 0``; rows (n, rank).
+
+    If there is one along which every term rises by a part of its deviation it is better: on
+    the edge of the cone a term that stands still makes the conditional value bend sharply.
+    """
+    if np.all(rows @ unit >= 0.0):
+        return unit
+    from scipy.optimize import nnls  # slow to import, and seldom needed
+
+    for part, shortest in ((_RISE, 0.05), (0.0, 1e-6)):
+        cone = rows - part * np.outer(deviations, unit)
+        multipliers, _ = nnls(cone.T, -unit)  # the projection on a cone, by its dual
+        nearest = unit + multipliers @ cone
+        size = float(np.linalg.norm(nearest))
+        if size >= shortest:
+            return np.asarray(nearest / size)
+    return None
 
 
 def _axes(rest: NDArray[np.float64], sensitivities: NDArray[np.float64]) -> NDArray[np.float64]:
