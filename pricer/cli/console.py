@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import math
 import sys
 import time
 from collections import Counter, defaultdict
-from collections.abc import Iterable, Sequence
+from collections.abc import Sequence
 from threading import Lock
 
 from rich.console import Console
@@ -16,7 +17,8 @@ from rich.table import Table
 from pricer.core.issues import Issue, Severity
 from pricer.core.progress import Progress, Silent
 from pricer.engines.cross_check import ALARMS
-from pricer.run.outcome import Outcome, Status
+from pricer.report.totals import book_total, group_totals
+from pricer.run.outcome import Outcome
 
 #: Problems of one kind that are printed before the rest is only counted.
 SHOWN_OF_A_KIND = 8
@@ -131,31 +133,28 @@ def show_outcome(outcome: Outcome) -> None:
     table.add_column("trades", justify="right")
     table.add_column("value", justify="right")
     table.add_column("standard error", justify="right")
-    by_currency: dict[str, list[tuple[float, float]]] = defaultdict(list)
-    for v in outcome.valuations:
-        by_currency[v.currency].append((v.value, v.standard_error))
-    for currency in sorted(by_currency):
-        table.add_row(currency, *_row(by_currency[currency]))
+    for group in sorted(group_totals(outcome, "currency"), key=lambda each: each.group):
+        priced = group.trades - group.not_priced
+        if priced:
+            table.add_row(group.group, str(priced), _amount(group.own_value), _amount(group.own_standard_error))
     table.add_section()
-    total = [(v.reporting_value, v.reporting_standard_error) for v in outcome.valuations]
-    table.add_row(f"total in {facts.reporting_currency}", *_row(total), style="bold")
+    whole = book_total(outcome).total
+    row = (str(whole.trades - whole.not_priced), _amount(whole.value), _amount(whole.standard_error))
+    table.add_row(f"total in {facts.reporting_currency}", *row, style="bold")
     out.print(table)
 
-    imprecise = sum(v.status is Status.PRECISION_NOT_REACHED for v in outcome.valuations)
     alarms = sum(check.verdict in ALARMS for check in outcome.cross_checks)
     lines = [
         f"priced {len(outcome.valuations)}, not priced {len(outcome.refusals)}",
-        f"less precise than asked: {imprecise}",
+        f"less precise than asked: {whole.precision_not_reached}",
         f"cross-checks: {len(outcome.cross_checks)}, of which disagree: {alarms}",
     ]
     for line in lines:
         out.print(line, markup=False)
 
 
-def _row(members: Iterable[tuple[float, float]]) -> tuple[str, str, str]:
-    values, errors = zip(*members, strict=True) if (members := list(members)) else ((), ())
-    error = sum(e * e for e in errors) ** 0.5
-    return str(len(values)), f"{sum(values):,.2f}", f"{error:,.2f}"
+def _amount(amount: float) -> str:
+    return "-" if math.isnan(amount) else f"{amount:,.2f}"
 
 
 def say(text: str) -> None:

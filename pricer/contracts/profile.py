@@ -79,14 +79,6 @@ class PiecewiseLinear:
             out = out + bend * np.maximum(a - knot, 0.0) + jump * (a > knot)
         return out
 
-    def of_known(self, a: NDArray[np.float64], gross: ArrayLike = 0.0) -> NDArray[np.float64]:
-        """The payoff at levels without variance, any shape: a tie counts as *at* the knot (see :func:`is_above`)."""
-        a = np.asarray(a, dtype=float)
-        out = self.intercept + self.slope * a
-        for knot, bend, jump in zip(self.knots, self.bends, self.jumps, strict=True):
-            out = out + bend * np.maximum(a - knot, 0.0) + jump * is_above(a, knot, gross)
-        return out
-
     def pieces(self) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
         """Intercept and slope of each straight piece, left to right: two arrays (n_knots + 1,)."""
         knots, bends, jumps = (np.array(x, dtype=float) for x in (self.knots, self.bends, self.jumps))

@@ -31,8 +31,8 @@ class SamplingSettings:
     """How much is drawn, and what the first points of a sequence, the best ones, drive.
 
     ``ordering``: "principal components", "cholesky", or "automatic", which takes principal
-    components for sums and geometric aggregates and Cholesky for ranked ones: measured, it
-    serves these better and at half the cost.
+    components for sums and Cholesky for ranked aggregates: measured, it serves these better
+    and at half the cost. Geometric aggregates leave nothing to order.
     """
 
     randomisations: int = 32

@@ -47,7 +47,7 @@ def headline(sample: Sample, references: tuple[Reference, ...], tolerance: float
     """
     floor = max((r.value - r.error for r in references if r.kind is ReferenceKind.LOWER_BOUND), default=-math.inf)
     ceiling = min((r.value + r.error for r in references if r.kind is ReferenceKind.UPPER_BOUND), default=math.inf)
-    exact = best_exact(r for r in references if r.error <= tolerance)
+    exact = best_exact(references, tolerance)
     if exact is not None and floor <= exact.value + exact.error and exact.value - exact.error <= ceiling:
         low, high = exact.value - exact.error, exact.value + exact.error
         return Headline(exact.value, 0.0, low, high, Interval.EXACT, exact.method)

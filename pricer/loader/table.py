@@ -34,10 +34,6 @@ class Row(Generic[R]):
         """The value in ``column``; :data:`UNREAD` where it could not be read."""
         return getattr(self.value, column) if self.value is not None else self.readable.get(column, UNREAD)
 
-    @property
-    def is_refused(self) -> bool:
-        return self.value is None
-
 
 @dataclass(frozen=True, slots=True)
 class Table(Generic[R]):

@@ -86,8 +86,8 @@ def estimates(design: Design, means: Array, points: int) -> Estimates:
     width = 1.0 / (points * np.sqrt(12.0 * len(means)))
     smoothed = design.is_smoothed
     at_jump = 0.0 if smoothed else width * float(np.abs(design.payoff.jumps).sum())
-    at_switch = 2.0 * gross * width if _switches(design) else 0.0  # a jump is at most about twice the mean: an
-    # option pays more where its legs switch than elsewhere
+    # a jump is at most about twice the mean: an option pays more where its legs switch than elsewhere
+    at_switch = 2.0 * gross * width if _switches(design) else 0.0
     few = few_paths_decide(design.payoff, value, aggregate, rounding)
     unseen = Unseen.of(design, points * len(means)) if few else Unseen.nothing(design.n_assets)
     place = np.argsort(design.order)

@@ -8,6 +8,8 @@ import pytest
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.profile import TIE, PiecewiseLinear, ProfileKind, is_above
 from pricer.engines.closed_form import best_exact, references
+from pricer.engines.closed_form.family import expectation
+from pricer.engines.closed_form.known_level import KnownLevel
 from tests.unit.closed_form_cases import equal_correlation, law, problem
 
 SPOTS = [100.0, 100.0, 100.0]
@@ -59,5 +61,6 @@ def test_a_level_beyond_the_tie_is_above():
 def test_the_payoff_of_a_known_level_differs_from_the_plain_one_at_ties_only():
     payoff = PiecewiseLinear(1.0, 0.5, (100.0, 120.0), (1.0, -2.0), (3.0, 4.0))
     levels = np.array([90.0, 100.0 + 1e-11, 100.1, 120.0 + 1e-11, 130.0])
-    plain, known = payoff(levels), payoff.of_known(levels)
+    plain = payoff(levels)
+    known = np.array([expectation(payoff, KnownLevel(level, 0.0)).value for level in levels])
     assert (plain - known).tolist() == [0.0, 3.0, 0.0, 4.0, 0.0]
