@@ -113,7 +113,7 @@ def is_calendar(name: str) -> bool:
 
 def is_business_day(calendar: str, day: date) -> bool:
     """Whether ``day`` is a business day of ``calendar``; "TARGET+US" is one where both are open."""
-    return bool(_calendar(calendar).isBusinessDay(_to_ql(day)))
+    return bool(_calendar(calendar).isBusinessDay(to_quantlib(day)))
 
 
 def advance(calendar: str, day: date, business_days: int) -> date:
@@ -126,7 +126,7 @@ def advance(calendar: str, day: date, business_days: int) -> date:
 
 def roll(calendar: str, day: date, convention: str = "following") -> date:
     """``day`` moved to a business day by a roll convention."""
-    return _from_ql(_calendar(calendar).adjust(_to_ql(day), _convention(convention)))
+    return from_quantlib(_calendar(calendar).adjust(to_quantlib(day), _convention(convention)))
 
 
 def add_tenor(calendar: str, day: date, tenor: str, convention: str = "modified following") -> date:
@@ -135,13 +135,7 @@ def add_tenor(calendar: str, day: date, tenor: str, convention: str = "modified 
     Days are business days; weeks, months and years are calendar time, rolled at the end.
     Raises ValueError for a tenor that cannot be read.
     """
-    match = _TENOR.fullmatch(tenor.strip())
-    if match is None:
-        raise ValueError(
-            f'"{tenor}" is not a tenor: write a whole number and D, W, M or Y for days, weeks, months or years, e.g. 3M'
-        )
-    length, unit = int(match[1]), _UNITS[match[2].upper()]
-    return _advance(calendar, day, length, unit, _convention(convention))
+    return _advance(calendar, day, *_length_and_unit(tenor), _convention(convention))
 
 
 def currency_calendar(currency: str) -> str:
@@ -157,12 +151,39 @@ def currency_calendar(currency: str) -> str:
 
 def year_fraction(start: date, end: date, day_count: str = "ACT/365F") -> float:
     """Years from ``start`` to ``end``; negative if ``end`` comes first."""
-    return float(_day_counter(day_count).yearFraction(_to_ql(start), _to_ql(end)))
+    return float(day_counter(day_count).yearFraction(to_quantlib(start), to_quantlib(end)))
+
+
+@lru_cache(maxsize=65_536)
+def to_quantlib(day: date) -> Any:
+    """``day`` as QuantLib's date; raises ValueError outside :data:`FIRST_DAY` to :data:`LAST_DAY`."""
+    if not FIRST_DAY.year <= day.year <= LAST_DAY.year:
+        raise ValueError(f"{day} lies outside {FIRST_DAY} to {LAST_DAY}")
+    return ql.Date(day.day, day.month, day.year)
+
+
+def from_quantlib(day: Any) -> date:
+    """QuantLib's date as a plain one."""
+    return date(day.year(), day.month(), day.dayOfMonth())
+
+
+def to_period(tenor: str) -> Any:
+    """A tenor ("2D", "1W", "3M", "10Y") as QuantLib's period; raises ValueError for one that cannot be read."""
+    return ql.Period(*_length_and_unit(tenor))
+
+
+def _length_and_unit(tenor: str) -> tuple[int, int]:
+    match = _TENOR.fullmatch(tenor.strip())
+    if match is None:
+        raise ValueError(
+            f'"{tenor}" is not a tenor: write a whole number and D, W, M or Y for days, weeks, months or years, e.g. 3M'
+        )
+    return int(match[1]), _UNITS[match[2].upper()]
 
 
 def _advance(calendar: str, day: date, length: int, unit: int, convention: int) -> date:
     try:
-        return _from_ql(_calendar(calendar).advance(_to_ql(day), length, unit, convention))
+        return from_quantlib(_calendar(calendar).advance(to_quantlib(day), length, unit, convention))
     except RuntimeError as error:  # QuantLib's word for leaving its range of years
         raise ValueError(f"that far from {day} lies outside {FIRST_DAY} to {LAST_DAY}") from error
 
@@ -176,7 +197,8 @@ def _calendar(name: str) -> Any:
 
 
 @cache
-def _day_counter(name: str) -> Any:
+def day_counter(name: str) -> Any:
+    """QuantLib's day counter of that name (see :data:`DAY_COUNTS`)."""
     if name not in DAY_COUNTS:
         raise ValueError(f'"{name}" is not a day count; known are {", ".join(DAY_COUNTS)}')
     return DAY_COUNTS[name]()
@@ -186,14 +208,3 @@ def _convention(name: str) -> int:
     if name not in _CONVENTIONS:
         raise ValueError(f'"{name}" is not a roll convention; known are {", ".join(_CONVENTIONS)}')
     return _CONVENTIONS[name]
-
-
-@lru_cache(maxsize=65_536)
-def _to_ql(day: date) -> Any:
-    if not FIRST_DAY.year <= day.year <= LAST_DAY.year:
-        raise ValueError(f"{day} lies outside {FIRST_DAY} to {LAST_DAY}")
-    return ql.Date(day.day, day.month, day.year)
-
-
-def _from_ql(day: Any) -> date:
-    return date(day.year(), day.month(), day.dayOfMonth())

@@ -6,10 +6,13 @@ from collections.abc import Iterator
 
 from pricer.contracts.book import Trade
 from pricer.core.issues import Issue
+from pricer.core.source import Place
 from pricer.market.date_coverage import date_coverage
+from pricer.market.dividend_quality import EXCEEDED
 from pricer.market.findings import Locate, did_you_mean, error, words
-from pricer.market.market import CORRELATIONS, Market
+from pricer.market.market import CORRELATIONS, Market, MissingMarketDataError
 from pricer.market.size_coverage import size_coverage
+from pricer.market.underlying import Underlying
 
 
 def coverage(trade: Trade, market: Market, place: Locate) -> tuple[Issue, ...]:
@@ -104,6 +107,7 @@ def _underlyings(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]
                     "an underlying with at least one volatility",
                     why or f'Add "{name}" to the volatilities table of the market.',
                 )
+            yield from _price(underlying, market, here)
             if underlying.currency != trade.currency and trade.currency in _known_currencies(market):
                 yield error(
                     here,
@@ -113,6 +117,30 @@ def _underlyings(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]
                     f"Correct the trade's currency if it is {underlying.currency}; quanto and composite trades are not "
                     "priced by this version.",
                 )
+
+
+def _price(underlying: Underlying, market: Market, here: Place | None) -> Iterator[Issue]:
+    """Cash dividends that leave the price, or what is random of it, without a law."""
+    name = underlying.underlying_id
+    try:
+        price = market.affine_price(name)
+    except MissingMarketDataError:
+        return  # the missing curve is told with the currency
+    except ValueError as refused:
+        yield error(here, "cash-dividends-exceed-spot", str(refused), *EXCEEDED)
+        return
+    if underlying.volatility is None:
+        return
+    try:
+        price.pure_volatility(underlying.volatility)
+    except ValueError as refused:
+        yield error(
+            here,
+            "volatility-against-dividends",
+            f'volatilities of underlying "{name}" that its cash dividends do not allow: {refused}',
+            "volatilities that leave the price above its cash dividends a law",
+            "Correct the volatilities around the ex dates, or enter dividends far ahead as proportional ones.",
+        )
 
 
 def _correlations(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:

@@ -9,7 +9,8 @@ from dataclasses import dataclass
 from datetime import date
 from itertools import pairwise
 
-from pricer.market.calendars import year_fraction
+from pricer.market.calendars import currency_calendar, year_fraction
+from pricer.market.quoted_curves import REPRICING_TOLERANCE, RateQuote, bootstrap, repriced
 
 
 @dataclass(frozen=True, slots=True)
@@ -90,6 +91,44 @@ class DiscountCurve:
         return cls._from_logs(curve_id, currency, collateral, valuation_date, dates, times, logs, day_count, calendar)
 
     @classmethod
+    def from_quotes(
+        cls,
+        curve_id: str,
+        currency: str,
+        collateral: str,
+        valuation_date: date,
+        quotes: Sequence[RateQuote],
+        day_count: str = "ACT/365F",
+    ) -> DiscountCurve:
+        """From deposits and overnight-indexed swaps of ``currency`` (see :mod:`pricer.market.quoted_curves`).
+
+        The quotes' last dates become the curve's dates; :func:`pricer.market.quoted_curves.reprice`
+        shows each quote beside the curve's rate. Raises ValueError for a currency without
+        conventions, quotes that end on one date or that no curve satisfies, and a curve that
+        misses a quote by more than ``REPRICING_TOLERANCE``.
+        """
+        try:
+            found = bootstrap(currency, valuation_date, quotes, day_count)
+        except ValueError as error:
+            raise ValueError(f"curve {curve_id}: {error}") from error
+        curve = cls.from_discount_factors(
+            curve_id,
+            currency,
+            collateral,
+            valuation_date,
+            found.dates,
+            found.discount_factors,
+            day_count,
+            currency_calendar(currency),
+        )
+        worst = max(repriced(found.instruments, curve.discount_factor), key=lambda quote: abs(quote.error))
+        if abs(worst.error) > REPRICING_TOLERANCE:
+            raise ValueError(
+                f"curve {curve_id}: the {worst.quote} quoted at {worst.quote.rate:g} is repriced at {worst.rate:.12g}"
+            )
+        return curve
+
+    @classmethod
     def _from_logs(
         cls,
         curve_id: str,
@@ -124,16 +163,17 @@ class DiscountCurve:
 
         Raises ValueError if ``day`` lies before the valuation date.
         """
-        return math.exp(self._log_discount_factor(self._time(day)))
+        return math.exp(self.log_discount_factor(self.time(day)))
 
     def zero_rate(self, day: date) -> float:
         """Continuously compounded zero rate to ``day``; on the valuation date, the limit there."""
-        time = self._time(day)
+        time = self.time(day)
         if time <= 0.0:
             time = self.times[1]
-        return -self._log_discount_factor(time) / time
+        return -self.log_discount_factor(time) / time
 
-    def _time(self, day: date) -> float:
+    def time(self, day: date) -> float:
+        """Years of the day count from the valuation date to ``day``; raises ValueError for a day before it."""
         if day < self.valuation_date:
             raise ValueError(
                 f"curve {self.curve_id}: {day} lies before the valuation date {self.valuation_date} and has no "
@@ -141,7 +181,8 @@ class DiscountCurve:
             )
         return year_fraction(self.valuation_date, day, self.day_count)
 
-    def _log_discount_factor(self, time: float) -> float:
+    def log_discount_factor(self, time: float) -> float:
+        """Logarithm of the discount factor at ``time`` >= 0 in years of the day count."""
         times, logs = self.times, self.log_discount_factors
         right = min(max(bisect_left(times, time), 1), len(times) - 1)
         start, end = times[right - 1], times[right]

@@ -97,8 +97,11 @@ def _curves_reach(trade: Trade, market: Market, place: Locate) -> Iterator[Issue
         needed.append((own, "premium date", premium.payment_date, place("premium_date")))
     if own != standard:  # forwards come from the standard curve
         needed.append((standard, "expiry date", expiry, place("expiry_date")))
-    for key, label, day, here in needed:
-        curve = market.curves.get(key)
+    reached = [(market.curves.get(key), label, day, here) for key, label, day, here in needed]
+    for name in dict.fromkeys(trade.contract.underlyings):
+        if name in market.repo:
+            reached.append((market.repo[name].mid, "expiry date", expiry, place("expiry_date")))
+    for curve, label, day, here in reached:
         if curve is not None and curve.is_extrapolated(day):
             yield warning(
                 here,

@@ -1,12 +1,14 @@
-"""Spot exchange rates, inverted and crossed as needed."""
+"""Spot exchange rates and their volatilities, inverted and crossed as needed."""
 
 from __future__ import annotations
 
 import math
 import re
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from itertools import pairwise
+
+from pricer.market.volatility import VolatilityCurve
 
 _PAIR = re.compile(r"[A-Z]{6}")
 
@@ -23,30 +25,48 @@ class MissingRate(KeyError):  # noqa: N818 - says what is missing
         return f"no quoted exchange rates lead from {self.from_currency} to {self.to_currency}"
 
 
+def currencies_of(pair: str) -> tuple[str, str]:
+    """("EUR", "USD") for "EURUSD"; raises ValueError for a name that is not two different currencies."""
+    first, second = pair[:3], pair[3:]
+    if _PAIR.fullmatch(pair) is None or first == second:
+        raise ValueError(f'"{pair}" is not a currency pair: write two currency codes together, e.g. EURUSD')
+    return first, second
+
+
 @dataclass(frozen=True, slots=True)
 class FxRates:
-    """``quotes`` maps (first, second) currency to units of the second for one of the first."""
+    """``quotes`` maps (first, second) currency to units of the second for one of the first.
+
+    ``volatilities`` maps pairs to the volatility of their rate, which is that of its inverse too.
+    """
 
     quotes: Mapping[tuple[str, str], float]
+    volatilities: Mapping[tuple[str, str], VolatilityCurve] = field(default_factory=dict)
 
     @classmethod
-    def from_pairs(cls, pairs: Mapping[str, float]) -> FxRates:
-        """From quotes such as ``{"EURUSD": 1.08}``: 1.08 USD for 1 EUR.
+    def from_pairs(
+        cls, pairs: Mapping[str, float], volatilities: Mapping[str, VolatilityCurve] | None = None
+    ) -> FxRates:
+        """From quotes such as ``{"EURUSD": 1.08}``: 1.08 USD for 1 EUR, and volatilities by pair.
 
         Raises ValueError for a name that is not two different currencies, a rate that is not
-        a positive finite number, and a pair quoted in both directions.
+        a positive finite number, and a pair given in both directions.
         """
         quotes: dict[tuple[str, str], float] = {}
         for pair, rate in pairs.items():
-            first, second = pair[:3], pair[3:]
-            if _PAIR.fullmatch(pair) is None or first == second:
-                raise ValueError(f'"{pair}" is not a currency pair: write two currency codes together, e.g. EURUSD')
+            first, second = currencies_of(pair)
             if not (math.isfinite(rate) and rate > 0.0):
                 raise ValueError(f"the rate of {pair} must be above 0; got {rate}")
             if (second, first) in quotes:
                 raise ValueError(f"both {second}{first} and {pair} are quoted: keep one of them")
             quotes[first, second] = float(rate)
-        return cls(quotes)
+        curves: dict[tuple[str, str], VolatilityCurve] = {}
+        for pair, curve in (volatilities or {}).items():
+            first, second = currencies_of(pair)
+            if (second, first) in curves:
+                raise ValueError(f"both {second}{first} and {pair} have a volatility: keep one of them")
+            curves[first, second] = curve
+        return cls(quotes, curves)
 
     @property
     def currencies(self) -> tuple[str, ...]:
@@ -94,6 +114,24 @@ class FxRates:
                         longer.append((*path, currency))
             reached = longer
         raise MissingRate(from_currency, to_currency)
+
+    def volatility(self, from_currency: str, to_currency: str) -> VolatilityCurve | None:
+        """Volatility of the rate between the two, either way round; None where the pair has none of its own."""
+        ahead = self.volatilities.get((from_currency, to_currency))
+        return ahead if ahead is not None else self.volatilities.get((to_currency, from_currency))
+
+    def log_factors(self, from_currency: str, to_currency: str) -> dict[str, float]:
+        """The logarithm of ``rate(from_currency, to_currency)`` as a sum of those of pairs with a volatility.
+
+        Pairs as they were given, e.g. ``{"EURUSD": -1.0}`` for USD in EUR; a cross without a
+        volatility of its own is a chain of several. Raises :class:`MissingRate`.
+        """
+        linked = FxRates(dict.fromkeys(self.volatilities, 1.0))  # its shortest chain is the pair itself, if there
+        out: dict[str, float] = {}
+        for first, second in pairwise(linked.chain(from_currency, to_currency)):
+            ahead = (first, second) in self.volatilities
+            out[first + second if ahead else second + first] = 1.0 if ahead else -1.0
+        return out
 
     def _neighbours(self, currency: str) -> list[str]:
         return sorted(a if b == currency else b for a, b in self.quotes if currency in (a, b))

@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from datetime import date, timedelta
-from itertools import combinations, pairwise
+from datetime import date
+from itertools import pairwise
 
 from pricer.core.issues import Issue
+from pricer.core.source import Place
 from pricer.market.correlation import Repair
+from pricer.market.credit import HazardCurve
 from pricer.market.curves import DiscountCurve
+from pricer.market.dividend_quality import dividend_gates
 from pricer.market.findings import Locate, nowhere, percent, warning
-from pricer.market.fx import FxRates
+from pricer.market.fx_quality import fx_gates
 from pricer.market.market import Market
 from pricer.market.underlying import Underlying
 
@@ -18,27 +21,33 @@ from pricer.market.underlying import Underlying
 PLAUSIBLE_ZERO_RATES = (-0.05, 0.30)
 #: Continuous dividend yields, which may hold a repo margin, outside this range are reported.
 PLAUSIBLE_YIELDS = (-0.05, 0.25)
-#: Proportional dividends of one underlying that add up to more than this within a year are reported.
-PLAUSIBLE_DIVIDENDS = 0.50
-#: A quoted exchange rate that differs by more than this from its cross is reported.
-TRIANGLE_TOLERANCE = 0.01
+#: Hazard rates above this are reported.
+PLAUSIBLE_HAZARD_RATE = 0.50
 
 
 def gates(market: Market, repair: Repair | None = None, place: Locate = nowhere) -> tuple[Issue, ...]:
     """Warnings about ``market``, and about the ``repair`` its correlation matrix took.
 
-    ``place`` gives the cell of "valuation_date", "curve:ID", "dividend_yield:UNDERLYING",
-    "dividends:UNDERLYING", "fx:EURUSD" or "correlation:A:B", or None.
+    ``place`` gives the cell of "valuation_date", "curve:ID", "repo:UNDERLYING",
+    "dividend_yield:UNDERLYING", "dividends:UNDERLYING", "fx:EURUSD", "credit:NAME" or
+    "correlation:A:B", or None.
     """
     issues: list[Issue] = [*_weekend(market.valuation_date, place)]
     if repair is not None:
         issues.append(_repair(repair, place))
     for curve in market.curves.values():
-        issues.extend(_curve(curve, place))
+        here = place(f"curve:{curve.curve_id}")
+        issues.extend(_rates(curve, here))
+        issues.extend(_forward_rates(curve, here))
+    for name, repo in market.repo.items():
+        for curve in (repo.long, repo.short):
+            issues.extend(_rates(curve, place(f"repo:{name}")))
     for underlying in market.underlyings.values():
         issues.extend(_dividend_yield(underlying, place))
-        issues.extend(_dividends(underlying, place))
-    issues.extend(_triangles(market.fx, place))
+    issues.extend(dividend_gates(market, place))
+    for credit in market.credit.values():
+        issues.extend(_hazard_rates(credit, place))
+    issues.extend(fx_gates(market, place))
     return tuple(issues)
 
 
@@ -65,8 +74,7 @@ def _repair(repair: Repair, place: Locate) -> Issue:
     )
 
 
-def _curve(curve: DiscountCurve, place: Locate) -> Iterator[Issue]:
-    here = place(f"curve:{curve.curve_id}")
+def _rates(curve: DiscountCurve, here: Place | None) -> Iterator[Issue]:
     low, high = PLAUSIBLE_ZERO_RATES
     rates = [(curve.zero_rate(day), day) for day in curve.dates]
     strange = [(rate, day) for rate, day in rates if not low <= rate <= high]
@@ -79,6 +87,9 @@ def _curve(curve: DiscountCurve, place: Locate) -> Iterator[Issue]:
             f"zero rates between {percent(low)} and {percent(high)}",
             "Check the unit: 2.5 % is entered as 0.025. The rate is used as given.",
         )
+
+
+def _forward_rates(curve: DiscountCurve, here: Place | None) -> Iterator[Issue]:
     days = (curve.valuation_date, *curve.dates)
     spans = zip(pairwise(days), pairwise(curve.times), pairwise(curve.log_discount_factors), strict=True)
     forwards = [((x - y) / (t - s), start, end) for (start, end), (s, t), (x, y) in spans]
@@ -109,37 +120,13 @@ def _dividend_yield(underlying: Underlying, place: Locate) -> Iterator[Issue]:
         )
 
 
-def _dividends(underlying: Underlying, place: Locate) -> Iterator[Issue]:
-    payments = sorted((d.ex_date, d.fraction) for d in underlying.dividends.proportional)
-    sums = [
-        (sum(fraction for day, fraction in payments if first <= day < first + timedelta(days=365)), first)
-        for first, _ in payments
-    ]
-    if sums and max(sums)[0] > PLAUSIBLE_DIVIDENDS:
-        total, first = max(sums)
+def _hazard_rates(credit: HazardCurve, place: Locate) -> Iterator[Issue]:
+    rate, day = max(zip(credit.hazard_rates, credit.dates, strict=True))
+    if rate > PLAUSIBLE_HAZARD_RATE:
         yield warning(
-            place(f"dividends:{underlying.underlying_id}"),
-            "implausible-dividends",
-            f"proportional dividends of {underlying.underlying_id} that add up to {percent(total, 1)} of its price "
-            f"in the year from {first}",
-            f"at most {percent(PLAUSIBLE_DIVIDENDS)} in a year",
-            "Check the unit: a dividend of 2 % of the price is entered as 0.02. The dividends are used as given.",
+            place(f"credit:{credit.name}"),
+            "implausible-hazard-rate",
+            f"a hazard rate of {percent(rate, 1)} a year to {day} for {credit.name}",
+            f"hazard rates up to {percent(PLAUSIBLE_HAZARD_RATE)}",
+            "Check the unit: a spread of 120 basis points is entered as 0.012. The rates are used as given.",
         )
-
-
-def _triangles(fx: FxRates, place: Locate) -> Iterator[Issue]:
-    for a, b, c in combinations(fx.currencies, 3):
-        if not all((x, y) in fx.quotes or (y, x) in fx.quotes for x, y in ((a, b), (b, c), (a, c))):
-            continue
-        pair = (a, c) if (a, c) in fx.quotes else (c, a)
-        quoted, crossed = fx.rate(*pair), fx.rate(pair[0], b) * fx.rate(b, pair[1])
-        # Relative to the smaller of the two, so that the order of the three currencies does not matter.
-        if max(quoted, crossed) / min(quoted, crossed) - 1.0 > TRIANGLE_TOLERANCE:
-            name = "".join(pair)
-            yield warning(
-                place(f"fx:{name}"),
-                "inconsistent-fx",
-                f"{name} quoted at {quoted:.6g}, but {crossed:.6g} through {b}",
-                f"quotes that agree to {percent(TRIANGLE_TOLERANCE)}",
-                "Check the three pairs; each conversion uses the direct quote where there is one.",
-            )

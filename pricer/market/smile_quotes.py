@@ -1,0 +1,78 @@
+"""What a market quotes of one expiry's smile: volatilities by strike, or level, skew and curvature."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from datetime import date
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from pricer.market.svi import SviSlice
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class SmileQuotes:
+    """Implied volatilities (n,) of one expiry at log-moneyness (n,), increasing; see :class:`SviSlice` for k."""
+
+    expiry_date: date
+    log_moneyness: Array
+    volatilities: Array
+
+    @classmethod
+    def of(cls, expiry_date: date, log_moneyness: ArrayLike, volatilities: ArrayLike) -> SmileQuotes:
+        """Checked, and sorted by log-moneyness. Volatilities are annualised, 0.20 for 20 %.
+
+        Raises ValueError unless there is one volatility above 0 per log-moneyness, all are finite
+        and no log-moneyness comes twice.
+        """
+        k, volatility = (np.atleast_1d(np.asarray(x, dtype=float)) for x in (log_moneyness, volatilities))
+        if k.ndim != 1 or k.shape != volatility.shape or k.size == 0:
+            raise ValueError(f"{volatility.shape} volatilities do not fit log-moneyness of shape {k.shape}")
+        if not (np.all(np.isfinite(k)) and np.all(np.isfinite(volatility)) and np.all(volatility > 0.0)):
+            raise ValueError(f"the volatilities of {expiry_date} must be above 0, and all its quotes finite")
+        order = np.argsort(k, kind="stable")
+        k, volatility = k[order], volatility[order]
+        if np.any(np.diff(k) <= 0.0):
+            raise ValueError(f"{expiry_date} has two volatilities for one strike")
+        return cls(expiry_date, k, volatility)
+
+
+@dataclass(frozen=True, slots=True)
+class SmileParameters:
+    """A smile by its volatility at the forward and that volatility's derivatives in log-moneyness there.
+
+    ``volatility`` : annualised, k = 0. ``skew`` : d volatility / dk at k = 0 (-0.10: the volatility of
+    a strike 1 % lower is about 0.1 vol points higher). ``curvature`` : d^2 volatility / dk^2
+    at k = 0, or None if it is not quoted.
+    """
+
+    expiry_date: date
+    volatility: float
+    skew: float = 0.0
+    curvature: float | None = None
+
+    def __post_init__(self) -> None:
+        numbers = (self.volatility, self.skew, 0.0 if self.curvature is None else self.curvature)
+        if not (all(map(math.isfinite, numbers)) and self.volatility > 0.0):
+            raise ValueError(f"the volatility of {self.expiry_date} must be above 0, and all its quotes finite")
+
+    def slice(self, time: float) -> SviSlice:
+        """The slice with these three at ``time`` years; where no convex total variance has them, the nearest one."""
+        curvature = None
+        if self.curvature is not None:
+            curvature = 2.0 * time * (self.skew * self.skew + self.volatility * self.curvature)
+        slope = 2.0 * self.volatility * self.skew * time
+        return SviSlice.from_forward(self.volatility**2 * time, slope, curvature)
+
+    def samples(self, time: float) -> SmileQuotes:
+        """Nine volatilities of :meth:`slice` within two standard deviations of the forward."""
+        k = np.linspace(-2.0, 2.0, 9) * self.volatility * math.sqrt(time)
+        return SmileQuotes(self.expiry_date, k, np.sqrt(self.slice(time).total_variance(k) / time))
+
+
+#: Either way of quoting one expiry.
+Smile = SmileQuotes | SmileParameters
