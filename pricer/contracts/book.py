@@ -5,10 +5,18 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from datetime import date
+from enum import StrEnum
 
 from pricer.contracts.option import EuropeanOption
 from pricer.core.issues import Issue
 from pricer.core.source import Place, SourceFile
+
+
+class Model(StrEnum):
+    """How the underlyings' levels move."""
+
+    LOGNORMAL = "lognormal"  # at-the-forward volatilities by expiry, flat in strike
+    LOCAL_VOLATILITY = "local volatility"  # by time and level, so that each underlying's smile is met
 
 
 @dataclass(frozen=True, slots=True)
@@ -26,7 +34,7 @@ class Trade:
     ``position`` is signed: positive when the desk is long. It counts options for price
     options and is the notional in the trade's currency for performance options.
     ``collateral`` names the collateral whose discount curve applies (empty: the
-    currency's standard curve).
+    currency's standard curve). ``model`` is asked for by the trade itself; None leaves it to the run.
     """
 
     trade_id: str
@@ -39,6 +47,7 @@ class Trade:
     counterparty: str = ""
     netting_set: str = ""
     strategy: str = ""
+    model: Model | None = None
 
 
 @dataclass(frozen=True, slots=True)

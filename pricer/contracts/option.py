@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from datetime import date
+from enum import StrEnum
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,12 +13,20 @@ from pricer.contracts.aggregate import Aggregate, AggregateKind
 from pricer.contracts.profile import PiecewiseLinear, Profile, ProfileKind
 
 
+class Conversion(StrEnum):
+    """How a level becomes an amount of the payment currency."""
+
+    QUANTO = "quanto"  # one unit of the level's currency counts as one of the payment currency
+    COMPOSITE = "composite"  # the level is converted at the date's exchange rate
+
+
 @dataclass(frozen=True, slots=True)
 class EuropeanOption:
     """Pays ``profile(aggregate(levels at expiry))`` per unit on the payment date.
 
     ``reference_levels`` divides each underlying's price: the initial fixings for a
-    performance option, ones for a price option.
+    performance option, ones for a price option. ``conversion`` says what becomes of levels in
+    another currency than the trade's; the reference levels of a composite are in the trade's.
     """
 
     underlyings: tuple[str, ...]
@@ -27,6 +36,7 @@ class EuropeanOption:
     expiry_date: date
     payment_date: date
     on_performance: bool
+    conversion: Conversion | None = None
 
     def __post_init__(self) -> None:
         n = len(self.underlyings)

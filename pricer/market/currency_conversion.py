@@ -13,19 +13,11 @@ currency) is 1/Q: its covariances with everything else change sign.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from enum import StrEnum
 
 import numpy as np
 from numpy.typing import NDArray
 
 from pricer.market.joint_lognormal import JointLognormal
-
-
-class Conversion(StrEnum):
-    """How a level becomes an amount of the payment currency."""
-
-    QUANTO = "quanto"  # one unit of the level's currency counts as one of the payment currency
-    COMPOSITE = "composite"  # the level is converted at the date's exchange rate
 
 
 def quanto(forwards: NDArray[np.float64], covariance: NDArray[np.float64]) -> JointLognormal:

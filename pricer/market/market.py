@@ -9,13 +9,14 @@ from datetime import date
 import numpy as np
 from numpy.typing import NDArray
 
+from pricer.contracts.option import Conversion
 from pricer.core.issues import Issue
 from pricer.core.source import SourceFile
 from pricer.market.affine_price import AffinePrice
 from pricer.market.agreements import Agreement
 from pricer.market.correlation import CorrelationMatrix
 from pricer.market.credit import HazardCurve
-from pricer.market.currency_conversion import Conversion, composite, quanto, with_rates
+from pricer.market.currency_conversion import composite, quanto, with_rates
 from pricer.market.curves import DiscountCurve
 from pricer.market.funding import FundingCurve
 from pricer.market.fx import FxRates, MissingRate, currencies_of

@@ -12,11 +12,12 @@ import pytest
 import QuantLib as ql
 
 from pricer.contracts.aggregate import Aggregate
+from pricer.contracts.option import Conversion
 from pricer.contracts.profile import Profile, ProfileKind
 from pricer.engines.closed_form.black_scholes import BLACK_SCHOLES
 from pricer.engines.problem import EuropeanProblem
 from pricer.market.correlation import checked
-from pricer.market.currency_conversion import Conversion, composite, quanto
+from pricer.market.currency_conversion import composite, quanto
 from pricer.market.evaluation_date import evaluation_date
 from pricer.market.fx import FxRates
 from pricer.market.market import Market

@@ -7,8 +7,9 @@ from datetime import date
 import numpy as np
 import pytest
 
+from pricer.contracts.option import Conversion
 from pricer.market.correlation import checked
-from pricer.market.currency_conversion import Conversion, composite, quanto, with_rates
+from pricer.market.currency_conversion import composite, quanto, with_rates
 from pricer.market.dividends import CashDividend, Dividends
 from pricer.market.fx import FxRates, MissingRate
 from pricer.market.market import MissingMarketDataError
