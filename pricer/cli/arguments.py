@@ -31,3 +31,10 @@ ValuationDate = Annotated[
 EveryProblem = Annotated[
     bool, typer.Option("--every-problem", help="Print every problem, not only the first of each kind.")
 ]
+AcceptFailingSurfaces = Annotated[
+    bool,
+    typer.Option(
+        "--accept-failing-surfaces",
+        help="Price trades on volatility surfaces that fail their checks, and mark them.",
+    ),
+]

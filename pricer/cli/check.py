@@ -4,10 +4,16 @@ from __future__ import annotations
 
 import typer
 
-from pricer.cli.arguments import BookPath, EveryProblem, MarketPath, ValuationDate
+from pricer.cli.arguments import AcceptFailingSurfaces, BookPath, EveryProblem, MarketPath, ValuationDate
 
 
-def check(book: BookPath, market: MarketPath, date: ValuationDate = None, every_problem: EveryProblem = False) -> None:
+def check(
+    book: BookPath,
+    market: MarketPath,
+    date: ValuationDate = None,
+    accept_failing_surfaces: AcceptFailingSurfaces = False,
+    every_problem: EveryProblem = False,
+) -> None:
     """List every problem of a book and a market; price nothing."""
     from pricer.cli import console
     from pricer.cli.inputs import parse_date, read_inputs
@@ -15,7 +21,8 @@ def check(book: BookPath, market: MarketPath, date: ValuationDate = None, every_
     from pricer.run.admission import admit
 
     try:
-        admitted = admit(*read_inputs(book, market, parse_date(date)))
+        inputs = read_inputs(book, market, parse_date(date))
+        admitted = admit(*inputs, accept_failing_surfaces=accept_failing_surfaces)
     except InputError as error:
         console.show_problems(error.issues, every=every_problem)
         raise typer.Exit(2) from None

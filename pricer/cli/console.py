@@ -17,7 +17,8 @@ from rich.table import Table
 from pricer.core.issues import Issue, Severity
 from pricer.core.progress import Progress, Silent
 from pricer.engines.cross_check import ALARMS
-from pricer.report.totals import book_total, group_totals
+from pricer.report.surface_fits import TARGET, Reach, all_quotes, reach
+from pricer.report.totals import Total, book_total, group_totals
 from pricer.run.outcome import Outcome
 
 #: Problems of one kind that are printed before the rest is only counted.
@@ -148,9 +149,36 @@ def show_outcome(outcome: Outcome) -> None:
         f"priced {len(outcome.valuations)}, not priced {len(outcome.refusals)}",
         f"less precise than asked: {whole.precision_not_reached}",
         f"cross-checks: {len(outcome.cross_checks)}, of which disagree: {alarms}",
+        *_model_lines(outcome, whole),
     ]
     for line in lines:
         out.print(line, markup=False)
+
+
+def _model_lines(outcome: Outcome, whole: Total) -> list[str]:
+    """What the choice of model is worth, and how the volatility surfaces stand; nothing where neither is known."""
+    lines = []
+    compared = whole.trades - whole.not_priced - whole.without_model_difference
+    if compared:
+        difference, error = _amount(whole.model_difference), _amount(whole.model_difference_standard_error)
+        currency = outcome.facts.reporting_currency
+        lines.append(
+            f"local volatility less lognormal: {difference} {currency}, standard error {error}, trades: {compared}"
+        )
+    surfaces = outcome.market.surfaces
+    if surfaces:
+        failing = sum(not surface.passes for surface in surfaces)
+        reached = [reach(quote) for quote in all_quotes(surfaces) if quote.counts and quote.simulated is not None]
+        lines.append(
+            f"volatility surfaces: {len(surfaces)}, of which fail: {failing}, trades priced from these: "
+            f"{whole.failing_surface}"
+        )
+        if reached:
+            lines.append(
+                f"simulated quotes between 10 and 90 delta: {len(reached)}, of which off by more than {TARGET:g} vol "
+                f"points: {reached.count(Reach.BEYOND)}"
+            )
+    return lines
 
 
 def _amount(amount: float) -> str:

@@ -8,7 +8,7 @@ from typing import Annotated
 
 import typer
 
-from pricer.cli.arguments import BookPath, EveryProblem, MarketPath, ValuationDate
+from pricer.cli.arguments import AcceptFailingSurfaces, BookPath, EveryProblem, MarketPath, ValuationDate
 
 
 def eod(
@@ -31,6 +31,35 @@ def eod(
             "--precision", metavar="BP", help="Standard error asked of each value, in basis points of notional."
         ),
     ] = 1.0,
+    model: Annotated[
+        str | None,
+        typer.Option(
+            "--model",
+            metavar="MODEL",
+            help="Model of trades that ask for none: lognormal, or local volatility. [default: local volatility "
+            "where an underlying has a smile]",
+            show_default=False,
+        ),
+    ] = None,
+    compare_models: Annotated[
+        bool,
+        typer.Option("--compare-models/--one-model", help="Value trades under both models and show the difference."),
+    ] = True,
+    accept_failing_surfaces: AcceptFailingSurfaces = False,
+    towards_one: Annotated[
+        float,
+        typer.Option(
+            "--correlation-towards-one",
+            metavar="SHARE",
+            min=0.0,
+            max=1.0,
+            help="Move all correlations among underlyings by this share of the way to 1.",
+        ),
+    ] = 0.0,
+    towards_zero: Annotated[
+        float,
+        typer.Option("--correlation-towards-zero", metavar="SHARE", min=0.0, max=1.0, help="The same towards 0."),
+    ] = 0.0,
     workers: Annotated[
         int | None,
         typer.Option("--workers", min=1, help="Trades priced side by side. [default: all cores]", show_default=False),
@@ -39,9 +68,14 @@ def eod(
     every_problem: EveryProblem = False,
 ) -> None:
     """Price a book at end of day: values, deltas, cross-checks, report."""
-    from pricer.cli.inputs import parse_date
+    from pricer.cli.inputs import parse_date, parse_model
 
-    valuation_date = parse_date(date)
+    valuation_date, asked_model = parse_date(date), parse_model(model)
+    if towards_one > 0.0 and towards_zero > 0.0:
+        raise typer.BadParameter(
+            "found a share towards one and one towards zero; expected one of them.",
+            param_hint="--correlation-towards-one",
+        )
     if not precision > 0.0:
         raise typer.BadParameter(f"found {precision:g}; expected a number above 0.", param_hint="--precision")
     if out is not None and out.exists():
@@ -65,7 +99,16 @@ def eod(
         console.show_problems(error.issues, every=every_problem)
         raise typer.Exit(2) from None
 
-    settings = Settings(seed=seed, precision_bp=precision, workers=workers or available_cores())
+    settings = Settings(
+        seed=seed,
+        precision_bp=precision,
+        workers=workers or available_cores(),
+        model=asked_model,
+        compare_models=compare_models,
+        accept_failing_surfaces=accept_failing_surfaces,
+        correlation_towards_one=towards_one,
+        correlation_towards_zero=towards_zero,
+    )
     outcome = price(trades, snapshot, settings, console.progress(quiet=quiet))
     folder = out if out is not None else default_folder(outcome, Path("reports"))
     try:

@@ -7,7 +7,7 @@ from pathlib import Path
 
 import typer
 
-from pricer.contracts.book import Book
+from pricer.contracts.book import Book, Model
 from pricer.core.issues import InputError, Issue
 from pricer.market.market import Market
 
@@ -20,6 +20,17 @@ def parse_date(text: str | None) -> date | None:
         return date.fromisoformat(text)
     except ValueError:
         raise typer.BadParameter(f"found {text!r}; expected a date such as 2026-03-31.", param_hint="--date") from None
+
+
+def parse_model(text: str | None) -> Model | None:
+    """A model's name from the command line; anything else is a usage error."""
+    if text is None:
+        return None
+    try:
+        return Model(text.strip().lower().replace("-", " "))
+    except ValueError:
+        expected = " or ".join(f'"{model}"' for model in Model)
+        raise typer.BadParameter(f"found {text!r}; expected {expected}.", param_hint="--model") from None
 
 
 def read_inputs(book_path: Path, market_path: Path, valuation_date: date | None) -> tuple[Book, Market]:

@@ -131,6 +131,13 @@ class PiecewiseLinear:
             tuple(j * factor for j in self.jumps),
         )
 
+    def of_shifted_argument(self, by: float) -> PiecewiseLinear:
+        """``a -> f(a + by)``: the payoff on an aggregate that lacks a known part."""
+        if by == 0.0:
+            return self
+        knots = tuple(knot - by for knot in self.knots)
+        return PiecewiseLinear(self.intercept + self.slope * by, self.slope, knots, self.bends, self.jumps)
+
     def of_floored_argument(self, level: float) -> PiecewiseLinear:
         """``a -> f(max(a, level))``: the payoff on the best of an aggregate and cash."""
         value = float(self(np.array(level)))

@@ -68,7 +68,7 @@ def compare(
         return Comparison(difference, scale, tolerance, verdict)
 
     quantile = sampling_quantile(sample.degrees_of_freedom, FALSE_ALARM / max(tests_in_book, 1))
-    tolerance = quantile * sample.standard_error + reference.error + IMMATERIAL * asked
+    tolerance = quantile * sample.standard_error + reference.error + reference.allowance + IMMATERIAL * asked
     match reference.kind:
         case ReferenceKind.LOWER_BOUND:
             verdict = Verdict.WITHIN_BOUND if difference >= -tolerance else Verdict.OUTSIDE_BOUND

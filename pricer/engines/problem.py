@@ -45,6 +45,7 @@ class Reference:
 
     ``error`` is an honest bound on its own numerical error (quadrature, integration);
     0.0 for an approximation means only that the formula itself was evaluated exactly.
+    ``allowance`` is how far a sampled value may differ besides, its paths being a discretisation.
     """
 
     method: str
@@ -52,3 +53,4 @@ class Reference:
     value: float
     error: float
     source: str
+    allowance: float = 0.0

@@ -177,6 +177,7 @@ def _trade(row: EuropeanOptionRow, legs: Sequence[ConstituentRow]) -> Trade:
         expiry_date=row.expiry_date,
         payment_date=_payment_date(calendar, row.expiry_date, row.settlement_lag_days),
         on_performance=on_performance,
+        conversion=row.conversion,
     )
     premium = None
     if row.premium is not None and row.premium_date is not None:
@@ -192,6 +193,7 @@ def _trade(row: EuropeanOptionRow, legs: Sequence[ConstituentRow]) -> Trade:
         counterparty=row.counterparty,
         netting_set=row.netting_set,
         strategy=row.strategy,
+        model=row.model,
     )
 
 

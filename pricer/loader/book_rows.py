@@ -10,6 +10,8 @@ from typing import Annotated
 from pydantic import ValidationInfo, field_validator
 
 from pricer.contracts.aggregate import AggregateKind
+from pricer.contracts.book import Model
+from pricer.contracts.option import Conversion
 from pricer.contracts.profile import ProfileKind
 from pricer.loader.columns import Column, TableRow, columns_of
 from pricer.loader.days import Day
@@ -41,6 +43,18 @@ class TradeRow(TableRow):
     product: Annotated[str, Column(Choice.of([EUROPEAN_OPTION]), "the product", EUROPEAN_OPTION)]
     direction: Annotated[str, Column(Choice.of([LONG, SHORT]), "the desk's side", LONG)]
     currency: Annotated[str, Column(Currency(), "the currency that the trade pays in", "EUR")]
+    conversion: Annotated[
+        Conversion | None,
+        Column(
+            Choice.of(Conversion),
+            "how prices quoted in other currencies are paid",
+            "quanto",
+            "quanto: one unit of theirs counts as one of the trade's; composite: converted at the expiry's exchange "
+            "rate, with strike and initial fixings in the trade's currency",
+            None,
+            "if all underlyings are quoted in the trade's currency",
+        ),
+    ]
     trade_date: Annotated[date | None, Column(Day(), "the trade date", "2026-03-02", "", None, "if it is unknown")]
     premium: Annotated[
         float | None,
@@ -71,6 +85,10 @@ class TradeRow(TableRow):
             "",
             "for the currency's standard curve",
         ),
+    ]
+    model: Annotated[
+        Model | None,
+        Column(Choice.of(Model), "the model of the underlyings", "local volatility", "", None, "for the run's choice"),
     ]
 
     @field_validator("premium_date")
@@ -297,7 +315,8 @@ class ConstituentRow(TableRow):
             Number(above=0.0),
             "the price that performance is measured from",
             "84.20",
-            "in the underlying's currency, for performance options",
+            "for performance options, in the underlying's currency (for a composite in the trade's: price times "
+            "exchange rate on the fixing day)",
             None,
             "for a price option",
         ),

@@ -51,6 +51,7 @@ def _trade_row(trade: Trade) -> dict[str, object]:
         "settlement_lag_days": _lag(trade.currency, contract.expiry_date, contract.payment_date),
         "settlement_calendar": None,
         "currency": trade.currency,
+        "conversion": None if contract.conversion is None else str(contract.conversion),
         "trade_date": trade.trade_date,
         "premium": None if trade.premium is None else trade.premium.amount,
         "premium_date": None if trade.premium is None else trade.premium.payment_date,
@@ -58,6 +59,7 @@ def _trade_row(trade: Trade) -> dict[str, object]:
         "netting_set": trade.netting_set,
         "strategy": trade.strategy,
         "collateral": trade.collateral,
+        "model": None if trade.model is None else str(trade.model),
     }
 
 

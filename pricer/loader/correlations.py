@@ -1,4 +1,4 @@
-"""The table of correlations: a square matrix whose rows and columns are underlyings."""
+"""The table of correlations: a square matrix whose rows and columns are underlyings and currency pairs."""
 
 from __future__ import annotations
 
@@ -69,6 +69,10 @@ class _Matrix:
     def read(self, known: Collection[str]) -> CorrelationTable:
         self._read_names()
         ids = [name for name in self._columns if name in self._rows and self._is_known(name, known)]
+        for name in ids:
+            inverse = inverted(name)
+            if inverse in ids and self._rows[inverse] < self._rows[name]:
+                self._spoil(name, name, self._tell(self._rows[name], 0, both_ways(name, self._rows[inverse])))
         values = {(a, b): self._value(a, b) for a in ids for b in ids}
         matrix = np.eye(len(ids))
         for i, a in enumerate(ids):
@@ -134,10 +138,8 @@ class _Matrix:
         if name in known:
             return True
         guess = nearest(name, known)
-        mend = (
-            f'Did you mean "{guess}"? Ignored.' if guess else "Ignored. Add it to the table underlyings, or delete it."
-        )
-        fault = Fault("unknown-underlying", quoted(name), "an underlying of the table underlyings", mend)
+        mend = f'Did you mean "{guess}"? Ignored.' if guess else "Ignored. Add it to the market, or delete it."
+        fault = Fault("unknown-underlying", quoted(name), "an underlying or a currency pair of the market", mend)
         self._tell(self._rows[name], 0, fault, Severity.WARNING)
         return False
 
@@ -205,6 +207,17 @@ class _Matrix:
         told = (fault.code, fault.found, fault.expected, fault.mend, severity)
         self._issues.append(Issue(*told, *where, f"{letters(position + 1)}{row}"))
         return self._issues[-1]
+
+
+def inverted(pair: str) -> str:
+    """The same currency pair the other way round."""
+    return pair[3:] + pair[:3]
+
+
+def both_ways(pair: str, row: int) -> Fault:
+    """The fault of a pair that stands the other way round in an earlier row."""
+    found = f"the pair {pair}, and its inverse in row {row}"
+    return Fault("pair-both-ways", found, "each pair of currencies in one direction", "Delete one of the two rows.")
 
 
 def _twice(name: str, what: str) -> Fault:

@@ -40,6 +40,7 @@ EXAMPLE_BOOK: Tables = {
             "expiry_date": date(2027, 12, 17),
             "currency": "EUR",
             "collateral": "USD",
+            "model": "local volatility",
         },
         {
             "trade_id": "EX-3",
@@ -93,6 +94,7 @@ EXAMPLE_BOOK: Tables = {
             "strike": 1.0,
             "expiry_date": date(2027, 3, 19),
             "currency": "EUR",
+            "conversion": "quanto",
         },
     ],
     "constituents": [
@@ -114,17 +116,28 @@ EXAMPLE_BOOK: Tables = {
 }
 
 EXAMPLE_MARKET: Tables = {
-    "snapshot": [{"valuation_date": date(2026, 3, 31), "reporting_currency": "EUR"}],
+    "snapshot": [
+        {"valuation_date": date(2026, 3, 31), "reporting_currency": "EUR", "correlation_source": "table",
+         "correlation_half_life_days": 120.0},
+    ],
     "underlyings": [
         {"underlying": "ORLUMA", "currency": "EUR", "spot": 84.2, "calendar": "TARGET", "lot_size": 1.0,
          "dividend_yield_decimal": 0.021},
         {"underlying": "TESKIR", "currency": "EUR", "spot": 212.5, "calendar": "TARGET", "lot_size": 1.0},
         {"underlying": "VADRONE", "currency": "EUR", "spot": 37.16, "calendar": "TARGET", "lot_size": 10.0,
          "dividend_yield_decimal": 0.034},
+        {"underlying": "WEXMOOR", "currency": "GBP", "spot": 44.1, "calendar": "LSE", "lot_size": 10.0},
     ],
     "dividends": [
         {"underlying": "TESKIR", "ex_date": date(2026, 5, 13), "fraction_of_spot_decimal": 0.018},
         {"underlying": "TESKIR", "ex_date": date(2027, 5, 12), "fraction_of_spot_decimal": 0.018},
+        {"underlying": "WEXMOOR", "ex_date": date(2026, 8, 6), "cash_amount": 0.62},
+        {"underlying": "WEXMOOR", "ex_date": date(2027, 8, 5), "fraction_of_spot_decimal": 0.014},
+    ],
+    "repo": [
+        {"underlying": "WEXMOOR", "tenor": "3M", "long_rate_decimal": 0.0385, "short_rate_decimal": 0.0345},
+        {"underlying": "WEXMOOR", "tenor": "1Y", "long_rate_decimal": 0.0378, "short_rate_decimal": 0.0338},
+        {"underlying": "WEXMOOR", "date": date(2029, 3, 30), "long_rate_decimal": 0.037, "short_rate_decimal": 0.0325},
     ],
     "volatilities": [
         {"underlying": "ORLUMA", "expiry_date": date(2026, 6, 19), "volatility_decimal": 0.215},
@@ -132,15 +145,29 @@ EXAMPLE_MARKET: Tables = {
         {"underlying": "TESKIR", "expiry_date": date(2026, 6, 19), "volatility_decimal": 0.262},
         {"underlying": "TESKIR", "expiry_date": date(2027, 12, 17), "volatility_decimal": 0.251},
         {"underlying": "VADRONE", "expiry_date": date(2027, 12, 17), "volatility_decimal": 0.188},
+        {"underlying": "WEXMOOR", "expiry_date": date(2026, 9, 18), "volatility_decimal": 0.2555, "strike": 38.0},
+        {"underlying": "WEXMOOR", "expiry_date": date(2026, 9, 18), "volatility_decimal": 0.2255, "strike": 44.0},
+        {"underlying": "WEXMOOR", "expiry_date": date(2026, 9, 18), "volatility_decimal": 0.2085, "strike": 50.0},
+        {"underlying": "WEXMOOR", "expiry_date": date(2027, 3, 19), "volatility_decimal": 0.2465,
+         "strike_of_forward_decimal": 0.85},
+        {"underlying": "WEXMOOR", "expiry_date": date(2027, 3, 19), "volatility_decimal": 0.226,
+         "strike_of_forward_decimal": 1.0},
+        {"underlying": "WEXMOOR", "expiry_date": date(2027, 3, 19), "volatility_decimal": 0.2125,
+         "strike_of_forward_decimal": 1.15},
+        {"underlying": "WEXMOOR", "expiry_date": date(2028, 3, 17), "volatility_decimal": 0.2275,
+         "skew_decimal": -0.085, "curvature_decimal": 0.12},
     ],
     "correlations": [
-        {"underlying": "ORLUMA", "ORLUMA": 1.0, "TESKIR": 0.55, "VADRONE": 0.48},
-        {"underlying": "TESKIR", "ORLUMA": 0.55, "TESKIR": 1.0, "VADRONE": 0.41},
-        {"underlying": "VADRONE", "ORLUMA": 0.48, "TESKIR": 0.41, "VADRONE": 1.0},
+        {"underlying": "ORLUMA", "ORLUMA": 1.0, "TESKIR": 0.55, "VADRONE": 0.48, "WEXMOOR": 0.44, "EURUSD": -0.12},
+        {"underlying": "TESKIR", "ORLUMA": 0.55, "TESKIR": 1.0, "VADRONE": 0.41, "WEXMOOR": 0.39, "EURUSD": -0.08},
+        {"underlying": "VADRONE", "ORLUMA": 0.48, "TESKIR": 0.41, "VADRONE": 1.0, "WEXMOOR": 0.36, "EURUSD": -0.1},
+        {"underlying": "WEXMOOR", "ORLUMA": 0.44, "TESKIR": 0.39, "VADRONE": 0.36, "WEXMOOR": 1.0, "EURUSD": 0.05},
+        {"underlying": "EURUSD", "ORLUMA": -0.12, "TESKIR": -0.08, "VADRONE": -0.1, "WEXMOOR": 0.05, "EURUSD": 1.0},
     ],
     "curves": [
         {"curve": "EUR-STANDARD", "currency": "EUR", "day_count": "ACT/365F", "calendar": "TARGET"},
         {"curve": "EUR-USD-CASH", "currency": "EUR", "collateral": "USD", "day_count": "ACT/360", "calendar": "TARGET"},
+        {"curve": "GBP-STANDARD", "currency": "GBP", "day_count": "ACT/365F", "calendar": "UK"},
     ],
     "curve_points": [
         {"curve": "EUR-STANDARD", "tenor": "3M", "zero_rate_decimal": 0.0195},
@@ -148,6 +175,42 @@ EXAMPLE_MARKET: Tables = {
         {"curve": "EUR-STANDARD", "tenor": "5Y", "zero_rate_decimal": 0.0231},
         {"curve": "EUR-USD-CASH", "date": date(2027, 3, 31), "discount_factor": 0.9812},
         {"curve": "EUR-USD-CASH", "date": date(2029, 3, 29), "discount_factor": 0.9377},
+        {"curve": "GBP-STANDARD", "tenor": "1M", "deposit_rate_decimal": 0.0375},
+        {"curve": "GBP-STANDARD", "tenor": "1Y", "overnight_swap_rate_decimal": 0.0362},
+        {"curve": "GBP-STANDARD", "tenor": "5Y", "overnight_swap_rate_decimal": 0.0355},
     ],
-    "fx": [{"pair": "EURUSD", "spot": 1.1032}],
+    "fx": [{"pair": "EURUSD", "spot": 1.1032}, {"pair": "EURGBP", "spot": 0.8615}],
+    "fx_volatilities": [
+        {"pair": "EURUSD", "expiry_date": date(2026, 6, 19), "volatility_decimal": 0.072},
+        {"pair": "EURUSD", "expiry_date": date(2027, 12, 17), "volatility_decimal": 0.076},
+    ],
+    "credit": [
+        {"name": "Guldmar Bank", "tenor": "1Y", "cds_spread_decimal": 0.0065, "recovery_decimal": 0.4,
+         "currency": "EUR"},
+        {"name": "Guldmar Bank", "tenor": "5Y", "cds_spread_decimal": 0.0125, "recovery_decimal": 0.4,
+         "currency": "EUR"},
+    ],
+    "funding": [
+        {"tenor": "1Y", "borrowing_spread_decimal": 0.0085, "lending_spread_decimal": 0.0015},
+        {"date": date(2031, 3, 31), "borrowing_spread_decimal": 0.0125, "lending_spread_decimal": 0.002},
+    ],
+    "agreements": [
+        {"netting_set": "GUL-1", "counterparty": "Guldmar Bank", "currency": "EUR", "collateral": "two-way",
+         "counterparty_threshold": 2_000_000.0, "desk_threshold": 2_000_000.0, "minimum_transfer_amount": 250_000.0,
+         "independent_amount": 500_000.0, "collateral_spread_decimal": -0.001, "margin_period_days": 10,
+         "close_out": "replacement value"},
+        {"netting_set": "OST-1", "counterparty": "Ostrevane Trust", "currency": "EUR", "collateral": "none"},
+    ],
 }  # fmt: skip
+
+#: Rows of the one table that is read instead of another: correlations of EXAMPLE_MARKET stand in a table.
+EXAMPLE_PRICE_HISTORY: Tables = {
+    "price_history": [
+        {"date": date(2026, 3, 30), "underlying": "ORLUMA", "level": 83.75},
+        {"date": date(2026, 3, 30), "underlying": "TESKIR", "level": 213.9},
+        {"date": date(2026, 3, 30), "underlying": "EURUSD", "level": 1.1007},
+        {"date": date(2026, 3, 31), "underlying": "ORLUMA", "level": 84.2},
+        {"date": date(2026, 3, 31), "underlying": "TESKIR", "level": 212.5},
+        {"date": date(2026, 3, 31), "underlying": "EURUSD", "level": 1.1032},
+    ]
+}

@@ -22,6 +22,13 @@ class Findings:
     def __init__(self, issues: Iterable[Issue] = ()) -> None:
         self.issues: list[Issue] = list(issues)
         self._rejected: dict[str, list[Issue]] = defaultdict(list)
+        self._prefix = ""
+
+    def under(self, kind: str) -> Findings:
+        """The same findings, which know the items named to them as "kind:name"."""
+        view = Findings()
+        view.issues, view._rejected, view._prefix = self.issues, self._rejected, f"{kind}:"
+        return view
 
     def add(self, issues: Iterable[Issue]) -> None:
         """Remember issues that cost nothing."""
@@ -37,10 +44,10 @@ class Findings:
         """Let issues that are already told cost the item ``name``."""
         grave = [issue for issue in issues if issue.severity is not Severity.WARNING]
         if grave:
-            self._rejected[name].extend(grave)
+            self._rejected[self._prefix + name].extend(grave)
 
     def is_rejected(self, name: str) -> bool:
-        return bool(self._rejected.get(name))
+        return bool(self._rejected.get(self._prefix + name))
 
     @property
     def rejected(self) -> dict[str, tuple[Issue, ...]]:
@@ -59,7 +66,12 @@ def by_own_id(table: Table[R], column: str, findings: Findings) -> dict[str, Row
         first = rows.setdefault(name, row)
         if first is not row:
             found = f"{quoted(name)}, also in row {first.number}"
-            fault = Fault(f"duplicate-{column}", found, f"each {column} once", "Delete or rename one of the two rows.")
+            fault = Fault(
+                f"duplicate-{column}".replace("_", "-"),
+                found,
+                f"each {column} once",
+                "Delete or rename one of the two rows.",
+            )
             findings.reject(name, [table.issue(row.number, column, fault)])
     return rows
 
@@ -92,6 +104,19 @@ def by_owner(table: Table[R], column: str, owners: Iterable[str], findings: Find
             findings.charge(suspect, issues)
     for name, numbers in ignored.items():
         findings.add([_ignored(table, column, name, numbers)])
+    return rows
+
+
+def by_name(table: Table[R], column: str, findings: Findings) -> dict[str, list[Row[R]]]:
+    """Rows by an id that several rows share and no other table defines; a row with a fault costs its id."""
+    rows: dict[str, list[Row[R]]] = defaultdict(list)
+    for row in table.rows:
+        name = row.get(column)
+        if name is UNREAD:
+            findings.add(row.issues)
+            continue
+        findings.reject(name, row.issues)
+        rows[name].append(row)
     return rows
 
 

@@ -10,14 +10,30 @@ from typing import Annotated
 from pydantic import ValidationInfo, field_validator
 
 from pricer.loader.columns import Column, TableRow
+from pricer.loader.credit_rows import AgreementRow, CreditRow, FundingRow
 from pricer.loader.days import Day
-from pricer.loader.faults import blank_cell, unwanted
-from pricer.loader.names import CalendarName, Choice, Currency, CurrencyPair, Identifier, Tenor
+from pricer.loader.faults import unwanted
+from pricer.loader.market_columns import (
+    HIGHEST_DISCOUNT_FACTOR,
+    DateOrTenor,
+    OnCalendar,
+    at_most_one,
+    exactly_one,
+    point_date,
+    point_tenor,
+    rate,
+    volatility,
+)
+from pricer.loader.names import CalendarName, Choice, Currency, CurrencyPair, Identifier
 from pricer.loader.numbers import Number
-from pricer.market.calendars import CURRENCY_CALENDARS, DAY_COUNTS
+from pricer.loader.underlying_rows import DividendRow, PriceHistoryRow, RepoRow, VolatilityRow
+from pricer.market.calendars import DAY_COUNTS
+from pricer.market.correlation_estimate import HistoryRules
 
-#: Decimals beyond these sizes are percentage points in the wrong place.
-HIGHEST_VOLATILITY, HIGHEST_RATE, HIGHEST_DISCOUNT_FACTOR = 3.0, 1.0, 3.0
+#: Where correlations come from.
+TABLE, PRICE_HISTORY = "table", "price history"
+
+DEFAULT_RULES = HistoryRules()
 
 
 class SnapshotRow(TableRow):
@@ -25,23 +41,31 @@ class SnapshotRow(TableRow):
 
     valuation_date: Annotated[date, Column(Day(), "the date of the snapshot", "2026-03-31")]
     reporting_currency: Annotated[str, Column(Currency(), "the currency of all totals", "EUR")]
+    correlation_source: Annotated[
+        str,
+        Column(
+            Choice.of([TABLE, PRICE_HISTORY]),
+            "where correlations come from",
+            TABLE,
+            "the table correlations, or an estimate from the table price_history",
+            TABLE,
+            "for the table correlations",
+        ),
+    ]
+    correlation_half_life_days: Annotated[
+        float,
+        Column(
+            Number(above=0.0),
+            "the age at which a past return counts half",
+            "120",
+            "in business days, for correlations from the price history",
+            DEFAULT_RULES.half_life,
+            f"for {DEFAULT_RULES.half_life:g}",
+        ),
+    ]
 
 
-class _OnCalendar(TableRow):
-    """Shared rule: a blank calendar is the currency's own, if it has one."""
-
-    @field_validator("calendar", check_fields=False)
-    @classmethod
-    def fill_calendar(cls, calendar: str | None, info: ValidationInfo) -> str | None:
-        currency = info.data.get("currency")
-        if calendar is not None or currency is None:
-            return calendar
-        if currency not in CURRENCY_CALENDARS:
-            raise blank_cell(f"none is known for {currency}")
-        return CURRENCY_CALENDARS[currency]
-
-
-class UnderlyingRow(_OnCalendar):
+class UnderlyingRow(OnCalendar):
     """A share or index."""
 
     underlying: Annotated[str, Column(Identifier(), "the underlying's id", "ORLUMA")]
@@ -56,50 +80,11 @@ class UnderlyingRow(_OnCalendar):
     ]
     dividend_yield_decimal: Annotated[
         float,
-        Column(
-            Number(percent=True, decimal_limit=HIGHEST_RATE),
-            "its continuous dividend yield per year",
-            "0.021",
-            "as a decimal (0.021 = 2.1 %)",
-            0.0,
-            "for none",
-        ),
+        rate("its continuous dividend yield per year", "0.021", "as a decimal (0.021 = 2.1 %)", 0.0, "for none"),
     ]
 
 
-class DividendRow(TableRow):
-    """A proportional dividend."""
-
-    underlying: Annotated[str, Column(Identifier(), "the id of an underlying in the table underlyings", "ORLUMA")]
-    ex_date: Annotated[date, Column(Day(), "the ex-dividend date", "2027-05-12")]
-    fraction_of_spot_decimal: Annotated[
-        float,
-        Column(
-            Number(at_least=0.0, below=1.0, percent=True, decimal_limit=1.0),
-            "the part of the price that is paid out",
-            "0.018",
-            "as a decimal (0.018 = 1.8 %)",
-        ),
-    ]
-
-
-class VolatilityRow(TableRow):
-    """The implied volatility of an underlying for one expiry."""
-
-    underlying: Annotated[str, Column(Identifier(), "the id of an underlying in the table underlyings", "ORLUMA")]
-    expiry_date: Annotated[date, Column(Day(), "the expiry date of the quote", "2027-06-18")]
-    volatility_decimal: Annotated[
-        float,
-        Column(
-            Number(above=0.0, percent=True, decimal_limit=HIGHEST_VOLATILITY),
-            "the volatility per year",
-            "0.225",
-            "as a decimal (0.225 = 22.5 %)",
-        ),
-    ]
-
-
-class CurveRow(_OnCalendar):
+class CurveRow(OnCalendar):
     """A discount curve and its conventions."""
 
     curve: Annotated[str, Column(Identifier(), "the curve's id", "EUR-STANDARD")]
@@ -115,21 +100,40 @@ class CurveRow(_OnCalendar):
     ]
 
 
-class CurvePointRow(TableRow):
-    """One point of a curve: a date or a tenor, a zero rate or a discount factor."""
+class CurvePointRow(DateOrTenor):
+    """One point of a curve: a date or a tenor, and a zero rate, a discount factor or a quoted rate."""
 
     curve: Annotated[str, Column(Identifier(), "the id of a curve in the table curves", "EUR-STANDARD")]
-    date: Annotated[date | None, Column(Day(), "the point's date", "2027-03-31", "", None, "where there is a tenor")]
-    tenor: Annotated[str | None, Column(Tenor(), "the point's tenor", "1Y", "", None, "where there is a date")]
+    date: Annotated[date | None, point_date()]
+    tenor: Annotated[str | None, point_tenor()]
     zero_rate_decimal: Annotated[
         float | None,
-        Column(
-            Number(percent=True, decimal_limit=HIGHEST_RATE),
+        rate(
             "the zero rate, continuously compounded",
             "0.0225",
             "as a decimal (0.0225 = 2.25 %)",
             None,
-            "where there is a discount factor",
+            "where there is a discount factor or a quoted rate",
+        ),
+    ]
+    deposit_rate_decimal: Annotated[
+        float | None,
+        rate(
+            "the quoted rate of a deposit of this tenor",
+            "0.0195",
+            "simple, by the money market's day count, as a decimal (0.0195 = 1.95 %)",
+            None,
+            "where there is another kind of value",
+        ),
+    ]
+    overnight_swap_rate_decimal: Annotated[
+        float | None,
+        rate(
+            "the quoted fixed rate of a swap of this tenor against the overnight rate",
+            "0.0212",
+            "as a decimal (0.0212 = 2.12 %)",
+            None,
+            "where there is another kind of value",
         ),
     ]
     discount_factor: Annotated[
@@ -140,22 +144,24 @@ class CurvePointRow(TableRow):
             "0.9777",
             "",
             None,
-            "where there is a zero rate",
+            "where there is a rate",
         ),
     ]
 
-    @field_validator("tenor", "discount_factor")
+    @field_validator("deposit_rate_decimal", "overnight_swap_rate_decimal")
     @classmethod
-    def check_one_of_two(cls, value: object, info: ValidationInfo) -> object:
-        other = "date" if info.field_name == "tenor" else "zero_rate_decimal"
-        if other not in info.data:
-            return value
-        first = info.data[other]
-        if first is None and value is None:
-            raise blank_cell(f"there is no {other} either")
-        if first is not None and value is not None:
-            raise unwanted(value, f"points without a {other}", other)
-        return value
+    def check_quote(cls, quote: float | None, info: ValidationInfo) -> float | None:
+        """Quotes run for a tenor: the market's conventions turn it into dates."""
+        earlier = ("zero_rate_decimal", "deposit_rate_decimal")
+        quote = at_most_one(quote, info, *(name for name in earlier if name != info.field_name))
+        if quote is not None and info.data.get("date") is not None:
+            raise unwanted(quote, "rows with a tenor", "date")
+        return quote
+
+    @field_validator("discount_factor")
+    @classmethod
+    def check_one_value(cls, factor: float | None, info: ValidationInfo) -> float | None:
+        return exactly_one(factor, info, "zero_rate_decimal", "deposit_rate_decimal", "overnight_swap_rate_decimal")
 
 
 class FxRow(TableRow):
@@ -169,15 +175,29 @@ class FxRow(TableRow):
     ]
 
 
+class FxVolatilityRow(TableRow):
+    """The implied volatility of an exchange rate for one expiry."""
+
+    pair: Annotated[str, Column(CurrencyPair(), "two currencies, in either order", "EURUSD")]
+    expiry_date: Annotated[date, Column(Day(), "the expiry date of the quote", "2027-06-18")]
+    volatility_decimal: Annotated[float, volatility()]
+
+
 #: The tables of a market, in the order of the templates; correlations come after volatilities.
 MARKET_ROWS: Mapping[str, type[TableRow]] = MappingProxyType(
     {
         "snapshot": SnapshotRow,
         "underlyings": UnderlyingRow,
         "dividends": DividendRow,
+        "repo": RepoRow,
         "volatilities": VolatilityRow,
+        "price_history": PriceHistoryRow,
         "curves": CurveRow,
         "curve_points": CurvePointRow,
         "fx": FxRow,
+        "fx_volatilities": FxVolatilityRow,
+        "credit": CreditRow,
+        "funding": FundingRow,
+        "agreements": AgreementRow,
     }
 )

@@ -24,7 +24,8 @@ class Number:
     """A finite number within limits.
 
     ``percent`` allows text such as ``22.5%``. A value beyond ``decimal_limit`` in size is
-    taken for percentage points typed where a decimal belongs, and refused with that guess.
+    taken for percentage points typed where a decimal belongs, and refused with that guess;
+    with ``basis_points``, from 10 on, for basis points.
     """
 
     above: float | None = None
@@ -34,6 +35,7 @@ class Number:
     not_zero: bool = False
     percent: bool = False
     decimal_limit: float | None = None
+    basis_points: bool = False
 
     def words(self) -> str:
         limits = [
@@ -62,6 +64,8 @@ class Number:
             and not (self.not_zero and number == 0.0)
         )
         if self.decimal_limit is not None and abs(number) > self.decimal_limit:
+            if self.basis_points and abs(number) >= 10.0:
+                raise as_basis_points(number, self.words())
             raise as_percentage_points(number, self.words())
         if not inside:
             raise Fault("out-of-range", in_words(cell))
@@ -114,6 +118,13 @@ def as_percentage_points(number: float, expected: str = "") -> Fault:
     decimal = number_in_words(float(Decimal(repr(number)) / 100))
     points = number_in_words(number)
     return Fault("not-a-decimal", points, expected, f"Did you mean {decimal} ({points} %)?")
+
+
+def as_basis_points(number: float, expected: str) -> Fault:
+    """The fault of a number that looks like basis points where a decimal belongs."""
+    decimal = number_in_words(float(Decimal(repr(number)) / 10_000))
+    points = number_in_words(number)
+    return Fault("not-a-decimal", points, expected, f"Did you mean {decimal} ({points} basis points)?")
 
 
 def read_number(cell: Cell, reading: Reading, *, percent: bool = False) -> float:

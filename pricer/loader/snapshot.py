@@ -5,47 +5,54 @@ from __future__ import annotations
 from dataclasses import replace
 from datetime import date
 from pathlib import Path
-from typing import Any, TypeVar
+from typing import TypeVar
 
 from pricer.core.issues import InputError, Issue, Severity
-from pricer.core.source import Place
 from pricer.loader.columns import TableRow, columns_of
-from pricer.loader.correlations import CorrelationTable, read_correlations
+from pricer.loader.correlation_source import read_correlation_source
+from pricer.loader.credit_rows import AgreementRow, CreditRow, FundingRow
+from pricer.loader.credit_spreads import read_credit
 from pricer.loader.discount_curves import read_curves
+from pricer.loader.exchange_rates import read_exchange_rates
 from pricer.loader.faults import Fault
 from pricer.loader.files import read_sheets
-from pricer.loader.findings import Findings, by_own_id
+from pricer.loader.findings import Findings
 from pricer.loader.headers import find_sheet, match_header, unread_sheets
+from pricer.loader.market_places import Places
 from pricer.loader.market_rows import (
     MARKET_ROWS,
+    PRICE_HISTORY,
+    TABLE,
     CurvePointRow,
     CurveRow,
-    DividendRow,
     FxRow,
+    FxVolatilityRow,
     SnapshotRow,
     UnderlyingRow,
-    VolatilityRow,
 )
+from pricer.loader.netting_agreements import read_agreements
 from pricer.loader.sheets import Sheet, Sheets
 from pricer.loader.table import Table, read_table
+from pricer.loader.text import quoted
+from pricer.loader.two_sided_rates import read_funding
+from pricer.loader.underlying_rows import DividendRow, PriceHistoryRow, RepoRow, VolatilityRow
 from pricer.loader.underlyings import read_underlyings
+from pricer.loader.volatilities import read_volatilities
 from pricer.market import quality
-from pricer.market.correlation import CorrelationMatrix, Repair, checked
-from pricer.market.fx import FxRates
+from pricer.market.affine_price import AffinePrice
 from pricer.market.market import CORRELATIONS, Market
+from pricer.market.market_quotes import MarketQuotes
+from pricer.market.underlying import Underlying
 
 R = TypeVar("R", bound=TableRow)
 
-#: How grave it is that a table is missing; None: it may be.
+#: How grave it is that a table is missing; None, as for tables that are not named here: it may be.
 _ABSENCE = {
     "snapshot": Severity.FATAL,
     "underlyings": Severity.FATAL,
     "curves": Severity.FATAL,
     "curve_points": Severity.FATAL,
     "volatilities": Severity.ERROR,
-    CORRELATIONS: Severity.ERROR,
-    "dividends": None,
-    "fx": None,
 }
 
 
@@ -61,11 +68,14 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
     snapshot = tables.get("snapshot", SnapshotRow)
     underlying_rows = tables.get("underlyings", UnderlyingRow)
     curve_rows, point_rows = tables.get("curves", CurveRow), tables.get("curve_points", CurvePointRow)
-    dividends, volatilities = tables.get("dividends", DividendRow), tables.get("volatilities", VolatilityRow)
-    fx_rows = tables.get("fx", FxRow)
-    correlation_sheet = tables.sheet(CORRELATIONS)
+    dividends, repo_rows = tables.get("dividends", DividendRow), tables.get("repo", RepoRow)
+    volatilities = tables.get("volatilities", VolatilityRow)
+    fx_rows, fx_volatilities = tables.get("fx", FxRow), tables.get("fx_volatilities", FxVolatilityRow)
+    credit_rows, funding_rows = tables.get("credit", CreditRow), tables.get("funding", FundingRow)
+    agreement_rows = tables.get("agreements", AgreementRow)
     findings = tables.findings
     row = None if snapshot is None else _snapshot_row(snapshot, findings)
+    correlation_rows = None if row is None else tables.correlations(row.correlation_source)
     if underlying_rows is None or curve_rows is None or point_rows is None or row is None or tables.are_fatal():
         raise InputError(findings.issues)
 
@@ -78,11 +88,25 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
         findings.add([snapshot.issue(snapshot.rows[0].number, "valuation_date", note, Severity.WARNING)])
         today = valuation_date
 
-    underlyings = read_underlyings(underlying_rows, dividends, volatilities, today, findings)
+    known = [name for other in underlying_rows.rows if isinstance(name := other.get("underlying"), str)]
+    underlyings, repo = read_underlyings(underlying_rows, dividends, repo_rows, today, findings)
     curves = read_curves(curve_rows, point_rows, today, findings)
-    fx = FxRates.from_pairs(_pairs(fx_rows, findings))
-    matrix = None if correlation_sheet is None else _matrix(correlation_sheet, underlying_rows, findings)
-    correlation, repair = _checked(matrix, list(underlyings), findings)
+
+    def price_of(underlying: Underlying) -> AffinePrice:
+        name, held = underlying.underlying_id, repo.get(underlying.underlying_id)
+        growth = curves.get((underlying.currency, "")) if held is None else held.mid
+        if growth is None:
+            raise LookupError(f"{underlying.currency} has no usable standard curve")
+        return AffinePrice.of(name, underlying.spot, underlying.dividends, growth)
+
+    levels, surfaces = read_volatilities(volatilities, known, underlyings, price_of, today, findings)
+    underlyings = {name: replace(item, volatility=levels.get(name)) for name, item in underlyings.items()}
+    fx = read_exchange_rates(fx_rows, fx_volatilities, today, findings)
+    hazards, credit_quotes = read_credit(credit_rows, curves, findings)
+    funding = read_funding(funding_rows, row.reporting_currency, today, findings)
+    agreements = read_agreements(agreement_rows, findings)
+    correlations = read_correlation_source(correlation_rows, known, list(underlyings), fx, today,
+                                           row.correlation_half_life_days, findings)  # fmt: skip
     if not underlyings or not curves:
         findings.add([_nothing_left(sheets, "underlying" if not underlyings else "curve")])
         raise InputError(findings.issues)
@@ -93,14 +117,29 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
         reporting_currency=row.reporting_currency,
         underlyings=underlyings,
         curves=curves,
-        correlation=correlation,
+        correlation=correlations.matrix,
         fx=fx,
         sources=sheets.sources,
         rejected=findings.rejected,
+        surfaces=surfaces,
+        repo=repo,
+        credit=hazards,
+        funding=funding,
+        agreements=agreements,
+        quotes=MarketQuotes(credit_quotes, correlations.estimate),
     )
-    place = _Places(snapshot if today == row.valuation_date else None, underlying_rows, curve_rows, dividends, fx_rows,
-                    matrix)  # fmt: skip
-    findings.add(quality.gates(market, repair, place))
+    place = Places(correlations.source)
+    if today == row.valuation_date:
+        place.add("valuation_date", snapshot, shown="valuation_date")
+    place.add("dividend_yield", underlying_rows, "underlying", shown="dividend_yield_decimal")
+    place.add("dividends", dividends, "underlying")
+    place.add("repo", repo_rows, "underlying")
+    place.add("volatility", volatilities, "underlying", "expiry_date", shown="volatility_decimal")
+    place.add("curve", curve_rows, "curve")
+    place.add("fx", fx_rows, "pair")
+    place.add("fx", fx_volatilities, "pair")
+    place.add("credit", credit_rows, "name")
+    findings.add(quality.gates(market, correlations.repair, place))
     return replace(market, issues=tuple(findings.issues))
 
 
@@ -111,18 +150,28 @@ class _Tables:
         self._sheets = sheets
         self.findings = Findings(unread_sheets(sheets))
 
-    def sheet(self, name: str) -> Sheet | None:
-        sheet, issues = find_sheet(self._sheets, name, required=_ABSENCE[name])
-        self.findings.add(issues)
-        return sheet
-
-    def get(self, name: str, model: type[R]) -> Table[R] | None:
-        sheet = self.sheet(name)
+    def get(self, name: str, model: type[R], absence: Severity | None = None) -> Table[R] | None:
+        sheet = self._sheet(name, absence or _ABSENCE.get(name))
         if sheet is None:
             return None
         header, issues = match_header(sheet, columns_of(model))
         self.findings.add(issues)
         return None if header is None else read_table(sheet, header, model)
+
+    def correlations(self, source: str) -> Sheet | Table[PriceHistoryRow] | None:
+        """What correlations come from, one of two tables; a warning if the other is there and not empty."""
+        from_history = source == PRICE_HISTORY
+        other = self._sheet(CORRELATIONS if from_history else "price_history", None)
+        if other is not None and len(other.rows) > 1:
+            self.findings.add([_unused(other, from_history=from_history)])
+        if from_history:
+            return self.get("price_history", PriceHistoryRow, Severity.ERROR)
+        return self._sheet(CORRELATIONS, Severity.ERROR)
+
+    def _sheet(self, name: str, absence: Severity | None) -> Sheet | None:
+        sheet, issues = find_sheet(self._sheets, name, required=absence)
+        self.findings.add(issues)
+        return sheet
 
     def are_fatal(self) -> bool:
         return any(issue.severity is Severity.FATAL for issue in self.findings.issues)
@@ -143,62 +192,18 @@ def _snapshot_row(table: Table[SnapshotRow], findings: Findings) -> SnapshotRow 
     return table.rows[0].value
 
 
-def _pairs(table: Table[FxRow] | None, findings: Findings) -> dict[str, float]:
-    """Quotes by pair; a faulty pair, or one quoted both ways, is left out."""
-    if table is None:
-        return {}
-    rows = by_own_id(table, "pair", findings)
-    for name, row in rows.items():
-        inverse = rows.get(name[3:] + name[:3])
-        if inverse is not None:
-            fault = Fault("pair-both-ways", f"the pair {name}, and its inverse in row {inverse.number}",
-                          "each pair of currencies in one direction", "Delete one of the two rows.")  # fmt: skip
-            findings.reject(name, [table.issue(row.number, "pair", fault)])
-    return {name: row.value.spot for name, row in rows.items() if row.value and not findings.is_rejected(name)}
-
-
-def _matrix(sheet: Sheet, underlyings: Table[UnderlyingRow], findings: Findings) -> CorrelationTable | None:
-    if sheet.merged:
-        ranges = ", ".join(merged.text for merged in sheet.merged)
-        mend = "Unmerge them and fill in every cell."
-        issue = Issue("merged-cells", f"the merged cells {ranges}", "one correlation in each cell", mend,
-                      file=sheet.file, sheet=sheet.name)  # fmt: skip
-        findings.reject(CORRELATIONS, [issue])
-        return None
-    known = [name for row in underlyings.rows if isinstance(name := row.get("underlying"), str)]
-    matrix = read_correlations(sheet, known)
-    findings.add(matrix.issues)
-    for name, issues in matrix.refused.items():
-        findings.charge(f"{CORRELATIONS}:{name}", issues)
-    if not matrix.ids:
-        findings.charge(CORRELATIONS, matrix.issues)
-    return matrix
-
-
-def _checked(
-    table: CorrelationTable | None, underlyings: list[str], findings: Findings
-) -> tuple[CorrelationMatrix | None, Repair | None]:
-    """The matrix as the market trusts it; None with an issue where it contradicts itself too much."""
-    if table is None or not table.ids:
-        return None, None
-    try:
-        return checked(table.ids, table.matrix)
-    except ValueError as error:
-        repair: Repair | None = getattr(error, "repair", None)
-        where = None if repair is None else table.place(*repair.pair)
-        issue = Issue(
-            "inconsistent-correlations",
-            str(error),
-            "correlations that can hold together (no negative eigenvalue)",
-            "Review the correlations of this pair, or estimate all of them from the same history.",
-            file=table.sheet.file,
-            sheet=table.sheet.name,
-            row=None if where is None else where.row,
-            column=None if where is None else where.column,
-            cell=None if where is None else where.cell,
-        )
-        findings.reject(CORRELATIONS, [issue])
-        return None, None
+def _unused(sheet: Sheet, *, from_history: bool) -> Issue:
+    source, other = (PRICE_HISTORY, CORRELATIONS) if from_history else (TABLE, "price_history")
+    wanted = TABLE if from_history else PRICE_HISTORY
+    return Issue(
+        "unused-table",
+        f"a table {other}, while correlation_source in the table snapshot is {quoted(source)}",
+        f"the table {other} only where correlation_source is {quoted(wanted)}",
+        "Ignored. Change correlation_source, or delete the table.",
+        Severity.WARNING,
+        sheet.file,
+        sheet.name,
+    )
 
 
 def _no_dividends(sheets: Sheets) -> Issue:
@@ -223,39 +228,3 @@ def _nothing_left(sheets: Sheets, what: str) -> Issue:
         Severity.FATAL,
         sheets.file,
     )
-
-
-class _Places:
-    """Where the market's items stand, by the keys of :func:`pricer.market.quality.gates`."""
-
-    def __init__(
-        self,
-        snapshot: Table[SnapshotRow] | None,
-        underlyings: Table[UnderlyingRow],
-        curves: Table[CurveRow],
-        dividends: Table[DividendRow] | None,
-        fx: Table[FxRow] | None,
-        matrix: CorrelationTable | None,
-    ) -> None:
-        self._matrix = matrix
-        tables: list[tuple[str, Table[Any] | None, str, str]] = [  # the key, its id's column, the column shown
-            ("dividend_yield", underlyings, "underlying", "dividend_yield_decimal"),
-            ("curve", curves, "curve", "curve"),
-            ("dividends", dividends, "underlying", "underlying"),
-            ("fx", fx, "pair", "pair"),
-        ]
-        self._cells = {
-            f"{key}:{row.get(name)}": table.place(row.number, column)
-            for key, table, name, column in tables
-            if table is not None
-            for row in reversed(table.rows)
-        }
-        if snapshot is not None:
-            self._cells["valuation_date"] = snapshot.place(snapshot.rows[0].number, "valuation_date")
-
-    def __call__(self, key: str) -> Place | None:
-        kind, _, rest = key.partition(":")
-        if kind != "correlation" or self._matrix is None:
-            return self._cells.get(key)
-        first, _, second = rest.partition(":")
-        return self._matrix.place(first, second)

@@ -17,7 +17,7 @@ from openpyxl.worksheet.properties import PageSetupProperties
 
 from pricer.loader.columns import Column
 from pricer.loader.days import FIRST_DATE, LAST_DATE, Day
-from pricer.loader.examples import EXAMPLE_BOOK, EXAMPLE_MARKET
+from pricer.loader.examples import EXAMPLE_BOOK, EXAMPLE_MARKET, EXAMPLE_PRICE_HISTORY
 from pricer.loader.names import Choice, Currency, FreeText, Identifier
 from pricer.loader.schema import BOOK, MARKET, TableSchema
 from pricer.loader.sheets import letters
@@ -54,7 +54,7 @@ def write_templates(folder: str | Path) -> tuple[Path, ...]:
     folder = Path(folder)
     parts = {
         folder / "book.xlsx": ("A book of multi-asset options", BOOK, EXAMPLE_BOOK),
-        folder / "market.xlsx": ("A market snapshot", MARKET, EXAMPLE_MARKET),
+        folder / "market.xlsx": ("A market snapshot", MARKET, {**EXAMPLE_MARKET, **EXAMPLE_PRICE_HISTORY}),
     }
     for path in parts:
         if os.path.lexists(path):

@@ -1,93 +1,71 @@
-"""Underlyings with their dividends and volatilities, from three tables."""
+"""Underlyings with their dividends and repo rates, from three tables."""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 from datetime import date
 
-from pricer.core.issues import Severity
-from pricer.loader.faults import Fault
+from pricer.core.issues import Issue
 from pricer.loader.findings import Findings, by_own_id, by_owner, repeated_dates
-from pricer.loader.market_rows import DividendRow, UnderlyingRow, VolatilityRow
+from pricer.loader.market_rows import UnderlyingRow
 from pricer.loader.table import Row, Table
-from pricer.market.dividends import Dividends, ProportionalDividend
+from pricer.loader.two_sided_rates import read_repo
+from pricer.loader.underlying_rows import DividendRow, RepoRow
+from pricer.market.dividends import CashDividend, Dividends, ProportionalDividend
+from pricer.market.repo import RepoCurve
 from pricer.market.underlying import Underlying
-from pricer.market.volatility import CalendarArbitrageError, VolatilityCurve
 
 
 def read_underlyings(
     table: Table[UnderlyingRow],
     dividends: Table[DividendRow] | None,
-    volatilities: Table[VolatilityRow] | None,
+    repo: Table[RepoRow] | None,
     valuation_date: date,
     findings: Findings,
-) -> dict[str, Underlying]:
-    """The usable underlyings by id.
+) -> tuple[dict[str, Underlying], dict[str, RepoCurve]]:
+    """The usable underlyings by id, without volatilities, and their repo curves.
 
-    A faulty row or dividend costs the underlying, a faulty volatility only its volatility.
+    A faulty row, dividend or repo rate costs the underlying.
     """
     rows = by_own_id(table, "underlying", findings)
     paid = {} if dividends is None else by_owner(dividends, "underlying", rows, findings)
     if dividends is not None:
         for name, payments in paid.items():
-            findings.reject(name, repeated_dates(dividends, payments, "ex_date"))
-    sound = [name for name in rows if not findings.is_rejected(name)]
-    quotes = {} if volatilities is None else by_owner(volatilities, "underlying", rows, findings)
+            findings.reject(name, _repeated(dividends, payments))
+    repo_curves = read_repo(repo, rows, valuation_date, findings)
     out: dict[str, Underlying] = {}
-    for name in sound:
-        row = rows[name].value
-        if row is None or row.calendar is None:
+    for name, own in rows.items():
+        row = own.value
+        if findings.is_rejected(name) or row is None or row.calendar is None:
             continue
-        curve = None
-        if volatilities is not None and quotes.get(name):
-            findings.reject(name, repeated_dates(volatilities, quotes[name], "expiry_date"))
-            if not findings.is_rejected(name):
-                curve = _volatility(volatilities, quotes[name], valuation_date, name, findings)
         given = [payment.value for payment in paid.get(name, ()) if payment.value is not None]
-        proportional = [ProportionalDividend(dividend.ex_date, dividend.fraction_of_spot_decimal) for dividend in given]
         out[name] = Underlying(
             underlying_id=name,
             currency=row.currency,
             spot=row.spot,
             calendar=row.calendar,
             lot_size=row.lot_size,
-            dividends=Dividends(row.dividend_yield_decimal, tuple(sorted(proportional, key=lambda d: d.ex_date))),
-            volatility=curve,
+            dividends=_dividends(row.dividend_yield_decimal, given),
         )
-    return out
+    return out, {name: curve for name, curve in repo_curves.items() if name in out}
 
 
-def _volatility(
-    table: Table[VolatilityRow],
-    rows: Sequence[Row[VolatilityRow]],
-    valuation_date: date,
-    name: str,
-    findings: Findings,
-) -> VolatilityCurve | None:
-    quotes = {
-        row.value.expiry_date: (row.value.volatility_decimal, row.number) for row in rows if row.value is not None
-    }
-    for day in [day for day in quotes if day <= valuation_date]:
-        found, expected = f"the date {day}", f"an expiry after the valuation date {valuation_date}"
-        fault = Fault("expired-quote", found, expected, "Ignored. Delete the row.")
-        findings.add([table.issue(quotes.pop(day)[1], "expiry_date", fault, Severity.WARNING)])
-    if not quotes:
-        return None
-    days = sorted(quotes)
-    try:
-        return VolatilityCurve.from_quotes(valuation_date, days, [quotes[day][0] for day in days])
-    except CalendarArbitrageError as error:
-        later = quotes[error.later]
-        fault = Fault(
-            "calendar-arbitrage",
-            f"{later[0]:g}: {error}",
-            "total variance (volatility squared times years) that does not fall with time",
-            f"Correct this volatility or that of {error.earlier}.",
-        )
-        findings.reject(name, [table.issue(later[1], "volatility_decimal", fault)])
-    except ValueError as error:
-        fault = Fault(
-            "unusable-volatilities", str(error), "a volatility curve", "Correct the underlying's volatilities."
-        )
-        findings.reject(name, [table.issue(quotes[days[0]][1], "volatility_decimal", fault)])
-    return None
+def _dividends(yield_rate: float, rows: Sequence[DividendRow]) -> Dividends:
+    ordered = sorted(rows, key=lambda row: row.ex_date)
+    return Dividends(
+        yield_rate,
+        tuple(
+            ProportionalDividend(row.ex_date, row.fraction_of_spot_decimal)
+            for row in ordered
+            if row.fraction_of_spot_decimal is not None
+        ),
+        tuple(CashDividend(row.ex_date, row.cash_amount) for row in ordered if row.cash_amount is not None),
+    )
+
+
+def _repeated(table: Table[DividendRow], rows: Sequence[Row[DividendRow]]) -> list[Issue]:
+    """Two dividends of one kind on one date; a special one in cash may go with a proportional one."""
+    kinds: tuple[list[Row[DividendRow]], list[Row[DividendRow]]] = ([], [])
+    for row in rows:
+        kinds[row.value is not None and row.value.cash_amount is not None].append(row)
+    return [issue for kind in kinds for issue in repeated_dates(table, kind, "ex_date")]

@@ -68,6 +68,14 @@ class AffineLevel:
             )
         return root * float(erfinv(share))
 
+    def vega_slope(self, pure_deviation: float) -> float:
+        """Derivative of :meth:`pure_deviation`, at the deviation of log X that it gives."""
+        if self.floor == 0.0:
+            return 1.0
+        root = 2.0 * math.sqrt(2.0)
+        own = root * float(erfinv(float(erf(pure_deviation / root)) * self.scale / self.forward))
+        return self.forward / self.scale * math.exp((pure_deviation**2 - own**2) / 8.0)
+
 
 @dataclass(frozen=True, slots=True)
 class AffinePrice:
@@ -101,6 +109,11 @@ class AffinePrice:
         return cls(spot, dividends, growth_curve, tuple(day for day, _ in coming), values)
 
     @property
+    def random_spot(self) -> float:
+        """The spot less tonight's value of the cash dividends to come: what the random part begins with."""
+        return self.spot - sum(self.cash_values)
+
+    @property
     def has_floor(self) -> bool:
         """Whether any cash dividend is still to come."""
         return bool(self.cash_dates)
@@ -110,7 +123,7 @@ class AffinePrice:
         growth = self.dividends.growth(self.growth_curve.valuation_date, day)
         discount = self.growth_curve.discount_factor(day)
         later = sum(value for ex, value in zip(self.cash_dates, self.cash_values, strict=True) if ex > day)
-        return AffineLevel((self.spot - sum(self.cash_values)) * growth / discount, later * growth / discount)
+        return AffineLevel(self.random_spot * growth / discount, later * growth / discount)
 
     def pure_volatility(self, volatility: VolatilityCurve) -> VolatilityCurve:
         """Volatilities of X from those of S, matched at the forward on each quoted date.

@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 from pricer.market.black import call, vega
 from pricer.market.calendars import year_fraction
 from pricer.market.implied_surface import ImpliedSurface
+from pricer.market.slice_correction import is_material
 from pricer.market.smile_quotes import SmileQuotes
 from pricer.market.svi_fit import FINE_GRID, RANGE, excess
 from pricer.market.svi_repair import least_butterfly
@@ -95,11 +96,12 @@ def surface_violations(surface: ImpliedSurface) -> tuple[Violation, ...]:
     """Arbitrage left in a surface, within :data:`svi_fit.RANGE` standard deviations; none after a sound fit.
 
     Slices are checked for butterflies, and so are the smiles a quarter, half and three quarters of the way
-    between expiries: linear total variance does not exclude them by itself.
+    between expiries: linear total variance does not exclude them by itself. Those in between are checked
+    only where :func:`slice_correction.is_material`.
     """
     found: list[Violation] = []
-    for day, time, smile in zip(surface.dates, surface.times, surface.slices, strict=True):
-        at, least = least_butterfly(smile, RANGE * float(np.sqrt(surface.total_variance(0.0, time))))
+    for day, smile in zip(surface.dates, surface.slices, strict=True):
+        at, least = least_butterfly(smile, RANGE * float(np.sqrt(smile.total_variance(0.0))), interesting=0.05)
         if least < -BUTTERFLY_TOLERANCE:
             found.append(Violation(ArbitrageKind.BUTTERFLY, day, None, at, -least, False))
     for i in range(len(surface.slices) - 1):
@@ -117,6 +119,8 @@ def _between(surface: ImpliedSurface, i: int) -> Iterator[Violation]:
     k = FINE_GRID * float(np.sqrt(surface.total_variance(0.0, t)))
     inner = s + np.array([[0.25], [0.5], [0.75]]) * (t - s)
     g = surface.butterfly(k, inner)
+    if g.min() < -BUTTERFLY_TOLERANCE:
+        g[~is_material(k, surface.total_variance(k, inner))] = 1.0
     row, column = np.unravel_index(int(np.argmin(g)), g.shape)
     if g[row, column] < -BUTTERFLY_TOLERANCE:
         yield Violation(ArbitrageKind.BUTTERFLY, first, second, float(k[column]), -float(g[row, column]), False)

@@ -26,19 +26,23 @@ def vega(k: ArrayLike, deviation: ArrayLike) -> Array:
 
 
 def implied_deviation(k: ArrayLike, price: ArrayLike) -> Array:
-    """The deviation at which :func:`call` is ``price``, by bisection; NaN outside the arbitrage bounds.
+    """The deviation at which :func:`call` is ``price``; NaN outside the arbitrage bounds.
 
     Works on the out-of-the-money option, so that deep strikes keep their digits as far as the price has them.
     """
     k, price = np.broadcast_arrays(np.asarray(k, dtype=float), np.asarray(price, dtype=float))
-    intrinsic = np.maximum(-np.expm1(k), 0.0)
-    value = price - intrinsic
+    return deviation_of_time_value(k, price - np.maximum(-np.expm1(k), 0.0))
+
+
+def deviation_of_time_value(k: ArrayLike, value: ArrayLike) -> Array:
+    """The deviation at which :func:`out_of_the_money` is ``value``, by bisection; NaN outside the arbitrage bounds."""
+    k, value = np.broadcast_arrays(np.asarray(k, dtype=float), np.asarray(value, dtype=float))
     low, high = np.full(k.shape, 1e-8), np.full(k.shape, 10.0)
     for _ in range(60):
         middle = 0.5 * (low + high)
         above = out_of_the_money(k, middle) > value
         low, high = np.where(above, low, middle), np.where(above, middle, high)
-    inside = (value >= 0.0) & (price < 1.0)
+    inside = (value >= 0.0) & (value < np.exp(np.minimum(k, 0.0)))
     return np.where(inside, 0.5 * (low + high), np.nan)
 
 

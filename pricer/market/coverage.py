@@ -7,16 +7,21 @@ from collections.abc import Iterator
 from pricer.contracts.book import Trade
 from pricer.core.issues import Issue
 from pricer.core.source import Place
+from pricer.market.conversion_coverage import conversion_coverage
 from pricer.market.date_coverage import date_coverage
 from pricer.market.dividend_quality import EXCEEDED
-from pricer.market.findings import Locate, did_you_mean, error, words
+from pricer.market.findings import Locate, did_you_mean, error, warning, words
 from pricer.market.market import CORRELATIONS, Market, MissingMarketDataError
 from pricer.market.size_coverage import size_coverage
 from pricer.market.underlying import Underlying
 
 
-def coverage(trade: Trade, market: Market, place: Locate) -> tuple[Issue, ...]:
+def coverage(
+    trade: Trade, market: Market, place: Locate, *, accept_failing_surfaces: bool = False
+) -> tuple[Issue, ...]:
     """Everything that keeps ``trade`` from being priced on ``market`` (errors), or qualifies its price (warnings).
+
+    Surfaces that fail their checks are errors unless accepted; then they are warnings.
 
     ``place`` gives the cell from which a column of the trade was read ("trade_id", "currency",
     "collateral", "strike", "expiry_date", "payment_date", "trade_date", "premium_date", and
@@ -25,6 +30,8 @@ def coverage(trade: Trade, market: Market, place: Locate) -> tuple[Issue, ...]:
     issues = [
         *_currencies(trade, market, place),
         *_underlyings(trade, market, place),
+        *_surfaces(trade, market, place, accepted=accept_failing_surfaces),
+        *conversion_coverage(trade, market, place),
         *_correlations(trade, market, place),
         *date_coverage(trade, market, place),
         *size_coverage(trade, market, place),
@@ -99,7 +106,7 @@ def _underlyings(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]
                 "market.",
             )
         else:
-            if underlying.volatility is None:
+            if not market.has_volatility(name):
                 yield error(
                     here,
                     "no-volatility",
@@ -108,15 +115,28 @@ def _underlyings(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]
                     why or f'Add "{name}" to the volatilities table of the market.',
                 )
             yield from _price(underlying, market, here)
-            if underlying.currency != trade.currency and trade.currency in _known_currencies(market):
-                yield error(
-                    here,
-                    "other-currency",
-                    f'underlying "{name}", quoted in {underlying.currency}, in a trade in {trade.currency}',
-                    "underlyings quoted in the trade's currency",
-                    f"Correct the trade's currency if it is {underlying.currency}; quanto and composite trades are not "
-                    "priced by this version.",
-                )
+
+
+def failing_surfaces(trade: Trade, market: Market) -> tuple[str, ...]:
+    """The trade's underlyings whose volatility surfaces fail their checks."""
+    names = dict.fromkeys(trade.contract.underlyings)
+    return tuple(name for name in names if name in market.surfaces and not market.surfaces[name].passes)
+
+
+def _surfaces(trade: Trade, market: Market, place: Locate, *, accepted: bool) -> Iterator[Issue]:
+    for name in failing_surfaces(trade, market):
+        found = f'underlying "{name}", whose volatility surface fails: {market.surfaces[name].failures[0]}'
+        expected = "a volatility surface that passes its checks"
+        here = place(f"underlying:{name}")
+        if accepted:
+            mend = "Priced from it all the same, as asked, and marked; correct the quotes in the volatilities table."
+            yield warning(here, "failing-surface", found, expected, mend)
+        else:
+            mend = (
+                "Correct the quotes in the volatilities table, or accept failing surfaces for this run "
+                "(--accept-failing-surfaces): the trade is then priced and marked."
+            )
+            yield error(here, "failing-surface", found, expected, mend)
 
 
 def _price(underlying: Underlying, market: Market, here: Place | None) -> Iterator[Issue]:

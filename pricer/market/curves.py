@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from bisect import bisect_left
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import date
 from itertools import pairwise
 
@@ -21,7 +21,8 @@ class DiscountCurve:
     last date it stays what it was before it. ``collateral`` is empty for the currency's
     standard curve. ``calendar`` is the one its tenors were counted on; interpolation
     does not need it. ``dates`` are the quoted dates after the valuation date; ``times`` and
-    ``log_discount_factors`` begin with the valuation date itself (0 and 0).
+    ``log_discount_factors`` begin with the valuation date itself (0 and 0). ``quotes`` are the deposits
+    and swaps that it was made from, if it was.
 
     Use the named constructors, which check their input.
     """
@@ -35,6 +36,7 @@ class DiscountCurve:
     dates: tuple[date, ...]
     times: tuple[float, ...]
     log_discount_factors: tuple[float, ...]
+    quotes: tuple[RateQuote, ...] = ()
 
     @classmethod
     def from_zero_rates(
@@ -126,7 +128,7 @@ class DiscountCurve:
             raise ValueError(
                 f"curve {curve_id}: the {worst.quote} quoted at {worst.quote.rate:g} is repriced at {worst.rate:.12g}"
             )
-        return curve
+        return replace(curve, quotes=tuple(quotes))
 
     @classmethod
     def _from_logs(

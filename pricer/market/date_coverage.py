@@ -115,16 +115,22 @@ def _curves_reach(trade: Trade, market: Market, place: Locate) -> Iterator[Issue
 def _volatilities_reach(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
     expiry = trade.contract.expiry_date
     for name in dict.fromkeys(trade.contract.underlyings):
-        underlying = market.underlyings.get(name)
-        volatility = underlying.volatility if underlying is not None else None
-        if volatility is not None and volatility.is_extrapolated(expiry):
+        last = _last_volatility(name, market)
+        if last is not None and expiry > last:
             yield warning(
                 place("expiry_date"),
                 "beyond-volatility",
-                f'expiry date {expiry}, after {volatility.last_date}, the last volatility date of underlying "{name}"',
+                f'expiry date {expiry}, after {last}, the last volatility date of underlying "{name}"',
                 "volatilities that reach the expiry date",
                 "The last volatility is used beyond its date; add a later expiry to the volatilities table.",
             )
+
+
+def _last_volatility(name: str, market: Market) -> date | None:
+    if name in market.surfaces:
+        return market.surfaces[name].surface.last_date
+    underlying = market.underlyings.get(name)
+    return underlying.volatility.last_date if underlying is not None and underlying.volatility is not None else None
 
 
 def _holidays(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:

@@ -1,4 +1,4 @@
-"""Implied volatility of one underlying by expiry and strike: SVI slices, ordered in time."""
+"""Implied volatility of one underlying by expiry and strike: slices by expiry, ordered in time."""
 
 from __future__ import annotations
 
@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from pricer.market.calendars import year_fraction
+from pricer.market.corrected_slice import CorrectedSlice, Slice, base_of, cubic_derivatives
 from pricer.market.smile_quotes import Smile, SmileParameters, SmileQuotes
 from pricer.market.svi import SviSlice, butterfly
 from pricer.market.svi_fit import fit_slice, is_admissible
@@ -45,9 +46,11 @@ class ImpliedSurface:
     valuation_date: date
     dates: tuple[date, ...]
     times: tuple[float, ...]
-    slices: tuple[SviSlice, ...]
+    slices: tuple[Slice, ...]
     quotes: tuple[SmileQuotes, ...] = ()
     _table: Array = field(init=False, repr=False)  # (5, n + 1) raw parameters, slice 0 without variance
+    _places: Array = field(init=False, repr=False)  # (3, n + 1) start and width of corrections, index of the last cell
+    _cells: Array = field(init=False, repr=False)  # (n + 1, largest number of cells, 4); one cell if there are none
 
     def __post_init__(self) -> None:
         if not self.slices or not len(self.dates) == len(self.times) == len(self.slices):
@@ -55,15 +58,25 @@ class ImpliedSurface:
         for earlier, later in pairwise((0.0, *self.times)):
             if later <= earlier:
                 raise ValueError(f"expiries must increase after the valuation date {self.valuation_date}")
-        rows = [(0.0, 0.0, 0.0, 0.0, 1.0), *((s.a, s.b, s.rho, s.m, s.sigma) for s in self.slices)]
+        bases = map(base_of, self.slices)
+        rows = [(0.0, 0.0, 0.0, 0.0, 1.0), *((s.a, s.b, s.rho, s.m, s.sigma) for s in bases)]
         object.__setattr__(self, "_table", np.array(rows).T)
+        splines = {i: s for i, s in enumerate(self.slices, 1) if isinstance(s, CorrectedSlice)}
+        places = np.tile([[0.0], [1.0], [0.0]], len(rows))
+        cells = np.zeros((len(rows), max((s.cells.shape[0] for s in splines.values()), default=1), 4))
+        for i, spline in splines.items():
+            places[:, i] = spline.start, spline.width, spline.cells.shape[0] - 1.0
+            cells[i, : spline.cells.shape[0]] = spline.cells
+        object.__setattr__(self, "_places", places)
+        object.__setattr__(self, "_cells", cells)
 
     @classmethod
     def from_quotes(cls, valuation_date: date, smiles: Sequence[Smile]) -> ImpliedSurface:
         """Slices fitted from short to long, each without butterfly arbitrage and above the one before.
 
         Total variance is therefore ordered in time within :data:`svi_fit.RANGE` standard deviations of each
-        expiry's forward. Quotes that contradict this are missed by as much as needed: ``fit_errors`` says by
+        expiry's forward. Slices are SVI, with a smooth correction where quotes are
+        not SVI-shaped. Quotes that contradict this are missed by as much as needed: ``fit_errors`` says by
         how much, :mod:`pricer.market.arbitrage` where. A smile of parameters is taken as is where it is free of
         arbitrage, else fitted like nine quotes drawn from it.
         Raises ValueError unless expiry dates increase strictly after the valuation date.
@@ -83,7 +96,7 @@ class ImpliedSurface:
             for smile, time in zip(smiles, times, strict=True)
         ]
         totals = [(q.log_moneyness, q.volatilities**2 * time) for q, time in zip(quotes, times, strict=True)]
-        slices: list[SviSlice] = []
+        slices: list[Slice] = []
         for i, (smile, quote, time) in enumerate(zip(smiles, quotes, times, strict=True)):
             before = slices[-1] if slices else None
             stated = smile.slice(time) if isinstance(smile, SmileParameters) else None
@@ -159,4 +172,12 @@ class ImpliedSurface:
         a, b, rho, m, sigma = self._table[:, which]
         z = k - m
         root = np.sqrt(z * z + sigma * sigma)
-        return a + b * (rho * z + root), b * (rho + z / root), b * sigma * sigma / root**3
+        variance, slope, curvature = a + b * (rho * z + root), b * (rho + z / root), b * sigma * sigma / root**3
+        if self._cells.shape[1] == 1:
+            return variance, slope, curvature
+        start, width, last = self._places[:, which]
+        z = (k - start) / width
+        cell = np.clip(np.floor(z), -1.0, last - 1.0)
+        p = self._cells[which, cell.astype(np.intp) + 1]
+        value, first, second = cubic_derivatives(z - cell, p[..., 0], p[..., 1], p[..., 2], p[..., 3])
+        return variance + value, slope + first / width, curvature + second / width**2

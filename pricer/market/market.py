@@ -14,13 +14,16 @@ from pricer.core.issues import Issue
 from pricer.core.source import SourceFile
 from pricer.market.affine_price import AffinePrice
 from pricer.market.agreements import Agreement
+from pricer.market.checked_surface import CheckedSurface
 from pricer.market.correlation import CorrelationMatrix
 from pricer.market.credit import HazardCurve
 from pricer.market.currency_conversion import composite, quanto, with_rates
 from pricer.market.curves import DiscountCurve
 from pricer.market.funding import FundingCurve
 from pricer.market.fx import FxRates, MissingRate, currencies_of
+from pricer.market.implied_surface import ImpliedSurface
 from pricer.market.joint_lognormal import JointLognormal
+from pricer.market.market_quotes import MarketQuotes
 from pricer.market.repo import RepoCurve
 from pricer.market.underlying import Underlying
 from pricer.market.volatility import VolatilityCurve, covariance
@@ -38,12 +41,16 @@ class Market:
     """The market as it stood at the end of ``valuation_date``.
 
     ``curves`` is keyed by (currency, collateral), with collateral "" for the currency's
-    standard curve, ``repo`` by underlying, ``credit`` by name, ``agreements`` by netting set. The
-    correlation matrix holds underlyings and currency pairs ("EURUSD", either way round).
+    standard curve, ``repo`` and ``surfaces`` by underlying, ``credit`` by name, ``agreements`` by
+    netting set. An underlying with a surface has no volatility of its own. The correlation matrix
+    holds underlyings and currency pairs ("EURUSD", either way round).
     ``rejected`` says of underlyings and curves (by their ids) and of the correlation matrix
     (as ``CORRELATIONS``) that were given but cannot be used, why, of exchange rates by their
     pairs, and of an underlying left out of the matrix as ``CORRELATIONS:ID``. An underlying
-    that lost only its volatility may stand in both ``underlyings`` and ``rejected``.
+    that lost only its volatility may stand in both ``underlyings`` and ``rejected``. Volatilities of
+    exchange rates stand there as "fx_volatilities:EURUSD", names as "credit:NAME", agreements as
+    "agreements:NETTING_SET" and the funding curve as "funding".
+    ``quotes`` are those from which curves, hazard rates and correlations were made.
     """
 
     name: str
@@ -56,10 +63,12 @@ class Market:
     issues: tuple[Issue, ...] = ()
     sources: tuple[SourceFile, ...] = ()
     rejected: Mapping[str, tuple[Issue, ...]] = field(default_factory=dict)
+    surfaces: Mapping[str, CheckedSurface] = field(default_factory=dict)
     repo: Mapping[str, RepoCurve] = field(default_factory=dict)
     credit: Mapping[str, HazardCurve] = field(default_factory=dict)
     funding: FundingCurve | None = None
     agreements: Mapping[str, Agreement] = field(default_factory=dict)
+    quotes: MarketQuotes = field(default_factory=MarketQuotes)
 
     def growth_curve(self, underlying_id: str) -> DiscountCurve:
         """The curve at which the spot grows: the mid of the underlying's repo rates, if it has any, else the
@@ -86,6 +95,16 @@ class Market:
         """
         return self.affine_price(underlying_id).at(day).forward
 
+    def spot_in(self, underlying_id: str, currency: str, conversion: Conversion | None) -> float:
+        """Tonight's price as a trade in ``currency`` sees it: a composite converts it, others take its number.
+
+        Raises :class:`MissingMarketDataError` and MissingRate.
+        """
+        underlying = self._underlying(underlying_id)
+        if conversion is Conversion.COMPOSITE:
+            return underlying.spot * self.fx.rate(underlying.currency, currency)
+        return underlying.spot
+
     def affine_levels(
         self, underlying_ids: Sequence[str], day: date
     ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
@@ -97,13 +116,26 @@ class Market:
         levels = [self.affine_price(name).at(day) for name in underlying_ids]
         return np.array([level.scale for level in levels]), np.array([level.floor for level in levels])
 
+    def has_volatility(self, underlying_id: str) -> bool:
+        """Whether options on the underlying can be priced."""
+        underlying = self.underlyings.get(underlying_id)
+        return underlying_id in self.surfaces or (underlying is not None and underlying.volatility is not None)
+
     def pure_volatility(self, underlying_id: str) -> VolatilityCurve:
-        """Volatilities of the underlying's random part X: its own without cash dividends to come.
+        """Volatilities at the forward of the underlying's random part X: its own without cash dividends to come.
 
         Raises :class:`MissingMarketDataError`, and ValueError where no X has the quoted volatilities.
         """
+        if underlying_id in self.surfaces:
+            return self.surfaces[underlying_id].atm_curve
         volatility = self._volatility(underlying_id)
         return self.affine_price(underlying_id).pure_volatility(volatility)
+
+    def implied_surface(self, underlying_id: str) -> ImpliedSurface:
+        """Implied volatility of the underlying's random part X; raises as :meth:`pure_volatility`."""
+        if underlying_id in self.surfaces:
+            return self.surfaces[underlying_id].surface
+        return ImpliedSurface.flat(self.pure_volatility(underlying_id))
 
     def log_covariance(self, names: Sequence[str], day: date) -> NDArray[np.float64]:
         """Covariance from the valuation date to ``day``, not annualised: (n, n).
@@ -124,6 +156,23 @@ class Market:
         out: NDArray[np.float64] = 0.5 * (spread + spread.T)  # symmetric to the last bit
         return out
 
+    def driver_correlation(self, names: Sequence[str], day: date) -> NDArray[np.float64]:
+        """Correlation of the Brownian motions that drive X of underlyings and the rates of currency pairs: (n, n).
+
+        Names as for :meth:`log_covariance`, which it is the constant correlation of. Where a pair is a chain of
+        pairs, whose own would depend on time, all are correlations of the logarithms on ``day`` instead.
+        """
+        pairs = [name for name in names if name not in self.underlyings]
+        factors = {pair: self._fx_factors(pair) for pair in pairs}
+        if all(len(chain) == 1 for chain in factors.values()):
+            signs = np.array([next(iter(factors[name].values())) if name in factors else 1.0 for name in names])
+            held = [next(iter(factors[name])) if name in factors else name for name in names]
+            return self._correlation(held) * np.outer(signs, signs)
+        spread = self.log_covariance(names, day)
+        root = np.sqrt(np.diag(spread))
+        out: NDArray[np.float64] = spread / np.outer(root, root)
+        return out
+
     def joint_lognormal(
         self,
         underlying_ids: Sequence[str],
@@ -139,9 +188,9 @@ class Market:
         underlyings must share one. Those of another currency need a ``conversion``: "quanto"
         keeps the number of the price, "composite" converts it at the date's exchange rate.
 
-        With ``pure`` the law is that of the prices above their floors (see :meth:`affine_levels`,
-        whose floors are to be added); without it, cash dividends after ``expiry_date`` are a ValueError,
-        as they are for a composite in any case, which converts its floor at a random rate.
+        With ``pure`` the law is that of the prices above their floors (see :meth:`affine_levels`, whose
+        floors are to be added, a composite's converted at the same rate); without it, cash dividends after
+        ``expiry_date`` are a ValueError.
 
         Raises :class:`MissingMarketDataError`, and ValueError for a date before the valuation date and
         for currencies that differ without a conversion.
@@ -150,12 +199,11 @@ class Market:
         target = _payment_currency(underlying_ids, currencies, payment_currency, conversion)
         is_composite = conversion is not None and Conversion(conversion) is Conversion.COMPOSITE
         scales, floors = self.affine_levels(underlying_ids, expiry_date)
-        for name, currency, floor in zip(underlying_ids, currencies, floors, strict=True):
-            converts = is_composite and currency != target
-            if floor > 0.0 and (converts or not pure):
+        for name, floor in zip(underlying_ids, floors, strict=True):
+            if floor > 0.0 and not pure:
                 raise ValueError(
                     f"the price of {name} on {expiry_date} is not lognormal: it holds {floor:.6g} of cash dividends "
-                    + ("still to come, which a composite converts" if converts else "still to come")
+                    "still to come"
                 )
         abroad = sorted({currency for currency in currencies if currency != target})
         found = self.log_covariance([*underlying_ids, *(currency + target for currency in abroad)], expiry_date)

@@ -7,9 +7,10 @@ from collections.abc import Iterator
 import numpy as np
 
 from pricer.contracts.book import Trade
+from pricer.contracts.option import Conversion
 from pricer.core.issues import Issue
 from pricer.market.findings import Locate, warning
-from pricer.market.market import Market, MissingMarketDataError
+from pricer.market.market import Market
 
 #: Amounts that differ from the market's by more than this factor are reported.
 PLAUSIBLE_FACTOR = 5.0
@@ -26,12 +27,15 @@ def size_coverage(trade: Trade, market: Market, place: Locate) -> Iterator[Issue
 def _fixings(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
     contract = trade.contract
     for name, fixing in zip(contract.underlyings, contract.reference_levels, strict=True):
-        underlying = market.underlyings.get(name)
-        if underlying is not None and _differ(fixing, underlying.spot):
+        try:
+            spot = market.spot_in(name, trade.currency, contract.conversion)
+        except LookupError:  # what is missing is told elsewhere
+            continue
+        if _differ(fixing, spot):
             yield warning(
                 place(f"initial_fixing:{name}") or place(f"underlying:{name}"),
                 "fixing-far-from-spot",
-                f'initial fixing {fixing:g} of underlying "{name}", whose spot is {underlying.spot:g}',
+                f'initial fixing {fixing:g} of underlying "{name}", whose spot is {spot:g}',
                 f"a fixing within a factor of {PLAUSIBLE_FACTOR:g} of the spot",
                 "Pence against pounds, or a split? Check both; they are used as given.",
             )
@@ -43,8 +47,8 @@ def _strike(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
     if strike == 0.0 or min(contract.aggregate.weights) < 0.0:
         return
     try:
-        forwards = np.array([market.forward(name, contract.expiry_date) for name in contract.underlyings])
-    except (MissingMarketDataError, ValueError):  # what is missing, and an expiry in the past, are told elsewhere
+        forwards = np.array([_forward(name, trade, market) for name in contract.underlyings])
+    except (LookupError, ValueError):  # what is missing, and an expiry in the past, are told elsewhere
         return
     level = float(contract.aggregate(forwards))
     if _differ(strike, level):
@@ -55,6 +59,14 @@ def _strike(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
             f"a strike within a factor of {PLAUSIBLE_FACTOR:g} of the aggregate at forwards",
             "Pence against pounds, or a split? Check the strike, the weights and the spots; they are used as given.",
         )
+
+
+def _forward(name: str, trade: Trade, market: Market) -> float:
+    expiry = trade.contract.expiry_date
+    forward = market.forward(name, expiry)
+    if trade.contract.conversion is Conversion.COMPOSITE:
+        forward *= market.fx_forward(market.underlyings[name].currency, trade.currency, expiry)
+    return forward
 
 
 def _differ(a: float, b: float) -> bool:

@@ -13,18 +13,36 @@ from pricer.market.svi import SviSlice
 
 Array = NDArray[np.float64]
 
+#: Units to which volatilities are rounded in practice, from 0.1 vol points down; what none of them divides is exact.
+ROUNDINGS = (1e-3, 5e-4, 1e-4, 5e-5, 1e-5)
+#: Errors in volatility that are not worth a bend of the smile: half the quotes' rounding, but within these.
+LEAST_ALLOWANCE, LARGEST_ALLOWANCE = 2.5e-5, 2e-4
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class SmileQuotes:
-    """Implied volatilities (n,) of one expiry at log-moneyness (n,), increasing; see :class:`SviSlice` for k."""
+    """Implied volatilities (n,) of one expiry at log-moneyness (n,), increasing; see :class:`SviSlice` for k.
+
+    ``rounding`` : the unit to which they were rounded, 0 for none.
+    """
 
     expiry_date: date
     log_moneyness: Array
     volatilities: Array
+    rounding: float = 0.0
+
+    @property
+    def allowance(self) -> float:
+        """The error in volatility that a quote near the forward may be met to."""
+        return min(max(0.5 * self.rounding, LEAST_ALLOWANCE), LARGEST_ALLOWANCE)
 
     @classmethod
-    def of(cls, expiry_date: date, log_moneyness: ArrayLike, volatilities: ArrayLike) -> SmileQuotes:
+    def of(
+        cls, expiry_date: date, log_moneyness: ArrayLike, volatilities: ArrayLike, rounding: float | None = None
+    ) -> SmileQuotes:
         """Checked, and sorted by log-moneyness. Volatilities are annualised, 0.20 for 20 %.
+
+        ``rounding`` is read off the volatilities by :func:`rounding_of` where it is not given.
 
         Raises ValueError unless there is one volatility above 0 per log-moneyness, all are finite
         and no log-moneyness comes twice.
@@ -38,7 +56,7 @@ class SmileQuotes:
         k, volatility = k[order], volatility[order]
         if np.any(np.diff(k) <= 0.0):
             raise ValueError(f"{expiry_date} has two volatilities for one strike")
-        return cls(expiry_date, k, volatility)
+        return cls(expiry_date, k, volatility, rounding_of(volatility) if rounding is None else rounding)
 
 
 @dataclass(frozen=True, slots=True)
@@ -72,6 +90,15 @@ class SmileParameters:
         """Nine volatilities of :meth:`slice` within two standard deviations of the forward."""
         k = np.linspace(-2.0, 2.0, 9) * self.volatility * math.sqrt(time)
         return SmileQuotes(self.expiry_date, k, np.sqrt(self.slice(time).total_variance(k) / time))
+
+
+def rounding_of(volatilities: Array) -> float:
+    """The largest of ``ROUNDINGS`` of which all volatilities are multiples; 0 if there is none."""
+    for unit in ROUNDINGS:
+        multiples = volatilities / unit
+        if np.all(np.abs(multiples - np.round(multiples)) < 1e-6):
+            return unit
+    return 0.0
 
 
 #: Either way of quoting one expiry.

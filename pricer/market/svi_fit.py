@@ -1,4 +1,4 @@
-"""A raw SVI slice through one expiry's quotes, free of butterfly arbitrage and above the expiry before it."""
+"""A slice through one expiry's quotes, free of butterfly arbitrage and above the expiry before it."""
 
 from __future__ import annotations
 
@@ -10,10 +10,10 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from pricer.market import svi_kernel
+from pricer.market.corrected_slice import Slice, base_of
+from pricer.market.slice_correction import corrected
 from pricer.market.smile_quotes import SmileQuotes
 from pricer.market.svi import SviSlice
-from pricer.market.svi_kernel import NARROWEST, WIDEST
 from pricer.market.svi_repair import is_butterfly_free, repaired
 
 Array = NDArray[np.float64]
@@ -36,13 +36,43 @@ SMALL_LIFT = 5e-3
 OUTLIER = 0.005
 #: ... and left out if the others' error then falls below this share.
 SPOILT = 0.3
+#: Weights of quotes far from the forward fall to this.
+LEAST_WEIGHT = 0.1
+#: Up to as many standard deviations (a call of 10 or 90 delta lies nearer) quotes are met alike; beyond, less closely.
+NEAR = 1.5
+#: With fewer quotes a correction would be drawn by nothing; SVI's five numbers are enough for them.
+LEAST_QUOTES = 5
+#: Slices apart by this share of the variance at the forward on all of ``FINE_GRID`` do not cross between its points:
+#: the narrowest slices bend by a fiftieth of that over its steps.
+CLEARLY_APART = 0.02
 _RIDGE = 3e-4
 
 
 def fit_slice(
-    quotes: SmileQuotes, time: float, before: SviSlice | None = None, later: Sequence[tuple[Array, Array]] = ()
-) -> SviSlice:
-    """The slice nearest to ``quotes`` of an expiry in ``time`` years, in weighted squares of volatility.
+    quotes: SmileQuotes, time: float, before: Slice | None = None, later: Sequence[tuple[Array, Array]] = ()
+) -> Slice:
+    """The SVI slice of :func:`fit_svi`, brought to the quotes by a smooth correction where it misses them.
+
+    Quotes that were left out stay so. See :mod:`pricer.market.slice_correction` for how far a correction may go.
+    """
+    base, weights = fit_svi(quotes, time, before, later)
+    kept = weights > 0.0
+    k, volatilities = quotes.log_moneyness[kept], quotes.volatilities[kept]
+    if k.size < LEAST_QUOTES:
+        return base
+    variance = float(base.total_variance(0.0))
+    far = np.maximum(np.abs(k) / math.sqrt(variance) - NEAR, 0.0)
+    fade = np.maximum(np.exp(-0.25 * far * far), LEAST_WEIGHT)
+    smile = corrected(base, k, volatilities, quotes.allowance / fade, time, before, FINE_GRID)
+    return smile if smile is base or is_admissible(smile, before) else base
+
+
+def fit_svi(
+    quotes: SmileQuotes, time: float, before: Slice | None = None, later: Sequence[tuple[Array, Array]] = ()
+) -> tuple[SviSlice, Array]:
+    """The SVI slice nearest to ``quotes`` of an expiry in ``time`` years, in weighted squares of volatility.
+
+    With the weights of the quotes (n,), 0 for those left out.
 
     Weights fall with distance from the forward like a strike's vega, to a tenth at most; a quote that alone
     spoils the fit of the others is left out. ``before`` is the slice of the expiry before: total variance is kept
@@ -58,11 +88,11 @@ def fit_slice(
     if np.ptp(volatilities) <= 1e-12:
         flat = SviSlice.flat(float(variances.mean()))
         if before is None or np.all(before.total_variance(_spread(flat)) <= flat.a):
-            return flat
+            return flat, np.ones(k.size)
     prior = _prior(k, variances)
     s = math.sqrt(float(prior.total_variance(0.0)))
     x, roots = k / s, np.sqrt(variances) / s
-    weights = np.maximum(np.exp(-0.25 * k * k / variances), 0.1)
+    weights = np.maximum(np.exp(-0.25 * k * k / variances), LEAST_WEIGHT)
     weights /= math.sqrt(float(weights @ weights))
     floor = np.zeros(GRID.size) if before is None else np.sqrt(np.maximum(before.total_variance(GRID * s), 0.0)) / s
     wings = np.zeros(2) if before is None else np.minimum(np.array(before.wings) / s, 0.99 * _steepest(s))
@@ -71,22 +101,24 @@ def fit_slice(
     bounds = (GRID, floor, later_k / s, np.sqrt(later_w) / s, s * s, _steepest(s), wings)
     anchor = _free(prior, s)
     starts = [anchor, *(_free(start, s) for start in _starts(x, roots, weights, s))]
+    from pricer.market import svi_kernel  # numba is needed only from here on
+
     found: list[SviSlice | None] = []
     for stiffness in (1.0, 10.0, 100.0):
         settings = (*bounds, anchor, _RIDGE, stiffness)
         p = min((svi_kernel.fit(q, x, roots, weights, *settings) for q in starts), key=_cost)[0]
-        p = _without_outliers(p, x, roots, weights, settings, s / math.sqrt(time))
+        p, kept = _without_outliers(p, x, roots, weights, settings, s / math.sqrt(time))
         smile = _slice(p, s)
         raised = lifted(smile, before)
         if raised is not None and _is_free(raised):
             if raised.a - smile.a <= SMALL_LIFT * s * s:
-                return raised
+                return raised, kept
             found.append(raised)
         starts = [p]
     found.append(lifted(repaired(smile, time, _reach(smile)), before))
     if before is not None:
-        found.append(lifted(_stretched(before, s * s), before))
-    return _nearest([smile for smile in found if smile is not None], k, roots * s, weights)
+        found.append(lifted(_stretched(base_of(before), s * s), before))
+    return _nearest([smile for smile in found if smile is not None], k, roots * s, weights), kept
 
 
 def _nearest(candidates: list[SviSlice], k: Array, roots: Array, weights: Array) -> SviSlice:
@@ -95,23 +127,29 @@ def _nearest(candidates: list[SviSlice], k: Array, roots: Array, weights: Array)
     return min(sound, key=lambda smile: float(np.sum((weights * (np.sqrt(smile.total_variance(k)) - roots)) ** 2)))
 
 
-def is_admissible(smile: SviSlice, before: SviSlice | None) -> bool:
+def is_admissible(smile: Slice, before: Slice | None) -> bool:
     """Free of butterfly arbitrage and nowhere below the slice ``before``, within ``RANGE`` standard deviations."""
     return _is_free(smile) and (before is None or excess(before, smile)[1] <= 0.0)
 
 
-def excess(before: SviSlice, later: SviSlice) -> tuple[float, float]:
-    """(k, amount) where the earlier slice lies furthest above the later one, within RANGE of the later."""
+def excess(before: Slice, later: Slice) -> tuple[float, float]:
+    """(k, amount) where the earlier slice lies furthest above the later one, within RANGE of the later.
+
+    Found to the grid's spacing only, where they are clearly apart.
+    """
     k = _spread(later)
+    apart = -CLEARLY_APART * float(later.total_variance(0.0))
     for _ in range(3):  # closing in: between the points of the grid two hyperbolas may still cross
         lack = before.total_variance(k) - later.total_variance(k)
         i = int(np.argmax(lack))
         at, most = float(k[i]), float(lack[i])
+        if most < apart:
+            break
         k = np.linspace(k[max(i - 1, 0)], k[min(i + 1, k.size - 1)], 21)
     return at, most
 
 
-def lifted(later: SviSlice, before: SviSlice | None) -> SviSlice | None:
+def lifted(later: SviSlice, before: Slice | None) -> SviSlice | None:
     """``later`` raised at all strikes by what it lacks to lie above ``before``; None where wings cross far out."""
     for _ in range(12):  # a higher slice is also compared further out
         lack = 0.0 if before is None else excess(before, later)[1]
@@ -128,16 +166,16 @@ def _stretched(before: SviSlice, variance: float) -> SviSlice:
     return SviSlice(ratio * before.a, root * before.b, before.rho, root * before.m, root * before.sigma)
 
 
-def _is_free(smile: SviSlice) -> bool:
+def _is_free(smile: Slice) -> bool:
     return is_butterfly_free(smile, _reach(smile))
 
 
-def _reach(smile: SviSlice) -> float:
+def _reach(smile: Slice) -> float:
     """A little beyond ``RANGE``, so that lifting a slice a little leaves it checked."""
     return 1.05 * RANGE * math.sqrt(float(smile.total_variance(0.0)))
 
 
-def _spread(smile: SviSlice) -> Array:
+def _spread(smile: Slice) -> Array:
     out: Array = FINE_GRID * math.sqrt(float(smile.total_variance(0.0)))
     return out
 
@@ -181,11 +219,14 @@ def _starts(x: Array, roots: Array, weights: Array, s: float) -> list[SviSlice]:
 
 def _free(smile: SviSlice, s: float) -> Array:
     """The five free numbers of the kernel for a slice, moved inside their range."""
+    from pricer.market import svi_kernel
+
     left, right = smile.wings
     bound = _steepest(s)
     shares = [min(max(wing / s / bound, 1e-6), 0.99) for wing in (left, right)]
     width = smile.sigma / s if smile.b > 0.0 else 1.0
-    width = min(max(math.log(width / NARROWEST) / math.log(WIDEST / NARROWEST), 0.01), 0.95)
+    narrowest, widest = svi_kernel.NARROWEST, svi_kernel.WIDEST
+    width = min(max(math.log(width / narrowest) / math.log(widest / narrowest), 0.01), 0.95)
     return np.array(
         [
             math.log(max(smile.minimum / (s * s), 1e-4)),
@@ -202,18 +243,24 @@ def _steepest(s: float) -> float:
 
 
 def _slice(p: Array, s: float) -> SviSlice:
+    from pricer.market import svi_kernel
+
     a, b, rho, m, sigma = svi_kernel.scaled_slice(p, _steepest(s))
     return SviSlice(s * s * a, s * b, rho, s * m, s * sigma)
 
 
 def _without_outliers(
     p: Array, x: Array, roots: Array, weights: Array, rest: tuple[Any, ...], to_volatility: float
-) -> Array:
-    """The fit without those quotes that alone spoil it: at most every fourth, and four always remain.
+) -> tuple[Array, Array]:
+    """The fit without those quotes that alone spoil it, and the weights without them.
+
+    At most every fourth is left out, and four always remain.
 
     While some quote is missed by more than ``OUTLIER``, the one is left out without which the others' weighted
     root mean square falls most, if it falls to less than ``SPOILT``.
     """
+    from pricer.market import svi_kernel
+
     kept = weights.copy()
     for _ in range(min(x.size // 4, x.size - 5)):
         errors = kept * (_scaled_roots(p, x, rest) - roots)
@@ -229,11 +276,13 @@ def _without_outliers(
         if least >= SPOILT**2 * float(errors @ errors):
             break
         p, kept = q, others
-    return p
+    return p, kept
 
 
 def _scaled_roots(p: Array, x: Array, rest: tuple[Any, ...]) -> Array:
     """sqrt(W) of the kernel's free numbers at ``x``; ``rest`` as the kernel takes it, the slopes' bound sixth."""
+    from pricer.market import svi_kernel
+
     smile = SviSlice(*svi_kernel.scaled_slice(p, rest[5]))
     out: Array = np.sqrt(np.maximum(smile.total_variance(x), 0.0))
     return out

@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import minimize_scalar
 
+from pricer.market.corrected_slice import CorrectedSlice, Slice
 from pricer.market.svi import JumpWings, SviSlice
 
 Array = NDArray[np.float64]
@@ -19,19 +20,24 @@ _POINTS = 301
 TOLERANCE = 1e-10
 
 
-def least_butterfly(smile: SviSlice, reach: float) -> tuple[float, float]:
-    """(k, g) where g is least within ``reach`` of the forward in log-moneyness."""
+def least_butterfly(smile: Slice, reach: float, interesting: float = math.inf) -> tuple[float, float]:
+    """(k, g) where g is least within ``reach`` of the forward in log-moneyness.
+
+    Found to the grid's spacing only, where g is above ``interesting`` on all of a dense grid.
+    """
     k = _points(smile, reach)
     g = smile.butterfly(k)
     i = int(np.argmin(g))
     left, right = k[max(i - 1, 0)], k[min(i + 1, k.size - 1)]
     if g[i] == 1.0 == g.max():
         return 0.0, 1.0
+    if g[i] > interesting:
+        return float(k[i]), float(g[i])
     found = minimize_scalar(lambda at: float(smile.butterfly(at)), bounds=(left, right), method="bounded")
     return (float(found.x), float(found.fun)) if found.fun < g[i] else (float(k[i]), float(g[i]))
 
 
-def is_butterfly_free(smile: SviSlice, reach: float) -> bool:
+def is_butterfly_free(smile: Slice, reach: float) -> bool:
     """Whether g >= 0 within ``reach``, on a grid dense at the forward and at the slice's own centre."""
     return bool(np.all(smile.butterfly(_points(smile, reach)) >= -TOLERANCE))
 
@@ -98,7 +104,10 @@ def _within_lee(smile: SviSlice) -> SviSlice:
     return replace(flatter, a=flatter.a + max(shift, 0.0))
 
 
-def _points(smile: SviSlice, reach: float) -> Array:
+def _points(smile: Slice, reach: float) -> Array:
+    if isinstance(smile, CorrectedSlice):
+        inner = np.linspace(max(smile.start, -reach), min(smile.end, reach), 4 * smile.coefficients.size + 13)
+        return np.union1d(_points(smile.base, reach), inner)
     bend = np.sinh(np.linspace(-6.0, 6.0, _POINTS)) / math.sinh(6.0)
     centre = smile.m + 20.0 * smile.sigma * bend
     out: Array = np.unique(np.concatenate([reach * bend, centre[np.abs(centre) <= reach]]))

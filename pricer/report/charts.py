@@ -33,7 +33,7 @@ def bar_chart(title: str, unit: str, names: Reference, values: Reference, larges
     series.invertIfNegative = False
     chart.series.append(series)
     series.cat = AxDataSource(strRef=StrRef(f=str(names)))
-    _dress(chart, f"{title} ({unit})", x_title="", y_title=unit)
+    dress(chart, f"{title} ({unit})", x_title="", y_title=unit)
     chart.legend = None
     chart.x_axis.scaling.orientation = "maxMin"  # the first row of the table on top
     chart.x_axis.tickLblPos = "low"  # names stay left of negative bars
@@ -56,27 +56,24 @@ def scatter_chart(
     The two clouds differ in shape and lightness, not in hue alone.
     """
     from openpyxl.chart import ScatterChart
-    from openpyxl.chart.legend import Legend, LegendEntry
 
     chart = ScatterChart()
     chart.style = 2
     chart.scatterStyle = "lineMarker"
-    chart.series.append(_cloud(x, inside, "agrees", "circle", 4, BLUE))
+    chart.series.append(cloud(x, inside, "agrees", "circle", 4, BLUE))
     if outside is not None:
-        chart.series.append(_cloud(x, outside, "differs", "triangle", 9, ORANGE))
-    chart.series.extend(_limit(*ends) for ends in limits)
-    _dress(chart, title, x_title, y_title)
+        chart.series.append(cloud(x, outside, "differs", "triangle", 9, ORANGE))
+    chart.series.extend(limit(*ends) for ends in limits)
+    dress(chart, title, x_title, y_title)
     chart.x_axis.number_format = "#,##0.##"
     chart.y_axis.number_format = "#,##0.0"
     chart.x_axis.tickLblPos = chart.y_axis.tickLblPos = "low"  # clear of the points
-    chart.legend = Legend()
-    chart.legend.position = "b"
-    chart.legend.txPr = _properties(800)
-    chart.legend.legendEntry = [LegendEntry(idx=len(chart.series) - 1, delete=True)]  # one limit is named for both
+    legend_below(chart, unnamed=(len(chart.series) - 1,))  # one limit is named for both
     return chart
 
 
-def _cloud(x: Reference, y: Reference, name: str, symbol: str, size: int, color: str) -> Any:
+def cloud(x: Reference, y: Reference, name: str, symbol: str, size: int, color: str) -> Any:
+    """The points (x, y), not joined."""
     from openpyxl.chart import Series
 
     series = Series(y, x, title=name)
@@ -85,19 +82,22 @@ def _cloud(x: Reference, y: Reference, name: str, symbol: str, size: int, color:
     series.marker.graphicalProperties.solidFill = color
     series.marker.graphicalProperties.line.solidFill = color if symbol == "circle" else INK
     series.graphicalProperties.line.noFill = True
+    series.smooth = False  # some programs take the lack of a word for yes
     return series
 
 
-def _limit(x: Reference, y: Reference) -> Any:
+def limit(x: Reference, y: Reference, name: str = "tolerance") -> Any:
+    """A dashed line through the points (x, y)."""
     from openpyxl.chart import Series
 
-    series = Series(y, x, title="tolerance")
+    series = Series(y, x, title=name)
     series.marker.symbol = "none"
-    series.graphicalProperties = _line(FAINT, 15_000, "dash")
+    series.graphicalProperties = line(FAINT, 15_000, "dash")
+    series.smooth = False
     return series
 
 
-def _line(color: str, width: int | None = None, dash: str | None = None) -> Any:
+def line(color: str, width: int | None = None, dash: str | None = None) -> Any:
     """A line's colour, width in EMU (12,700 to a point) and dash."""
     from openpyxl.chart.shapes import GraphicalProperties
 
@@ -108,17 +108,28 @@ def _line(color: str, width: int | None = None, dash: str | None = None) -> Any:
     return properties
 
 
-def _dress(chart: Any, title: str, x_title: str, y_title: str) -> None:
+def dress(chart: Any, title: str, x_title: str, y_title: str) -> None:
+    """Titles, axes and frame as all charts have them."""
     chart.title = _text(title, 1000, bold=True)
     for axis, name in ((chart.x_axis, x_title), (chart.y_axis, y_title)):
         axis.delete = False
         axis.title = _text(name, 800) if name else None
         axis.txPr = _properties(800)
-        axis.graphicalProperties = _line(FAINT)
+        axis.graphicalProperties = line(FAINT)
     chart.x_axis.majorGridlines = None
-    chart.y_axis.majorGridlines.spPr = _line(LINE)
-    chart.graphical_properties = _line(LINE)
+    chart.y_axis.majorGridlines.spPr = line(LINE)
+    chart.graphical_properties = line(LINE)
     chart.graphical_properties.solidFill = "FFFFFF"
+
+
+def legend_below(chart: Any, unnamed: Sequence[int] = ()) -> None:
+    """A legend under the chart, without the series of the numbers ``unnamed``."""
+    from openpyxl.chart.legend import Legend, LegendEntry
+
+    chart.legend = Legend()
+    chart.legend.position = "b"
+    chart.legend.txPr = _properties(800)
+    chart.legend.legendEntry = [LegendEntry(idx=number, delete=True) for number in unnamed]
 
 
 def _characters(size: int, bold: bool = False) -> Any:

@@ -20,12 +20,17 @@ class Kind(Enum):
     COUNT = "count"
     AMOUNT = "amount"  # as many decimals as the column's size asks for
     FIXED = "fixed"  # two decimals
+    FINE = "fine"  # four decimals
+    FACTOR = "factor"  # six decimals
     PRICE = "price"  # two decimals, more where the price has them
 
     @property
     def numeric(self) -> bool:
         """Whether cells are numbers, set to the right."""
-        return self in (Kind.COUNT, Kind.AMOUNT, Kind.FIXED, Kind.PRICE)
+        return self in (Kind.COUNT, Kind.AMOUNT, Kind.PRICE) or self in FIXED_DECIMALS
+
+
+FIXED_DECIMALS = {Kind.FIXED: 2, Kind.FINE: 4, Kind.FACTOR: 6}
 
 
 @dataclass(frozen=True, slots=True)
@@ -45,20 +50,21 @@ class Column:
     widest: int = 24
 
 
-def _text(name: str, header: str, meaning: str, widest: int = 24, printed: bool = True) -> Column:
+def text_column(name: str, header: str, meaning: str, widest: int = 24, printed: bool = True) -> Column:
+    """A column of text."""
     return Column(name, header, Kind.TEXT, meaning, widest=widest, printed=printed)
 
 
-_TRADE = _text("trade_id", "trade", "The trade's id in the book.", 18)
-_PRODUCT = _text("product", "product", "The trade's everyday name, formed from its aggregate and profile.", 26)
+_TRADE = text_column("trade_id", "trade", "The trade's id in the book.", 18)
+_PRODUCT = text_column("product", "product", "The trade's everyday name, formed from its aggregate and profile.", 26)
 
 VALUATIONS: tuple[Column, ...] = (
     _TRADE,
     _PRODUCT,
-    _text("counterparty", "counterparty", "As stated in the book.", 20),
-    _text("strategy", "strategy", "The book's own tag for grouping.", 18),
+    text_column("counterparty", "counterparty", "As stated in the book.", 20),
+    text_column("strategy", "strategy", "The book's own tag for grouping.", 18),
     Column("expiry_date", "expiry", Kind.DATE, "The date on which the payoff is fixed."),
-    _text("currency", "trade currency", "The currency of value, errors, notional and premium.", 9),
+    text_column("currency", "trade currency", "The currency of value, errors, notional and premium.", 9),
     Column("notional", "notional (trade currency)", Kind.AMOUNT, "The amount that basis points refer to."),
     Column(
         "value",
@@ -80,21 +86,58 @@ VALUATIONS: tuple[Column, ...] = (
         "upper", "upper end (trade currency)", Kind.AMOUNT, "Upper end of the interval named beside it.", like="value"
     ),
     Column("reporting_value", "value ({reporting})", Kind.AMOUNT, "The value in the reporting currency."),
+    Column(
+        "reporting_model_difference",
+        "model difference ({reporting})",
+        Kind.AMOUNT,
+        "Value under local volatility less value under lognormal levels, whichever leads, in the reporting currency; 0 "
+        "where no underlying has a smile, blank where the trade was valued under one model only.",
+    ),
+    Column(
+        "model_difference_bp",
+        "model difference (bp of notional)",
+        Kind.FIXED,
+        "The same in basis points of the notional.",
+    ),
     Column("status", "status", Kind.STATUS, "How the pricing of the trade ended, in one word.", widest=22),
-    _text(
+    text_column("model", "model", "How the underlyings' levels move in the value shown.", 16),
+    text_column(
         "method",
         "method, or why not priced",
         "How the value was obtained. For a trade without a value the first reason in short; the plain file leaves it "
         "blank and has every reason under ending.",
-        72,
+        60,
     ),
-    _text("interval", "kind of interval", "What the lower and upper ends mean; see below.", 16, printed=False),
+    text_column("interval", "kind of interval", "What the lower and upper ends mean; see below.", 16, printed=False),
     Column(
         "reporting_standard_error",
         "standard error ({reporting})",
         Kind.AMOUNT,
         "The standard error in the reporting currency.",
         like="reporting_value",
+        printed=False,
+    ),
+    Column(
+        "model_difference",
+        "model difference (trade currency)",
+        Kind.AMOUNT,
+        "Local volatility less lognormal, in the trade's currency.",
+        printed=False,
+    ),
+    Column(
+        "model_difference_standard_error",
+        "standard error of model difference (trade currency)",
+        Kind.AMOUNT,
+        "Sampling error of the difference of the two values.",
+        like="model_difference",
+        printed=False,
+    ),
+    Column(
+        "reporting_model_difference_standard_error",
+        "standard error of model difference ({reporting})",
+        Kind.AMOUNT,
+        "The same in the reporting currency.",
+        like="reporting_model_difference",
         printed=False,
     ),
     Column(
@@ -121,7 +164,7 @@ VALUATIONS: tuple[Column, ...] = (
         like="value",
         printed=False,
     ),
-    _text("netting_set", "netting set", "As stated in the book.", printed=False),
+    text_column("netting_set", "netting set", "As stated in the book.", printed=False),
     Column("paths", "paths (number)", Kind.COUNT, "Paths sampled in all.", printed=False),
     Column(
         "randomisations",
@@ -137,19 +180,28 @@ VALUATIONS: tuple[Column, ...] = (
         "Of the sampled standard error: those of Student's quantile in a sampling interval.",
         printed=False,
     ),
+    Column(
+        "time_steps",
+        "time steps (number)",
+        Kind.COUNT,
+        "Steps of a path from the valuation date to expiry; 0 where levels are drawn at expiry alone.",
+        printed=False,
+    ),
     Column("seconds", "time (seconds)", Kind.FIXED, "Time spent on the trade.", printed=False),
-    _text("ending", "how the work ended", "In words; for a trade without a value, every reason.", 60, printed=False),
+    text_column(
+        "ending", "how the work ended", "In words; for a trade without a value, every reason.", 60, printed=False
+    ),
 )
 
 DELTAS: tuple[Column, ...] = (
     _TRADE,
-    _text("underlying", "underlying", "The underlying's id in the market snapshot.", 18),
+    text_column("underlying", "underlying", "The underlying's id in the market snapshot.", 18),
     Column("delta", "delta (shares)", Kind.AMOUNT, "Change of the position's value per unit change of the price."),
     Column(
         "standard_error", "standard error of delta (shares)", Kind.AMOUNT, "Sampling error of the delta.", like="delta"
     ),
     Column("lots", "delta (lots)", Kind.FIXED, "Delta divided by the underlying's lot size."),
-    _text("underlying_currency", "underlying's currency", "The currency of the underlying's price.", 12),
+    text_column("underlying_currency", "underlying's currency", "The currency of the underlying's price.", 12),
     Column("spot", "spot (underlying's currency)", Kind.PRICE, "The price used."),
     Column("cash_delta", "cash delta (underlying's currency)", Kind.AMOUNT, "Delta times spot."),
     Column(
@@ -174,7 +226,7 @@ DELTAS: tuple[Column, ...] = (
         "Sampling error of the gamma.",
         like="gamma",
     ),
-    _text("vega_currency", "trade currency", "The currency of vega.", 9),
+    text_column("vega_currency", "trade currency", "The currency of vega.", 9),
     Column(
         "vega_per_vol_point",
         "vega (trade currency per vol point)",
@@ -188,12 +240,12 @@ DELTAS: tuple[Column, ...] = (
         "Sampling error of the vega.",
         like="vega_per_vol_point",
     ),
-    _text("method", "method", "How the sensitivities were obtained.", 44, printed=False),
+    text_column("method", "method", "How the sensitivities were obtained.", 44, printed=False),
 )
 
 UNDERLYING_DELTAS: tuple[Column, ...] = (
-    _text("underlying", "underlying", "The underlying's id in the market snapshot.", 18),
-    _text("currency", "underlying's currency", "The currency of the underlying's price.", 12),
+    text_column("underlying", "underlying", "The underlying's id in the market snapshot.", 18),
+    text_column("currency", "underlying's currency", "The currency of the underlying's price.", 12),
     Column("spot", "spot (underlying's currency)", Kind.PRICE, "The price used."),
     Column("trades", "trades (number)", Kind.COUNT, "Priced trades that depend on the underlying."),
     Column("delta", "delta (shares)", Kind.AMOUNT, "Sum of the trades' deltas."),
@@ -257,9 +309,10 @@ UNDERLYING_DELTAS: tuple[Column, ...] = (
 CROSS_CHECK: tuple[Column, ...] = (
     _TRADE,
     _PRODUCT,
-    _text("reference_method", "reference", "The method that the engine is compared with.", 52),
-    _text("reference_kind", "kind of reference", "Whether it is exact, a bound or an approximation.", 14),
-    _text("currency", "trade currency", "The currency of the amounts.", 9),
+    text_column("reference_method", "reference", "The method that the engine is compared with.", 52),
+    text_column("reference_kind", "kind of reference", "Whether it is exact, a bound or an approximation.", 14),
+    text_column("model", "model", "The model of both values.", 16),
+    text_column("currency", "trade currency", "The currency of the amounts.", 9),
     Column(
         "engine_value",
         "engine without premium (trade currency)",
@@ -331,7 +384,7 @@ CROSS_CHECK: tuple[Column, ...] = (
         "Bound on the reference's own numerical error.",
         printed=False,
     ),
-    _text("source", "source of reference", "Where the reference's formula was published.", 60, printed=False),
+    text_column("source", "source of reference", "Where the reference's formula was published.", 60, printed=False),
 )
 
 PROBLEMS: tuple[Column, ...] = (
@@ -342,14 +395,14 @@ PROBLEMS: tuple[Column, ...] = (
         "Fatal: nothing could be done. Error: one trade or market item cannot "
         "be used. Warning: used, but a person should look.",
     ),
-    _text("trade_id", "trade", "The trade that cannot be priced because of it, if there is one.", 18),
-    _text("file", "file", "The file in which it was found.", 26),
-    _text("sheet", "sheet", "The sheet.", 16),
+    text_column("trade_id", "trade", "The trade that cannot be priced because of it, if there is one.", 18),
+    text_column("file", "file", "The file in which it was found.", 26),
+    text_column("sheet", "sheet", "The sheet.", 16),
     Column("row", "row (number)", Kind.COUNT, "Row of the sheet or of the CSV file, counted from 1."),
-    _text("column", "column", "The column's name.", 18),
-    _text("cell", "cell", "The spreadsheet reference.", 8),
+    text_column("column", "column", "The column's name.", 18),
+    text_column("cell", "cell", "The spreadsheet reference.", 8),
     Column("found", "found", Kind.PROSE, "What stands there.", widest=34),
     Column("expected", "expected", Kind.PROSE, "What should stand there.", widest=34),
     Column("mend", "how to mend it", Kind.PROSE, "What to do.", widest=46),
-    _text("code", "code", "A short stable word for machines.", 24, printed=False),
+    text_column("code", "code", "A short stable word for machines.", 24, printed=False),
 )

@@ -38,6 +38,16 @@ READING: tuple[tuple[str, str], ...] = (
     ("signs", "The desk's: a positive value is worth having, a positive delta gains when the price rises."),
     ("lots", "Delta over the underlying's lot size, not rounded."),
     ("1 vol point", "0.01 of annual volatility: from 20 % to 21 %."),
+    (
+        "model difference",
+        "Value under local volatility less value under lognormal levels with at-the-forward volatilities, whichever "
+        "leads. Both use the same market; the difference is what the smile is worth to the trade, as far as either "
+        "model tells. Totals leave out trades that were valued under one model only.",
+    ),
+    (
+        "target of 0.05 vol points",
+        "Asked of the simulated model on every quoted vanilla whose call has a forward delta of 10 to 90 %.",
+    ),
     ("1 bp of notional", "0.01 % of the trade's notional."),
     (
         "reporting currency",
@@ -61,6 +71,8 @@ STATUSES: dict[Status, str] = {
     Status.PRICED: "The value is as precise as asked; its deltas' errors stand beside them.",
     Status.PRECISION_NOT_REACHED: "Priced, but the value less precisely than asked: read its standard error.",
     Status.DISPUTED: "Priced, but a cross-check of the trade disagrees: find out why before using the number.",
+    Status.FAILING_SURFACE: "Priced because the user asked for it, from a volatility surface that fails its checks: "
+    "the sheet Market says which and why.",
     Status.NOT_PRICED: "No value; Valuations has the reason, short in place of the method and in full at the end.",
 }
 

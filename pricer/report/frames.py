@@ -7,12 +7,15 @@ and seed except the table ``seconds``, which is kept apart for that reason.
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Mapping, Sequence
-from dataclasses import fields, replace
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 from pricer.contracts.book import Refusal
 from pricer.core.issues import Issue, Severity
+from pricer.report import tidy
+from pricer.report.market_frames import market_tables
+from pricer.report.model_differences import model_difference_bp
 from pricer.report.rates import Rates
 from pricer.report.sums import ratio
 from pricer.report.text import shorten
@@ -26,7 +29,7 @@ if TYPE_CHECKING:
 
     Frame = pandas.DataFrame
 
-_SHORT = 72  # characters of a short reason
+_SHORT = 62  # characters of a short reason
 _SEVERITIES = (Severity.FATAL, Severity.ERROR, Severity.WARNING)
 
 
@@ -34,7 +37,8 @@ def tables(outcome: Outcome) -> Mapping[str, Frame]:
     """Every table of the report, by name.
 
     ``valuations`` has the trades that were not priced too, last, with blank numbers; ``cross_check`` and
-    ``problems`` begin with what needs attention; ``seconds`` is the time each trade took.
+    ``problems`` begin with what needs attention; ``seconds`` is the time each trade took. The market's tables are
+    those of :func:`pricer.report.market_frames.market_tables`.
     """
     return {
         "valuations": valuations(outcome),
@@ -45,6 +49,7 @@ def tables(outcome: Outcome) -> Mapping[str, Frame]:
         "problems": problems(outcome),
         "not_priced": not_priced(outcome),
         "seconds": seconds(outcome),
+        **market_tables(outcome, _all_issues(outcome)),
     }
 
 
@@ -58,7 +63,17 @@ def valuations(outcome: Outcome) -> Frame:
     def number(name: str) -> list[Any]:
         return [None if _status(item) is Status.NOT_PRICED else getattr(item, name) for item in items]
 
-    return _frame(
+    rates = Rates.from_outcome(outcome)
+    currencies, differences = known("currency"), number("model_difference")
+    difference_errors = number("model_difference_standard_error")
+
+    def reporting(amounts: list[Any]) -> list[Any]:
+        return [None if x is None else rates.reporting(x, c) for x, c in zip(amounts, currencies, strict=True)]
+
+    def of_notional(item: Valuation | Refusal) -> float | None:
+        return model_difference_bp(item) if isinstance(item, Valuation) and item.status != Status.NOT_PRICED else None
+
+    return tidy.frame(
         {
             "trade_id": known("trade_id"),
             "product": known("product"),
@@ -75,6 +90,12 @@ def valuations(outcome: Outcome) -> Frame:
             "reporting_currency": [outcome.facts.reporting_currency] * len(items),
             "reporting_value": number("reporting_value"),
             "reporting_standard_error": number("reporting_standard_error"),
+            "model": number("model"),
+            "model_difference": differences,
+            "model_difference_standard_error": difference_errors,
+            "reporting_model_difference": reporting(differences),
+            "reporting_model_difference_standard_error": reporting(difference_errors),
+            "model_difference_bp": [of_notional(item) for item in items],
             "sampled_value": number("sampled_value"),
             "sampled_standard_error": number("sampled_standard_error"),
             "counterparty": known("counterparty"),
@@ -84,11 +105,12 @@ def valuations(outcome: Outcome) -> Frame:
             "paths": number("paths"),
             "randomisations": number("randomisations"),
             "degrees_of_freedom": number("degrees_of_freedom"),
+            "time_steps": number("time_steps"),
             "ending": [reason(item) if isinstance(item, Refusal) else item.ending for item in items],
         },
-        text="trade_id product currency interval method status reporting_currency counterparty strategy netting_set "
-        "ending",
-        whole="paths randomisations degrees_of_freedom",
+        text="trade_id product currency interval method status reporting_currency model counterparty strategy "
+        "netting_set ending",
+        whole="paths randomisations degrees_of_freedom time_steps",
         dates="expiry_date",
     )
 
@@ -98,7 +120,7 @@ def deltas(outcome: Outcome) -> Frame:
     rates = Rates.from_outcome(outcome)
     facts = {u.underlying: u for u in outcome.underlyings}
     pairs = [(v, d, facts.get(d.underlying)) for v in priced(outcome) for d in v.deltas]
-    return _frame(
+    return tidy.frame(
         {
             "trade_id": [v.trade_id for v, _, _ in pairs],
             "underlying": [d.underlying for _, d, _ in pairs],
@@ -126,7 +148,7 @@ def deltas(outcome: Outcome) -> Frame:
 def underlying_deltas(outcome: Outcome) -> Frame:
     """One row an underlying, largest absolute cash delta first."""
     counts = "trades trades_without_gamma trades_without_delta trades_without_vega"
-    frame = _records(underlying_totals(outcome), UnderlyingTotal, text="underlying currency", whole=counts)
+    frame = tidy.records(underlying_totals(outcome), UnderlyingTotal, text="underlying currency", whole=counts)
     frame.insert(list(frame).index("cash_delta") + 1, "reporting_currency", outcome.facts.reporting_currency)
     return frame
 
@@ -134,8 +156,8 @@ def underlying_deltas(outcome: Outcome) -> Frame:
 def summaries(outcome: Outcome) -> Frame:
     """One row a group of each grouping (currency, product, strategy, counterparty, netting set)."""
     totals = [t for grouping in GROUPINGS for t in group_totals(outcome, grouping)]
-    whole = "trades priced precision_not_reached disputed not_priced"
-    frame = _records(totals, Total, text="grouping group own_currency", whole=whole)
+    whole = "trades priced precision_not_reached disputed failing_surface not_priced without_model_difference"
+    frame = tidy.records(totals, Total, text="grouping group own_currency", whole=whole)
     frame.insert(2, "reporting_currency", outcome.facts.reporting_currency)
     return frame.rename(
         columns={
@@ -145,6 +167,8 @@ def summaries(outcome: Outcome) -> Frame:
             "own_standard_error": "standard_error",
             "value": "reporting_value",
             "standard_error": "reporting_standard_error",
+            "model_difference": "reporting_model_difference",
+            "model_difference_standard_error": "reporting_model_difference_standard_error",
         }
     )
 
@@ -155,12 +179,14 @@ def cross_check(outcome: Outcome) -> Frame:
     checks = sorted(outcome.cross_checks, key=lambda c: ORDER.index(c.verdict))
     owners = [by_id.get(c.trade_id) for c in checks]
     notionals = [abs(owner.notional) if owner else math.nan for owner in owners]
-    frame = _records(checks, CrossCheck, text="trade_id product reference_method reference_kind verdict source")
-    frame.insert(2, "currency", _text([owner.currency if owner else None for owner in owners]))
+    frame = tidy.records(
+        checks, CrossCheck, text="trade_id product model reference_method reference_kind verdict source"
+    )
+    frame.insert(2, "currency", tidy.texts([owner.currency if owner else None for owner in owners]))
     pairs = list(zip(checks, notionals, strict=True))
-    frame["tolerance_bp"] = _numbers([1e4 * ratio(c.tolerance, notional) for c, notional in pairs])
-    frame["difference_tolerances"] = _numbers([ratio(c.difference, c.tolerance) for c in checks])
-    frame["reference_percent"] = _numbers([100.0 * ratio(c.reference_value, notional) for c, notional in pairs])
+    frame["tolerance_bp"] = tidy.numbers([1e4 * ratio(c.tolerance, notional) for c, notional in pairs])
+    frame["difference_tolerances"] = tidy.numbers([ratio(c.difference, c.tolerance) for c in checks])
+    frame["reference_percent"] = tidy.numbers([100.0 * ratio(c.reference_value, notional) for c, notional in pairs])
     return frame
 
 
@@ -169,7 +195,7 @@ def problems(outcome: Outcome) -> Frame:
     rows = sorted(_all_issues(outcome), key=lambda issue: _SEVERITIES.index(issue.severity))
     order = ["severity", "trade_id", "file", "sheet", "row", "column", "cell", "code", "found", "expected", "mend"]
     text = " ".join(name for name in order if name != "row")
-    return _records(rows, Issue, text=text, whole="row")[order]
+    return tidy.records(rows, Issue, text=text, whole="row")[order]
 
 
 def not_priced(outcome: Outcome) -> Frame:
@@ -179,12 +205,12 @@ def not_priced(outcome: Outcome) -> Frame:
     columns: dict[str, Sequence[Any]] = {name: [getattr(item, name) for item in items] for name in names}
     columns["issues"] = [len(item.issues) if isinstance(item, Refusal) else 0 for item in items]
     columns["reasons"] = [reason(item) for item in items]
-    return _frame(columns, text=" ".join([*names, "reasons"]), whole="issues")
+    return tidy.frame(columns, text=" ".join([*names, "reasons"]), whole="issues")
 
 
 def seconds(outcome: Outcome) -> Frame:
     """The time each trade took; the only table that differs between two runs of the same input and seed."""
-    return _frame(
+    return tidy.frame(
         {"trade_id": [v.trade_id for v in outcome.valuations], "seconds": [v.seconds for v in outcome.valuations]},
         text="trade_id",
     )
@@ -226,32 +252,3 @@ def _all_issues(outcome: Outcome) -> list[Issue]:
     without_trade = {replace(issue, trade_id=None) for issue in charged}
     found = [issue for issue in outcome.issues if issue.trade_id is not None or issue not in without_trade]
     return list(dict.fromkeys([*found, *charged]))
-
-
-def _records(items: Sequence[Any], kind: type[Any], text: str = "", whole: str = "") -> Frame:
-    """A frame of dataclass instances, one column a field."""
-    names = [f.name for f in fields(kind)]
-    return _frame({name: [getattr(item, name) for item in items] for name in names}, text=text, whole=whole)
-
-
-def _frame(columns: Mapping[str, Sequence[Any]], text: str = "", whole: str = "", dates: str = "") -> Frame:
-    """A frame; ``text``, ``whole`` and ``dates`` name the columns that do not hold floats."""
-    import pandas
-
-    makers: dict[str, Callable[[Sequence[Any]], Any]] = dict.fromkeys(columns, _numbers)
-    makers.update(dict.fromkeys(text.split(), _text))
-    makers.update(dict.fromkeys(whole.split(), lambda values: pandas.array(list(values), dtype="Int64")))
-    makers.update(dict.fromkeys(dates.split(), lambda values: pandas.Series(values, dtype="datetime64[s]")))
-    return pandas.DataFrame({name: makers[name](values) for name, values in columns.items()})
-
-
-def _text(values: Sequence[Any]) -> pandas.Series:
-    import pandas
-
-    return pandas.Series(["" if value is None else str(value) for value in values], dtype=object)
-
-
-def _numbers(values: Sequence[Any]) -> pandas.Series:
-    import pandas
-
-    return pandas.Series(values, dtype="float64")

@@ -10,6 +10,7 @@ from typing import Any
 
 from pricer.core.issues import Severity
 from pricer.report.explanations import CAUTION
+from pricer.report.surface_fits import Reach, all_quotes, reach
 from pricer.report.text import CSV_RULE, clean
 from pricer.report.totals import book_total
 from pricer.report.verdicts import without_sampling
@@ -24,6 +25,8 @@ def run_facts(outcome: Outcome, severities: Counter[str]) -> dict[str, Any]:
     headline = book_total(outcome)
     whole = headline.total
     verdicts = Counter(check.verdict for check in outcome.cross_checks)
+    surfaces = outcome.market.surfaces
+    quotes = all_quotes(surfaces)
     return {
         "format": FORMAT,
         "book": facts.book_name,
@@ -37,13 +40,21 @@ def run_facts(outcome: Outcome, severities: Counter[str]) -> dict[str, Any]:
             "upper_99": headline.upper,
             "unsampled_error": headline.unsampled_error,
             "unpaid_premium": headline.unpaid_premium,
+            "model_difference": whole.model_difference,
+            "model_difference_standard_error": whole.model_difference_standard_error,
         },
         "counts": {
             "trades": whole.trades,
             "priced": whole.priced,
             "precision_not_reached": whole.precision_not_reached,
             "disputed": whole.disputed,
+            "failing_surface": whole.failing_surface,
             "not_priced": whole.not_priced,
+            "without_model_difference": whole.without_model_difference,
+            "surfaces": len(surfaces),
+            "surfaces_failing": sum(not surface.passes for surface in surfaces),
+            "quotes": len(quotes),
+            "quotes_beyond_target": sum(reach(quote) is Reach.BEYOND for quote in quotes),
             "cross_checks": {verdict.value: verdicts[verdict] for verdict in Verdict},
             "cross_checks_without_sampling": sum(map(without_sampling, outcome.cross_checks)),
             "problems": {severity.value: severities[severity.value] for severity in Severity},

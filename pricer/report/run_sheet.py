@@ -8,6 +8,7 @@ from collections.abc import Iterable, Mapping
 from typing import TYPE_CHECKING
 
 from pricer.report import columns as c
+from pricer.report import market_columns as m
 from pricer.report.cells import put_text, workbook_of
 from pricer.report.explanations import CAUTION, INTERVALS, READING, SEVERITIES, STATUSES, VERDICTS
 from pricer.report.page import page_height, set_up_page
@@ -31,6 +32,15 @@ _SHEETS: Mapping[str, tuple[c.Column, ...]] = {
     "Deltas by underlying": c.UNDERLYING_DELTAS,
     "Cross-check": c.CROSS_CHECK,
     "Problems": c.PROBLEMS,
+    "Market: problems": m.MARKET_PROBLEMS,
+    "Market: surfaces": m.SURFACES,
+    "Market: violations": m.VIOLATIONS,
+    "Calibration": m.CALIBRATION,
+    "Curves": m.CURVES,
+    "Forwards": m.FORWARDS,
+    "Credit, funding, agreements: credit": m.CREDIT,
+    "Credit, funding, agreements: funding": m.FUNDING,
+    "Credit, funding, agreements: agreements": m.AGREEMENTS,
 }
 
 

@@ -10,7 +10,7 @@ import math
 from enum import Enum
 from typing import TYPE_CHECKING, Any
 
-from pricer.report.columns import Kind
+from pricer.report.columns import FIXED_DECIMALS, Kind
 
 if TYPE_CHECKING:
     from collections.abc import Iterable
@@ -118,9 +118,9 @@ def number_format(kind: Kind, decimals: int = 0) -> str:
     """The number format of a kind of cell."""
     if kind is Kind.AMOUNT:
         return "#,##0" + ("." + "0" * decimals if decimals else "")
-    return {Kind.DATE: "yyyy-mm-dd", Kind.COUNT: "#,##0", Kind.FIXED: "#,##0.00", Kind.PRICE: PRICE_FORMAT}.get(
-        kind, "@"
-    )
+    if kind in FIXED_DECIMALS:
+        return "#,##0." + "0" * FIXED_DECIMALS[kind]
+    return {Kind.DATE: "yyyy-mm-dd", Kind.COUNT: "#,##0", Kind.PRICE: PRICE_FORMAT}.get(kind, "@")
 
 
 def decimals_for(base: Iterable[float], errors: Iterable[float] = ()) -> int:

@@ -4,10 +4,10 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 from pricer.report.cells import put_number, put_text
+from pricer.report.chart_area import Area, place
 from pricer.report.charts import bar_chart, scatter_chart
 from pricer.report.columns import CROSS_CHECK, Kind
 from pricer.report.styles import Mark
@@ -16,20 +16,10 @@ from pricer.report.top import Line
 
 if TYPE_CHECKING:
     import pandas
-    from openpyxl.chart import BarChart, Reference, ScatterChart
+    from openpyxl.chart import Reference
     from openpyxl.worksheet.worksheet import Worksheet
 
 _VALUE_COLUMN = 4  # of a block table's columns, counted from its name
-
-
-@dataclass(frozen=True, slots=True)
-class Area:
-    """Where a chart goes: its upper left cell, and how many rows and columns it covers."""
-
-    row: int
-    column: int
-    n_rows: int
-    n_columns: int
 
 
 def add_bars(
@@ -47,7 +37,7 @@ def add_bars(
     last = first + len(bars) - 1
     names = Reference(sheet, min_col=column, min_row=first, max_row=last)
     values = Reference(sheet, min_col=column + _VALUE_COLUMN, min_row=first, max_row=last)
-    _place(sheet, bar_chart(what, currency, names, values, largest), area)
+    place(sheet, bar_chart(what, currency, names, values, largest), area)
 
 
 def add_scatter(sheet: Worksheet, area: Area, source: Worksheet, checks: pandas.DataFrame) -> None:
@@ -64,8 +54,8 @@ def add_scatter(sheet: Worksheet, area: Area, source: Worksheet, checks: pandas.
         return
 
     def column(name: str) -> Reference:
-        place = [c.name for c in CROSS_CHECK].index(name) + 1
-        return Reference(source, min_col=place, min_row=HEADING_ROW + 1, max_row=HEADING_ROW + len(checks))
+        number = [c.name for c in CROSS_CHECK].index(name) + 1
+        return Reference(source, min_col=number, min_row=HEADING_ROW + 1, max_row=HEADING_ROW + len(checks))
 
     chart = scatter_chart(
         "engine less exact reference",
@@ -76,7 +66,7 @@ def add_scatter(sheet: Worksheet, area: Area, source: Worksheet, checks: pandas.
         outside=column("differs") if drawn["differs"].notna().any() else None,
         limits=_limits(sheet, area, float(percents.min()), float(percents.max())),
     )
-    _place(sheet, chart, area)
+    place(sheet, chart, area)
 
 
 def _limits(sheet: Worksheet, area: Area, lowest: float, highest: float) -> list[tuple[Reference, Reference]]:
@@ -92,16 +82,3 @@ def _limits(sheet: Worksheet, area: Area, lowest: float, highest: float) -> list
         Reference(sheet, min_col=area.column + 1 + j, min_row=first, max_row=first + 1) for j in range(3)
     )
     return [(x, upper), (x, lower)]
-
-
-def _place(sheet: Worksheet, chart: BarChart | ScatterChart, area: Area) -> None:
-    """Anchored to cells at both ends, so that it covers them whatever a program makes of their size."""
-    from openpyxl.drawing.spreadsheet_drawing import AnchorMarker, TwoCellAnchor
-
-    placed: Any = chart  # its anchor may be a cell or, as here, a pair of them
-    placed.anchor = TwoCellAnchor(
-        editAs="oneCell",
-        _from=AnchorMarker(col=area.column - 1, row=area.row - 1, colOff=60_000, rowOff=40_000),
-        to=AnchorMarker(col=area.column - 1 + area.n_columns, row=area.row - 1 + area.n_rows),
-    )
-    sheet.add_chart(chart)

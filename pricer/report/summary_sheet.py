@@ -11,12 +11,13 @@ from typing import TYPE_CHECKING
 from pricer.core.issues import Severity
 from pricer.engines.cross_check import ALARMS
 from pricer.report.cells import put_number, put_text, workbook_of
+from pricer.report.chart_area import Area
 from pricer.report.columns import Kind
 from pricer.report.layout import HALVES, LAST, LEFT, N_COLUMNS, RIGHT, ROW_HEIGHT, THIRDS, Canvas
 from pricer.report.page import set_up_page
 from pricer.report.styles import Mark, body_style, decimals_for
-from pricer.report.summary_charts import Area, add_bars, add_scatter
-from pricer.report.summary_tables import group_table, underlying_table, verdict_table
+from pricer.report.summary_charts import add_bars, add_scatter
+from pricer.report.summary_tables import group_table, model_difference_table, underlying_table, verdict_table
 from pricer.report.text import shorten
 from pricer.report.totals import BookTotal, book_total, priced
 from pricer.run.outcome import Outcome, Status
@@ -28,7 +29,7 @@ if TYPE_CHECKING:
 
 
 TITLE = "Summary"
-_GROUPINGS = ("currency", "strategy", "counterparty", "product")
+_GROUPINGS = ("currency", "strategy", "counterparty", "product", "model")
 _REASONS_SHOWN = 5
 _REASON_LENGTH = 140  # what one line between the list's third column and the page's edge holds
 
@@ -45,7 +46,8 @@ def add_summary_sheet(workbook: Workbook, outcome: Outcome, frames: Mapping[str,
     by = {grouping: group_table(outcome, whole, grouping) for grouping in _GROUPINGS}
     underlyings = underlying_table(outcome)
     first = canvas.stacks(
-        (by["currency"], by["strategy"], by["counterparty"], verdict_table(outcome)), (by["product"], underlyings)
+        (by["currency"], by["strategy"], by["counterparty"], by["model"], verdict_table(outcome)),
+        (by["product"], underlyings, model_difference_table(outcome, whole)),
     )
     if chart_areas:
         bars = (("value", by["strategy"], LEFT), ("cash delta", underlyings, RIGHT))
@@ -94,6 +96,7 @@ def _key_figures(canvas: Canvas, outcome: Outcome, whole: BookTotal, problems: p
     first = canvas.take()
     canvas.section(first, LEFT, "Value of the book")
     canvas.section(first, RIGHT, "What was done")
+    compared = total.trades - total.not_priced - total.without_model_difference
     amounts = (
         (f"total value ({currency})", total.value),
         (f"standard error ({currency})", total.standard_error),
@@ -101,8 +104,12 @@ def _key_figures(canvas: Canvas, outcome: Outcome, whole: BookTotal, problems: p
         (f"99 % sampling interval, to ({currency})", whole.upper),
         (f"errors of values without sampling, added up ({currency})", whole.unsampled_error),
         (f"unpaid premium inside the total ({currency})", whole.unpaid_premium),
+        (f"local volatility less lognormal, {compared:,} trades ({currency})", total.model_difference),
+        (f"standard error of that model difference ({currency})", total.model_difference_standard_error),
         ("precision asked for (bp of notional)", outcome.facts.precision_bp),
     )
+    surfaces = outcome.market.surfaces
+    failing = sum(not surface.passes for surface in surfaces)
     flagged = sum(check.verdict in ALARMS for check in outcome.cross_checks)
     severities = [int((problems["severity"] == severity).sum()) for severity in Severity]
     counts = (
@@ -110,8 +117,10 @@ def _key_figures(canvas: Canvas, outcome: Outcome, whole: BookTotal, problems: p
         ("priced to the precision asked for", total.priced, False),
         ("priced, precision not reached", total.precision_not_reached, True),
         ("priced, disputed by a cross-check", total.disputed, True),
+        ("priced from a failing volatility surface", total.failing_surface, True),
         ("not priced, left out of every total", total.not_priced, True),
         (f"cross-checks that disagree, of {len(outcome.cross_checks):,} made", flagged, True),
+        (f"volatility surfaces that fail, of {len(surfaces):,}", failing, True),
         ("problems found (number)", sum(severities), True),
     )
     decimals = decimals_for([total.value], [total.standard_error])

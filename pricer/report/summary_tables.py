@@ -4,8 +4,15 @@ from __future__ import annotations
 
 from pricer.report.columns import Kind
 from pricer.report.layout import BlockTable
+from pricer.report.model_differences import model_differences
 from pricer.report.styles import decimals_for
-from pricer.report.top import SHOWN, lines_of_groups, lines_of_underlyings, lines_of_verdicts
+from pricer.report.top import (
+    SHOWN,
+    lines_of_groups,
+    lines_of_model_differences,
+    lines_of_underlyings,
+    lines_of_verdicts,
+)
 from pricer.report.totals import BookTotal, group_totals
 from pricer.report.underlying_totals import underlying_totals
 from pricer.run.outcome import Outcome
@@ -74,4 +81,23 @@ def verdict_table(outcome: Outcome) -> BlockTable:
         kinds=(Kind.COUNT, Kind.FIXED, Kind.FIXED, Kind.FIXED, Kind.FIXED),
         lines=lines_of_verdicts(outcome.cross_checks),
         empty="No cross-checks were made in this run.",
+    )
+
+
+def model_difference_table(outcome: Outcome, whole: BookTotal) -> BlockTable:
+    """The trades whose value depends most on the model: local volatility less lognormal."""
+    currency = outcome.facts.reporting_currency
+    return BlockTable(
+        title="Largest model differences",
+        headings=(
+            "trade",
+            "difference (bp)",
+            "share of value (%)",
+            f"value ({currency})",
+            f"difference ({currency})",
+            f"standard error ({currency})",
+        ),
+        kinds=(Kind.FIXED, Kind.FIXED, Kind.AMOUNT, Kind.AMOUNT, Kind.AMOUNT),
+        lines=lines_of_model_differences(model_differences(outcome), whole.total),
+        empty="No trade's value differs between the models, or none was valued under both.",
     )

@@ -9,6 +9,7 @@ from statistics import median
 from typing import TypeVar
 
 from pricer.engines.cross_check import ALARMS
+from pricer.report.model_differences import ModelDifference
 from pricer.report.styles import Mark
 from pricer.report.sums import quadrature, ratio, total
 from pricer.report.totals import Total
@@ -17,6 +18,7 @@ from pricer.report.verdicts import MEASURED_IN_ERRORS, by_verdict
 from pricer.run.outcome import CrossCheck
 
 SHOWN = 12  # groups of a table that a chart draws, or that stands beside one
+MODEL_DIFFERENCES_SHOWN = 8
 NONE_STATED = "(none stated)"
 
 _Item = TypeVar("_Item")
@@ -110,6 +112,38 @@ def lines_of_verdicts(checks: Sequence[CrossCheck]) -> list[Line]:
         )
         lines.append(Line(name, numbers, Mark.LOOK if mine and verdict in ALARMS else Mark.NONE))
     return lines
+
+
+def lines_of_model_differences(differences: Sequence[ModelDifference], whole: Total) -> list[Line]:
+    """Difference in basis points of notional and in percent of the value, value, difference, its standard error.
+
+    ``differences`` come largest first and amounts are in the reporting currency; the total has those of all.
+    """
+
+    def line(item: ModelDifference) -> Line:
+        value = item.valuation.reporting_value
+        share = 100.0 * ratio(item.difference, abs(value))
+        numbers = (item.difference_bp, share, value, item.difference, item.standard_error)
+        return Line(item.valuation.trade_id, numbers, Mark.LOOK if math.isnan(item.difference) else Mark.NONE)
+
+    moved = [item for item in differences if item.difference != 0.0]
+    if not moved:
+        return []
+    largest, rest = _split(moved, MODEL_DIFFERENCES_SHOWN)
+    lines = [line(item) for item in largest]
+    if rest:
+        numbers = (
+            math.nan,
+            math.nan,
+            total(item.valuation.reporting_value for item in rest),
+            total(item.difference for item in rest),
+            quadrature(item.standard_error for item in rest),
+        )
+        lines.append(Line(f"other ({len(rest):,})", numbers))
+    value = total(item.valuation.reporting_value for item in moved)
+    share = 100.0 * ratio(whole.model_difference, abs(value))
+    numbers = (math.nan, share, value, whole.model_difference, whole.model_difference_standard_error)
+    return [*lines, Line("total", numbers, Mark.TOTAL)]
 
 
 def _split(items: Sequence[_Item], shown: int) -> tuple[Sequence[_Item], Sequence[_Item]]:

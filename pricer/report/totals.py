@@ -18,7 +18,8 @@ class Total:
     """What a group of trades is worth, in the reporting currency; NaN where none of them was priced.
 
     ``gross_notional`` adds the absolute notionals. ``own_value`` and ``own_standard_error`` are in ``own_currency``,
-    the one currency of the group's priced trades; NaN and empty where there are several.
+    the one currency of the group's priced trades; NaN and empty where there are several. ``model_difference`` adds
+    those of the trades that have one, ``without_model_difference`` counts the priced trades that have none.
     """
 
     grouping: str
@@ -27,6 +28,7 @@ class Total:
     priced: int
     precision_not_reached: int
     disputed: int
+    failing_surface: int
     not_priced: int
     gross_notional: float
     own_currency: str
@@ -34,6 +36,9 @@ class Total:
     own_standard_error: float
     value: float
     standard_error: float
+    model_difference: float
+    model_difference_standard_error: float
+    without_model_difference: int
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,6 +62,7 @@ _BY_VALUATION: dict[str, Callable[[Valuation], str]] = {
     "strategy": lambda v: v.strategy,
     "counterparty": lambda v: v.counterparty,
     "netting_set": lambda v: v.netting_set,
+    "model": lambda v: v.model,
 }
 _BY_REFUSAL: dict[str, Callable[[Refusal], str]] = {
     "currency": lambda r: r.currency,
@@ -64,6 +70,7 @@ _BY_REFUSAL: dict[str, Callable[[Refusal], str]] = {
     "strategy": lambda r: r.strategy,
     "counterparty": lambda r: r.counterparty,
     "netting_set": lambda r: "",
+    "model": lambda r: Status.NOT_PRICED,
 }
 GROUPINGS = tuple(_BY_VALUATION)
 
@@ -111,6 +118,7 @@ def _total(
     numbers = [v for v in valuations if v.status is not Status.NOT_PRICED]
     currencies = {v.currency for v in numbers}
     own = numbers if len(currencies) == 1 else []
+    compared = [v for v in numbers if v.model_difference is not None]
     return Total(
         grouping=grouping,
         group=group,
@@ -118,6 +126,7 @@ def _total(
         priced=sum(v.status is Status.PRICED for v in numbers),
         precision_not_reached=sum(v.status is Status.PRECISION_NOT_REACHED for v in numbers),
         disputed=sum(v.status is Status.DISPUTED for v in numbers),
+        failing_surface=sum(v.status is Status.FAILING_SURFACE for v in numbers),
         not_priced=len(valuations) - len(numbers) + len(refusals),
         gross_notional=total(rates.reporting(abs(v.notional), v.currency) for v in numbers),
         own_currency=currencies.pop() if own else "",
@@ -125,4 +134,9 @@ def _total(
         own_standard_error=quadrature(v.standard_error for v in own),
         value=total(v.reporting_value for v in numbers),
         standard_error=quadrature(v.reporting_standard_error for v in numbers),
+        model_difference=total(rates.reporting(v.model_difference or 0.0, v.currency) for v in compared),
+        model_difference_standard_error=quadrature(
+            rates.reporting(v.model_difference_standard_error or 0.0, v.currency) for v in compared
+        ),
+        without_model_difference=len(numbers) - len(compared),
     )

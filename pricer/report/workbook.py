@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -11,12 +11,15 @@ from pricer.core.issues import Severity
 from pricer.engines.cross_check import ALARMS
 from pricer.report import columns
 from pricer.report.bulk import Bulk, save_with_bulk
+from pricer.report.fitting import Table
 from pricer.report.frames import short_reason, without_value
+from pricer.report.market_sheet import add_market_sheet, add_terms_sheet, market_table_sheets
 from pricer.report.run_sheet import add_run_sheet
+from pricer.report.smile_sheet import add_smile_sheet
 from pricer.report.styles import Mark, define_styles
 from pricer.report.summary_sheet import add_summary_sheet
 from pricer.report.sums import total
-from pricer.report.table_sheet import Table, add_table_sheet
+from pricer.report.table_sheet import add_table_sheet
 from pricer.report.totals import Total, book_total
 from pricer.report.verdicts import by_verdict
 from pricer.run.outcome import Outcome, Status, Verdict
@@ -37,10 +40,20 @@ def write_workbook(outcome: Outcome, frames: Mapping[str, pandas.DataFrame], tar
     workbook.properties.title = f"Book valuation {facts.valuation_date.isoformat()}"
     bulks: dict[str, Bulk] = {}
     frames = {**frames, "cross_check": _with_clouds(frames["cross_check"])}
-    for table in _tables(outcome, frames):
-        bulk = add_table_sheet(workbook, table, facts)
-        if bulk is not None:
-            bulks[table.title] = bulk
+
+    def add_tables(tables: Sequence[Table]) -> None:
+        for table in tables:
+            bulk = add_table_sheet(workbook, table, facts)
+            if bulk is not None:
+                bulks[table.title] = bulk
+
+    add_tables(_tables(outcome, frames))
+    add_market_sheet(workbook, outcome, frames)
+    calibration, *others = market_table_sheets(outcome, frames)
+    add_tables([calibration])
+    add_smile_sheet(workbook, outcome, frames["calibration"])
+    add_tables(others)
+    add_terms_sheet(workbook, outcome, frames)
     add_run_sheet(workbook, outcome)
     add_summary_sheet(workbook, outcome, frames)
     workbook.active = 0
@@ -110,7 +123,12 @@ def _tables(outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> list[Ta
 
 
 _ADDABLE = ("reporting_cash_delta", "reporting_vega_per_vol_point")  # across underlyings
-_STATUS_MARKS = {Status.DISPUTED: Mark.LOOK, Status.NOT_PRICED: Mark.REFUSED, Status.PRECISION_NOT_REACHED: Mark.LOOK}
+_STATUS_MARKS = {
+    Status.DISPUTED: Mark.LOOK,
+    Status.FAILING_SURFACE: Mark.LOOK,
+    Status.PRECISION_NOT_REACHED: Mark.LOOK,
+    Status.NOT_PRICED: Mark.REFUSED,
+}
 _SEVERITY_MARKS = {Severity.FATAL: Mark.LOOK, Severity.ERROR: Mark.LOOK, Severity.WARNING: Mark.NONE}
 
 
@@ -121,7 +139,8 @@ def _marks_of_gaps(frame: pandas.DataFrame, *needed: str) -> list[Mark]:
 
 def _valuations_note(whole: Total) -> str:
     note = f"{whole.trades:,} trades: {whole.priced:,} priced, {whole.precision_not_reached:,} precision not reached"
-    note = f"{note}, {whole.disputed:,} disputed, {whole.not_priced:,} not priced"
+    note = f"{note}, {whole.disputed:,} disputed, {whole.failing_surface:,} from a failing surface"
+    note = f"{note}, {whole.not_priced:,} not priced"
     return f"{note}. More columns on screen, right of what prints."
 
 

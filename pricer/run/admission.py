@@ -12,8 +12,10 @@ from pricer.market.coverage import coverage
 from pricer.market.market import Market
 
 
-def admit(book: Book, market: Market) -> Book:
+def admit(book: Book, market: Market, *, accept_failing_surfaces: bool = False) -> Book:
     """The book as this market can price it: uncovered trades become refusals.
+
+    Those on volatility surfaces that fail their checks are refused unless these are accepted.
 
     Issues of the book and of the market stay; those found here are added.
     """
@@ -21,7 +23,8 @@ def admit(book: Book, market: Market) -> Book:
     refused: list[Refusal] = []
     found: list[Issue] = []
     for trade in book.trades:
-        issues = coverage(trade, market, partial(_place, book, trade))
+        place = partial(_place, book, trade)
+        issues = coverage(trade, market, place, accept_failing_surfaces=accept_failing_surfaces)
         found.extend(issues)
         errors = tuple(issue for issue in issues if issue.severity is not Severity.WARNING)
         if errors:

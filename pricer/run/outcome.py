@@ -6,11 +6,13 @@ from dataclasses import dataclass
 from datetime import date, datetime
 from enum import StrEnum
 
+from pricer.contracts.book import Model as Model
 from pricer.contracts.book import Refusal
 from pricer.core.issues import Issue
 from pricer.core.source import SourceFile
 from pricer.engines.cross_check import Verdict as Verdict
 from pricer.engines.selector import Interval as Interval
+from pricer.market.agreements import Agreement as Agreement
 
 
 class Status(StrEnum):
@@ -19,6 +21,7 @@ class Status(StrEnum):
     PRICED = "priced"
     PRECISION_NOT_REACHED = "precision not reached"  # priced, but the value's error is above what was asked
     DISPUTED = "disputed"  # priced, but its cross-check disagrees
+    FAILING_SURFACE = "failing surface"  # priced, as asked, from a volatility surface that fails its checks
     NOT_PRICED = "not priced"
 
 
@@ -44,10 +47,11 @@ class Delta:
 
 @dataclass(frozen=True, slots=True)
 class CrossCheck:
-    """One engine value beside one reference; amounts are of the position, in its currency."""
+    """One engine value beside one reference, both under ``model``; amounts are of the position, in its currency."""
 
     trade_id: str
     product: str
+    model: Model
     engine_value: float
     engine_standard_error: float
     reference_method: str
@@ -64,7 +68,11 @@ class CrossCheck:
 
 @dataclass(frozen=True, slots=True)
 class Valuation:
-    """The value of one position, in the trade's currency (``reporting_*`` in the book's)."""
+    """The value of one position, in the trade's currency (``reporting_*`` in the book's).
+
+    ``model_difference`` is the value under local volatility less that under lognormal levels, whichever
+    leads: 0 where no underlying has a smile, None where only one of the two was computed.
+    """
 
     trade_id: str
     product: str
@@ -80,13 +88,17 @@ class Valuation:
     upper: float
     interval: Interval
     method: str
+    model: Model
+    model_difference: float | None
+    model_difference_standard_error: float | None
     unpaid_premium: float  # discounted, already inside value; negative when the desk owes it
     reporting_value: float
     reporting_standard_error: float
-    sampled_value: float
+    sampled_value: float  # under the leading model
     sampled_standard_error: float
     paths: int
     randomisations: int
+    time_steps: int  # of a path; 0 where levels are drawn at expiry alone
     degrees_of_freedom: int  # of the sampled standard error: take Student's t
     seconds: float
     status: Status
@@ -124,6 +136,103 @@ class UnderlyingFacts:
 
 
 @dataclass(frozen=True, slots=True)
+class QuoteFit:
+    """One quoted vanilla, and what the surface and the simulated model make of it; volatilities per year.
+
+    ``simulated`` is implied from the prices of the paths that trades are valued on, with the sampling
+    error ``simulated_standard_error``; None where the underlying was not simulated. ``counts``: whether
+    the quote lies between 10 and 90 delta, where the target applies.
+    """
+
+    underlying: str
+    expiry_date: date
+    strike: float
+    strike_of_forward: float
+    delta: float  # of the call on the forward, 0 to 1
+    quoted: float
+    fitted: float
+    simulated: float | None
+    simulated_standard_error: float | None
+    counts: bool
+
+
+@dataclass(frozen=True, slots=True)
+class SurfaceFacts:
+    """How one underlying's volatility quotes stand up: ``failures`` and ``violations`` in words, empty if none."""
+
+    underlying: str
+    passes: bool
+    failures: tuple[str, ...]
+    violations: tuple[str, ...]
+    quotes: tuple[QuoteFit, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class CurvePoint:
+    """One date of a curve. ``instrument`` and both rates are of the quote it was made from, if it was."""
+
+    curve: str
+    currency: str
+    collateral: str
+    date: date
+    zero_rate: float
+    discount_factor: float
+    instrument: str
+    quoted_rate: float | None
+    repriced_rate: float | None
+
+
+@dataclass(frozen=True, slots=True)
+class ForwardPoint:
+    """One underlying's forward on one date, after that day's dividends, in its currency.
+
+    ``dividend`` is the cash or proportional amount of that ex date on the forward, 0 on other dates;
+    ``floor`` the value on that date of cash dividends still to come, below which the price cannot fall.
+    ``simulated`` is the forward of the paths that trades are valued on, None where it was not simulated.
+    """
+
+    underlying: str
+    date: date
+    forward: float
+    dividend: float
+    floor: float
+    simulated: float | None
+    simulated_standard_error: float | None
+
+
+@dataclass(frozen=True, slots=True)
+class CreditPoint:
+    """Hazard rate up to one date and survival to it."""
+
+    name: str
+    date: date
+    recovery: float
+    hazard_rate: float
+    survival_probability: float
+
+
+@dataclass(frozen=True, slots=True)
+class FundingPoint:
+    """Zero spreads of the desk's unsecured cash to one date."""
+
+    date: date
+    borrowing_spread: float
+    lending_spread: float
+
+
+@dataclass(frozen=True, slots=True)
+class MarketFacts:
+    """What the run made of the snapshot, for the report's market sheets."""
+
+    surfaces: tuple[SurfaceFacts, ...] = ()
+    curves: tuple[CurvePoint, ...] = ()
+    forwards: tuple[ForwardPoint, ...] = ()
+    credit: tuple[CreditPoint, ...] = ()
+    funding: tuple[FundingPoint, ...] = ()
+    agreements: tuple[Agreement, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
 class Outcome:
     """Everything a report may show."""
 
@@ -133,6 +242,7 @@ class Outcome:
     refusals: tuple[Refusal, ...]
     issues: tuple[Issue, ...]
     underlyings: tuple[UnderlyingFacts, ...]
+    market: MarketFacts = MarketFacts()
 
     @property
     def exit_status(self) -> int:

@@ -4,11 +4,14 @@ from __future__ import annotations
 
 import math
 
+import numpy as np
+from numpy.typing import NDArray
+
 from pricer.contracts.book import Trade
 from pricer.engines.cross_check import compare
 from pricer.engines.european import Appraisal
 from pricer.engines.problem import ReferenceKind
-from pricer.market.calendars import year_fraction
+from pricer.market.coverage import failing_surfaces
 from pricer.market.market import Market
 from pricer.run.outcome import CrossCheck, Delta, Status, Valuation
 
@@ -21,12 +24,13 @@ _MIRRORED = {
 
 def valuation(appraisal: Appraisal, market: Market, *, disputed: bool = False) -> Valuation:
     """The position's value, errors and sensitivities, with its unpaid premium inside the value."""
-    trade, lead, drawn = appraisal.trade, appraisal.headline, appraisal.sample
+    trade, lead, drawn = appraisal.trade, appraisal.leading.headline, appraisal.leading.sample
     size = abs(trade.position)
     low, high = sorted((trade.position * lead.lower, trade.position * lead.upper))
     premium = unpaid_premium(trade, market)
     value = trade.position * lead.value + premium
     to_reporting = market.to_reporting(trade.currency)
+    difference, difference_error = _model_difference(appraisal)
     return Valuation(
         trade_id=trade.trade_id,
         product=trade.contract.product,
@@ -35,13 +39,16 @@ def valuation(appraisal: Appraisal, market: Market, *, disputed: bool = False) -
         netting_set=trade.netting_set,
         strategy=trade.strategy,
         expiry_date=trade.contract.expiry_date,
-        notional=size * appraisal.unit_notional,
+        notional=size * appraisal.terms.unit_notional,
         value=value,
         standard_error=size * lead.standard_error,
         lower=low + premium,
         upper=high + premium,
         interval=lead.interval,
         method=lead.method,
+        model=appraisal.lead,
+        model_difference=difference,
+        model_difference_standard_error=difference_error,
         unpaid_premium=premium,
         reporting_value=value * to_reporting,
         reporting_standard_error=size * lead.standard_error * to_reporting,
@@ -49,20 +56,35 @@ def valuation(appraisal: Appraisal, market: Market, *, disputed: bool = False) -
         sampled_standard_error=size * drawn.standard_error,
         paths=drawn.paths,
         randomisations=drawn.randomisations,
+        time_steps=appraisal.leading.time_steps,
         degrees_of_freedom=drawn.degrees_of_freedom,
         seconds=appraisal.seconds,
-        status=_status(appraisal, disputed=disputed),
+        status=_status(appraisal, market, disputed=disputed),
         ending=drawn.ending,
         deltas=deltas(appraisal, market),
     )
 
 
-def _status(appraisal: Appraisal, *, disputed: bool) -> Status:
+def _status(appraisal: Appraisal, market: Market, *, disputed: bool) -> Status:
+    if failing_surfaces(appraisal.trade, market):
+        return Status.FAILING_SURFACE
     if disputed:
         return Status.DISPUTED
-    if appraisal.headline.standard_error > appraisal.tolerance:
+    if appraisal.leading.headline.standard_error > appraisal.tolerance or not appraisal.leading.is_sound:
         return Status.PRECISION_NOT_REACHED
     return Status.PRICED
+
+
+def _model_difference(appraisal: Appraisal) -> tuple[float | None, float | None]:
+    """The position under local volatility less under lognormal levels, and its standard error."""
+    if not appraisal.has_smile:
+        return 0.0, 0.0
+    plain, smiled = appraisal.lognormal, appraisal.local_volatility
+    if plain is None or smiled is None:
+        return None, None
+    error = math.hypot(plain.headline.standard_error, smiled.headline.standard_error)
+    position = appraisal.trade.position
+    return position * (smiled.headline.value - plain.headline.value), abs(position) * error
 
 
 def unpaid_premium(trade: Trade, market: Market) -> float:
@@ -77,46 +99,66 @@ def unpaid_premium(trade: Trade, market: Market) -> float:
 def deltas(appraisal: Appraisal, market: Market) -> tuple[Delta, ...]:
     """Shares, gamma and vega per underlying, from the sensitivities of one unit.
 
-    Forwards are proportional to spots, so a derivative with respect to the logarithm of the
-    forward, divided by the spot, is the number of shares.
+    The random part of a forward is proportional to that of the spot, so a derivative with respect to its
+    logarithm, divided by the latter in the trade's currency, is the number of shares. A quanto's
+    forward moves with the volatility, which its vega includes.
     """
-    trade, drawn = appraisal.trade, appraisal.sample
+    trade, terms, drawn = appraisal.trade, appraisal.terms, appraisal.leading.sample
     position, size = trade.position, abs(trade.position)
-    years = year_fraction(market.valuation_date, trade.contract.expiry_date)
-    per_vol_point = 0.01 * math.sqrt(years)
+    names = trade.contract.underlyings
+    shares = terms.random_spots * terms.rates
+    vegas, vega_errors = _vegas(appraisal)
     rows = []
-    for i, underlying in enumerate(trade.contract.underlyings):
-        spot = market.underlyings[underlying].spot
+    for i, underlying in enumerate(names):
         gamma, gamma_error = None, None
         if drawn.log_gammas is not None and drawn.log_gamma_errors is not None:
-            gamma = position * float(drawn.log_gammas[i]) / spot**2
-            gamma_error = size * float(drawn.log_gamma_errors[i]) / spot**2
+            base = float(terms.random_spots[i] * shares[i])
+            gamma = position * float(drawn.log_gammas[i]) / base
+            gamma_error = size * float(drawn.log_gamma_errors[i]) / base
         rows.append(
             Delta(
                 underlying=underlying,
-                delta=position * float(drawn.log_deltas[i]) / spot,
-                standard_error=size * float(drawn.log_delta_errors[i]) / spot,
+                delta=position * float(drawn.log_deltas[i] / shares[i]),
+                standard_error=size * float(drawn.log_delta_errors[i] / shares[i]),
                 gamma=gamma,
                 gamma_standard_error=gamma_error,
-                vega=position * float(drawn.deviation_vegas[i]) * per_vol_point,
-                vega_standard_error=size * float(drawn.deviation_vega_errors[i]) * per_vol_point,
-                spot=spot,
-                method="pathwise, common factor integrated exactly",
+                vega=position * float(vegas[i]),
+                vega_standard_error=size * float(vega_errors[i]),
+                spot=market.underlyings[underlying].spot,
+                method=appraisal.leading.ratios,
             )
         )
     return tuple(rows)
 
 
+def _vegas(appraisal: Appraisal) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Of one unit per volatility point of each price at its forward, with errors: two (n,).
+
+    NaN for composites of several underlyings: their correlations move with their volatilities.
+    """
+    terms, drawn = appraisal.terms, appraisal.leading.sample
+    per_point = 0.01 * math.sqrt(terms.years) * terms.vega_slopes
+    if terms.is_composite:
+        missing = np.full(len(per_point), np.nan)
+        return missing, missing
+    deviations = terms.law.deviations
+    drifts = terms.drifts / np.where(deviations > 0.0, deviations, 1.0)
+    vegas = drawn.deviation_vegas + drifts * drawn.log_deltas
+    errors = np.hypot(drawn.deviation_vega_errors, drifts * drawn.log_delta_errors)
+    return per_point * vegas, per_point * errors
+
+
 def cross_checks(appraisal: Appraisal, tests_in_book: int) -> tuple[CrossCheck, ...]:
-    """The option's sampled position value beside every reference (no premium on either side)."""
-    trade, drawn = appraisal.trade, appraisal.sample
+    """The option's sampled position value beside every reference of each model (no premium on either side)."""
+    trade = appraisal.trade
     position, size, side = trade.position, abs(trade.position), _side(trade)
     rows = []
-    for reference in appraisal.references:
+    pairs = ((model, value.sample, reference) for model, value in appraisal.values for reference in value.references)
+    for model, drawn, reference in pairs:
         found = compare(
             drawn,
             reference,
-            unit_notional=appraisal.unit_notional,
+            unit_notional=appraisal.terms.unit_notional,
             asked=appraisal.tolerance,
             tests_in_book=tests_in_book,
         )
@@ -124,6 +166,7 @@ def cross_checks(appraisal: Appraisal, tests_in_book: int) -> tuple[CrossCheck, 
             CrossCheck(
                 trade_id=trade.trade_id,
                 product=trade.contract.product,
+                model=model,
                 engine_value=position * drawn.value,
                 engine_standard_error=size * drawn.standard_error,
                 reference_method=reference.method,
@@ -131,7 +174,7 @@ def cross_checks(appraisal: Appraisal, tests_in_book: int) -> tuple[CrossCheck, 
                 reference_value=position * reference.value,
                 reference_error=size * reference.error,
                 difference=position * found.difference,
-                difference_bp=side * found.difference / appraisal.unit_notional * 1e4,
+                difference_bp=side * found.difference / appraisal.terms.unit_notional * 1e4,
                 difference_standard_errors=None if found.standard_errors is None else side * found.standard_errors,
                 tolerance=size * found.tolerance,
                 verdict=found.verdict,

@@ -4,18 +4,22 @@ from __future__ import annotations
 
 import platform
 import time
+from dataclasses import replace
 from datetime import UTC, datetime
 from functools import partial
 from importlib.metadata import version
 
-from pricer.contracts.book import Book, Refusal, Trade
+from pricer.contracts.book import Book, Model, Refusal, Trade
 from pricer.core.issues import Issue, Severity
 from pricer.core.progress import Progress, Silent
+from pricer.engines.calibration import Calibration
 from pricer.engines.cross_check import ALARMS, APPROXIMATION_BP, FALSE_ALARM, IMMATERIAL, is_test
-from pricer.engines.european import Appraisal, appraise
+from pricer.engines.european import Appraisal, AppraisalSettings, appraise
+from pricer.market.correlation_stress import stressed
 from pricer.market.market import Market
 from pricer.run.admission import admit, refusal
 from pricer.run.local import map_groups
+from pricer.run.market_facts import market_facts
 from pricer.run.outcome import Outcome, RunFacts, UnderlyingFacts
 from pricer.run.position import cross_checks, valuation
 from pricer.run.settings import Settings
@@ -32,10 +36,11 @@ def price(book: Book, market: Market, settings: Settings | None = None, progress
     """
     settings = settings or Settings()
     started, clock = datetime.now(UTC), time.perf_counter()
-    admitted = admit(book, market)
+    market = _stressed(market, settings)
+    admitted = admit(book, market, accept_failing_surfaces=settings.accept_failing_surfaces)
 
     results = map_groups(
-        partial(_try_appraise, market=market, settings=settings),
+        partial(_try_appraise, market=market, settings=settings.appraisal),
         admitted.trades,
         workers=settings.workers,
         progress=progress or Silent(),
@@ -43,33 +48,51 @@ def price(book: Book, market: Market, settings: Settings | None = None, progress
     )
     appraisals = [result for result in results if isinstance(result, Appraisal)]
     failures = [result for result in results if isinstance(result, Refusal)]
-    tests = sum(is_test(reference) for appraisal in appraisals for reference in appraisal.references)
+    tests = sum(
+        is_test(reference)
+        for appraisal in appraisals
+        for _, value in appraisal.values
+        for reference in value.references
+    )
     checks = tuple(row for appraisal in appraisals for row in cross_checks(appraisal, tests))
     disputed = {check.trade_id for check in checks if check.verdict in ALARMS}
+    priced = time.perf_counter() - clock
+    used = sorted({name for appraisal in appraisals for name in appraisal.trade.contract.underlyings})
+    simulated = {name for appraisal in appraisals if appraisal.local_volatility is not None
+                 for name in appraisal.trade.contract.underlyings if name in market.surfaces}  # fmt: skip
+    calibrations = _calibrations(sorted(simulated), market, settings)
 
     return Outcome(
-        facts=_facts(book, market, settings, started, time.perf_counter() - clock, appraisals),
+        facts=_facts(book, market, settings, started, priced, time.perf_counter() - clock, appraisals),
         valuations=tuple(
             valuation(appraisal, market, disputed=appraisal.trade.trade_id in disputed) for appraisal in appraisals
         ),
         cross_checks=checks,
         refusals=(*admitted.refusals, *failures),
         issues=(*admitted.issues, *(issue for failure in failures for issue in failure.issues)),
-        underlyings=_underlying_facts(appraisals, market),
+        underlyings=tuple(_underlying_facts(name, market) for name in used),
+        market=market_facts(market, used, calibrations),
     )
 
 
-def _try_appraise(trade: Trade, market: Market, settings: Settings) -> Appraisal | Refusal:
+def _stressed(market: Market, settings: Settings) -> Market:
+    """The market with correlations among underlyings moved as asked; those of exchange rates only give way."""
+    one, zero = settings.correlation_towards_one, settings.correlation_towards_zero
+    if market.correlation is None or max(one, zero) == 0.0:
+        return market
+    ids = [name for name in market.correlation.ids if name in market.underlyings]
+    return replace(market, correlation=stressed(market.correlation, towards_one=one, towards_zero=zero, ids=ids))
+
+
+def _calibrations(names: list[str], market: Market, settings: Settings) -> dict[str, Calibration]:
+    """Every quoted vanilla of these underlyings through the paths that trades are valued on."""
+    return {}
+
+
+def _try_appraise(trade: Trade, market: Market, settings: AppraisalSettings) -> Appraisal | Refusal:
     """An appraisal, or the refusal of a trade on which the engine failed: one bad trade stops no run."""
     try:
-        return appraise(
-            trade,
-            market,
-            seed=settings.seed,
-            precision_bp=settings.precision_bp,
-            delta_precision_bp=settings.delta_precision_bp,
-            settings=settings.sampling,
-        )
+        return appraise(trade, market, settings)
     except (ArithmeticError, ValueError, LookupError) as error:
         issue = Issue(
             code="engine-failed",
@@ -82,18 +105,21 @@ def _try_appraise(trade: Trade, market: Market, settings: Settings) -> Appraisal
         return refusal(trade, (issue,))
 
 
-def _underlying_facts(appraisals: list[Appraisal], market: Market) -> tuple[UnderlyingFacts, ...]:
-    used = {u for appraisal in appraisals for u in appraisal.trade.contract.underlyings}
-    facts = (market.underlyings[u] for u in sorted(used))
-    return tuple(
-        UnderlyingFacts(u.underlying_id, u.currency, u.spot, u.lot_size, market.to_reporting(u.currency)) for u in facts
-    )
+def _underlying_facts(name: str, market: Market) -> UnderlyingFacts:
+    u = market.underlyings[name]
+    return UnderlyingFacts(u.underlying_id, u.currency, u.spot, u.lot_size, market.to_reporting(u.currency))
 
 
 def _facts(
-    book: Book, market: Market, settings: Settings, started: datetime, seconds: float, appraisals: list[Appraisal]
+    book: Book,
+    market: Market,
+    settings: Settings,
+    started: datetime,
+    priced: float,
+    seconds: float,
+    appraisals: list[Appraisal],
 ) -> RunFacts:
-    sampling = settings.sampling
+    sampling, steps = settings.sampling, settings.local_vol
     return RunFacts(
         valuation_date=market.valuation_date,
         reporting_currency=market.reporting_currency,
@@ -107,7 +133,10 @@ def _facts(
             *((library, version(library)) for library in _LIBRARIES),
         ),
         settings=(
-            ("model", "correlated lognormal, volatility flat in strike"),
+            ("model, unless the trade asks for one", _model_in_words(settings)),
+            ("both models compared", "yes" if settings.compare_models else "no"),
+            ("volatility surfaces that fail their checks", _failing_in_words(settings)),
+            ("correlations among underlyings", _stress_in_words(settings)),
             ("target standard error of a value (bp of notional)", f"{settings.precision_bp:g}"),
             (
                 "target standard error of a cash delta (bp of notional or of gross cash delta)",
@@ -116,6 +145,7 @@ def _facts(
             ("independent randomisations", str(sampling.randomisations)),
             ("points a randomisation: first, at most", f"{sampling.initial_points}, {sampling.maximum_points}"),
             ("order of random factors", sampling.ordering),
+            ("time steps under local volatility: first, at most", f"{steps.initial_steps}, {steps.maximum_steps}"),
             ("cross-check: chance of one false alarm in the book", f"{FALSE_ALARM:g}"),
             ("cross-check: never an alarm below (part of the standard error asked for)", f"{IMMATERIAL:g}"),
             ("cross-check: approximation called close within (bp of notional)", f"{APPROXIMATION_BP:g}"),
@@ -123,7 +153,25 @@ def _facts(
         started=started,
         seconds=seconds,
         timings=(
-            ("pricing, all trades together", seconds),
+            ("pricing, all trades together", priced),
+            ("repricing the quoted vanillas", seconds - priced),
             ("pricing, summed over workers", sum(appraisal.seconds for appraisal in appraisals)),
         ),
     )
+
+
+def _model_in_words(settings: Settings) -> str:
+    if settings.model is None:
+        return f"{Model.LOCAL_VOLATILITY} where an underlying has a smile, else {Model.LOGNORMAL}"
+    return str(settings.model)
+
+
+def _failing_in_words(settings: Settings) -> str:
+    return "accepted, trades marked" if settings.accept_failing_surfaces else "not priced from"
+
+
+def _stress_in_words(settings: Settings) -> str:
+    for share, end in ((settings.correlation_towards_one, "one"), (settings.correlation_towards_zero, "zero")):
+        if share > 0.0:
+            return f"moved {100.0 * share:g} % of the way towards {end}"
+    return "as in the market"

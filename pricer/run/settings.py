@@ -5,6 +5,9 @@ from __future__ import annotations
 import os
 from dataclasses import dataclass, field
 
+from pricer.contracts.book import Model
+from pricer.engines.european import AppraisalSettings
+from pricer.engines.local_vol_monte_carlo import LocalVolSettings
 from pricer.engines.monte_carlo import SamplingSettings
 
 
@@ -22,13 +25,24 @@ class Settings:
     ``delta_precision_bp`` : the same for each cash delta (delta times spot), of the trade's
     notional or of its gross cash delta, whichever is larger.
     ``workers`` : threads that price trades side by side; no number depends on it.
+    ``model`` leads where a trade asks for none; None: local volatility where an underlying has a smile,
+    else lognormal. ``compare_models`` : compute both wherever they differ, for the model difference.
+    ``accept_failing_surfaces`` : price from volatility surfaces that fail their checks, and mark the trades.
+    ``correlation_towards_one``, ``correlation_towards_zero`` : shares from 0 to 1 by which all correlations
+    among underlyings are moved; at most one is above 0.
     """
 
     seed: int = 20_000
     precision_bp: float = 1.0
     delta_precision_bp: float = 1.0
     workers: int = field(default_factory=available_cores)
+    model: Model | None = None
+    compare_models: bool = True
+    accept_failing_surfaces: bool = False
+    correlation_towards_one: float = 0.0
+    correlation_towards_zero: float = 0.0
     sampling: SamplingSettings = field(default_factory=SamplingSettings)
+    local_vol: LocalVolSettings = field(default_factory=LocalVolSettings)
 
     def __post_init__(self) -> None:
         if self.seed < 0:
@@ -37,3 +51,21 @@ class Settings:
             raise ValueError(f"the precision must be above 0 basis points; got {self.precision_bp}")
         if self.workers < 1:
             raise ValueError(f"the number of workers must be at least 1; got {self.workers}")
+        for share in (self.correlation_towards_one, self.correlation_towards_zero):
+            if not 0.0 <= share <= 1.0:
+                raise ValueError(f"correlations are moved by a share from 0 to 1; got {share}")
+        if self.correlation_towards_one > 0.0 and self.correlation_towards_zero > 0.0:
+            raise ValueError("correlations are moved either towards one or towards zero")
+
+    @property
+    def appraisal(self) -> AppraisalSettings:
+        """What the engines need of it."""
+        return AppraisalSettings(
+            seed=self.seed,
+            precision_bp=self.precision_bp,
+            delta_precision_bp=self.delta_precision_bp,
+            model=self.model,
+            compare_models=self.compare_models,
+            sampling=self.sampling,
+            local_vol=self.local_vol,
+        )

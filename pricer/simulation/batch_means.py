@@ -37,12 +37,20 @@ def batch_estimate(means: Array, controls: Array | None = None, control_rounding
     ``control_rounding`` : how far rounding may take a control's mean from 0. A column whose
     error without the control is smaller than what that would add goes without it.
     """
+    estimate, error, _ = batch_regression(means, controls, control_rounding)
+    return estimate, error
+
+
+def batch_regression(
+    means: Array, controls: Array | None = None, control_rounding: float = 0.0
+) -> tuple[Array, Array, Array]:
+    """As ``batch_estimate``, and the slopes (m,): how much of a control's own error enters."""
     n = means.shape[0]
     centre = means.mean(axis=0)
     off = means - centre
     plain = _error(off / (n - 1))
     if controls is None:
-        return centre, plain
+        return centre, plain, np.zeros_like(centre)
     control_centre = controls.mean(axis=0)
     control_off = controls - control_centre
     spread = (control_off * control_off).sum(axis=0)
@@ -54,7 +62,7 @@ def batch_estimate(means: Array, controls: Array | None = None, control_rounding
     left_out = 1.0 - 1.0 / n - reach * control_off  # 0 where one randomisation alone moves the control
     shares = (1.0 / n - reach * control_centre) / np.maximum(left_out, 1e-6)
     error = _error(shares * (off - slope * control_off))
-    return centre - slope * control_centre, np.hypot(error, slope * control_rounding)
+    return centre - slope * control_centre, np.hypot(error, slope * control_rounding), slope
 
 
 def _error(influences: Array) -> Array:

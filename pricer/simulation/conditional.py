@@ -46,11 +46,11 @@ class Integrated(NamedTuple):
 
 
 def integrate_factor(
-    payoff: PiecewiseLinear, v: float, scaled: Array, outside: Array, gross: Array | float = 0.0
+    payoff: PiecewiseLinear, v: float | Array, scaled: Array, outside: Array, gross: Array | float = 0.0
 ) -> Integrated:
-    """``E[payoff(exp(v w) scaled + outside)]`` and derivatives.
+    """``E[payoff(exp(v w) scaled + outside)]`` and derivatives; ``v`` one for all, or of the shape of ``scaled``.
 
-    ``v = 0`` gives the payoff itself and its slope, at a knot those from its left; second
+    ``v = 0`` throughout gives the payoff itself and its slope, at a knot those from its left; second
     derivatives and the effect of jumps on first ones are then missing. ``gross`` : sum of the
     absolute terms behind the level, beside which a level is at a knot (see ``is_above``).
     """
@@ -66,7 +66,7 @@ def integrate_factor(
     sign = np.where(scaled < 0.0, -1.0, 1.0)
     for knot, bend, jump in zip(payoff.knots, payoff.bends, payoff.jumps, strict=True):
         threshold = knot - outside
-        if v > 0.0:
+        if np.all(np.asarray(v) > 0.0):
             k = np.maximum(np.abs(threshold), _TINY)
             d = np.clip(np.log(size / k) / v, -_FAR, _FAR)
             d = np.where((scaled < 0.0) != (threshold < 0.0), _FAR, d)

@@ -12,7 +12,7 @@ from pricer.simulation.kernels import fused, payoffs
 from pricer.simulation.kernels.elementary import NORMAL_VARIANCE_EXCESS
 from pricer.simulation.kernels.vectors import BLOCK, aligned
 
-_KINDS = {
+KINDS = {
     AggregateKind.WEIGHTED_SUM: payoffs.SUM,
     AggregateKind.BEST_OF: payoffs.BEST,
     AggregateKind.WORST_OF: payoffs.WORST,
@@ -43,7 +43,7 @@ class Sampler:
         self._loadings = aligned((n, padded), np.float32)
         self._loadings[:, :dims] = design.loadings / np.sqrt(1.0 + NORMAL_VARIANCE_EXCESS)
         self._loadings[:, dims:] = 0.0
-        self._widths = _widths(self._loadings)
+        self._widths = rows_in_use(self._loadings)
         f = design.payoff
         self._profile = np.array([f.intercept, f.slope, *f.knots, *f.bends, *f.jumps], dtype=float)
         self._rank_weights = design.rank_weights.astype(np.float32)
@@ -74,7 +74,7 @@ class Sampler:
             self._widths,
             design.scales,
             self._rank_weights,
-            _KINDS[design.kind],
+            KINDS[design.kind],
             design.n_common,
             design.factor_deviation,
             self._profile,
@@ -90,7 +90,7 @@ class Sampler:
         return self.sums
 
 
-def _widths(loadings: NDArray[np.float32]) -> NDArray[np.int64]:
+def rows_in_use(loadings: NDArray[np.float32]) -> NDArray[np.int64]:
     """Columns in use up to each row: multiples of 4, at least 4, never decreasing, (n,)."""
     used = loadings != 0.0
     last = np.where(used.any(axis=1), loadings.shape[1] - np.argmax(used[:, ::-1], axis=1), 1)

@@ -33,6 +33,22 @@ def directions(dimensions: int) -> NDArray[np.uint32]:
     raise ValueError(f"{dimensions} dimensions; at most {_SIZES[-1]} can be sampled")
 
 
+def extended_directions(dimensions: int) -> NDArray[np.uint32]:
+    """As ``directions``, for any number of dimensions.
+
+    Beyond the table they are drawn at random, once and for all: every coordinate is then as
+    evenly spread as in the table, and pairs of coordinates are no better than independent
+    points. The last coordinates of a path matter little.
+    """
+    table = directions(min(dimensions, _SIZES[-1]))
+    missing = dimensions - len(table)
+    if missing <= 0:
+        return table
+    draws = np.random.Generator(np.random.PCG64(_SIZES[-1])).integers(0, 2**32, (missing, BITS), dtype=np.uint32)
+    lowest = np.uint32(1) << np.arange(31, 31 - BITS, -1, dtype=np.uint32)
+    return np.vstack([table, (draws & ~(lowest - np.uint32(1))) | lowest])
+
+
 @lru_cache(maxsize=len(_SIZES))
 def _directions(dimensions: int) -> NDArray[np.uint32]:
     import QuantLib as ql  # noqa: N813 - slow to import, needed once

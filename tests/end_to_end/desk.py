@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-import importlib.util
+import importlib
+import sys
 from pathlib import Path
 from types import ModuleType
 
@@ -10,14 +11,24 @@ from pricer.loader import write_tables
 
 ROOT = Path(__file__).parents[2]
 SAMPLE = ROOT / "sample_books" / "saltmarsh_desk"
+BROKEN_MARKET = ROOT / "sample_books" / "saltmarsh_desk_broken_market"
 
 
 def sample_maker() -> ModuleType:
     """The script that writes the sample, as a module."""
-    spec = importlib.util.spec_from_file_location("make_sample", ROOT / "sample_books" / "make_sample.py")
-    module = importlib.util.module_from_spec(spec)
-    spec.loader.exec_module(module)
-    return module
+    return _of_sample("make_sample")
+
+
+def saltmarsh(name: str) -> ModuleType:
+    """One of the modules that the script is made of."""
+    return _of_sample(f"saltmarsh.{name}")
+
+
+def _of_sample(name: str) -> ModuleType:
+    folder = str(ROOT / "sample_books")  # where the script itself would find its modules
+    if folder not in sys.path:
+        sys.path.append(folder)
+    return importlib.import_module(name)
 
 
 def small_book(*trade_ids: str) -> dict[str, list[dict]]:

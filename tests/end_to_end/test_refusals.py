@@ -559,14 +559,17 @@ def test_faults_of_a_market_are_told_with_their_cells(tmp_path):
     assert [str(issue) for issue in market.issues] == [
         'market.xlsx, sheet underlyings, row 2, column "spot" (cell C2): found -84.2; expected a number above 0. '
         "Enter its price, in its currency, e.g. 84.20.",
-        'market.xlsx, sheet volatilities, row 4, column "volatility_decimal" (cell C4): found 26.2; expected a '
-        "decimal number "
-        "above 0 and no larger than 3. Did you mean 0.262 (26.2 %)?",
         'market.xlsx, sheet curve_points, row 2, column "zero_rate_decimal" (cell D2): found 1.95; expected a '
         "decimal number "
         "no larger than 1. Did you mean 0.0195 (1.95 %)?",
+        'market.xlsx, sheet volatilities, row 4, column "volatility_decimal" (cell C4): found 26.2; expected a '
+        "decimal number "
+        "above 0 and no larger than 3. Did you mean 0.262 (26.2 %)?",
+        'market.xlsx, sheet credit, row 2, column "currency" (cell E2): found EUR, which has no usable standard curve; '
+        "expected a currency with a curve without collateral in the table curves. Add or mend the curve, or correct "
+        "the currency.",
     ]
-    assert sorted(market.rejected) == ["EUR-STANDARD", "ORLUMA", "TESKIR"]
+    assert sorted(market.rejected) == ["EUR-STANDARD", "ORLUMA", "TESKIR", "credit:Guldmar Bank"]
 
 
 def test_a_market_given_as_a_book_and_a_book_given_as_a_market(tmp_path, tables):

@@ -11,8 +11,8 @@ from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
 from pricer.contracts.aggregate import Aggregate, AggregateKind
-from pricer.contracts.book import Book, Premium, Trade
-from pricer.contracts.option import EuropeanOption
+from pricer.contracts.book import Book, Model, Premium, Trade
+from pricer.contracts.option import Conversion, EuropeanOption
 from pricer.contracts.profile import Profile, ProfileKind
 from pricer.core.issues import Severity
 from pricer.loader import load_book, write_book, write_tables
@@ -86,6 +86,7 @@ def trades(draw, trade_id: str) -> Trade:
         expiry_date=expiry,
         payment_date=advance(CURRENCY_CALENDARS[currency], expiry, draw(st.integers(0, 15))),
         on_performance=on_performance,
+        conversion=draw(st.none() | st.sampled_from(Conversion)),
     )
     trade_date = draw(st.none() | st.integers(0, 2000).map(lambda back: expiry - timedelta(days=back)))
     paid = (trade_date or expiry) + timedelta(days=draw(st.integers(0, 30)))
@@ -100,6 +101,7 @@ def trades(draw, trade_id: str) -> Trade:
         counterparty=draw(st.just("") | names),
         netting_set=draw(st.just("") | names),
         strategy=draw(st.just("") | names),
+        model=draw(st.none() | st.sampled_from(Model)),
     )
 
 

@@ -13,6 +13,7 @@ from pricer.run.outcome import (
     CrossCheck,
     Delta,
     Interval,
+    Model,
     Outcome,
     RunFacts,
     Status,
@@ -20,6 +21,7 @@ from pricer.run.outcome import (
     Valuation,
     Verdict,
 )
+from tests.unit.report_markets import market_facts
 
 VALUATION_DATE = date(2026, 5, 29)
 TO_EUR = {"EUR": 1.0, "CHF": 1.0625, "JPY": 0.0059}
@@ -72,6 +74,10 @@ def valuation(i: int = 0, **changes) -> Valuation:
     value = notional * draw.uniform(-0.11, 0.17)
     exact = i % 3 == 0
     missed = i % 11 == 10 and not exact
+    from_failing = i % 17 == 7
+    smiling, compared = i % 4 != 3, i % 9 != 8
+    smile = random.Random(f"smile {i}")
+    model_difference = notional * smile.uniform(-2e-3, 3e-3) if smiling else 0.0
     error = 0.0 if exact else notional * draw.uniform(2e-5, 9e-5)
     half = 1e-7 * notional if exact else 2.947 * error
     sampled = value + (notional * 4e-5 * draw.gauss(0.0, 1.0) if exact else 0.0)
@@ -90,6 +96,9 @@ def valuation(i: int = 0, **changes) -> Valuation:
         upper=value + half,
         interval=Interval.EXACT if exact else Interval.SAMPLING,
         method=EXACT if exact else SAMPLED,
+        model=Model.LOCAL_VOLATILITY if smiling and not exact else Model.LOGNORMAL,
+        model_difference=model_difference if compared else None,
+        model_difference_standard_error=(2e-5 * notional if smiling else 0.0) if compared else None,
         unpaid_premium=-0.02 * notional if i % 7 == 0 else 0.0,
         reporting_value=value * TO_EUR[currency],
         reporting_standard_error=error * TO_EUR[currency],
@@ -97,13 +106,20 @@ def valuation(i: int = 0, **changes) -> Valuation:
         sampled_standard_error=error or notional * 4e-5,
         paths=65_536 if i % 2 else 131_072,
         randomisations=16,
+        time_steps=64 if smiling and not exact else 0,
         degrees_of_freedom=14,
         seconds=draw.uniform(0.01, 0.9),
-        status=Status.PRECISION_NOT_REACHED if missed else Status.PRICED,
+        status=_status(missed, from_failing),
         ending="largest number of points reached" if missed else "target standard error reached",
         deltas=tuple(_delta(draw, u, notional) for u in draw.sample(UNDERLYINGS, draw.randrange(2, 9))),
     )
     return replace(base, **changes)
+
+
+def _status(missed: bool, from_failing: bool) -> Status:
+    if from_failing:
+        return Status.FAILING_SURFACE
+    return Status.PRECISION_NOT_REACHED if missed else Status.PRICED
 
 
 def _delta(draw: random.Random, underlying: UnderlyingFacts, notional: float) -> Delta:
@@ -133,6 +149,7 @@ def checks_of(valuation: Valuation, i: int = 0) -> tuple[CrossCheck, ...]:
         return CrossCheck(
             trade_id=valuation.trade_id,
             product=valuation.product,
+            model=valuation.model,
             engine_value=valuation.sampled_value,
             engine_standard_error=error,
             reference_method=method,
@@ -252,6 +269,7 @@ def outcome(n_trades: int = 40, refused: tuple[Refusal, ...] | None = None, **ch
         refusals=refused,
         issues=(*WARNINGS, *(found for refusal in refused for found in refusal.issues)),
         underlyings=UNDERLYINGS,
+        market=market_facts(),
     )
     return replace(base, **changes)
 

@@ -5,10 +5,12 @@ from __future__ import annotations
 from copy import deepcopy
 from datetime import date
 
+import openpyxl
 import pytest
 
 from pricer.contracts.aggregate import Aggregate
-from pricer.contracts.book import Premium
+from pricer.contracts.book import Model, Premium
+from pricer.contracts.option import Conversion
 from pricer.contracts.profile import Profile, ProfileKind
 from pricer.core.issues import Severity
 from pricer.core.source import Place
@@ -59,6 +61,95 @@ def test_the_examples_become_the_trades_they_describe(load, tables):
     assert ranked.contract.profile.cash_amount == 0.08
     assert second.contract.aggregate == Aggregate.kth_best(2, 2)
     assert best.contract.aggregate == Aggregate.best_of(2, cash=1.0)
+    assert [trade.model for trade in book] == [None, Model.LOCAL_VOLATILITY, None, None, None, None]
+    assert [trade.contract.conversion for trade in book] == [None] * 5 + [Conversion.QUANTO]
+
+
+@pytest.mark.parametrize(
+    ("word", "conversion"), [("Composite", Conversion.COMPOSITE), ("QUANTO", Conversion.QUANTO), (None, None)]
+)
+def test_a_conversion_is_carried_by_the_contract(load, tables, word, conversion):
+    tables["trades"][0]["conversion"] = word
+    book = load(tables)
+    assert book.issues == ()
+    assert book.trades[0].contract.conversion is conversion
+
+
+@pytest.mark.parametrize(
+    ("word", "model"), [("lognormal", Model.LOGNORMAL), ("Local-Volatility", Model.LOCAL_VOLATILITY), ("", None)]
+)
+def test_a_model_is_carried_by_the_trade(load, tables, word, model):
+    tables["trades"][0]["model"] = word
+    book = load(tables)
+    assert book.issues == ()
+    assert book.trades[0].model is model
+
+
+def test_books_without_the_optional_columns_load_as_before(tables, tmp_path):
+    path = tmp_path / "old.xlsx"
+    write_tables(tables, path)
+    workbook = openpyxl.load_workbook(path)
+    header = [cell.value for cell in workbook["trades"][1]]
+    for name in ("model", "conversion"):
+        workbook["trades"].delete_cols(header.index(name) + 1)
+    workbook.save(path)
+    book = load_book(path)
+    assert book.issues == () and len(book) == 6
+    assert {trade.model for trade in book} == {trade.contract.conversion for trade in book} == {None}
+
+
+@pytest.mark.parametrize(
+    ("column", "cell", "value", "message"),
+    [
+        (
+            "conversion",
+            "T2",
+            "quantoo",
+            'found "quantoo"; expected one of: quanto, composite. Did you mean "quanto"?',
+        ),
+        (
+            "conversion",
+            "T2",
+            "converted",
+            'found "converted"; expected one of: quanto, composite. Enter how prices quoted in other currencies are '
+            "paid, quanto: one unit of theirs counts as one of the trade's; composite: converted at the expiry's "
+            "exchange rate, with strike and initial fixings in the trade's currency, e.g. quanto, or clear the cell if "
+            "all underlyings are quoted in the trade's currency.",
+        ),
+        (
+            "model",
+            "AB2",
+            "stochastic",
+            'found "stochastic"; expected one of: lognormal, local volatility. Enter the model of the underlyings, '
+            "e.g. local volatility, or clear the cell for the run's choice.",
+        ),
+        (
+            "model",
+            "AB2",
+            2.0,
+            'found "2"; expected one of: lognormal, local volatility. Enter the model of the underlyings, e.g. local '
+            "volatility, or clear the cell for the run's choice.",
+        ),
+    ],
+)
+def test_an_unknown_conversion_or_model_costs_its_trade_and_is_told_in_full(load, tables, column, cell, value, message):
+    tables["trades"][0][column] = value
+    (refusal,) = load(tables).refusals
+    assert refusal.trade_id == "EX-1"
+    assert [str(issue) for issue in refusal.issues] == [
+        f'book.xlsx, sheet trades, row 2, column "{column}" (cell {cell}): {message}'
+    ]
+
+
+def test_a_missing_fixing_is_told_in_full(load, tables):
+    tables["constituents"][0]["initial_fixing"] = None
+    (refusal,) = load(tables).refusals
+    assert [str(issue) for issue in refusal.issues] == [
+        'book.xlsx, sheet constituents, row 2, column "initial_fixing" (cell D2): found a blank cell; expected a '
+        "number above 0, as the trade is a performance option. Enter the price that performance is measured from, for "
+        "performance options, in the underlying's currency (for a composite in the trade's: price times exchange rate "
+        "on the fixing day), e.g. 84.20."
+    ]
 
 
 def test_payment_follows_expiry_by_business_days_of_the_settlement_calendar(load, tables):
@@ -82,7 +173,7 @@ def test_every_cell_of_a_trade_can_be_found_again(load, tables):
     assert places["EX-1", "payment_date"] == places["EX-1", "settlement_lag_days"]
     assert places.get(("EX-1", "underlying:ALIEN")) is None
     assert places.get(("EX-9", "strike")) is None
-    assert len(places) == len(list(places)) == len(set(places)) == 6 * 27 + 14 * 3
+    assert len(places) == len(list(places)) == len(set(places)) == 6 * 29 + 14 * 3
     assert all(places[key] == place for key, place in places.items())
 
 

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-from copy import deepcopy
 from datetime import date
 
 import openpyxl
@@ -11,12 +10,12 @@ import pytest
 
 from pricer.core.issues import InputError, Severity
 from pricer.loader import load_market, write_tables
-from pricer.loader.examples import EXAMPLE_MARKET
+from tests.unit.market_tables import small_market
 
 
 @pytest.fixture
 def tables():
-    return deepcopy(dict(EXAMPLE_MARKET))
+    return small_market()
 
 
 @pytest.fixture
@@ -33,7 +32,7 @@ def codes(issues):
     return [(issue.code, str(issue.severity)) for issue in issues]
 
 
-def test_the_example_market_has_everything_and_no_issue(load, tables):
+def test_a_small_market_has_everything_and_no_issue(load, tables):
     market = load(tables)
     assert market.issues == () and market.rejected == {}
     assert (market.valuation_date, market.reporting_currency, market.name) == (date(2026, 3, 31), "EUR", "market")

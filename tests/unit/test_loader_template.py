@@ -11,10 +11,11 @@ import pytest
 from pricer.core.issues import InputError
 from pricer.loader import load_book, load_market, write_templates
 from pricer.loader.columns import columns_of
-from pricer.loader.examples import EXAMPLE_BOOK, EXAMPLE_MARKET
+from pricer.loader.examples import EXAMPLE_BOOK, EXAMPLE_MARKET, EXAMPLE_PRICE_HISTORY
 from pricer.loader.schema import BOOK, MARKET
 
-PARTS = [("book.xlsx", BOOK, EXAMPLE_BOOK), ("market.xlsx", MARKET, EXAMPLE_MARKET)]
+MARKET_EXAMPLES = {**EXAMPLE_MARKET, **EXAMPLE_PRICE_HISTORY}
+PARTS = [("book.xlsx", BOOK, EXAMPLE_BOOK), ("market.xlsx", MARKET, MARKET_EXAMPLES)]
 
 
 @pytest.fixture(scope="module")
@@ -110,12 +111,18 @@ def test_the_example_rows_load_when_they_are_copied_into_the_tables(folder):
         fill_from_examples(path)
     book, market = load_book(folder / "filled" / "book.xlsx"), load_market(folder / "filled" / "market.xlsx")
     assert len(book) == len(EXAMPLE_BOOK["trades"])
-    assert book.issues == market.issues == ()
-    assert len(market.underlyings) == 3
+    assert book.issues == ()
+    assert [str(issue) for issue in market.issues] == [
+        "market.xlsx, sheet price_history: found a table price_history, while correlation_source in the table snapshot "
+        'is "table"; expected the table price_history only where correlation_source is "price history". Ignored. '
+        "Change correlation_source, or delete the table."
+    ]
+    assert list(market.underlyings) == ["ORLUMA", "TESKIR", "VADRONE", "WEXMOOR"]
+    assert list(market.surfaces) == list(market.repo) == ["WEXMOOR"]
 
 
 def test_the_examples_use_every_column(folder):
-    for tables, rows in ((BOOK, EXAMPLE_BOOK), (MARKET, EXAMPLE_MARKET)):
+    for tables, rows in ((BOOK, EXAMPLE_BOOK), (MARKET, MARKET_EXAMPLES)):
         for name, table in tables.items():
             used = {column for row in rows[name] for column, value in row.items() if value is not None}
             assert set(table.columns) <= used, name

@@ -89,8 +89,8 @@ def test_an_underlying_in_another_currency():
     assert issue.code == "other-currency"
     assert str(issue) == (
         CONSTITUENT + 'found underlying "CADMUS", quoted in USD, in a trade in EUR; expected underlyings quoted in the '
-        "trade's currency. Correct the trade's currency if it is USD; quanto and composite trades are not priced by "
-        "this version."
+        "trade's currency, or a conversion. Correct the trade's currency if it is USD, or set its conversion to "
+        "quanto or composite."
     )
 
 

@@ -29,6 +29,7 @@ from pricer.simulation.kernels.payoffs import (
     SUM,
     VALUE,
     WORST,
+    constant_factor,
     extreme,
     integrate_factor,
     rank_weighted,
@@ -169,6 +170,7 @@ def accumulate(
     ``sums`` : (randomisations, HEAD_SUMS + LEG_SUMS n): value, scaled part, outside part; per
     asset the sums of ``_add_legs``. Blocks are added in order.
     """
+    constant_factor(v, paths)
     for r in range(columns.shape[0]):
         low_table(columns[r], table)
         for start in range(first, last, BLOCK):
@@ -184,7 +186,7 @@ def accumulate(
             elif kind == RANKED:
                 # normals are no longer needed: their rows hold the ranks
                 rank_weighted(levels, scales, rank_weights, normals, paths)
-            integrate_factor(profile, v, with_ratios, paths)
+            integrate_factor(profile, v > 0.0, with_ratios, paths)
             m = min(BLOCK, last - start)
             _add_head(paths, m, sums[r])
             if with_ratios:

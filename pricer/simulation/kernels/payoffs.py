@@ -32,13 +32,17 @@ BY_FACTOR = 4 * BLOCK
 BY_OUTSIDE = 5 * BLOCK
 BY_SCALED_TWICE = 6 * BLOCK
 BY_OUTSIDE_TWICE = 7 * BLOCK
-_DISTANCE = 8 * BLOCK
-_DENSITY = 9 * BLOCK
-_ABOVE = 10 * BLOCK
-_ABOVE_WEIGHTED = 11 * BLOCK
-_INVERSE = 12 * BLOCK
-_LOG = 13 * BLOCK
-PATH_ROWS = 14
+FACTOR = 8 * BLOCK  # deviation v of the log of the scaled part over the common factor
+GROWTH = 9 * BLOCK  # exp(v^2 / 2)
+SHRINKAGE = 10 * BLOCK  # exp(-v^2 / 2)
+INVERSE_FACTOR = 11 * BLOCK  # 1 / v, 0 where there is no factor
+_DISTANCE = 12 * BLOCK
+_DENSITY = 13 * BLOCK
+_ABOVE = 14 * BLOCK
+_ABOVE_WEIGHTED = 15 * BLOCK
+_INVERSE = 16 * BLOCK
+_LOG = 17 * BLOCK
+PATH_ROWS = 18
 
 #: Distances are held within this many deviations; there and beyond the density counts as 0.
 _FAR = 37.0
@@ -114,35 +118,46 @@ def rank_weighted(levels: Any, scales: Any, rank_weights: Any, ranks: Any, paths
 
 
 @njit(**OPTIONS)
-def integrate_factor(profile: Any, v: float, with_ratios: bool, paths: Any) -> None:
+def constant_factor(v: float, paths: Any) -> None:
+    """One deviation of the common factor for all paths; 0: there is none."""
+    growth = np.exp(0.5 * v * v)
+    inverse = 1.0 / v if v > 0.0 else 0.0
+    for p in range(BLOCK):
+        paths[FACTOR + p] = v
+        paths[GROWTH + p] = growth
+        paths[SHRINKAGE + p] = 1.0 / growth
+        paths[INVERSE_FACTOR + p] = inverse
+
+
+@njit(**OPTIONS)
+def integrate_factor(profile: Any, smooth: bool, with_ratios: bool, paths: Any) -> None:
     """Expectation over ``w ~ N(0, 1)`` of ``f(exp(v w) SCALED + OUTSIDE)`` and its derivatives.
 
-    ``profile`` : (2 + 3 n_knots,): intercept, slope, knots, bends, jumps. With ``v = 0`` the
-    payoff itself and its slope. Formulas: :mod:`pricer.simulation.conditional`.
+    ``profile`` : (2 + 3 n_knots,): intercept, slope, knots, bends, jumps. v is ``FACTOR``, path by
+    path; unless ``smooth`` it is 0 throughout and the result is the payoff itself and its slope.
+    Formulas: :mod:`pricer.simulation.conditional`.
     """
     use_wide_vectors()
     n_knots = (profile.shape[0] - 2) // 3
     intercept, slope = profile[0], profile[1]
-    growth = np.exp(0.5 * v * v)
-    inverse_v = 1.0 / v if v > 0.0 else 0.0
     for p in range(BLOCK):
         scaled = paths[SCALED + p]
         size = max(abs(scaled), 1e-200)
-        paths[VALUE + p] = intercept + slope * (growth * scaled + paths[OUTSIDE + p])
+        paths[VALUE + p] = intercept + slope * (paths[GROWTH + p] * scaled + paths[OUTSIDE + p])
         paths[_INVERSE + p] = 1.0 / size
         paths[_LOG + p] = log_double(size)
     if with_ratios:
         for p in range(BLOCK):
-            paths[BY_SCALED + p] = slope * growth
-            paths[BY_FACTOR + p] = slope * growth * v
+            paths[BY_SCALED + p] = slope * paths[GROWTH + p]
+            paths[BY_FACTOR + p] = slope * paths[GROWTH + p] * paths[FACTOR + p]
             paths[BY_OUTSIDE + p] = slope
             paths[BY_SCALED_TWICE + p] = 0.0
             paths[BY_OUTSIDE_TWICE + p] = 0.0
     for j in range(n_knots):
         knot, bend, jump = profile[2 + j], profile[2 + n_knots + j], profile[2 + 2 * n_knots + j]
-        if v > 0.0:
-            shrink = np.exp(-0.5 * v * v)
+        if smooth:
             for p in range(BLOCK):
+                v, growth, inverse_v = paths[FACTOR + p], paths[GROWTH + p], paths[INVERSE_FACTOR + p]
                 scaled = paths[SCALED + p]
                 threshold = knot - paths[OUTSIDE + p]
                 size = max(abs(threshold), 1e-200)
@@ -152,7 +167,7 @@ def integrate_factor(profile: Any, v: float, with_ratios: bool, paths: Any) -> N
                 distance = _FAR if apart else distance
                 density = normal_density(distance) if abs(distance) < _FAR else 0.0
                 # phi(d + v) = phi(d) exp(-v d - v^2 / 2) and exp(-v d) = threshold / scaled
-                next_density = density * shrink * (size * paths[_INVERSE + p])
+                next_density = density * paths[SHRINKAGE + p] * (size * paths[_INVERSE + p])
                 near = normal_distribution(-distance if negative else distance, density)
                 far = distance + v
                 further = growth * normal_distribution(-far if negative else far, next_density)
@@ -172,6 +187,7 @@ def integrate_factor(profile: Any, v: float, with_ratios: bool, paths: Any) -> N
                 paths[VALUE + p] += (bend * excess + jump) * above
         if with_ratios:
             for p in range(BLOCK):
+                v, inverse_v = paths[FACTOR + p], paths[INVERSE_FACTOR + p]
                 size = max(abs(knot - paths[OUTSIDE + p]), 1e-200)
                 inverse = paths[_INVERSE + p]
                 distance, density = paths[_DISTANCE + p], paths[_DENSITY + p] * inverse_v

@@ -1,0 +1,79 @@
+"""What was wrong with the snapshot, counted by kind; the table of problems has every one of them."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+from pricer.core.issues import Issue, Severity
+from pricer.core.source import SourceFile
+
+_GRAVEST_FIRST = (Severity.FATAL, Severity.ERROR, Severity.WARNING)
+#: The sheets of a book; what is found on another sheet was found in the market.
+BOOK_SHEETS = frozenset({"trades", "constituents"})
+
+
+@dataclass(frozen=True, slots=True)
+class MarketProblem:
+    """All problems of one kind and severity.
+
+    ``number`` counts places, ``trades`` the trades that cannot be priced because of them; the rest describes the first.
+    """
+
+    severity: Severity
+    kind: str
+    number: int
+    trades: int
+    place: str
+    found: str
+    expected: str
+    mend: str
+    code: str
+
+
+def market_problems(issues: Sequence[Issue], sources: Sequence[SourceFile]) -> list[MarketProblem]:
+    """Problems of the market among ``issues``, the gravest kinds first and the most frequent first among those.
+
+    ``sources`` are the files read, the book's before the market's.
+    """
+    places: dict[tuple[Severity, str], dict[Issue, set[str]]] = {}
+    for issue in issues:
+        if _of_market(issue, sources):
+            kind = places.setdefault((issue.severity, issue.code), {})
+            charged = kind.setdefault(replace(issue, trade_id=None), set())
+            if issue.trade_id is not None:
+                charged.add(issue.trade_id)
+    problems = []
+    for (severity, code), found in places.items():
+        first = next(iter(found))
+        problems.append(
+            MarketProblem(
+                severity=severity,
+                kind=code.replace("-", " "),
+                number=len(found),
+                trades=len(set().union(*found.values())) if severity is not Severity.WARNING else 0,
+                place=first.place(),
+                found=first.found,
+                expected=first.expected,
+                mend=first.mend,
+                code=code,
+            )
+        )
+    return sorted(problems, key=lambda p: (_GRAVEST_FIRST.index(p.severity), -p.trades, -p.number))
+
+
+def _of_market(issue: Issue, sources: Sequence[SourceFile]) -> bool:
+    if issue.sheet in BOOK_SHEETS:
+        return False
+    if issue.file is None:
+        return issue.trade_id is None and issue.sheet is None
+    names = [source.name for source in sources]
+    # One name for both inputs tells nothing; then the sheet alone decides.
+    return issue.file not in names or names.count(issue.file) > 1 or not _same_input(issue.file, names[0])
+
+
+def _same_input(name: str, other: str) -> bool:
+    """Whether two files belong to one input: one file, or one folder of CSV files."""
+    folder, _, _ = name.rpartition("/")
+    other_folder, _, _ = other.rpartition("/")
+    return name == other or (bool(folder) and folder == other_folder)

@@ -1,0 +1,119 @@
+"""Lognormal levels and exchange rates on a time grid, and what a change of measure does to a path.
+
+Total variances are piecewise linear in time between common times, so volatilities are constant
+between them. On a grid of its own a path sees each volatility by its root mean square over a step,
+on the same Brownian increments as local volatility: such a *control* is lognormal with a
+covariance that is known exactly.
+
+Under the payment currency's measure the Brownian motion of a level in another currency has the drift
+``-rho sigma_fx(t)``, rho its correlation with the exchange rate Q (units of the payment currency for one of the
+level's own) and sigma_fx the volatility of Q (Reiner 1992; for any dynamics of the level by Girsanov's
+theorem): a known amount, taken off each increment.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from pricer.simulation.time_grid import TimeGrid
+
+Array = NDArray[np.float64]
+
+#: Annualised: a smaller volatility of an asset is raised to it, in a control only. The last step divides by it.
+_LEAST = 1e-4
+
+
+@dataclass(frozen=True, slots=True)
+class LognormalSteps:
+    """What the steps of a grid do to lognormal levels, n of assets and then those of exchange rates.
+
+    ``lengths`` : (n_steps,) years. ``volatilities`` : (n_steps, n_rows) annualised, over each step.
+    ``shifts`` : (n_steps, n) taken off the Brownian increments of the assets.
+    """
+
+    lengths: Array
+    volatilities: Array
+    shifts: Array
+
+    @classmethod
+    def of(
+        cls,
+        grid: TimeGrid,
+        coarse: TimeGrid,
+        variance_times: Array,
+        variances: Array,
+        correlation: Array,
+        rate_of: Sequence[int | None],
+        *,
+        composite: bool,
+    ) -> LognormalSteps:
+        """Steps of ``grid`` with volatilities that are constant over those of ``coarse``.
+
+        ``coarse`` : part of the grid's times; equal volatilities give controls on either grid the same value.
+        ``variance_times`` : (k + 1,) from 0, ``variances`` : (n_rows, k + 1) total. ``rate_of`` : (n,) place of each
+        asset's exchange rate among the rates, None for none. Where ``composite``, the rate is simulated, and the
+        shift is that of its simulated volatility: level times rate is then a martingale to the last digit.
+        """
+        n = len(rate_of)
+        at = coarse.times
+        total = np.stack([np.interp(at, variance_times, row) for row in variances], axis=1)
+        over = np.searchsorted(at, grid.times[1:] * (1.0 - 1e-12)) - 1  # the coarse step of each fine one
+        volatilities = np.sqrt(np.maximum(np.diff(total, axis=0), 0.0) / np.diff(at)[:, None])[over]
+        volatilities[:, :n] = np.maximum(volatilities[:, :n], _LEAST)
+        lengths = grid.lengths
+        shifts = np.zeros((grid.n_steps, n))
+        for i, rate in enumerate(rate_of):
+            if rate is None:
+                continue
+            row = n + rate
+            if composite:
+                moved = volatilities[:, row] * lengths
+            else:
+                pieces = np.sqrt(np.maximum(np.diff(variances[row]), 0.0) * np.diff(variance_times))
+                moved = np.diff(np.interp(grid.times, variance_times, np.concatenate([[0.0], np.cumsum(pieces)])))
+            shifts[:, i] = correlation[i, row] * moved
+        return cls(lengths, volatilities, shifts)
+
+    def covariance(self, correlation: Array) -> Array:
+        """Of the log-levels at the end, (n_rows, n_rows)."""
+        scaled = self.volatilities * np.sqrt(self.lengths)[:, None]
+        out: Array = correlation * (scaled.T @ scaled)
+        return out
+
+    @property
+    def log_drifts(self) -> Array:
+        """What the shifts do to the log-levels of the assets in total, (n,)."""
+        out: Array = -(self.volatilities[:, : self.shifts.shape[1]] * self.shifts).sum(axis=0)
+        return out
+
+    @property
+    def starts(self) -> Array:
+        """Log-levels over forwards before the last step but for noise, (n_rows,)."""
+        volatilities, n = self.volatilities[:-1], self.shifts.shape[1]
+        out: Array = -0.5 * (volatilities**2 * self.lengths[:-1, None]).sum(axis=0)
+        out[:n] -= (volatilities[:, :n] * self.shifts[:-1]).sum(axis=0)
+        return out
+
+    @property
+    def last_deviations(self) -> Array:
+        """Of the log-levels over the last step, (n_rows,)."""
+        out: Array = self.volatilities[-1] * np.sqrt(self.lengths[-1])
+        return out
+
+    @property
+    def last_drifts(self) -> Array:
+        """What is taken off the unit noise of the last step, (n,)."""
+        out: Array = self.shifts[-1] / np.sqrt(self.lengths[-1])
+        return out
+
+    def ordered(self, order: NDArray[np.int64], shares: Array) -> LognormalSteps:
+        """Assets in another order, their volatilities times ``shares`` (n,) in that order."""
+        n = len(order)
+        rows = np.concatenate([order, np.arange(n, self.volatilities.shape[1])])
+        volatilities = self.volatilities[:, rows]
+        volatilities[:, :n] *= shares
+        return LognormalSteps(self.lengths, volatilities, self.shifts[:, order])
