@@ -8,10 +8,11 @@ from __future__ import annotations
 
 from pathlib import Path
 
-from pricer.loader import write_tables
 from saltmarsh.market import market_tables
 from saltmarsh.mistakes import broken_book, broken_market
 from saltmarsh.trades import book_tables
+
+from pricer.loader import write_tables
 
 HERE = Path(__file__).parent
 

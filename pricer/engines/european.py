@@ -22,13 +22,15 @@ class AppraisalSettings:
 
     ``precision_bp`` and ``delta_precision_bp`` are targets for the standard errors of the value and of
     each cash delta (delta times spot), in basis points of notional; for cash deltas, of their gross
-    sum where that is larger. ``model`` leads where the trade asks for none; None: local volatility
+    sum where that is larger, of which paths need only come within ``path_delta_precision_bp``: digitals
+    move by many times what they pay. ``model`` leads where the trade asks for none; None: local volatility
     where an underlying has a smile. ``compare_models`` : both are computed wherever they differ.
     """
 
     seed: int
     precision_bp: float = 1.0
     delta_precision_bp: float = 1.0
+    path_delta_precision_bp: float = 10.0
     model: Model | None = None
     compare_models: bool = True
     sampling: SamplingSettings = field(default_factory=SamplingSettings)
@@ -80,12 +82,13 @@ def appraise(trade: Trade, market: Market, settings: AppraisalSettings) -> Appra
         delta_fraction=settings.delta_precision_bp * 1e-4,
     )
     paths = replace(settings.local_vol, sampling=settings.sampling)
+    by_paths = replace(asked, delta_fraction=settings.path_delta_precision_bp * 1e-4)
     both = settings.compare_models and has_smile
     lognormal = smiled = None
     if both or lead is Model.LOGNORMAL or not has_smile:
         lognormal = _lognormal_value(trade, terms, market, asked, paths)
     if both or (lead is Model.LOCAL_VOLATILITY and has_smile):
-        smiled = local_vol_value(trade, terms, market, asked, paths)
+        smiled = local_vol_value(trade, terms, market, by_paths, paths)
     return Appraisal(
         trade=trade,
         terms=terms,

@@ -119,7 +119,7 @@ class PathSamplers:
 
     @property
     def can_be_cut(self) -> bool:
-        return self.settings.initial_steps * 2 ** (self.level + 1) <= self.settings.maximum_steps
+        return bool(self.settings.initial_steps * 2 ** (self.level + 1) <= self.settings.maximum_steps)
 
     @property
     def control(self) -> EuropeanProblem:

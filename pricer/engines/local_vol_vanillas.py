@@ -12,21 +12,27 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.special import ndtr
 
 from pricer.core.randomness import Purpose, stream
-from pricer.engines.local_vol_problem import FlatVolatility
+from pricer.engines.local_vol_paths import ENDING
 from pricer.market.black import out_of_the_money, vega
-from pricer.simulation.batch_means import batch_estimate
+from pricer.simulation.batch_means import batch_estimate_with
 from pricer.simulation.local_vol_tables import LocalVolatility
+from pricer.simulation.path_noise import PathNoise
 from pricer.simulation.time_grid import TimeGrid
 
 Array = NDArray[np.float64]
 
-#: Steps to the last expiry to begin with, as for trades, and at most.
-_STEPS, _MOST_STEPS = 8, 128
+#: Steps to the last expiry and least steps to each to begin with, the latter as for a trade; and how often both
+#: may be doubled.
+_STEPS, _LEAST_STEPS, _DOUBLINGS = 32, 8, 3
 
-#: A halving of steps that moves a volatility by less than this (0.02 vol points) leaves about a third of it.
-_STEP_TOLERANCE = 2e-4
+#: Points per randomisation that tell how much steps matter: the difference is on common draws.
+_POINTS_FOR_STEPS = 1024
+
+#: A halving of steps that moves a volatility by less than this (0.03 vol points) leaves about a third of it.
+_STEP_TOLERANCE = 3e-4
 
 #: Deltas between which that is asked, of the option that is out of the money.
 _WINGS = 0.1
@@ -63,7 +69,7 @@ def reprice(
     group: str,
     seed: int,
     randomisations: int = 32,
-    points: int = 2048,
+    points: int = 8192,
 ) -> VanillaSample:
     """Price options of strikes ``exp(log_strikes[i])`` on X at ``expiries[i]`` years, increasing from above 0.
 
@@ -73,43 +79,34 @@ def reprice(
     """
     if len(expiries) != len(log_strikes):
         raise ValueError(f"{len(expiries)} expiries do not fit {len(log_strikes)} rows of log-strikes")
-    from pricer.simulation.local_vol_sampler import level_noise, local_vol_levels  # compiles kernels: when needed
+    from pricer.simulation.vanilla_sampler import vanilla_means  # compiles kernels: when needed
 
     strikes = [np.asarray(k, dtype=float) for k in log_strikes]
-    control, variances = _control(surface, expiries)
-    deviations = np.sqrt(variances)
-    one = np.ones((2, 2))  # both on the same noise
-    steps = _STEPS
-    while True:
-        grid = TimeGrid.of(expiries, steps=steps)
-        noise = level_noise(one, grid, stream(seed, group, Purpose.PRICE, 0), randomisations)
-        fine, coarse = (
-            local_vol_levels((surface, control), one, on, noise=noise, points=points) for on in (grid, grid.halved())
-        )
-        means, moves, controls = (list[Array]() for _ in range(3))
-        for i, k in enumerate(strikes):
-            first, second = (_time_values(levels[:, i], k) for levels in (fine, coarse))
-            means.append(first[0])
-            moves.append(first[0] - second[0])
-            controls.append(first[1] - out_of_the_money(k, deviations[i]))
-        found = [_estimate(m, c) for m, c in zip(means, controls, strict=True)]
-        halving = [move.mean(axis=0) for move in moves]
-        reached = all(
-            bool(np.all(np.abs(h) <= _STEP_TOLERANCE * _weights(k, s, t)))
-            for h, k, s, t in zip(halving, strikes, deviations, expiries, strict=True)
-        )
-        if reached or 2 * steps > _MOST_STEPS:
+    width = max((len(k) for k in strikes), default=0)
+    table = np.stack([np.pad(k, (0, width - len(k))) for k in strikes])
+    variances = _variances(surface, expiries)
+    known = np.concatenate([np.ones((len(table), 1)), out_of_the_money(table, np.sqrt(variances)[:, None])], axis=1)
+    weights = _weights(table, np.sqrt(variances)[:, None], np.sqrt(np.asarray(expiries, dtype=float))[:, None])
+    one = np.ones((1, 1))
+    for doublings in range(_DOUBLINGS + 1):
+        finer = 2**doublings
+        grid = TimeGrid.of(expiries, steps=_STEPS * finer, least=_LEAST_STEPS * finer, ending=ENDING, every=True)
+        draws = stream(seed, group, Purpose.PRICE, 0)
+        noise = PathNoise(grid, one, one[0], draws, randomisations, every_date=True)
+        few = min(points, _POINTS_FOR_STEPS)
+        fine, coarse = (vanilla_means(surface, on, noise, table, variances, few) for on in (grid, grid.halved()))
+        halving, noise_of_it = (x[:, 1:] for x in _estimate(fine[:, :, 0] - coarse[:, :, 0], fine - coarse, 0.0))
+        reached = bool(np.all(np.abs(halving) - 2.0 * noise_of_it <= _STEP_TOLERANCE * weights))
+        if reached:
             break
-        steps *= 2
-    levels = fine[:, :, 0].mean(axis=2, dtype=float)
-    of_control = fine[:, :, 1].mean(axis=2, dtype=float) - 1.0
-    x, x_errors = _estimate(levels, of_control)
+    sums = vanilla_means(surface, grid, noise, table, variances, points)
+    value, error = _estimate(sums[:, :, 0], sums, known)
     return VanillaSample(
-        values=tuple(value for value, _ in found),
-        errors=tuple(error for _, error in found),
-        step_differences=tuple(halving),
-        means=x,
-        mean_errors=x_errors,
+        values=tuple(v[1 : 1 + len(k)] for v, k in zip(value, strikes, strict=True)),
+        errors=tuple(e[1 : 1 + len(k)] for e, k in zip(error, strikes, strict=True)),
+        step_differences=tuple(h[: len(k)] for h, k in zip(halving, strikes, strict=True)),
+        means=value[:, 0],
+        mean_errors=error[:, 0],
         steps=grid.n_steps,
         paths=randomisations * points,
         reached=reached,
@@ -117,39 +114,34 @@ def reprice(
     )
 
 
-def _control(surface: LocalVolatility, expiries: Sequence[float]) -> tuple[FlatVolatility, Array]:
-    """A flat surface with the volatility at the forward, and its total variances at the expiries."""
+def _variances(surface: LocalVolatility, expiries: Sequence[float]) -> Array:
+    """Total variances at the expiries of the volatility at the forward: of the lognormal control."""
     y = np.linspace(-surface.reach, surface.reach, surface.values.shape[1])
     central = np.maximum([np.interp(0.0, y, row) for row in surface.values], 1e-3)
-    ends = np.append(surface.times[1:-1], max(surface.times[-1], expiries[-1]))
-    times = np.concatenate([[0.0], ends])
+    times = np.append(surface.times[:-1], max(surface.times[-1], expiries[-1]))
     total = np.concatenate([[0.0], np.cumsum(central**2 * np.diff(times))])
-    return FlatVolatility.of(times, total), np.interp(expiries, times, total)
+    return np.asarray(np.interp(expiries, times, total))
 
 
-def _time_values(levels: NDArray[np.float32], k: Array) -> tuple[Array, Array]:
-    """Means per randomisation of options out of the money on both assets, two (randomisations, n_strikes).
+def _estimate(means: Array, sums: Array, known: Array | float) -> tuple[Array, Array]:
+    """Estimates and errors of ``means`` (randomisations, n_dates, 1 + n_strikes): two (n_dates, 1 + n_strikes).
 
-    ``levels`` : (randomisations, 2, points).
+    ``sums`` : see ``vanilla_means``. Controls are the same numbers of the lognormal level, of means ``known``, and for
+    options X itself, of mean 1, under local volatility.
     """
-    out = np.empty((2, levels.shape[0], len(k)))
-    for j, log_strike in enumerate(k):
-        side = np.float32(1.0 if log_strike >= 0.0 else -1.0)
-        gain = np.maximum(side * (levels - np.float32(np.exp(log_strike))), np.float32(0.0))
-        out[:, :, j] = gain.mean(axis=2, dtype=float).T
-    return out[0], out[1]
+    n, shape = len(means), means.shape[1:]
+    of_lognormal = sums[:, :, 1] - known
+    of_x = sums[:, :, 0, [0]] - (1.0 if np.ndim(known) else 0.0)
+    of_x = np.broadcast_to(of_x, of_lognormal.shape).copy()
+    of_x[:, :, 0] = 0.0  # X is no control of its own mean
+    controls = np.stack([of_lognormal, of_x], axis=-1)
+    controls = controls / np.maximum(np.abs(controls).max(axis=0), 1e-300)
+    value, error = batch_estimate_with(means.reshape(n, -1), controls.reshape(n, -1, 2))
+    return value.reshape(shape), np.hypot(error, _ROUNDING).reshape(shape)
 
 
-def _estimate(means: Array, controls: Array) -> tuple[Array, Array]:
-    size = np.maximum(np.abs(controls).max(axis=0), 1e-12)
-    value, error = batch_estimate(means, controls / size, _ROUNDING)
-    return value, np.hypot(error, _ROUNDING)
-
-
-def _weights(k: Array, deviation: float, years: float) -> Array:
+def _weights(k: Array, deviations: Array, roots: Array) -> Array:
     """Value per unit of volatility; without bound beyond the wings, where steps are not asked to matter."""
-    d = -k / deviation + 0.5 * deviation
-    from scipy.special import ndtr
-
-    out: Array = np.where(np.minimum(ndtr(d), ndtr(-d)) >= _WINGS, vega(k, deviation) * np.sqrt(years), np.inf)
+    d = -k / deviations + 0.5 * deviations
+    out: Array = np.where(np.minimum(ndtr(d), ndtr(-d)) >= _WINGS, vega(k, deviations) * roots, np.inf)
     return out

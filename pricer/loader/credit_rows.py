@@ -10,7 +10,7 @@ from pydantic import ValidationInfo, field_validator
 from pricer.loader.columns import Column, TableRow
 from pricer.loader.faults import unwanted
 from pricer.loader.market_columns import DateOrTenor, not_above, point_date, point_tenor
-from pricer.loader.names import Choice, Currency, FreeText, Tenor
+from pricer.loader.names import Choice, Currency, FreeText, QuarterlyTenor
 from pricer.loader.numbers import Number, WholeNumber
 from pricer.market.agreements import CloseOut, Collateral
 
@@ -27,7 +27,7 @@ class CreditRow(TableRow):
     """A credit default swap spread of a name."""
 
     name: Annotated[str, Column(FreeText(), "the name of the counterparty or issuer", "Guldmar Bank")]
-    tenor: Annotated[str, Column(Tenor(), "the swap's tenor", "5Y")]
+    tenor: Annotated[str, Column(QuarterlyTenor(), "the swap's tenor", "5Y")]
     cds_spread_decimal: Annotated[
         float,
         Column(

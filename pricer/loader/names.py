@@ -14,6 +14,9 @@ from pricer.loader.sheets import Cell
 from pricer.loader.text import fold, nearest, quoted
 from pricer.market.calendars import CALENDARS
 
+#: Longer tenors are typing mistakes: no market quotes them.
+LONGEST_TENOR_YEARS = 100
+
 _TENOR = re.compile(r"([0-9]{1,3})\s*([DWMY])", re.IGNORECASE)
 
 
@@ -134,4 +137,20 @@ class Tenor:
         match = _TENOR.fullmatch(text)
         if match is None or int(match[1]) == 0:
             raise Fault("not-a-tenor", quoted(text))
+        if match[2] in "Yy" and int(match[1]) > LONGEST_TENOR_YEARS:
+            raise Fault("out-of-range", quoted(text), f"a tenor of at most {LONGEST_TENOR_YEARS}Y")
         return f"{int(match[1])}{match[2].upper()}"
+
+
+@dataclass(frozen=True, slots=True)
+class QuarterlyTenor:
+    """A length of time that premiums paid each quarter fit into."""
+
+    def words(self) -> str:
+        return "a tenor of whole quarters, such as 6M or 5Y"
+
+    def read(self, cell: Cell, reading: Reading) -> str:
+        tenor = Tenor().read(cell, reading)
+        if tenor[-1] not in "MY" or (tenor[-1] == "M" and int(tenor[:-1]) % 3):
+            raise Fault("not-a-tenor", quoted(tenor))
+        return tenor

@@ -137,7 +137,7 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
     place.add("volatility", volatilities, "underlying", "expiry_date", shown="volatility_decimal")
     place.add("curve", curve_rows, "curve")
     place.add("fx", fx_rows, "pair")
-    place.add("fx", fx_volatilities, "pair")
+    place.add("fx_volatilities", fx_volatilities, "pair")
     place.add("credit", credit_rows, "name")
     findings.add(quality.gates(market, correlations.repair, place))
     return replace(market, issues=tuple(findings.issues))

@@ -128,7 +128,7 @@ class DiscountCurve:
             raise ValueError(
                 f"curve {curve_id}: the {worst.quote} quoted at {worst.quote.rate:g} is repriced at {worst.rate:.12g}"
             )
-        return replace(curve, quotes=tuple(quotes))
+        return replace(curve, quotes=tuple(instrument.quote for instrument in found.instruments))
 
     @classmethod
     def _from_logs(

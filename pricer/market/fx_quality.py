@@ -20,7 +20,7 @@ ROUND_TRIP_TOLERANCE = 0.025
 
 
 def fx_gates(market: Market, place: Locate) -> Iterator[Issue]:
-    """Issues of the exchange rates; ``place`` gives the cell of "fx:EURUSD", or None."""
+    """Issues of the exchange rates; ``place`` gives the cell of "fx:EURUSD" or "fx_volatilities:EURUSD", or None."""
     yield from _rates(market.fx, place)
     yield from _volatilities(market, place)
 
@@ -62,7 +62,7 @@ def _impossible(given: dict[tuple[str, str], VolatilityCurve], days: list[date],
         total = sum(volatility for volatility, _ in others)
         if highest > total + 1e-9:
             return warning(
-                place(f"fx:{pair}"),
+                place(f"fx_volatilities:{pair}"),
                 "inconsistent-fx-volatility",
                 f"a volatility of {percent(highest, 2)} of {pair} for {day}, above the {percent(total, 2)} of "
                 f"{others[0][1]} and {others[1][1]} together",
@@ -88,7 +88,7 @@ def _round_trip(
         return None
     name = "".join(max(given))
     return warning(
-        place(f"fx:{name}"),
+        place(f"fx_volatilities:{name}"),
         "inconsistent-fx-correlation",
         f"{words(''.join(pair) for pair in given)}, whose volatilities and correlations let them drift apart by "
         f"{percent(volatility, 2)} a year to {day}",

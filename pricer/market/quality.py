@@ -15,6 +15,7 @@ from pricer.market.dividend_quality import dividend_gates
 from pricer.market.findings import Locate, nowhere, percent, warning
 from pricer.market.fx_quality import fx_gates
 from pricer.market.market import Market
+from pricer.market.surface_quality import surface_gates
 from pricer.market.underlying import Underlying
 
 #: Zero rates outside this range are reported.
@@ -26,10 +27,10 @@ PLAUSIBLE_HAZARD_RATE = 0.50
 
 
 def gates(market: Market, repair: Repair | None = None, place: Locate = nowhere) -> tuple[Issue, ...]:
-    """Warnings about ``market``, and about the ``repair`` its correlation matrix took.
+    """Warnings about ``market``, and about the ``repair`` its correlation matrix took; errors of what cannot be used.
 
-    ``place`` gives the cell of "valuation_date", "curve:ID", "repo:UNDERLYING",
-    "dividend_yield:UNDERLYING", "dividends:UNDERLYING", "fx:EURUSD", "credit:NAME" or
+    ``place`` gives the cell of "valuation_date", "curve:ID", "repo:UNDERLYING", "volatility:UNDERLYING:EXPIRY",
+    "dividend_yield:UNDERLYING", "dividends:UNDERLYING", "fx:EURUSD", "fx_volatilities:EURUSD", "credit:NAME" or
     "correlation:A:B", or None.
     """
     issues: list[Issue] = [*_weekend(market.valuation_date, place)]
@@ -45,6 +46,8 @@ def gates(market: Market, repair: Repair | None = None, place: Locate = nowhere)
     for underlying in market.underlyings.values():
         issues.extend(_dividend_yield(underlying, place))
     issues.extend(dividend_gates(market, place))
+    for surface in market.surfaces.values():
+        issues.extend(surface_gates(surface, place))
     for credit in market.credit.values():
         issues.extend(_hazard_rates(credit, place))
     issues.extend(fx_gates(market, place))

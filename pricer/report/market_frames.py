@@ -62,10 +62,10 @@ def calibration(market: MarketFacts) -> Frame:
             "underlying": [q.underlying for q in quotes],
             "expiry_date": [q.expiry_date for q in quotes],
             "strike": [q.strike for q in quotes],
-            "strike_percent_of_forward": [100.0 * q.strike_of_forward for q in quotes],
-            "delta_percent": [100.0 * q.delta for q in quotes],
-            "quoted_volatility_percent": [100.0 * q.quoted for q in quotes],
-            "fitted_volatility_percent": [100.0 * q.fitted for q in quotes],
+            "strike_percent_of_forward": [_percent(q.strike_of_forward) for q in quotes],
+            "delta_percent": [_percent(q.delta) for q in quotes],
+            "quoted_volatility_percent": [_percent(q.quoted) for q in quotes],
+            "fitted_volatility_percent": [_percent(q.fitted) for q in quotes],
             "fit_error_vol_points": [fit_error(q) for q in quotes],
             "simulated_volatility_percent": [_percent(q.simulated) for q in quotes],
             "simulated_error_vol_points": [simulated_error(q) for q in quotes],
@@ -86,7 +86,7 @@ def curves(market: MarketFacts) -> Frame:
             "currency": [p.currency for p in points],
             "collateral": [p.collateral for p in points],
             "date": [p.date for p in points],
-            "zero_rate_percent": [100.0 * p.zero_rate for p in points],
+            "zero_rate_percent": [_percent(p.zero_rate) for p in points],
             "discount_factor": [p.discount_factor for p in points],
             "instrument": [p.instrument for p in points],
             "quoted_rate_percent": [_percent(p.quoted_rate) for p in points],
@@ -131,9 +131,9 @@ def credit(market: MarketFacts) -> Frame:
         {
             "name": [p.name for p in points],
             "date": [p.date for p in points],
-            "recovery_percent": [100.0 * p.recovery for p in points],
-            "hazard_rate_percent": [100.0 * p.hazard_rate for p in points],
-            "survival_probability_percent": [100.0 * p.survival_probability for p in points],
+            "recovery_percent": [_percent(p.recovery) for p in points],
+            "hazard_rate_percent": [_percent(p.hazard_rate) for p in points],
+            "survival_probability_percent": [_percent(p.survival_probability) for p in points],
         },
         text="name",
         dates="date",
@@ -146,8 +146,8 @@ def funding(market: MarketFacts) -> Frame:
     return tidy.frame(
         {
             "date": [p.date for p in points],
-            "borrowing_spread_bp": [1e4 * p.borrowing_spread for p in points],
-            "lending_spread_bp": [1e4 * p.lending_spread for p in points],
+            "borrowing_spread_bp": [_bp(p.borrowing_spread) for p in points],
+            "lending_spread_bp": [_bp(p.lending_spread) for p in points],
         },
         dates="date",
     )
@@ -157,12 +157,17 @@ def agreements(market: MarketFacts) -> Frame:
     """One row a netting set."""
     text = "netting_set counterparty currency collateral close_out"
     frame = tidy.records(market.agreements, Agreement, text=text, whole="margin_period_days")
-    frame["collateral_spread"] *= 1e4
+    frame["collateral_spread"] = [_bp(spread) for spread in frame["collateral_spread"]]
     return frame.rename(columns={"collateral_spread": "collateral_spread_bp"})
 
 
 def _percent(value: float | None) -> float | None:
-    return None if value is None else 100.0 * value
+    """In percent, without the last binary digits that the unit would add to a number such as 0.0085."""
+    return None if value is None else round(100.0 * value, 12)
+
+
+def _bp(value: float) -> float:
+    return round(1e4 * value, 10)
 
 
 def _less(value: float | None, other: float | None, unit: float) -> float | None:

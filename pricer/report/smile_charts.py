@@ -21,7 +21,8 @@ def error_chart(
 ) -> ScatterChart:
     """Errors in vol points over the delta of the call, as far as four times the target; the limits are the target's."""
     chart = _scatter()
-    chart.series.append(cloud(delta, fit, "fitted less quoted", "circle", 4, BLUE))
+    # Wide and flat, so that it hides no triangle whichever of the two a program paints first.
+    chart.series.append(cloud(delta, fit, "fitted less quoted", "dash", 8, BLUE))
     if simulated is not None:
         chart.series.append(cloud(delta, simulated, "simulated less quoted", "triangle", 5, ORANGE))
     chart.series.extend(limit(*ends, name="target") for ends in limits)
@@ -41,7 +42,7 @@ def smile_chart(
     x_range: tuple[float, float],
     y_range: tuple[float, float],
 ) -> ScatterChart:
-    """One expiry: quotes as rings, the fitted smile as a line, the simulated one as triangles.
+    """One expiry: quotes as dashes, the fitted smile as a line, the simulated one as triangles.
 
     ``x_range`` in percent of the forward and ``y_range`` in percent are the least and the largest number drawn.
     """
@@ -53,12 +54,10 @@ def smile_chart(
     curve.graphicalProperties = line(BLUE, _WIDTH_OF_LINE)
     curve.smooth = False
     chart.series.append(curve)
-    rings = cloud(strikes, quoted, "quoted", "circle", 7, "FFFFFF")
-    rings.marker.graphicalProperties.line.solidFill = INK
-    chart.series.append(rings)
+    chart.series.append(cloud(strikes, quoted, "quoted", "dash", 11, INK))
     if simulated is not None:
         chart.series.append(cloud(strikes, simulated, "simulated", "triangle", 4, ORANGE))
-    dress(chart, title, "strike (% of forward)", "volatility (%)")
+    dress(chart, f"{title}, by strike (% of forward)", "", "volatility (%)")
     _scale(chart, *_rounded(x_range), *_rounded(y_range))
     legend_below(chart)
     return chart

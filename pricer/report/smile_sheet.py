@@ -26,7 +26,7 @@ if TYPE_CHECKING:
     from openpyxl.worksheet.worksheet import Worksheet
 
 TITLE = "Smiles"
-_ERROR_ROWS, _SMILE_ROWS = 14, 13  # together one page
+_ERROR_ROWS, _SMILE_ROWS = 13, 13  # together one page
 _DATA = LAST + 2  # first column of what the charts draw, right of what prints
 
 

@@ -142,6 +142,10 @@ def _facts(
                 "target standard error of a cash delta (bp of notional or of gross cash delta)",
                 f"{settings.delta_precision_bp:g}",
             ),
+            (
+                "the same under local volatility (bp of gross cash delta)",
+                f"{settings.path_delta_precision_bp:g}",
+            ),
             ("independent randomisations", str(sampling.randomisations)),
             ("points a randomisation: first, at most", f"{sampling.initial_points}, {sampling.maximum_points}"),
             ("order of random factors", sampling.ordering),

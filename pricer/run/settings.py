@@ -23,7 +23,8 @@ class Settings:
     ``seed`` : whole number >= 0; the same seed gives the same numbers to the last bit.
     ``precision_bp`` : target standard error of each value, in basis points of notional.
     ``delta_precision_bp`` : the same for each cash delta (delta times spot), of the trade's
-    notional or of its gross cash delta, whichever is larger.
+    notional or of its gross cash delta, whichever is larger; of the latter, paths under local volatility need
+    only come within ``path_delta_precision_bp``.
     ``workers`` : threads that price trades side by side; no number depends on it.
     ``model`` leads where a trade asks for none; None: local volatility where an underlying has a smile,
     else lognormal. ``compare_models`` : compute both wherever they differ, for the model difference.
@@ -35,6 +36,7 @@ class Settings:
     seed: int = 20_000
     precision_bp: float = 1.0
     delta_precision_bp: float = 1.0
+    path_delta_precision_bp: float = 10.0
     workers: int = field(default_factory=available_cores)
     model: Model | None = None
     compare_models: bool = True
@@ -47,8 +49,9 @@ class Settings:
     def __post_init__(self) -> None:
         if self.seed < 0:
             raise ValueError(f"the seed must be a whole number from 0; got {self.seed}")
-        if not self.precision_bp > 0.0 or not self.delta_precision_bp > 0.0:
-            raise ValueError(f"the precision must be above 0 basis points; got {self.precision_bp}")
+        for precision in (self.precision_bp, self.delta_precision_bp, self.path_delta_precision_bp):
+            if not precision > 0.0:
+                raise ValueError(f"the precision must be above 0 basis points; got {precision}")
         if self.workers < 1:
             raise ValueError(f"the number of workers must be at least 1; got {self.workers}")
         for share in (self.correlation_towards_one, self.correlation_towards_zero):
@@ -64,6 +67,7 @@ class Settings:
             seed=self.seed,
             precision_bp=self.precision_bp,
             delta_precision_bp=self.delta_precision_bp,
+            path_delta_precision_bp=self.path_delta_precision_bp,
             model=self.model,
             compare_models=self.compare_models,
             sampling=self.sampling,

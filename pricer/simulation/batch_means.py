@@ -65,6 +65,22 @@ def batch_regression(
     return centre - slope * control_centre, np.hypot(error, slope * control_rounding), slope
 
 
+def batch_estimate_with(means: Array, controls: Array) -> tuple[Array, Array]:
+    """Estimates and errors with several controls each: two (m,) from (randomisations, m), (randomisations, m, c).
+
+    Controls have mean 0 and order 1; those that do not move, or only together, are left out.
+    """
+    n = means.shape[0]
+    design = np.concatenate([np.ones((means.shape[1], n, 1)), np.moveaxis(controls, 1, 0)], axis=2)
+    inverse = np.linalg.pinv(design, rcond=_STILL)  # (m, 1 + c, n)
+    y = means.T[:, :, None]
+    coefficients = inverse @ y
+    residuals = (y - design @ coefficients)[:, :, 0]
+    reach = np.einsum("mic,mci->mi", design, inverse)  # 1 where one randomisation alone decides
+    moves = inverse[:, 0, :] * residuals / np.maximum(1.0 - reach, 1e-6)
+    return coefficients[:, 0, 0], _error(moves.T)
+
+
 def _error(influences: Array) -> Array:
     """Jackknife error, widened for skewness: (m,) from the moves on leaving one out (randomisations, m)."""
     n = influences.shape[0]

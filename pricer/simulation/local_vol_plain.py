@@ -67,8 +67,8 @@ def path_sums(plan: LocalVolPlan, grid: TimeGrid, steps: LognormalSteps, motions
                 value, slope = look_up(tables.moves[s, i], tables.lowest[s, i], tables.per_node[s, i], q)
                 q, tangent = q + value, tangent * (1.0 + slope)
         nodes = tables.lowest[last, i], tables.per_node[last, i]
-        log2, log2_slope = look_up(tables.before_last[i], *nodes, q)
-        s_of_x, s_slope = look_up(tables.deviations[i], *nodes, q)
+        log2, log2_slope = look_up(tables.before[-1, i], *nodes, q)
+        s_of_x, s_slope = look_up(tables.deviations[-1, i], *nodes, q)
         moving = plan.shares[i] * 2.0**log2
         levels[i] = moving + 1.0 - plan.shares[i]
         part = moving / levels[i]

@@ -93,15 +93,17 @@ class LocalVolTables:
 
     ``moves`` : (n_steps - 1, n, NODES), from after the noise of a step to before that of the next.
     ``levels`` : (n_dates, n, NODES), base-2 log-level at each date, by the coordinate of the step that ends
-    there; ``before_last`` : (n, NODES) the same before the last step, ``deviations`` likewise:
-    that of the log-price over the last step. ``lowest``, ``per_node`` : (n_steps, n) of the nodes.
+    there; ``before`` : (n_dates, n, NODES) the same before that step, by the coordinate of the one before it, and
+    ``deviations`` likewise that of the log-price over that step; NaN at a date that ends the first step,
+    where ``first_deviations`` (n,) has it. ``lowest``, ``per_node`` : (n_steps, n) of the nodes.
     ``starts``, ``start_slopes`` : (n,) the coordinate at time 0 and its slope in the log-level.
     """
 
     moves: Words
     levels: Words
-    before_last: Words
+    before: Words
     deviations: Words
+    first_deviations: Array
     lowest: Single
     per_node: Single
     starts: Single
@@ -122,7 +124,7 @@ class LocalVolTables:
             raise ValueError("a local-volatility path needs at least two steps")
         nodes, weights = _normal_quadrature()
         moves, levels = np.empty((n_steps - 1, n, NODES)), np.empty((n_steps, n, NODES))
-        deviations, starts = np.empty((n, NODES)), np.empty((n, 3))
+        deviations, starts = np.empty((n_steps - 1, n, NODES)), np.empty((n, 3))
         edges, spacings = np.empty((n_steps, n)), np.empty((n_steps, n))
         for i, surface in enumerate(surfaces):
             rows = StepRows.of(surface, grid)
@@ -130,10 +132,10 @@ class LocalVolTables:
             edges[:, i], spacings[:, i] = edge, spacing
             lows = -rows.reach * rows.widths
             steps = 2.0 * rows.reach * rows.widths / (rows.values.shape[1] - 1)
-            of_asset = np.empty((n_steps - 1, NODES)), np.empty((n_steps, NODES))
+            of_asset = tuple(np.empty((m, NODES)) for m in (n_steps - 1, n_steps, n_steps - 1))
             inputs = rows.values, lows, steps, grid.lengths, edge, spacing, nodes, weights
-            build(*inputs, *of_asset, deviations[i], starts[i])
-            moves[:, i], levels[:, i] = of_asset
+            build(*inputs, *of_asset, starts[i])
+            moves[:, i], levels[:, i], deviations[:, i] = of_asset
         levels /= np.log(2.0)
         if shifts is not None:
             moves -= shifts[1:, :, None]
@@ -141,13 +143,21 @@ class LocalVolTables:
         return cls(
             moves=_table(moves),
             levels=_table(levels[grid.dates - 1]),
-            before_last=_table(levels[n_steps - 2]),
-            deviations=_table(deviations),
+            before=_table(_at(levels, grid.dates - 2)),
+            deviations=_table(_at(deviations, grid.dates - 2)),
+            first_deviations=starts[:, 2].copy(),
             lowest=edges.astype(np.float32),
             per_node=(1.0 / spacings).astype(np.float32),
             starts=starts[:, 0].astype(np.float32),
             start_slopes=starts[:, 1].astype(np.float32),
         )
+
+
+def _at(values: Array, places: NDArray[np.int64]) -> Array:
+    """Rows of ``values``, NaN for the places below 0."""
+    out = values[places]
+    out[places < 0] = np.nan
+    return out
 
 
 def _smooth(row: Array) -> Array:

@@ -23,16 +23,29 @@ class PathNoise:
     """
 
     def __init__(
-        self, grid: TimeGrid, loadings: Array, sizes: Array, stream: np.random.Generator, randomisations: int
+        self,
+        grid: TimeGrid,
+        loadings: Array,
+        sizes: Array,
+        stream: np.random.Generator,
+        randomisations: int,
+        *,
+        every_date: bool = False,
     ) -> None:
         """``loadings`` : (n, dims) of unit Brownian motions; ``sizes`` : (dims,), see ``Bridge.coordinates``.
 
-        ``stream`` scrambles all randomisations.
+        ``stream`` scrambles all randomisations. The best points serve the last date; with ``every_date``
+        all dates alike, each beside the root of its time.
         """
         n, dims = loadings.shape
         padded = -(-dims // 4) * 4
-        bridge = Bridge.over(grid.times)
-        coordinates = bridge.coordinates(sizes).ravel()
+        if every_date:
+            bridge = Bridge.through(grid.times, grid.dates)
+            following = grid.dates[np.searchsorted(grid.dates, np.arange(1, grid.n_steps + 1))]
+            coordinates = bridge.coordinates(sizes, 1.0 / np.sqrt(grid.times[following])).ravel()
+        else:
+            bridge = Bridge.over(grid.times)
+            coordinates = bridge.coordinates(sizes).ravel()
         total = len(coordinates)
         directions = np.ascontiguousarray(sobol.extended_directions(total)[coordinates])
         self.times = grid.times

@@ -31,14 +31,14 @@ class TimeGrid:
         return np.diff(self.times)
 
     @classmethod
-    def of(cls, dates: ArrayLike, *, steps: int, ending: float = 1.0) -> TimeGrid:
+    def of(cls, dates: ArrayLike, *, steps: int, least: int = 2, ending: float = 1.0, every: bool = False) -> TimeGrid:
         """About ``steps`` steps up to the last date, dealt out to the intervals between dates.
 
-        Each interval gets an even number of steps of equal length, at least two, in proportion
+        Each interval gets an even number of steps of equal length, at least ``least``, in proportion
         to its share of the root of time: smiles flatten with the root of time, so early
         intervals need shorter steps. The last two steps of all are ``ending`` times as long as their
-        neighbours, where there are any. Raises ValueError unless dates increase from above 0 and
-        ``steps`` is positive.
+        neighbours, where there are any; with ``every``, those before each date. Raises ValueError
+        unless dates increase from above 0 and ``steps`` is positive.
         """
         ends = np.concatenate([[0.0], np.atleast_1d(np.asarray(dates, dtype=float))])
         if ends.ndim != 1 or len(ends) < 2 or not np.all(np.diff(ends) > 0.0) or not np.isfinite(ends[-1]):
@@ -46,9 +46,10 @@ class TimeGrid:
         if steps < 1:
             raise ValueError(f"at least one step is needed; got {steps}")
         shares = np.diff(np.sqrt(ends)) / np.sqrt(ends[-1])
-        counts = 2 * np.maximum(np.round(0.5 * steps * shares), 1).astype(np.int64)
+        counts = 2 * np.maximum(np.round(0.5 * steps * shares), max(least // 2, 1)).astype(np.int64)
         lengths = [np.ones(m) for m in counts]
-        lengths[-1][-2:] = ending
+        for length in lengths if every else lengths[-1:]:
+            length[-2:] = ending
         parts = [np.cumsum(length) / length.sum() for length in lengths]
         pieces = [a + (b - a) * part for a, b, part in zip(ends[:-1], ends[1:], parts, strict=True)]
         return cls(np.concatenate([[0.0], *pieces]), np.cumsum(counts))

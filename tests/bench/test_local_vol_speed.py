@@ -21,10 +21,11 @@ from pricer.engines.local_vol_monte_carlo import sample_local_vol
 from pricer.engines.local_vol_problem import LocalVolProblem
 from pricer.simulation.local_vol_sampler import LocalVolSampler
 from pricer.simulation.local_vol_tables import LocalVolTables
+from pricer.simulation.lognormal_steps import LognormalSteps
 from pricer.simulation.path_noise import PathNoise
 from pricer.simulation.time_grid import TimeGrid
 from tests.reference.quantlib_local_vol import process, value
-from tests.unit.local_vol_cases import Table, plan_of, power, tabulated
+from tests.unit.local_vol_cases import Table, constant, paths_of, power, tabulated
 
 pytestmark = pytest.mark.bench
 
@@ -41,7 +42,8 @@ def basket(n: int) -> LocalVolProblem:
     aggregate = Aggregate.weighted_sum(tuple(weights / weights.sum()))
     payoff, forwards = Profile(ProfileKind.CALL, 100.0).payoff(), np.full(n, 100.0)
     correlation = 0.5 + 0.5 * np.eye(n)
-    return LocalVolProblem(surfaces, correlation, forwards, np.zeros(n), volatilities, 1.0, aggregate, payoff, 1.0)
+    times = constant(volatilities, 1.0)
+    return LocalVolProblem(surfaces, correlation, forwards, np.zeros(n), *times, 1.0, aggregate, payoff, 1.0)
 
 
 class BilinearNumpy:
@@ -108,16 +110,24 @@ def best(work, rounds: int = 5) -> float:
 @pytest.mark.parametrize("n", [5, 20])
 def test_points_per_second_against_bilinear_numpy(n):
     problem = basket(n)
-    plan, grid = plan_of(problem), TimeGrid.of(1.0, steps=STEPS)
-    streams = [stream(1, "bench", Purpose.PRICE, r) for r in range(4)]
+    laid_out = paths_of(problem)
+    plan, grid = laid_out.plan, TimeGrid.of(1.0, steps=STEPS)
+    steps = LognormalSteps.of(
+        grid,
+        grid.halved(),
+        *constant(np.sqrt(problem.variances[:, 1]), 1.0),
+        problem.correlation,
+        problem.rates,
+        composite=False,
+    )
+    steps = steps.ordered(plan.design.order, plan.shares)
     paths = 2**15 if n == 5 else 2**14
     rival = BilinearNumpy(problem)
     ours = {}
     with threadpool_limits(1):
         for ratios in (True, False):
-            sampler = LocalVolSampler(
-                plan, grid, PathNoise(grid, plan.loadings, plan.sizes, streams), with_ratios=ratios
-            )
+            noise = PathNoise(grid, plan.loadings, plan.sizes, stream(1, "bench", Purpose.PRICE, 0), 4)
+            sampler = LocalVolSampler(plan, grid, steps, noise, with_ratios=ratios)
 
             def work(sampler=sampler):
                 sampler.points = 0
@@ -154,7 +164,7 @@ def test_time_to_equal_error_against_quantlibs_finite_differences(size, toleranc
         np.array([[1.0, 0.4], [0.4, 1.0]]),
         spots * np.exp(growth),
         np.zeros(2),
-        np.array([0.3, 0.2]),
+        *constant([0.3, 0.2], 1.0),
         1.0,
         Aggregate.weighted_sum((0.5, 0.5)),
         Profile(ProfileKind.CALL, 100.0).payoff(),

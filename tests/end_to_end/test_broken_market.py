@@ -16,9 +16,8 @@ from tests.end_to_end.desk import BROKEN_MARKET, SAMPLE
 ERRORS = {
     ("dividends", "A73", "cash-dividends-exceed-spot"),
     ("repo", "D6", "not-a-decimal"),
-    ("volatilities", "A72", "failing-surface"),
+    ("volatilities", "C72", "failing-surface"),
     ("volatilities", "C474", "not-a-decimal"),
-    ("volatilities", "C585", "no-forward"),
     ("credit", "C23", "not-a-decimal"),
     ("credit", "C27", "unusable-spreads"),
     ("agreements", "E4", "unwanted-value"),
@@ -28,11 +27,11 @@ ERRORS = {
 }
 #: The same of everything that is odd, but used or ignored.
 WARNINGS = {
-    ("volatilities", "A106", "butterfly-arbitrage"),
-    ("volatilities", "A106", "calendar-arbitrage"),
-    ("volatilities", "A106", "volatility-miss"),
-    ("volatilities", "A363", "butterfly-arbitrage"),
-    ("volatilities", "A363", "volatility-miss"),
+    ("volatilities", "C106", "butterfly-arbitrage"),
+    ("volatilities", "C106", "calendar-arbitrage"),
+    ("volatilities", "C106", "volatility-miss"),
+    ("volatilities", "C363", "butterfly-arbitrage"),
+    ("volatilities", "C363", "volatility-miss"),
     ("volatilities", "B142", "expired-quote"),
     ("volatilities", "B145", "expired-quote"),
     ("correlations", "C2", "correlation-repaired"),
@@ -41,7 +40,7 @@ WARNINGS = {
     ("fx", "A2", "inconsistent-fx"),
     ("price_history", None, "unused-table"),
 }
-#: The currencies between which no chain of volatilities leads once EURGBP has none.
+#: Once EURGBP has no volatility, no chain of pairs leads to this currency.
 CUT_OFF = "GBP"
 REFUSED_UNDERLYINGS = {
     "PELLOMAR": "rejected-underlying",
@@ -55,6 +54,11 @@ REFUSED_UNDERLYINGS = {
 @lru_cache
 def market():
     return load_market(BROKEN_MARKET / "market.xlsx")
+
+
+@lru_cache
+def good_market():
+    return load_market(SAMPLE / "market.xlsx")
 
 
 @lru_cache
@@ -80,17 +84,12 @@ def reasons(trade: Trade) -> set[str]:
     if trade.collateral == "USD":
         out.add("no-collateral-curve")
     if contract.conversion is not None:
-        good = load_market_of_the_sample().underlyings
+        good = good_market().underlyings
         usable = [name for name in contract.underlyings if name in market().underlyings]
         pairs = {frozenset((good[name].currency, trade.currency)) for name in usable}
         if any(len(pair) == 2 and CUT_OFF in pair for pair in pairs):
             out.add("no-fx-volatility")
     return out
-
-
-@lru_cache
-def load_market_of_the_sample():
-    return load_market(SAMPLE / "market.xlsx")
 
 
 def test_every_mistake_is_told_at_its_cell():
@@ -133,11 +132,11 @@ def test_csv_files_and_workbook_have_the_same_mistakes():
             "(and 2 more rows); expected an expiry after the valuation date 2026-11-30. Ignored. Delete the rows.",
         ),
         (
-            *("volatilities", "A363", "butterfly-arbitrage"),
-            'market.xlsx, sheet volatilities, row 363, column "underlying" (cell A363): found butterfly arbitrage of '
-            "0.13 vol points in the quotes of SORBEQ for 2027-01-15, at strike 100.0 % of the forward; expected "
-            "option prices that are convex in strike. Lower the volatility at this strike by 0.13 vol points, or "
-            "raise its neighbours.",
+            *("volatilities", "C363", "butterfly-arbitrage"),
+            'market.xlsx, sheet volatilities, row 363, column "volatility_decimal" (cell C363): found butterfly '
+            "arbitrage of 0.13 vol points in the quotes of SORBEQ for 2027-01-15, at strike 100.0 % of the forward; "
+            "expected option prices that are convex in strike. Lower the volatility at this strike by 0.13 vol points, "
+            "or raise its neighbours.",
         ),
         (
             *("correlations", "C2", "correlation-repaired"),
@@ -176,13 +175,13 @@ def test_mistakes_are_told_in_full(sheet, cell, code, words):
 
 
 def test_a_failing_surface_names_its_contradictions_and_the_way_to_insist():
-    told = message("volatilities", "A72", "failing-surface")
+    told = message("volatilities", "C72", "failing-surface")
     assert "a volatility surface of TESKIR that fails its checks: quotes contradict each other: calendar" in told
     assert "or run with --accept-failing-surfaces: trades on it are then priced and marked." in told
 
 
 def test_each_mistake_costs_only_what_depends_on_it():
-    broken, good = market(), load_market_of_the_sample()
+    broken, good = market(), good_market()
     assert set(good.underlyings) - set(broken.underlyings) == {"PELLOMAR"}
     usable = {name for name in broken.underlyings if broken.has_volatility(name)}
     assert usable == set(good.underlyings) - {"PELLOMAR", "HALQUIN", "WEXMOOR", "FENTRICK"}

@@ -13,20 +13,28 @@ import pandas as pd
 import pytest
 from openpyxl.utils import get_column_letter, range_boundaries
 
-from pricer.report import columns, tables, write_report
+from pricer.report import columns, market_columns, tables, write_report
 from pricer.report.explanations import CAUTION
 from pricer.report.text import looks_like_formula
 from pricer.report.widths import heading_lines, heading_width
+from pricer.run.outcome import MarketFacts
 from tests.unit.report_outcomes import WARNINGS, empty, facts, outcome, refusals, valuation
 
-SHEETS = ["Summary", "Valuations", "Deltas by trade", "Deltas by underlying", "Cross-check", "Problems", "Run"]
+SHEETS = [
+    *("Summary", "Valuations", "Deltas by trade", "Deltas by underlying", "Cross-check", "Problems"),
+    *("Market", "Calibration", "Smiles", "Curves", "Forwards", "Credit, funding, agreements", "Run"),
+]
 TABLE_SHEETS = {
     "Valuations": ("valuations", columns.VALUATIONS),
     "Deltas by trade": ("deltas", columns.DELTAS),
     "Deltas by underlying": ("underlying_deltas", columns.UNDERLYING_DELTAS),
     "Cross-check": ("cross_check", columns.CROSS_CHECK),
     "Problems": ("problems", columns.PROBLEMS),
+    "Calibration": ("calibration", market_columns.CALIBRATION),
+    "Curves": ("curves", market_columns.CURVES),
+    "Forwards": ("forwards", market_columns.FORWARDS),
 }
+FROZEN = {"Deltas by trade": "C5", "Calibration": "D5", "Forwards": "C5"}
 HEADING = 4
 
 
@@ -83,6 +91,9 @@ def test_the_summary_leads_with_the_total_and_what_it_leaves_out(workbook, folde
     assert beside(summary, "99 % sampling interval, to (EUR)") == total["upper_99"]
     assert beside(summary, "trades in the book") == 43
     assert beside(summary, "priced, precision not reached") == 2
+    assert beside(summary, "priced from a failing volatility surface") == 2
+    assert beside(summary, "volatility surfaces that fail, of 5") == 1
+    assert beside(summary, "local volatility less lognormal, 36 trades (EUR)") == total["model_difference"]
     assert beside(summary, "not priced, left out of every total") == 3
     assert beside(summary, "cross-checks that disagree, of 120 made") == 2
     assert summary["B1"].value == "Saltmarsh & Fen, structured desk"
@@ -99,8 +110,8 @@ def test_the_parts_on_the_summary_add_up_to_the_total(workbook, folder):
     summary = workbook["Summary"]
     total = json.loads((folder / "run.json").read_text())["total"]["value"]
     rows = list(summary.iter_rows())
-    for title in ("Value by currency", "Value by product", "Value by strategy", "Value by counterparty"):
-        places = [cell for row in rows for cell in row if cell.value == title]
+    for grouping in ("currency", "product", "strategy", "counterparty", "model"):
+        places = [cell for row in rows for cell in row if cell.value == f"Value by {grouping}"]
         head = places[-1]  # the first one of "Value by strategy" is the chart's
         values = []
         row = head.row + 3
@@ -161,6 +172,7 @@ def test_rows_without_a_value_are_marked_by_a_tint_and_a_bold_word(workbook):
         marks.setdefault(cell.value, set()).add((cell.fill.fgColor.rgb, cell.font.bold))
         assert sheet.cell(row, 1).fill.fgColor.rgb == cell.fill.fgColor.rgb
     assert all(len(found) == 1 for found in marks.values())
+    assert marks["failing surface"] == marks["precision not reached"]
     (plain,), (coarse,), (missing,) = (marks[s] for s in ("priced", "precision not reached", "not priced"))
     assert len({plain[0], coarse[0], missing[0]}) == 3
     assert (plain[1], coarse[1], missing[1]) == (False, True, True)
@@ -225,7 +237,7 @@ def test_totals_by_underlying_stand_below_the_filter(workbook, run):
 @pytest.mark.parametrize("title", TABLE_SHEETS)
 def test_headings_stay_in_view_repeat_in_print_and_filter_all_rows(workbook, title):
     sheet = workbook[title]
-    assert sheet.freeze_panes == ("C5" if title == "Deltas by trade" else "B5")
+    assert sheet.freeze_panes == FROZEN.get(title, "B5")
     assert sheet.print_title_rows == "$4:$4"
     _, first, last_column, last_row = range_boundaries(sheet.auto_filter.ref)
     assert (first, last_column) == (HEADING, sheet.max_column)
@@ -451,3 +463,126 @@ def test_an_underlying_whose_delta_is_unknown_is_marked_and_makes_the_total_unkn
     assert sheet.cell(last, column).value is None
     assert sheet.cell(last + 1, column).value is None
     assert workbook["Deltas by trade"].cell(HEADING + 1, 1).fill.fill_type == "solid"
+
+
+def row_of(sheet, text):
+    return next(row for row in sheet.iter_rows() if row[0].value == text)
+
+
+def test_the_market_sheet_leads_with_what_was_wrong_and_goes_on_to_how_quotes_are_repriced(workbook):
+    sheet = workbook["Market"]
+    sections = [cell.value for cell in sheet["A"] if cell.style == "section"]
+    assert sections == [
+        "What was wrong with the snapshot",
+        "How well the quotes are repriced",
+        "Violations of arbitrage",
+    ]
+    assert sheet["A2"].value.startswith("5 volatility surfaces, of which 1 fail. 250 quotes, ")
+    repaired = [cell.value for cell in row_of(sheet, "correlation repaired")]
+    assert repaired[1:4] == ["warning", 1, 0]
+    assert any("the largest change is 0.012" in str(value) for value in repaired)
+
+
+def test_a_failing_surface_is_marked_by_a_tint_and_a_bold_word_and_says_why(workbook):
+    sheet = workbook["Market"]
+    failing, passing = row_of(sheet, "DUNSMERE"), row_of(sheet, "ALDERMOOR")
+    assert (failing[1].value, failing[1].font.bold) == ("fails", True)
+    assert (passing[1].value, passing[1].font.bold) == ("passes", False)
+    assert failing[0].fill.fgColor.rgb != passing[0].fill.fgColor.rgb
+    assert "strike 80.0 % of the forward: 1.93 vol points" in failing[11].value
+    assert failing[0].row < passing[0].row
+
+
+def test_quotes_beyond_the_target_are_marked_by_a_tint_and_a_bold_word(workbook):
+    sheet = workbook["Calibration"]
+    target = column_of(sheet, "target of 0.05 vol points")
+    looks = {}
+    for row in range(HEADING + 1, sheet.max_row + 1):
+        cell = sheet.cell(row, target)
+        looks.setdefault(cell.value, set()).add((cell.font.bold, sheet.cell(row, 1).fill.fill_type))
+    assert looks.pop("beyond target") == {(True, "solid")}
+    assert set(looks) == {"within target", "outside 10 to 90 delta", "not simulated"}
+    assert all(look == {(False, None)} for look in looks.values())
+
+
+def test_curves_and_forwards_that_miss_are_marked(workbook):
+    for title, heading, marked in (
+        ("Curves", "repriced less quoted (bp)", [0.03]),
+        ("Forwards", "simulated less forward (standard errors)", [8.0]),
+    ):
+        sheet = workbook[title]
+        column = column_of(sheet, heading)
+        tinted = [sheet.cell(r, column) for r in range(HEADING + 1, sheet.max_row + 1)]
+        assert [cell.value for cell in tinted if cell.fill.fill_type] == pytest.approx(marked)
+
+
+def test_the_smiles_draw_every_quotes_error_and_the_first_and_last_expiry(workbook, run):
+    errors, *smiles = workbook["Smiles"]._charts
+    n_quotes = len(tables(run)["calibration"])
+    for series, heading in zip(errors.series, ("fit error (vol points)", "simulated error (vol points)"), strict=False):
+        title, _, area = series.yVal.numRef.f.rpartition("!")
+        column, first, _, last = range_boundaries(area.replace("$", ""))
+        assert title == "'Calibration'"
+        assert column == column_of(workbook["Calibration"], heading)
+        assert (first, last) == (HEADING + 1, HEADING + n_quotes)
+    assert len(smiles) == 6
+    titles = ["".join(r.t for p in chart.title.tx.rich.p for r in p.r or ()) for chart in smiles]
+    assert titles[0] == "DUNSMERE, 2026-06-26, by strike (% of forward)"  # the surface that fails
+    assert [title.split(", ")[1] for title in titles] == ["2026-06-26"] * 3 + ["2028-05-26"] * 3
+    fitted, quoted, simulated = smiles[0].series
+    facts = next(s for s in run.market.surfaces if s.underlying == "DUNSMERE")
+    wanted = [q for q in facts.quotes if q.expiry_date.isoformat() == "2026-06-26"]
+    for series, name in ((fitted, "fitted"), (quoted, "quoted"), (simulated, "simulated")):
+        _, _, area = series.yVal.numRef.f.rpartition("!")
+        cells = [row[0].value for row in workbook["Smiles"][area.replace("$", "")]]
+        assert cells == pytest.approx([100.0 * getattr(q, name) for q in wanted])
+
+
+def test_the_smiles_print_on_one_page(workbook):
+    sheet = workbook["Smiles"]
+    assert not sheet.row_breaks.brk
+    assert all(chart.anchor.to.row <= int(sheet.print_area.rpartition("$")[2]) for chart in sheet._charts)
+
+
+def test_terms_stand_in_three_tables_on_one_sheet(workbook, run):
+    sheet = workbook["Credit, funding, agreements"]
+    assert [cell.value for cell in sheet["A"] if cell.style == "section"] == [
+        "Credit",
+        "The desk's funding",
+        "Agreements",
+    ]
+    found = [cell.value for cell in row_of(sheet, "NS-1")]
+    assert found == ["NS-1", "Norrbank", "EUR", "two-way", 1e6, 2.5e6, 250_000, -100_000, 5, 10, "risk-free mark"]
+    dates = [cell.value for cell in sheet["A"] if isinstance(cell.value, datetime)]
+    assert [day.date() for day in dates] == [point.date for point in run.market.funding]
+
+
+@pytest.mark.parametrize("title", ["Market", "Credit, funding, agreements"])
+def test_every_number_of_a_stack_of_tables_fits_into_its_column(workbook, title):
+    sheet = workbook[title]
+    for row in sheet.iter_rows(min_row=3):
+        for cell in row:
+            if isinstance(cell.value, int | float):
+                places = len(cell.number_format.partition(".")[2])
+                assert len(f"{cell.value:,.{places}f}") < sheet.column_dimensions[cell.column_letter].width
+
+
+def test_a_flat_market_says_so_on_every_sheet_of_the_market(tmp_path):
+    workbook = opened(outcome(3, market=MarketFacts(), issues=()), tmp_path / "may")
+    assert workbook.sheetnames == SHEETS
+    for title in ("Market", "Calibration", "Smiles"):
+        assert any("volatilities are flat in strike" in text for text in texts(workbook[title]))
+    assert "Nothing was found wrong with the market snapshot." in texts(workbook["Market"])
+    assert "The market has no funding curve." in texts(workbook["Credit, funding, agreements"])
+    assert workbook["Smiles"]._charts == []
+
+
+def test_many_violations_are_cut_and_the_rest_is_said_to_be_in_the_plain_table(tmp_path):
+    run = outcome(1)
+    many = tuple(f"butterfly arbitrage, number {i}" for i in range(100))
+    surfaces = (replace(run.market.surfaces[0], violations=many), *run.market.surfaces[1:])
+    workbook = opened(replace(run, market=replace(run.market, surfaces=surfaces)), tmp_path / "may")
+    found = texts(workbook["Market"])
+    assert "Violations of arbitrage, the first 60 of 102: the rest is in violations.csv" in found
+    assert sum(text.startswith("butterfly arbitrage, number") for text in found) == 61  # the first once more as reason
+    assert len((tmp_path / "may" / "violations.csv").read_text().splitlines()) == 103

@@ -16,7 +16,7 @@ from pricer.loader import load_book, load_market, write_tables
 from pricer.market.calendars import year_fraction
 from pricer.market.quoted_curves import reprice
 from pricer.run.admission import admit
-from tests.end_to_end.desk import SAMPLE, sample_maker, saltmarsh
+from tests.end_to_end.desk import SAMPLE, saltmarsh, sample_maker
 
 
 @lru_cache
@@ -47,7 +47,7 @@ def test_nothing_is_wrong_with_it_but_that_its_history_is_not_used():
 
 
 def test_every_trade_can_be_priced_on_it_and_little_is_odd_about_any():
-    """18 June 2027 is a holiday of the New York exchange (Juneteenth falls on a Saturday): three trades expire on it."""
+    """Three trades expire on 18 June 2027, a holiday in New York (the 19th is a Saturday)."""
     admitted = admit(book(), market())
     assert admitted.refusals == ()
     assert len(admitted) == 85
@@ -70,7 +70,9 @@ def test_it_uses_every_table_and_every_way_of_quoting():
     assert set(m.surfaces) == set(m.underlyings) - {"WEXMOOR"}
     assert m.underlyings["WEXMOOR"].volatility is not None
     assert set(m.repo) == {"ORLUMA", "PELLOMAR", "KRUNTEL", "DRUVEX"}
-    assert all(repo.long.zero_rate(day) > repo.short.zero_rate(day) for repo in m.repo.values() for day in repo.mid.dates)
+    assert all(
+        repo.long.zero_rate(day) > repo.short.zero_rate(day) for repo in m.repo.values() for day in repo.mid.dates
+    )
     assert len(m.credit) == 6
     assert m.funding is not None
     assert {trade.netting_set for trade in book()} == set(m.agreements)

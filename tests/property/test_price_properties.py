@@ -10,12 +10,12 @@ import pytest
 from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
+from pricer.contracts.option import Conversion
 from pricer.market.affine_price import AffinePrice
 from pricer.market.correlation import checked
 from pricer.market.correlation_estimate import HistoryRules, estimate
 from pricer.market.correlation_stress import stressed
 from pricer.market.credit import HazardCurve
-from pricer.market.currency_conversion import Conversion
 from pricer.market.curves import DiscountCurve
 from pricer.market.dividends import CashDividend, Dividends, ProportionalDividend
 from pricer.market.fx import FxRates

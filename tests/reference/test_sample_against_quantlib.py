@@ -1,16 +1,20 @@
-"""Every European trade of the sample book that QuantLib can express, by QuantLib's own engines."""
+"""Every European trade of the sample book that QuantLib can express, by QuantLib's own engines.
+
+Under the lognormal model, quantos and composites included. Cash dividends still to come at expiry are known
+amounts of a sum and move its strikes; ranked and geometric aggregates of such prices have no law that
+QuantLib knows, and are left to the tests of sampling by paths.
+"""
 
 from __future__ import annotations
 
 from functools import lru_cache
 from pathlib import Path
 
-import numpy as np
 import pytest
 
 from pricer.engines.closed_form import best_exact, references
-from pricer.engines.european import problem_of
 from pricer.engines.monte_carlo import sample
+from pricer.engines.unit_terms import UnitTerms
 from pricer.loader import load_book, load_market
 from tests.reference.quantlib_engines import can_express, independent_value
 
@@ -29,16 +33,18 @@ TRADES = [trade.trade_id for trade in desk()[0].trades]
 def test_quantlib_agrees(trade_id):
     book, market = desk()
     trade = next(t for t in book.trades if t.trade_id == trade_id)
-    problem = problem_of(trade, market)
+    terms = UnitTerms.of(trade, market)
+    problem = terms.lognormal()
+    if problem is None:
+        pytest.skip("cash dividends still to come leave this aggregate without a lognormal law")
     if not can_express(problem):
         pytest.skip(f"QuantLib has no payoff on the aggregate '{problem.aggregate.kind}'")
     independent = independent_value(problem)
-    spots = np.array([market.underlyings[u].spot for u in trade.contract.underlyings])
-    notional = trade.contract.unit_notional(spots)
+    notional = terms.unit_notional
     allowed = independent.resolution * max(notional, abs(independent.value))
 
     drawn = sample(problem, group=trade_id, seed=3, value_tolerance=1e-4 * notional, delta_tolerance=1e-2 * notional)
-    # 6 standard errors: Student with 15 degrees of freedom, 60 trades, one failure in 700 runs
+    # 6 standard errors: Student with 15 degrees of freedom, 85 trades, one failure in 500 runs
     assert abs(drawn.value - independent.value) <= 6.0 * drawn.standard_error + allowed, independent.engines
 
     exact = best_exact(references(problem))
@@ -48,5 +54,6 @@ def test_quantlib_agrees(trade_id):
 
 def test_most_of_the_sample_can_be_expressed():
     book, market = desk()
-    expressed = sum(can_express(problem_of(trade, market)) for trade in book.trades)
-    assert expressed >= 48, f"{expressed} of {len(book)}"
+    problems = [UnitTerms.of(trade, market).lognormal() for trade in book.trades]
+    expressed = sum(problem is not None and can_express(problem) for problem in problems)
+    assert expressed >= 55, f"{expressed} of {len(book)}"

@@ -100,11 +100,14 @@ def test_slices_that_cross_are_reported_at_the_strike_where_they_cross_most():
     assert calendar[0].log_moneyness == pytest.approx(-8.0 * np.sqrt(0.021))
 
 
-def test_a_smile_between_two_sound_slices_can_be_unsound_and_is_reported_with_both_dates():
+def test_a_smile_between_two_sound_slices_can_be_unsound_and_is_reported_where_it_matters(monkeypatch):
     """Both slices have g >= 0 and are ordered, their mean in total variance is not: far out in a steep wing."""
     early = SviSlice(-0.1287, 0.169, -0.02, -0.42, 0.78)
     late = SviSlice(-0.09, 0.172, 0.0, -0.31, 0.69)
     assert surface_violations(surface(early)) == surface_violations(surface(late)) == ()
+    assert surface_violations(surface(early, late)) == ()  # no option there is worth anything
+    monkeypatch.setattr("pricer.market.slice_correction.MATERIAL_DEVIATIONS", np.inf)
+    monkeypatch.setattr("pricer.market.slice_correction.LEAST_VALUE", 0.0)
     found = surface_violations(surface(early, late))
     assert [(v.kind, v.expiry_date, v.later_date) for v in found] == [("butterfly", day(182), day(365))]
 

@@ -117,7 +117,7 @@ def test_underlyings_of_the_payment_currency_need_no_rate():
         np.testing.assert_array_equal(found.covariance, plain.covariance)
 
 
-def test_cash_dividends_shift_a_quanto_and_forbid_a_composite():
+def test_cash_dividends_to_come_leave_the_part_above_them_lognormal():
     market = mixed_market()
     paid = Dividends(0.0, (), (CashDividend(date(2028, 5, 10), 4.0),))
     share = replace(market.underlyings["CADMUS"], dividends=paid)
@@ -128,9 +128,8 @@ def test_cash_dividends_shift_a_quanto_and_forbid_a_composite():
     scale = market.affine_levels(("CADMUS",), DAY)[0][0]
     deviation = market.pure_volatility("CADMUS").volatility(DAY)
     assert found.forwards[0] == pytest.approx(scale * math.exp(-0.4 * deviation * 0.10), rel=1e-13)
-    with pytest.raises(ValueError) as caught:
-        market.joint_lognormal(("CADMUS",), DAY, payment_currency="EUR", conversion=COMPOSITE, pure=True)
-    assert str(caught.value).endswith("of cash dividends still to come, which a composite converts")
+    both = market.joint_lognormal(("CADMUS",), DAY, payment_currency="EUR", conversion=COMPOSITE, pure=True)
+    assert both.forwards[0] == pytest.approx(scale * market.fx_forward("USD", "EUR", DAY), rel=1e-13)
 
 
 def test_what_is_missing_is_named():

@@ -22,6 +22,8 @@ from tests.unit.report_outcomes import empty, facts, outcome, valuation
 CSV_FILES = {
     *("valuations.csv", "deltas.csv", "underlying_deltas.csv", "summaries.csv"),
     *("cross_check.csv", "problems.csv", "not_priced.csv"),
+    *("market_problems.csv", "surfaces.csv", "violations.csv", "calibration.csv", "curves.csv", "forwards.csv"),
+    *("credit.csv", "funding.csv", "agreements.csv"),
 }
 
 
@@ -170,6 +172,22 @@ def test_every_table_that_is_written_is_defused(run, tmp_path):
         refusals=tuple(replace(r, trade_id="=1") for r in run.refusals),
         issues=tuple(replace(i, found="=1", mend="-1") for i in run.issues),
         underlyings=run.underlyings,
+        market=replace(
+            run.market,
+            surfaces=tuple(
+                replace(
+                    s,
+                    underlying="=1",
+                    violations=("+1",),
+                    failures=("-x",),
+                    quotes=(replace(s.quotes[0], underlying="=1"),),
+                )
+                for s in run.market.surfaces
+            ),
+            curves=tuple(replace(c, curve="=1", collateral="@1", instrument="+1") for c in run.market.curves),
+            credit=tuple(replace(c, name="-x") for c in run.market.credit),
+            agreements=tuple(replace(a, netting_set="=1", counterparty="@1") for a in run.market.agreements),
+        ),
     )
     out = write_report(evil, tmp_path / "may")
     for name in CSV_FILES:
@@ -195,6 +213,13 @@ def test_the_facts_of_the_run_are_complete(run, written):
     assert sum(found["counts"]["cross_checks"].values()) == len(run.cross_checks)
     assert found["counts"]["cross_checks_without_sampling"] == 0
     assert found["counts"]["disputed"] == 0
+    assert found["counts"]["failing_surface"] == 2
+    assert found["counts"]["without_model_difference"] == 4
+    assert (found["counts"]["surfaces"], found["counts"]["surfaces_failing"]) == (5, 1)
+    assert (found["counts"]["quotes"], found["counts"]["quotes_beyond_target"]) == (250, 30)
+    assert found["total"]["model_difference"] == pytest.approx(
+        tables(run)["valuations"]["reporting_model_difference"].sum()
+    )
     assert found["total"]["value"] == pytest.approx(sum(v.reporting_value for v in run.valuations))
     assert found["trade_seconds"][5] == {"trade_id": "SMF-1005", "seconds": run.valuations[5].seconds}
     assert found["timings"] == dict(run.facts.timings)

@@ -20,7 +20,8 @@ from tests.unit.report_outcomes import TO_EUR, WARNINGS, empty, issue, outcome, 
 
 NUMBERS = [
     *("value", "standard_error", "lower", "upper", "unpaid_premium", "reporting_value", "reporting_standard_error"),
-    *("sampled_value", "sampled_standard_error", "paths", "randomisations", "degrees_of_freedom"),
+    *("sampled_value", "sampled_standard_error", "paths", "randomisations", "degrees_of_freedom", "time_steps"),
+    *("model_difference", "model_difference_standard_error"),
 ]
 
 
@@ -193,7 +194,7 @@ def test_the_short_reason_names_column_and_fault_and_counts_the_others():
     short = [short_reason(refusal) for refusal in refusals()]
     assert short[0] == "strike: found 0; expected a price above 0"
     assert short[1] == 'expiry_date: found "31/02/2027"; expected a date (and 1 more)'
-    assert all(len(text) <= 72 for text in short)
+    assert all(len(text) <= 62 for text in short)
     assert short_reason(simple("A", 1.0, 0.1, status=Status.NOT_PRICED, ending="stopped")) == "stopped"
     assert short_reason(Refusal("A", ())) == "no reason was recorded"
 

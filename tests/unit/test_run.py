@@ -15,8 +15,8 @@ from pricer.core.issues import Severity
 from pricer.core.progress import Silent
 from pricer.engines import european
 from pricer.engines.closed_form import best_exact, references
-from pricer.engines.european import problem_of
 from pricer.engines.problem import Reference, ReferenceKind
+from pricer.engines.unit_terms import UnitTerms
 from pricer.market.correlation import checked
 from pricer.run import pricing
 from pricer.run.local import map_groups
@@ -42,7 +42,7 @@ def priced(*trades, market=MARKET, **settings):
 
 def test_a_position_is_its_quantity_times_the_value_of_one_unit():
     trade = basket("ARVENNE", "BELCOR")
-    unit = best_exact(references(problem_of(trade, MARKET))).value
+    unit = best_exact(references(UnitTerms.of(trade, MARKET).lognormal())).value
     long, short = priced(named(trade, "L"), named(trade, "S", position=-40.0)).valuations
     assert long.value == pytest.approx(100.0 * unit, rel=1e-12)
     assert short.value == pytest.approx(-40.0 * unit, rel=1e-12)

@@ -219,8 +219,8 @@ def _build(
     ``lengths`` : (n_steps,) years. ``edges``, ``steps`` : (n_steps,) first node and distance of the nodes
     in q of each step; q = 0 is one. ``nodes``, ``weights`` : of the normal distribution.
     Results at the nodes: ``moves`` (n_steps - 1, n) G_next(H(q)) - q; ``levels`` (n_steps, n) H(q);
-    ``deviations`` (n,) at the nodes of the last step but one, of the lognormal price with the second
-    moment of the last step (all of ``n_steps`` > 1); ``starts`` (3,): G(0), G'(0) of the first step,
+    ``deviations`` (n_steps - 1, n) at the nodes of each step but the last, of the lognormal price with the second
+    moment of the step after it (``n_steps`` > 1); ``starts`` (3,): G(0), G'(0) of the first step,
     and the deviation of a single step from k = 0.
     """
     n_steps, n = levels.shape
@@ -246,13 +246,13 @@ def _build(
             k = levels[s, j]
             q, near = _inverse(means[s + 1, 0], mean_slopes[s + 1, 0], edges[s + 1], steps[s + 1], k, near)
             moves[s, j] = q - (edges[s] + j * steps[s])
-            if s == n_steps - 2:
-                second = _cubic(means[s + 1, 1], mean_slopes[s + 1, 1], edges[s + 1], steps[s + 1], q)[0]
-                deviations[j] = np.sqrt(max(second - 2.0 * k, 1e-12 * lengths[s + 1]))
+            second = _cubic(means[s + 1, 1], mean_slopes[s + 1, 1], edges[s + 1], steps[s + 1], q)[0]
+            deviations[s, j] = np.sqrt(max(second - 2.0 * k, 1e-12 * lengths[s + 1]))
         _straightened(moves[s])
     for s in range(n_steps):
         _straightened(levels[s])
-    _straightened(deviations)
+    for s in range(n_steps - 1):
+        _straightened(deviations[s])
 
 
 #: Kernels import from each other: a change in any of their files renews those on disk.
