@@ -14,7 +14,7 @@ MARKET_PROBLEMS: tuple[Column, ...] = (
     Column("trades", "trades lost (number)", Kind.COUNT, "Trades that cannot be priced because of it."),
     Column("place", "first place", Kind.PROSE, "Where it was found first."),
     Column("found", "found there", Kind.PROSE, "What stands at the first place."),
-    Column("mend", "what was done, or how to mend it", Kind.PROSE, "For the first place."),
+    Column("mend", "what was done, or how to mend it", Kind.PROSE, "For the first place.", widest=56),
 )
 
 SURFACES: tuple[Column, ...] = (
@@ -125,25 +125,24 @@ CURVES: tuple[Column, ...] = (
 FORWARDS: tuple[Column, ...] = (
     _UNDERLYING,
     Column("date", "date", Kind.DATE, "An ex date or an expiry."),
-    Column("forward", "forward (underlying's currency)", Kind.AMOUNT, "After that day's dividends."),
+    Column("forward", "forward (underlying's currency)", Kind.FINE, "After that day's dividends."),
     Column(
         "dividend",
         "dividend (underlying's currency)",
-        Kind.AMOUNT,
+        Kind.FINE,
         "Cash or proportional amount of that ex date; 0 on other dates.",
     ),
     Column(
         "floor",
         "floor (underlying's currency)",
-        Kind.AMOUNT,
+        Kind.FINE,
         "Value on that date of the cash dividends still to come, below which the price cannot fall.",
     ),
     Column(
         "simulated_forward",
         "simulated forward (underlying's currency)",
-        Kind.AMOUNT,
+        Kind.FINE,
         "Of the paths that trades are valued on; blank where not simulated.",
-        like="forward",
     ),
     Column("simulated_error_bp", "simulated less forward (bp of forward)", Kind.FINE, "0.01 % of the forward is 1 bp."),
     Column("simulated_standard_error_bp", "sampling error (bp of forward)", Kind.FINE, "One standard error."),

@@ -47,7 +47,7 @@ def add_summary_sheet(workbook: Workbook, outcome: Outcome, frames: Mapping[str,
     underlyings = underlying_table(outcome)
     first = canvas.stacks(
         (by["currency"], by["strategy"], by["counterparty"], by["model"], verdict_table(outcome)),
-        (by["product"], underlyings, model_difference_table(outcome, whole)),
+        (model_difference_table(outcome, whole), by["product"], underlyings),
     )
     if chart_areas:
         bars = (("value", by["strategy"], LEFT), ("cash delta", underlyings, RIGHT))

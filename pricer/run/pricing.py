@@ -12,14 +12,14 @@ from importlib.metadata import version
 from pricer.contracts.book import Book, Model, Refusal, Trade
 from pricer.core.issues import Issue, Severity
 from pricer.core.progress import Progress, Silent
-from pricer.engines.calibration import Calibration
+from pricer.engines.calibration import Calibration, calibrate
 from pricer.engines.cross_check import ALARMS, APPROXIMATION_BP, FALSE_ALARM, IMMATERIAL, is_test
 from pricer.engines.european import Appraisal, AppraisalSettings, appraise
 from pricer.market.correlation_stress import stressed
 from pricer.market.market import Market
 from pricer.run.admission import admit, refusal
 from pricer.run.local import map_groups
-from pricer.run.market_facts import market_facts
+from pricer.run.market_facts import forward_dates, market_facts
 from pricer.run.outcome import Outcome, RunFacts, UnderlyingFacts
 from pricer.run.position import cross_checks, valuation
 from pricer.run.settings import Settings
@@ -86,7 +86,19 @@ def _stressed(market: Market, settings: Settings) -> Market:
 
 def _calibrations(names: list[str], market: Market, settings: Settings) -> dict[str, Calibration]:
     """Every quoted vanilla of these underlyings through the paths that trades are valued on."""
-    return {}
+    found = map_groups(
+        partial(_calibration, market=market, settings=settings),
+        names,
+        workers=settings.workers,
+        progress=Silent(),
+        label=str,
+    )
+    return dict(zip(names, found, strict=True))
+
+
+def _calibration(name: str, market: Market, settings: Settings) -> Calibration:
+    dates = forward_dates(name, market)
+    return calibrate(market.surfaces[name], market.affine_price(name), dates, seed=settings.seed)
 
 
 def _try_appraise(trade: Trade, market: Market, settings: AppraisalSettings) -> Appraisal | Refusal:
