@@ -113,7 +113,7 @@ def _value(found: LocalVolSample, asked: Asked, known: tuple[Reference, ...], *,
         references=known,
         time_steps=found.steps,
         is_sound=not bool(np.any(drifted)),
-        ratios="pathwise, local volatility fixed in strikes; vega under lognormal levels",
+        ratios="pathwise, local volatility held as a function of time and level; vega under lognormal levels",
     )
 
 

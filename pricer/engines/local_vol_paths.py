@@ -108,7 +108,7 @@ class PathSamplers:
         )
         order, shares = plan.design.order, plan.shares
         noise = PathNoise(
-            grid,
+            grid.through(self.steps.times),
             plan.loadings,
             plan.sizes,
             stream(self.seed, self.group, Purpose.PRICE, 0),
@@ -126,6 +126,6 @@ class PathSamplers:
         """The lognormal problem that is solved exactly on the paths' own noise."""
         problem = self.problem
         law = problem.law_of(
-            self._of_levels(self.steps.covariance(problem.correlation)), self.shares * self.steps.log_drifts
+            self._of_levels(self.steps.covariance(problem.correlation)), self.shares * self.steps.log_drifts(self.grid)
         )
         return EuropeanProblem(law, problem.aggregate, problem.payoff, problem.discount_factor)

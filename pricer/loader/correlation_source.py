@@ -9,7 +9,8 @@ from datetime import date
 from pricer.core.issues import Issue
 from pricer.loader.correlations import CorrelationTable, inverted, read_correlations
 from pricer.loader.findings import Findings
-from pricer.loader.price_history import PriceHistory, correlations_of, read_price_history
+from pricer.loader.history_correlations import correlations_of
+from pricer.loader.price_history import PriceHistory, read_price_history
 from pricer.loader.sheets import Sheet
 from pricer.loader.table import Table
 from pricer.loader.underlying_rows import PriceHistoryRow

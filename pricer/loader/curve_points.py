@@ -9,8 +9,10 @@ from typing import Generic, Protocol, TypeVar
 
 from pricer.core.issues import Issue, Severity
 from pricer.loader.columns import TableRow
+from pricer.loader.credit_rows import FundingRow
 from pricer.loader.faults import Fault
 from pricer.loader.table import Row, Table
+from pricer.loader.underlying_rows import RepoRow
 from pricer.market.calendars import add_tenor
 
 
@@ -23,16 +25,18 @@ class _DatedRow(Protocol):
 
 
 R = TypeVar("R", bound=TableRow)
+#: Rows of curves of which every point is kept.
+P = TypeVar("P", RepoRow, FundingRow)
 
 
 @dataclass(frozen=True, slots=True)
-class Point(Generic[R]):
+class Point(Generic[P]):
     """A row of a curve, its date, and the column that gave the date."""
 
     day: date
     column: str  # "date" or "tenor"
     row: int
-    value: R
+    value: P
 
 
 def dated(row: _DatedRow, calendar: str, valuation_date: date) -> tuple[date, str]:
@@ -43,15 +47,15 @@ def dated(row: _DatedRow, calendar: str, valuation_date: date) -> tuple[date, st
 
 
 def coming_points(
-    table: Table[R], rows: Sequence[Row[R]], calendar: str, valuation_date: date
-) -> tuple[list[Point[R]], list[Issue]]:
+    table: Table[P], rows: Sequence[Row[P]], calendar: str, valuation_date: date
+) -> tuple[list[Point[P]], list[Issue]]:
     """The usable rows after the valuation date, by date, and everything found on the way.
 
     Points that are over are warned of and left out; a date that comes twice is an error, and so is
     a curve of which no point is left.
     """
     points = [
-        Point(*dated(row.value, calendar, valuation_date), row.number, row.value)  # type: ignore[arg-type]
+        Point(*dated(row.value, calendar, valuation_date), row.number, row.value)
         for row in rows
         if row.value is not None
     ]

@@ -93,7 +93,7 @@ EXAMPLE_BOOK: Tables = {
             "profile": "forward",
             "strike": 1.0,
             "expiry_date": date(2027, 3, 19),
-            "currency": "EUR",
+            "currency": "USD",
             "conversion": "quanto",
         },
     ],
@@ -168,6 +168,7 @@ EXAMPLE_MARKET: Tables = {
         {"curve": "EUR-STANDARD", "currency": "EUR", "day_count": "ACT/365F", "calendar": "TARGET"},
         {"curve": "EUR-USD-CASH", "currency": "EUR", "collateral": "USD", "day_count": "ACT/360", "calendar": "TARGET"},
         {"curve": "GBP-STANDARD", "currency": "GBP", "day_count": "ACT/365F", "calendar": "UK"},
+        {"curve": "USD-STANDARD", "currency": "USD", "day_count": "ACT/365F", "calendar": "US"},
     ],
     "curve_points": [
         {"curve": "EUR-STANDARD", "tenor": "3M", "zero_rate_decimal": 0.0195},
@@ -178,6 +179,8 @@ EXAMPLE_MARKET: Tables = {
         {"curve": "GBP-STANDARD", "tenor": "1M", "deposit_rate_decimal": 0.0375},
         {"curve": "GBP-STANDARD", "tenor": "1Y", "overnight_swap_rate_decimal": 0.0362},
         {"curve": "GBP-STANDARD", "tenor": "5Y", "overnight_swap_rate_decimal": 0.0355},
+        {"curve": "USD-STANDARD", "tenor": "1Y", "zero_rate_decimal": 0.0362},
+        {"curve": "USD-STANDARD", "tenor": "5Y", "zero_rate_decimal": 0.0341},
     ],
     "fx": [{"pair": "EURUSD", "spot": 1.1032}, {"pair": "EURGBP", "spot": 0.8615}],
     "fx_volatilities": [

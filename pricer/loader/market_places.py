@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Any
 
 from pricer.core.source import Place
@@ -17,15 +18,17 @@ class Places:
         self._cells: dict[str, Place | None] = {}
         self._correlations = correlations
 
-    def add(self, kind: str, table: Table[Any] | None, *id_columns: str, shown: str = "") -> None:
+    def add(self, kind: str, table: Table[Any] | None, id_columns: Sequence[str], shown: str) -> None:
         """Remember the first row of each "kind:id", the id being the values of ``id_columns`` joined by colons.
 
-        The cell is in the column ``shown``, or in the first of the id's.
+        The cell is in the column ``shown``.
         """
-        for row in () if table is None else table.rows:
+        if table is None:
+            return
+        for row in table.rows:
             key = ":".join([kind, *(str(row.get(column)) for column in id_columns)])
-            if key not in self._cells and table is not None:
-                self._cells[key] = table.place(row.number, shown or id_columns[0])
+            if key not in self._cells:
+                self._cells[key] = table.place(row.number, shown)
 
     def __call__(self, key: str) -> Place | None:
         kind, _, rest = key.partition(":")

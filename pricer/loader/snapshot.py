@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import replace
 from datetime import date
 from pathlib import Path
-from typing import TypeVar
+from typing import Any, TypeVar
 
 from pricer.core.issues import InputError, Issue, Severity
 from pricer.loader.columns import TableRow, columns_of
@@ -39,10 +39,8 @@ from pricer.loader.underlying_rows import DividendRow, PriceHistoryRow, RepoRow,
 from pricer.loader.underlyings import read_underlyings
 from pricer.loader.volatilities import read_volatilities
 from pricer.market import quality
-from pricer.market.affine_price import AffinePrice
 from pricer.market.market import CORRELATIONS, Market
 from pricer.market.market_quotes import MarketQuotes
-from pricer.market.underlying import Underlying
 
 R = TypeVar("R", bound=TableRow)
 
@@ -53,6 +51,20 @@ _ABSENCE = {
     "curves": Severity.FATAL,
     "curve_points": Severity.FATAL,
     "volatilities": Severity.ERROR,
+}
+
+
+#: Kinds of the market's items, as its quality gates name them: the table, the columns of the id and that of the cell.
+_CELLS: dict[str, tuple[str, tuple[str, ...], str]] = {
+    "valuation_date": ("snapshot", (), "valuation_date"),
+    "dividend_yield": ("underlyings", ("underlying",), "dividend_yield_decimal"),
+    "dividends": ("dividends", ("underlying",), "underlying"),
+    "repo": ("repo", ("underlying",), "underlying"),
+    "volatility": ("volatilities", ("underlying", "expiry_date"), "volatility_decimal"),
+    "curve": ("curves", ("curve",), "curve"),
+    "fx": ("fx", ("pair",), "pair"),
+    "fx_volatilities": ("fx_volatilities", ("pair",), "pair"),
+    "credit": ("credit", ("name",), "name"),
 }
 
 
@@ -92,14 +104,7 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
     underlyings, repo = read_underlyings(underlying_rows, dividends, repo_rows, today, findings)
     curves = read_curves(curve_rows, point_rows, today, findings)
 
-    def price_of(underlying: Underlying) -> AffinePrice:
-        name, held = underlying.underlying_id, repo.get(underlying.underlying_id)
-        growth = curves.get((underlying.currency, "")) if held is None else held.mid
-        if growth is None:
-            raise LookupError(f"{underlying.currency} has no usable standard curve")
-        return AffinePrice.of(name, underlying.spot, underlying.dividends, growth)
-
-    levels, surfaces = read_volatilities(volatilities, known, underlyings, price_of, today, findings)
+    levels, surfaces = read_volatilities(volatilities, known, underlyings, curves, repo, today, findings)
     underlyings = {name: replace(item, volatility=levels.get(name)) for name, item in underlyings.items()}
     fx = read_exchange_rates(fx_rows, fx_volatilities, today, findings)
     hazards, credit_quotes = read_credit(credit_rows, curves, findings)
@@ -129,16 +134,9 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
         quotes=MarketQuotes(credit_quotes, correlations.estimate),
     )
     place = Places(correlations.source)
-    if today == row.valuation_date:
-        place.add("valuation_date", snapshot, shown="valuation_date")
-    place.add("dividend_yield", underlying_rows, "underlying", shown="dividend_yield_decimal")
-    place.add("dividends", dividends, "underlying")
-    place.add("repo", repo_rows, "underlying")
-    place.add("volatility", volatilities, "underlying", "expiry_date", shown="volatility_decimal")
-    place.add("curve", curve_rows, "curve")
-    place.add("fx", fx_rows, "pair")
-    place.add("fx_volatilities", fx_volatilities, "pair")
-    place.add("credit", credit_rows, "name")
+    for kind, (name, ids, shown) in _CELLS.items():
+        if name != "snapshot" or today == row.valuation_date:
+            place.add(kind, tables.read.get(name), ids, shown)
     findings.add(quality.gates(market, correlations.repair, place))
     return replace(market, issues=tuple(findings.issues))
 
@@ -149,6 +147,7 @@ class _Tables:
     def __init__(self, sheets: Sheets) -> None:
         self._sheets = sheets
         self.findings = Findings(unread_sheets(sheets))
+        self.read: dict[str, Table[Any]] = {}
 
     def get(self, name: str, model: type[R], absence: Severity | None = None) -> Table[R] | None:
         sheet = self._sheet(name, absence or _ABSENCE.get(name))
@@ -156,7 +155,10 @@ class _Tables:
             return None
         header, issues = match_header(sheet, columns_of(model))
         self.findings.add(issues)
-        return None if header is None else read_table(sheet, header, model)
+        if header is None:
+            return None
+        table = self.read[name] = read_table(sheet, header, model)
+        return table
 
     def correlations(self, source: str) -> Sheet | Table[PriceHistoryRow] | None:
         """What correlations come from, one of two tables; a warning if the other is there and not empty."""

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Collection, Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from datetime import date
 from typing import TypeVar
 
@@ -20,20 +20,22 @@ from pricer.market.checked_surface import (
     VolatilityQuote,
     build_surface,
 )
+from pricer.market.curves import DiscountCurve
+from pricer.market.repo import RepoCurve
 from pricer.market.underlying import Underlying
 from pricer.market.volatility import CalendarArbitrageError, VolatilityCurve
 
 V = TypeVar("V", VolatilityRow, FxVolatilityRow)
 
-#: The price of an underlying on all dates. Raises ValueError or LookupError where there is none.
-PriceOf = Callable[[Underlying], AffinePrice]
+Curves = Mapping[tuple[str, str], DiscountCurve]
 
 
 def read_volatilities(
     table: Table[VolatilityRow] | None,
     known: Collection[str],
     underlyings: Mapping[str, Underlying],
-    price_of: PriceOf,
+    discount_curves: Curves,
+    repo: Mapping[str, RepoCurve],
     valuation_date: date,
     findings: Findings,
 ) -> tuple[dict[str, VolatilityCurve], dict[str, CheckedSurface]]:
@@ -56,7 +58,9 @@ def read_volatilities(
             if curve is not None:
                 curves[name] = curve
             continue
-        surface = _surface(table, rows, underlying, price_of, valuation_date, findings)
+        held = repo.get(name)
+        growth = discount_curves.get((underlying.currency, "")) if held is None else held.mid
+        surface = _surface(table, rows, underlying, growth, valuation_date, findings)
         if surface is not None:
             surfaces[name] = surface
     return curves, surfaces
@@ -111,7 +115,7 @@ def _surface(
     table: Table[VolatilityRow],
     rows: Sequence[Row[VolatilityRow]],
     underlying: Underlying,
-    price_of: PriceOf,
+    growth: DiscountCurve | None,
     valuation_date: date,
     findings: Findings,
 ) -> CheckedSurface | None:
@@ -121,13 +125,14 @@ def _surface(
     coming = _coming(table, rows, valuation_date, findings)
     if not coming:
         return None
-    try:
-        price = price_of(underlying)
-    except LookupError as error:
-        findings.reject(name, [_no_forward(table, coming[0][0], name, error)])
+    if growth is None:
+        reason = f"{underlying.currency} has no usable standard curve"
+        findings.reject(name, [_no_forward(table, coming[0][0], name, reason)])
         return None
+    try:
+        price = AffinePrice.of(name, underlying.spot, underlying.dividends, growth)
     except ValueError as error:  # cash dividends above the spot, which the quality gates tell at their own cell
-        findings.charge(name, [_no_forward(table, coming[0][0], name, error)])
+        findings.charge(name, [_no_forward(table, coming[0][0], name, str(error))])
         return None
     quotes = [_quote(value) for _, value in coming]
     try:
@@ -140,10 +145,10 @@ def _surface(
     return None
 
 
-def _no_forward(table: Table[VolatilityRow], row: int, name: str, error: LookupError | ValueError) -> Issue:
+def _no_forward(table: Table[VolatilityRow], row: int, name: str, reason: str) -> Issue:
     fault = Fault(
         "no-forward",
-        f"quotes by strike or skew of {name}, which has no forward: {error}",
+        f"quotes by strike or skew of {name}, which has no forward: {reason}",
         "an underlying with a forward, from which strikes are measured",
         "Mend the underlying's curve or dividends first.",
     )

@@ -29,7 +29,7 @@ def market_tables(outcome: Outcome, issues: Sequence[Issue]) -> Mapping[str, Fra
     problems = market_problems(issues, outcome.facts.sources)
     return {
         "market_problems": tidy.records(
-            problems, MarketProblem, text="severity kind place found expected mend code", whole="number trades"
+            problems, MarketProblem, text="severity kind place found expected mend code", whole="number"
         ),
         "surfaces": tidy.records(
             surface_fits(outcome),

@@ -17,13 +17,12 @@ BOOK_SHEETS = frozenset({"trades", "constituents"})
 class MarketProblem:
     """All problems of one kind and severity.
 
-    ``number`` counts places, ``trades`` the trades that cannot be priced because of them; the rest describes the first.
+    ``number`` counts places; the rest describes the first of them.
     """
 
     severity: Severity
     kind: str
     number: int
-    trades: int
     place: str
     found: str
     expected: str
@@ -36,30 +35,24 @@ def market_problems(issues: Sequence[Issue], sources: Sequence[SourceFile]) -> l
 
     ``sources`` are the files read, the book's before the market's.
     """
-    places: dict[tuple[Severity, str], dict[Issue, set[str]]] = {}
-    for issue in issues:
-        if _of_market(issue, sources):
-            kind = places.setdefault((issue.severity, issue.code), {})
-            charged = kind.setdefault(replace(issue, trade_id=None), set())
-            if issue.trade_id is not None:
-                charged.add(issue.trade_id)
-    problems = []
-    for (severity, code), found in places.items():
-        first = next(iter(found))
-        problems.append(
-            MarketProblem(
-                severity=severity,
-                kind=code.replace("-", " "),
-                number=len(found),
-                trades=len(set().union(*found.values())) if severity is not Severity.WARNING else 0,
-                place=first.place(),
-                found=first.found,
-                expected=first.expected,
-                mend=first.mend,
-                code=code,
-            )
+    kinds: dict[tuple[Severity, str], list[Issue]] = {}
+    # One that is charged to several trades stands at one place.
+    for issue in dict.fromkeys(replace(issue, trade_id=None) for issue in issues if _of_market(issue, sources)):
+        kinds.setdefault((issue.severity, issue.code), []).append(issue)
+    problems = [
+        MarketProblem(
+            severity=severity,
+            kind=code.replace("-", " "),
+            number=len(found),
+            place=found[0].place(),
+            found=found[0].found,
+            expected=found[0].expected,
+            mend=found[0].mend,
+            code=code,
         )
-    return sorted(problems, key=lambda p: (_GRAVEST_FIRST.index(p.severity), -p.trades, -p.number))
+        for (severity, code), found in kinds.items()
+    ]
+    return sorted(problems, key=lambda p: (_GRAVEST_FIRST.index(p.severity), -p.number))
 
 
 def _of_market(issue: Issue, sources: Sequence[SourceFile]) -> bool:

@@ -11,7 +11,7 @@ from pricer.report.columns import Column
 from pricer.report.fitting import Table
 from pricer.report.stacked_sheet import Stacked, add_stacked_sheet
 from pricer.report.styles import Mark
-from pricer.report.surface_fits import TARGET, Reach, all_quotes, reach
+from pricer.report.surface_fits import TARGET, Reach, Standing, all_quotes, reach
 from pricer.run.outcome import MarketFacts, Outcome
 
 if TYPE_CHECKING:
@@ -35,7 +35,6 @@ def add_market_sheet(workbook: Workbook, outcome: Outcome, frames: Frames) -> No
     problems, surfaces, violations = frames["market_problems"], frames["surfaces"], frames["violations"]
     shown, rest = violations.head(_VIOLATIONS_SHOWN), len(violations) - _VIOLATIONS_SHOWN
     more = f", the first {len(shown)} of {len(violations):,}: the rest is in violations.csv" if rest > 0 else ""
-    beyond = surfaces["beyond_target"] + surfaces["fit_beyond_target"]
     stack = [
         Stacked(
             _table(
@@ -45,17 +44,14 @@ def add_market_sheet(workbook: Workbook, outcome: Outcome, frames: Frames) -> No
                 [Mark.NONE if severity == Severity.WARNING else Mark.LOOK for severity in problems["severity"]],
                 "Nothing was found wrong with the market snapshot.",
             ),
-            spans=(1, 1, 1, 1, 3, 4, 1),
+            spans=(1, 1, 1, 4, 4, 1),
         ),
         Stacked(
             _table(
                 "How well the quotes are repriced",
                 columns.SURFACES,
                 surfaces,
-                [
-                    Mark.LOOK if verdict == "fails" or n else Mark.NONE
-                    for verdict, n in zip(surfaces["verdict"], beyond, strict=True)
-                ],
+                [_mark(verdict != Standing.PASSES) for verdict in surfaces["verdict"]],
                 _NO_SURFACE,
             )
         ),

@@ -1,9 +1,10 @@
-"""Smiles at a glance: every quote's error by delta, and the first and last smile of those that fit worst."""
+"""Smiles at a glance: every quote's error by delta, and three smiles of each of the underlyings that fit worst."""
 
 from __future__ import annotations
 
 import math
 from collections.abc import Sequence
+from datetime import date
 from typing import TYPE_CHECKING
 
 from pricer.report.cells import put_number, put_text
@@ -26,7 +27,8 @@ if TYPE_CHECKING:
     from openpyxl.worksheet.worksheet import Worksheet
 
 TITLE = "Smiles"
-_ERROR_ROWS, _SMILE_ROWS = 13, 13  # together one page
+_ERROR_ROWS, _SMILE_ROWS = 13, 13  # the errors and two smiles fill a page
+_SURFACES_SHOWN = 5
 _DATA = LAST + 2  # first column of what the charts draw, right of what prints
 
 
@@ -85,18 +87,28 @@ def _errors(canvas: Canvas, source: Worksheet, market: MarketFacts, calibration:
 
 
 def _smiles(canvas: Canvas, market: MarketFacts) -> None:
-    """A column of charts for each of the worst underlyings: shortest expiry above, longest below."""
-    shown = worst_surfaces(market, len(THIRDS))
-    for which, words in ((0, "Shortest expiry"), (-1, "Longest expiry")):
+    """A row of charts for each of the worst underlyings."""
+    for surface in worst_surfaces(market, _SURFACES_SHOWN):
         canvas.reserve((_SMILE_ROWS + 2) * ROW_HEIGHT)
-        what = "failing surfaces and largest errors first" if len(market.surfaces) > len(shown) else "all underlyings"
-        canvas.section(canvas.take(), LEFT, f"{words}: {what}", LAST - LEFT + 1)
+        words = f"{surface.underlying}: shortest expiry, largest error between, longest expiry"
+        canvas.section(canvas.take(), LEFT, words, LAST - LEFT + 1)
         row = canvas.take_rows(_SMILE_ROWS + 1)
-        for i, (surface, (column, n_columns)) in enumerate(zip(shown, THIRDS, strict=False)):
-            expiry = sorted({quote.expiry_date for quote in surface.quotes})[which]
+        for i, (expiry, (column, n_columns)) in enumerate(zip(shown_expiries(surface), THIRDS, strict=False)):
             quotes = [quote for quote in surface.quotes if quote.expiry_date == expiry]
             area = Area(row, column, _SMILE_ROWS, n_columns)
             _smile(canvas.sheet, f"{surface.underlying}, {expiry.isoformat()}", quotes, area, _DATA + 6 * i)
+
+
+def shown_expiries(surface: SurfaceFacts) -> list[date]:
+    """The shortest expiry, the one between with the largest error where a target applies, and the longest."""
+    errors: dict[date, float] = {}
+    for quote in surface.quotes:
+        both = (abs(fit_error(quote)), abs(simulated_error(quote)))
+        error = max((each for each in both if quote.counts and not math.isnan(each)), default=0.0)
+        errors[quote.expiry_date] = max(error, errors.get(quote.expiry_date, 0.0))
+    first, *others = sorted(errors)
+    between, last = others[:-1], others[-1:]
+    return [first, *([max(between, key=errors.__getitem__)] if between else []), *last]
 
 
 def _smile(sheet: Worksheet, title: str, quotes: Sequence[QuoteFit], area: Area, data: int) -> None:

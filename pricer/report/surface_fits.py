@@ -25,6 +25,14 @@ class Reach(StrEnum):
     NOT_SIMULATED = "not simulated"
 
 
+class Standing(StrEnum):
+    """How a surface came out, the worst first."""
+
+    FAILS = "fails"  # its checks: not priced from unless asked for
+    MISSES = "misses target"  # passes its checks, but a quote between 10 and 90 delta is missed by more than the target
+    PASSES = "passes"
+
+
 @dataclass(frozen=True, slots=True)
 class SurfaceFit:
     """One underlying's quotes in a few numbers; errors are the largest absolute ones, in vol points.
@@ -35,7 +43,7 @@ class SurfaceFit:
     """
 
     underlying: str
-    verdict: str
+    verdict: Standing
     expiries: int
     quotes: int
     violations: int
@@ -71,9 +79,12 @@ def surface_fit(surface: SurfaceFacts) -> SurfaceFit:
     """The numbers of one underlying; ``why`` is what fails it, else the first of its violations."""
     middle = [quote for quote in surface.quotes if quote.counts]
     wings = [quote for quote in surface.quotes if not quote.counts]
+    fit_beyond = sum(not abs(fit_error(quote)) <= TARGET + _ROUNDING for quote in middle)
+    beyond = sum(reach(quote) is Reach.BEYOND for quote in middle)
+    off_target = Standing.MISSES if beyond or fit_beyond else Standing.PASSES
     return SurfaceFit(
         underlying=surface.underlying,
-        verdict="passes" if surface.passes else "fails",
+        verdict=off_target if surface.passes else Standing.FAILS,
         expiries=len({quote.expiry_date for quote in surface.quotes}),
         quotes=len(surface.quotes),
         violations=len(surface.violations),
@@ -81,8 +92,8 @@ def surface_fit(surface: SurfaceFacts) -> SurfaceFit:
         worst_fit_error_wings=_worst(map(fit_error, wings)),
         worst_simulated_error_middle=_worst(map(simulated_error, middle)),
         worst_simulated_error_wings=_worst(map(simulated_error, wings)),
-        fit_beyond_target=sum(not abs(fit_error(quote)) <= TARGET + _ROUNDING for quote in middle),
-        beyond_target=sum(reach(quote) is Reach.BEYOND for quote in middle),
+        fit_beyond_target=fit_beyond,
+        beyond_target=beyond,
         why="; ".join(surface.failures) or next(iter(surface.violations), ""),
     )
 
@@ -90,7 +101,7 @@ def surface_fit(surface: SurfaceFacts) -> SurfaceFit:
 def surface_fits(outcome: Outcome) -> list[SurfaceFit]:
     """Failing surfaces first, then those that miss the target, then in the market's order."""
     fits = [surface_fit(surface) for surface in outcome.market.surfaces]
-    return sorted(fits, key=lambda fit: (fit.verdict == "passes", not fit.beyond_target))
+    return sorted(fits, key=lambda fit: list(Standing).index(fit.verdict))
 
 
 def all_quotes(surfaces: Iterable[SurfaceFacts]) -> Sequence[QuoteFit]:

@@ -60,7 +60,7 @@ def price(book: Book, market: Market, settings: Settings | None = None, progress
     used = sorted({name for appraisal in appraisals for name in appraisal.trade.contract.underlyings})
     simulated = {name for appraisal in appraisals if appraisal.local_volatility is not None
                  for name in appraisal.trade.contract.underlyings if name in market.surfaces}  # fmt: skip
-    calibrations = _calibrations(sorted(simulated), market, settings)
+    calibrations, uncalibrated = _calibrations(sorted(simulated), market, settings)
 
     return Outcome(
         facts=_facts(book, market, settings, started, priced, time.perf_counter() - clock, appraisals),
@@ -69,7 +69,7 @@ def price(book: Book, market: Market, settings: Settings | None = None, progress
         ),
         cross_checks=checks,
         refusals=(*admitted.refusals, *failures),
-        issues=(*admitted.issues, *(issue for failure in failures for issue in failure.issues)),
+        issues=(*admitted.issues, *(issue for failure in failures for issue in failure.issues), *uncalibrated),
         underlyings=tuple(_underlying_facts(name, market) for name in used),
         market=market_facts(market, used, calibrations),
     )
@@ -84,21 +84,37 @@ def _stressed(market: Market, settings: Settings) -> Market:
     return replace(market, correlation=stressed(market.correlation, towards_one=one, towards_zero=zero, ids=ids))
 
 
-def _calibrations(names: list[str], market: Market, settings: Settings) -> dict[str, Calibration]:
-    """Every quoted vanilla of these underlyings through the paths that trades are valued on."""
+def _calibrations(
+    names: list[str], market: Market, settings: Settings
+) -> tuple[dict[str, Calibration], tuple[Issue, ...]]:
+    """Every quoted vanilla of these underlyings through the paths that trades are valued on; what failed is told."""
     found = map_groups(
-        partial(_calibration, market=market, settings=settings),
+        partial(_try_calibrate, market=market, settings=settings),
         names,
         workers=settings.workers,
         progress=Silent(),
         label=str,
     )
-    return dict(zip(names, found, strict=True))
+    pairs = list(zip(names, found, strict=True))
+    return (
+        {name: result for name, result in pairs if isinstance(result, Calibration)},
+        tuple(result for _, result in pairs if isinstance(result, Issue)),
+    )
 
 
-def _calibration(name: str, market: Market, settings: Settings) -> Calibration:
-    dates = forward_dates(name, market)
-    return calibrate(market.surfaces[name], market.affine_price(name), dates, seed=settings.seed)
+def _try_calibrate(name: str, market: Market, settings: Settings) -> Calibration | Issue:
+    try:
+        dates = forward_dates(name, market)
+        return calibrate(market.surfaces[name], market.affine_price(name), dates, seed=settings.seed)
+    except (ArithmeticError, ValueError, LookupError) as error:
+        return Issue(
+            code="calibration-failed",
+            found=f'the quotes of underlying "{name}" could not be repriced: {type(error).__name__}: {error}',
+            expected="paths on which every quoted option can be priced",
+            mend="Check the underlying's volatilities and dividends; its trades are valued, their calibration is not "
+            "known.",
+            severity=Severity.WARNING,
+        )
 
 
 def _try_appraise(trade: Trade, market: Market, settings: AppraisalSettings) -> Appraisal | Refusal:

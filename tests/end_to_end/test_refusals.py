@@ -591,8 +591,6 @@ def test_what_the_market_refused_is_told_first_and_its_trades_say_what_to_mend(t
     market = deepcopy(dict(EXAMPLE_MARKET))
     market["correlations"][1]["ORLUMA"] = 0.35
     market["fx"] = [{"pair": "EURUSD", "spot": 0.0}]
-    market["curves"].append({"curve": "USD", "currency": "USD", "day_count": "ACT/360"})
-    market["curve_points"].append({"curve": "USD", "tenor": "5Y", "zero_rate_decimal": 0.03})
     tables["trades"] = tables["trades"][:2]
     tables["trades"][1]["currency"] = "USD"
     tables["trades"][1]["collateral"] = None

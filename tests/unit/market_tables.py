@@ -29,8 +29,8 @@ def small_market():
         ("dividends", "underlying", ("WEXMOOR",)),
         ("volatilities", "underlying", ("WEXMOOR",)),
         ("correlations", "underlying", ("WEXMOOR", "EURUSD")),
-        ("curves", "curve", ("GBP-STANDARD",)),
-        ("curve_points", "curve", ("GBP-STANDARD",)),
+        ("curves", "curve", ("GBP-STANDARD", "USD-STANDARD")),
+        ("curve_points", "curve", ("GBP-STANDARD", "USD-STANDARD")),
         ("fx", "pair", ("EURGBP",)),
     ):
         tables[name] = [row for row in tables[name] if row[column] not in unwanted]

@@ -437,3 +437,60 @@ def test_merged_correlations_are_refused_with_their_range(load, tables, tmp_path
     market = load_market(tmp_path / "market.xlsx")
     assert market.correlation is None
     assert [issue.found for issue in market.rejected["correlations"]] == ["the merged cells B2:C2"]
+
+
+def with_pair(tables, name, correlation, **own):
+    """A row and a column of a currency pair in the correlations."""
+    for row in tables["correlations"]:
+        row[name] = correlation
+    ids = [row["underlying"] for row in tables["correlations"]]
+    tables["correlations"].append({"underlying": name, **dict.fromkeys(ids, correlation), name: 1.0, **own})
+
+
+@pytest.mark.parametrize("name", ["EURUSD", "USDEUR"])
+def test_the_correlations_may_hold_a_pair_that_has_a_rate_either_way_round(load, tables, name):
+    with_pair(tables, name, -0.2)
+    market = load(tables)
+    assert market.issues == ()
+    assert market.correlation.sub(["TESKIR", name])[0, 1] == -0.2
+
+
+def test_a_pair_that_the_market_does_not_have_is_ignored_with_a_warning(load, tables):
+    with_pair(tables, "AUDNZD", 0.1)
+    market = load(tables)
+    assert [str(issue) for issue in market.issues] == [
+        'market.xlsx, sheet correlations, row 5, column "underlying" (cell A5): found "AUDNZD"; expected an underlying '
+        "or a currency pair of the market. Ignored. Add it to the market, or delete it."
+    ]
+
+
+def test_of_a_pair_that_stands_both_ways_in_the_correlations_one_is_left_out(load, tables):
+    with_pair(tables, "EURUSD", -0.2)
+    with_pair(tables, "USDEUR", 0.2, EURUSD=-1.0)
+    tables["correlations"][3]["USDEUR"] = -1.0
+    market = load(tables)
+    assert [str(issue) for issue in market.issues] == [
+        'market.xlsx, sheet correlations, row 6, column "underlying" (cell A6): found the pair USDEUR, and its inverse '
+        "in row 5; expected each pair of currencies in one direction. Delete one of the two rows."
+    ]
+    assert market.correlation.ids == ("ORLUMA", "TESKIR", "VADRONE", "EURUSD")
+    assert list(market.rejected) == ["correlations:USDEUR"]
+
+
+def test_what_a_surface_lacks_is_told_at_the_first_quote_of_its_expiry(load, tables):
+    for strike, volatility in ((80.0, 0.22), (84.0, 0.35), (88.0, 0.21)):
+        tables["volatilities"].append(
+            {
+                "underlying": "ORLUMA",
+                "expiry_date": date(2027, 3, 19),
+                "volatility_decimal": volatility,
+                "strike": strike,
+            }
+        )
+    del tables["volatilities"][:2]
+    market = load(tables)
+    assert not market.surfaces["ORLUMA"].passes
+    assert {(str(issue.severity), issue.sheet, issue.cell) for issue in market.issues} == {
+        ("warning", "volatilities", "C5"),
+        ("error", "volatilities", "C5"),
+    }

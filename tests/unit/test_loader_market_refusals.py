@@ -364,7 +364,7 @@ CASES = [
     pytest.param(
         quoted_in_sek,
         [
-            'error: curve_points, row 10, column "deposit_rate_decimal" (cell E10): found a quoted rate in '
+            'error: curve_points, row 12, column "deposit_rate_decimal" (cell E12): found a quoted rate in '
             "SEK; expected quoted rates in EUR, USD, GBP, JPY, CHF only, whose conventions are known. Give "
             "zero rates or discount factors in all points of the curve.",
         ],
@@ -486,9 +486,9 @@ CASES = [
         id="two currencies of one name",
     ),
     pytest.param(
-        replaced("credit", [dict(full_market()["credit"][0], currency="USD")]),
+        replaced("credit", [dict(full_market()["credit"][0], currency="CHF")]),
         [
-            'error: credit, row 2, column "currency" (cell E2): found USD, which has no usable standard '
+            'error: credit, row 2, column "currency" (cell E2): found CHF, which has no usable standard '
             "curve; expected a currency with a curve without collateral in the table curves. Add or mend "
             "the curve, or correct the currency.",
         ],

@@ -11,7 +11,16 @@ from pricer.loader.columns import columns_of
 from pricer.loader.days import Day
 from pricer.loader.faults import Fault, Reading
 from pricer.loader.market_rows import MARKET_ROWS
-from pricer.loader.names import CalendarName, Choice, Currency, CurrencyPair, FreeText, Identifier, Tenor
+from pricer.loader.names import (
+    CalendarName,
+    Choice,
+    Currency,
+    CurrencyPair,
+    FreeText,
+    Identifier,
+    QuarterlyTenor,
+    Tenor,
+)
 from pricer.loader.numbers import Number, NumberList, WholeNumber
 from pricer.loader.schema import BOOK, MARKET
 from pricer.loader.sheets import ErrorValue, UncalculatedFormula
@@ -274,6 +283,34 @@ def test_tenors_are_a_number_and_a_letter(text, tenor):
 @pytest.mark.parametrize("text", ["3", "M", "0M", "3Q", "1Y6M", "-1Y"])
 def test_other_tenors_are_refused(text):
     assert fault(Tenor(), text).code == "not-a-tenor"
+
+
+def test_a_tenor_beyond_every_market_is_refused():
+    assert read(Tenor(), "100Y") == "100Y"
+    assert (fault(Tenor(), "101Y").code, fault(Tenor(), "101Y").expected) == ("out-of-range", "a tenor of at most 100Y")
+
+
+@pytest.mark.parametrize("text", ["3M", "18M", "5Y"])
+def test_quarterly_tenors_are_whole_quarters(text):
+    assert read(QuarterlyTenor(), text) == text
+
+
+@pytest.mark.parametrize("text", ["1M", "20M", "2W", "90D", "five years"])
+def test_tenors_that_no_quarterly_premium_fits_are_refused(text):
+    assert fault(QuarterlyTenor(), text).code == "not-a-tenor"
+
+
+@pytest.mark.parametrize(
+    ("typed_number", "meant"),
+    [
+        (125.0, "Did you mean 0.0125 (125 basis points)?"),
+        (10.0, "Did you mean 0.001 (10 basis points)?"),
+        (-12.5, "Did you mean -0.00125 (-12.5 basis points)?"),
+        (1.25, "Did you mean 0.0125 (1.25 %)?"),
+    ],
+)
+def test_basis_points_in_a_column_of_spreads_are_recognised(typed_number, meant):
+    assert fault(Number(percent=True, decimal_limit=1.0, basis_points=True), typed_number).mend == meant
 
 
 @pytest.mark.parametrize(

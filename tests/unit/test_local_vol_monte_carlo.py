@@ -10,7 +10,7 @@ from pricer.contracts.profile import PiecewiseLinear, Profile, ProfileKind
 from pricer.engines.local_vol_monte_carlo import LocalVolSettings, sample_local_vol
 from pricer.engines.monte_carlo import SamplingSettings, sample
 from pricer.simulation.batch_means import batch_estimate
-from tests.unit.local_vol_cases import constant, flat, paths_of, skewed
+from tests.unit.local_vol_cases import flat, paths_of, skewed
 
 CALL = Profile(ProfileKind.CALL, 100.0).payoff()
 DIGITAL = Profile(ProfileKind.CASH_DIGITAL_CALL, 100.0, cash_amount=10.0).payoff()

@@ -15,7 +15,7 @@ from hypothesis import strategies as st
 
 from pricer.report import default_folder, folder, write_report
 from pricer.report.folder import _write_csv
-from pricer.report.frames import tables
+from pricer.report.frames import tables, valuations
 from pricer.run.outcome import Verdict
 from tests.unit.report_outcomes import empty, facts, outcome, valuation
 
@@ -136,7 +136,7 @@ def test_numbers_in_plain_tables_lose_nothing(run, written):
 def test_every_float_survives_a_plain_table(tmp_path_factory, values):
     path = tmp_path_factory.getbasetemp() / "floats.csv"
     run = empty(valuations=tuple(valuation(1, value=value) for value in values))
-    _write_csv(tables(run)["valuations"], path)
+    _write_csv(valuations(run), path)
     assert [float(row["value"]) for row in rows(path)] == values
 
 

@@ -16,7 +16,7 @@ from pricer.loader.book_tables import book_tables
 from pricer.loader.market_rows import MARKET_ROWS
 from pricer.report import tables
 from pricer.report.market_problems import BOOK_SHEETS, market_problems
-from pricer.report.smile_sheet import worst_surfaces
+from pricer.report.smile_sheet import shown_expiries, worst_surfaces
 from pricer.report.surface_fits import Reach, reach, simulated_error, surface_fit, surface_fits
 from pricer.run.outcome import CurvePoint, ForwardPoint, MarketFacts, SurfaceFacts
 from tests.unit.report_markets import FAILING, NOT_SIMULATED, market_facts, quote
@@ -90,7 +90,7 @@ def test_failing_surfaces_lead_and_then_those_that_miss_the_target():
     failing = surface(underlying="C", passes=False, failures=("why",))
     run = empty(market=MarketFacts(surfaces=(good, missing, failing)))
     assert [fit.underlying for fit in surface_fits(run)] == ["C", "B", "ALDERMOOR"]
-    assert list(tables(run)["surfaces"]["verdict"]) == ["fails", "passes", "passes"]
+    assert list(tables(run)["surfaces"]["verdict"]) == ["fails", "misses target", "passes"]
 
 
 def test_the_smiles_drawn_are_those_of_failing_surfaces_and_then_the_worst_fits():
@@ -100,6 +100,17 @@ def test_the_smiles_drawn_are_those_of_failing_surfaces_and_then_the_worst_fits(
     market = MarketFacts(surfaces=(small, large, unsimulated, failing, empty_one))
     assert [each.underlying for each in worst_surfaces(market, 3)] == ["D", "B", "C"]
     assert len(worst_surfaces(market, 9)) == 4  # one has no quotes
+
+
+def test_the_expiries_drawn_are_the_first_the_last_and_the_worst_between():
+    days = [date(2026, 6, 26), date(2026, 8, 28), date(2026, 11, 27), date(2027, 5, 28)]
+    sizes = (0.9, 0.01, 0.04, 0.8)
+    quotes = [missed_by(size, expiry=day) for day, size in zip(days, sizes, strict=True)]
+    quotes.append(missed_by(5.0, expiry=days[1], counts=False))  # no target applies to it
+    quotes.append(missed_by(0.0, expiry=days[1], simulated=None))
+    assert shown_expiries(surface(*quotes)) == [days[0], days[2], days[3]]
+    assert shown_expiries(surface(quotes[0], quotes[3])) == [days[0], days[3]]
+    assert shown_expiries(surface(quotes[2])) == [days[2]]
 
 
 def test_the_calibration_has_a_row_for_every_quote_in_percent_and_vol_points(frames):
@@ -183,11 +194,11 @@ def test_problems_of_the_market_are_counted_by_kind_the_gravest_first():
         ),
         FILES,
     )
-    assert [(p.severity, p.kind, p.number, p.trades) for p in found] == [
-        (Severity.FATAL, "no curve", 1, 0),
-        (Severity.ERROR, "calendar arbitrage", 2, 2),
-        (Severity.WARNING, "stale spot", 1, 0),
-        (Severity.WARNING, "correlation repaired", 1, 0),
+    assert [(p.severity, p.kind, p.number) for p in found] == [
+        (Severity.FATAL, "no curve", 1),
+        (Severity.ERROR, "calendar arbitrage", 2),
+        (Severity.WARNING, "stale spot", 1),
+        (Severity.WARNING, "correlation repaired", 1),
     ]
     assert found[1].place == 'may_market.xlsx, sheet volatilities, row 12, column "strike" (cell H12)'
 
