@@ -7,7 +7,9 @@ cash dividends. Paths are made by a splitting scheme of weak order 2 with exact 
 and principal components. The last step is lognormal given the state before it, with the first
 two moments of the scheme's own step, and its common factor is integrated exactly, so that
 kinks and jumps are smooth in what is sampled. The lognormal payoff on the same noise is the
-control variate, which makes the difference of the two models a number with a small error.
+control variate, which makes the difference of the two models a number with a small error; its known
+value is that of the exact law, which also takes away what steps do to both models alike
+(``simulation.lognormal_steps``).
 
 Quanto levels have a known drift under the payment currency's measure, composite ones are simulated
 together with their exchange rate (``simulation.lognormal_steps``).
@@ -22,7 +24,6 @@ Sensitivities hold the local volatility fixed as a function of time and of ``ln 
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -33,6 +34,7 @@ from pricer.engines.local_vol_problem import LocalVolProblem
 from pricer.engines.local_vol_sample import LocalVolSample, as_lognormal, without_paths
 from pricer.engines.monte_carlo import Sample, sample
 from pricer.engines.problem import EuropeanProblem
+from pricer.simulation.batch_means import batch_estimate
 from pricer.simulation.local_vol_estimates import KnownAnswer, LocalVolEstimates, local_vol_estimates, step_difference
 
 __all__ = ["LocalVolProblem", "LocalVolSample", "LocalVolSettings", "prepare", "sample_local_vol"]
@@ -43,8 +45,8 @@ Array = NDArray[np.float64]
 #: Seen only where volatilities of some hundred per cent a step are within reach of paths.
 _FORWARD = 5e-5
 
-#: Laws that differ by less than this, relatively, are one.
-_SAME = 1e-12
+#: Relative change of a deviation to differentiate by.
+_BUMP = 0.01
 
 #: The lognormal numbers are asked for this much more precisely, to be no burden to the others.
 _FINER = 0.25
@@ -128,8 +130,7 @@ def _sample_paths(
         else:  # cannot tell yet
             points *= 2
 
-    control = paths.control
-    known = _lognormal(control, group + "/control", seed, tolerances.finer, settings)
+    known = _lognormal(paths.control, group + "/lognormal", seed, tolerances.finer, settings)
     answer = _undiscounted(known, df)
     unsmoothed = not paths.plan.smooth and bool(problem.payoff.knots)
     no_deltas = unsmoothed and not problem.payoff.is_continuous
@@ -183,40 +184,53 @@ def _sample_paths(
         degrees_of_freedom=found.degrees_of_freedom,
     )
     if problem.is_lognormal:
-        return replace(result, lognormal=as_lognormal(result))
+        vegas, vega_errors = _vegas(paths, known, no_deltas)
+        return replace(result, lognormal=as_lognormal(result, vegas, vega_errors))
     if problem.has_floors:
         lognormal = sample_local_vol(
             replace(problem, surfaces=()),
-            group=group + "/lognormal",
+            group=group + "/known amounts",
             seed=seed,
             value_tolerance=tolerances.finer.value,
             delta_tolerance=tolerances.finer.delta,
             delta_fraction=tolerances.finer.fraction,
             settings=settings,
         ).lognormal
-    elif _is_same(control, problem.lognormal):
-        own = abs(found.control_slope - 1.0) * known.standard_error
-        without = np.sqrt(max(error**2 - (found.control_slope * known.standard_error) ** 2, 0.0))
         return replace(
             result,
-            model_difference=result.value - known.value,
-            model_difference_error=float(np.hypot(without, own)),
+            lognormal=lognormal,
+            model_difference=result.value - lognormal.value,
+            model_difference_error=float(np.hypot(error, lognormal.standard_error)),
         )
-    else:
-        lognormal = _lognormal(problem.lognormal, group + "/lognormal", seed, tolerances.finer, settings)
+    own = (found.control_slope - 1.0) * known.standard_error
+    without = np.sqrt(max(error**2 - (found.control_slope * known.standard_error) ** 2, 0.0))
     return replace(
-        result,
-        lognormal=lognormal,
-        model_difference=result.value - lognormal.value,
-        model_difference_error=float(np.hypot(error, lognormal.standard_error)),
+        result, model_difference=result.value - known.value, model_difference_error=float(np.hypot(without, own))
     )
 
 
-def _is_same(one: EuropeanProblem, other: EuropeanProblem) -> bool:
-    near: Callable[[Array, Array], bool] = lambda a, b: bool(  # noqa: E731
-        np.max(np.abs(a - b)) <= _SAME * np.max(np.abs(b))
-    )
-    return near(one.law.forwards, other.law.forwards) and near(one.law.covariance, other.law.covariance)
+def _vegas(paths: PathSamplers, known: Sample, missing: bool) -> tuple[Array, Array]:
+    """Of lognormal X above known amounts, to the deviations of ln X: vegas and errors (n,).
+
+    Those of the control are known; the difference of the two is smooth, and small, and is differentiated on common draws.
+    """
+    problem = paths.problem
+    vegas, errors = (np.full(problem.n_assets, np.nan) for _ in range(2))
+    points = paths.fine.points
+    for asset, variance in enumerate(problem.covariance.diagonal()[: problem.n_assets]):
+        deviation = np.sqrt(variance)
+        if missing or deviation == 0.0:
+            continue
+        up, down = (
+            paths.with_lognormal_deviation(asset, factor).fine.extend(points)[:, :2] / points
+            for factor in (1.0 + _BUMP, 1.0 - _BUMP)
+        )
+        moves = problem.discount_factor * (up - down) / (2.0 * _BUMP * deviation)
+        (move,), (move_error,) = batch_estimate(moves[:, [0]] - moves[:, [1]])
+        share = paths.shares[asset]
+        vegas[asset] = share * known.deviation_vegas[asset] + move
+        errors[asset] = np.hypot(share * known.deviation_vega_errors[asset], move_error)
+    return vegas, errors
 
 
 def _undiscounted(known: Sample, df: float) -> KnownAnswer:

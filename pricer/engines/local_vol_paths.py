@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -23,7 +23,7 @@ Array = NDArray[np.float64]
 ENDING = 0.25
 
 #: The last step of lognormal levels above known amounts, as part of the whole time, to begin with.
-_LOGNORMAL_ENDING = 1.0 / 16.0
+_LOGNORMAL_ENDING = 1.0 / 32.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -48,7 +48,17 @@ class LocalVolSettings:
 class PathSamplers:
     """One problem's samplers on ever finer grids, on the noise of one stream."""
 
-    def __init__(self, problem: LocalVolProblem, group: str, seed: int, settings: LocalVolSettings) -> None:
+    def __init__(
+        self,
+        problem: LocalVolProblem,
+        group: str,
+        seed: int,
+        settings: LocalVolSettings,
+        *,
+        plan: LocalVolPlan | None = None,
+        level: int = 0,
+    ) -> None:
+        """``plan`` : one that is ready; ``level`` : the grid to begin with, see ``cut``."""
         sampling, n = settings.sampling, problem.n_assets
         self.problem, self.group, self.seed, self.settings = problem, group, seed, settings
         self.shares = problem.scales / problem.forwards
@@ -61,7 +71,7 @@ class PathSamplers:
         surfaces = problem.surfaces or tuple(
             FlatVolatility.of(problem.variance_times, v) for v in problem.variances[:n]
         )
-        self.plan = LocalVolPlan.of(
+        self.plan = plan or LocalVolPlan.of(
             problem.law_of(covariance),
             surfaces,
             problem.correlation[:rows, :rows],
@@ -73,7 +83,7 @@ class PathSamplers:
             problem.payoff,
             triangular=triangular,
         )
-        self.cut(0)
+        self.cut(level)
 
     def _of_levels(self, covariance: Array) -> Array:
         """Of log-levels instead of ln X: known amounts do not move."""
@@ -94,10 +104,9 @@ class PathSamplers:
             grid = TimeGrid.of(problem.years, steps=self.settings.initial_steps * 2**level, ending=ENDING)
             coarse = grid.halved()
         self.level, self.grid = level, grid
-        self.steps, of_coarse = (
+        of_grid, of_coarse = (
             LognormalSteps.of(
                 on,
-                coarse,
                 problem.variance_times,
                 problem.variances,
                 problem.correlation,
@@ -108,24 +117,33 @@ class PathSamplers:
         )
         order, shares = plan.design.order, plan.shares
         noise = PathNoise(
-            grid.through(self.steps.times),
+            grid,
             plan.loadings,
             plan.sizes,
             stream(self.seed, self.group, Purpose.PRICE, 0),
             self.settings.sampling.randomisations,
         )
-        self.fine = LocalVolSampler(plan, grid, self.steps.ordered(order, shares), noise)
+        self.fine = LocalVolSampler(plan, grid, of_grid.ordered(order, shares), noise)
         self.coarse = LocalVolSampler(plan, coarse, of_coarse.ordered(order, shares), noise, with_ratios=False)
 
     @property
     def can_be_cut(self) -> bool:
         return bool(self.settings.initial_steps * 2 ** (self.level + 1) <= self.settings.maximum_steps)
 
+    def with_lognormal_deviation(self, asset: int, factor: float) -> PathSamplers:
+        """The same draws, grid and layout, one asset's lognormal deviation times ``factor`` at all times."""
+        variances = self.problem.variances.copy()
+        variances[asset] *= factor**2
+        surfaces = list(self.plan.surfaces)
+        flat = FlatVolatility.of(self.problem.variance_times, variances[asset])
+        surfaces[int(np.argsort(self.plan.design.order)[asset])] = flat
+        plan = replace(self.plan, surfaces=tuple(surfaces))
+        problem = replace(self.problem, variances=variances)
+        return PathSamplers(problem, self.group, self.seed, self.settings, plan=plan, level=self.level)
+
     @property
     def control(self) -> EuropeanProblem:
-        """The lognormal problem that is solved exactly on the paths' own noise."""
+        """The lognormal problem whose payoff is taken along on the paths' own noise."""
         problem = self.problem
-        law = problem.law_of(
-            self._of_levels(self.steps.covariance(problem.correlation)), self.shares * self.steps.log_drifts(self.grid)
-        )
+        law = problem.law_of(self._of_levels(problem.covariance))
         return EuropeanProblem(law, problem.aggregate, problem.payoff, problem.discount_factor)

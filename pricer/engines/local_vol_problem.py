@@ -35,8 +35,8 @@ class LocalVolProblem:
     ``correlation`` : (n + m, n + m) of the Brownian motions of the assets and of m exchange rates after them.
     ``variance_times`` : (k + 1,) years from 0 to ``years`` or beyond, ``variances`` : (n + m, k + 1) total
     variances of the lognormal model's ln X and ln Q at these times, not decreasing, linear in between. For the
-    assets they define the model that local volatility is compared with; at-the-money ones also make the
-    best control variate.
+    assets they define the model that local volatility is compared with and make the control variate: take those of
+    the surfaces at the forward, which bend in time where the surfaces do.
     """
 
     surfaces: tuple[LocalVolatility, ...]
@@ -117,22 +117,16 @@ class LocalVolProblem:
         out: Array = self.correlation * (rises @ rises.T)
         return out
 
-    def law_of(self, covariance: Array, quanto_drifts: Array | None = None) -> JointLognormal:
-        """Lognormal levels of these forwards under the payment currency's measure.
+    def law_of(self, covariance: Array) -> JointLognormal:
+        """Lognormal levels of these forwards under the payment currency's measure; ``covariance`` of ln X and ln Q.
 
-        ``covariance`` : of ln X and ln Q. ``quanto_drifts`` : (n,) of the log-levels; None for those of the covariance.
         Where there are floors, levels as a whole are taken for lognormal.
         """
         n, forwards = self.n_assets, self.forwards
-        own = covariance[:n, :n]
         if all(rate is None for rate in self.rates):
-            return JointLognormal(forwards, own)
+            return JointLognormal(forwards, covariance[:n, :n])
         both = with_rates(covariance, self.rates)
-        if self.composite:
-            return composite(forwards, np.ones(n), both)
-        if quanto_drifts is None:
-            return quanto(forwards, both)
-        return JointLognormal(forwards * np.exp(quanto_drifts), own)
+        return composite(forwards, np.ones(n), both) if self.composite else quanto(forwards, both)
 
     @property
     def lognormal(self) -> EuropeanProblem:

@@ -22,7 +22,7 @@ class LocalVolSample:
     over composite assets of one exchange rate, the sensitivity to the logarithm of that rate.
     ``step_difference`` : value on these steps less that on half as many, on common draws; the scheme
     being of weak order 2, about three times the bias left. ``lognormal`` : the lognormal model's sample, with its vegas
-    (NaN where levels above known amounts had to be sampled as paths).
+    to the deviations of the levels' logarithms (of ln X where levels above known amounts had to be sampled as paths).
     ``model_difference`` : this value less the lognormal one. ``martingale_means`` : (n,) of X (times its rate, if
     composite) before the last step, 1 but for sampling; NaN for a quanto. ``steps`` is 0 where no path was needed.
     NaN stands where a sensitivity cannot be had; ``ending`` says why.
@@ -75,9 +75,8 @@ def without_paths(known: Sample) -> LocalVolSample:
     )
 
 
-def as_lognormal(result: LocalVolSample) -> Sample:
+def as_lognormal(result: LocalVolSample, vegas: Array, vega_errors: Array) -> Sample:
     """Levels above known amounts, sampled as paths, as an answer of the lognormal engine."""
-    missing = np.full(len(result.log_deltas), np.nan)
     return Sample(
         value=result.value,
         standard_error=result.standard_error,
@@ -85,8 +84,8 @@ def as_lognormal(result: LocalVolSample) -> Sample:
         log_delta_errors=result.log_delta_errors,
         log_gammas=None,
         log_gamma_errors=None,
-        deviation_vegas=missing,
-        deviation_vega_errors=missing,
+        deviation_vegas=vegas,
+        deviation_vega_errors=vega_errors,
         paths=result.paths,
         randomisations=result.randomisations,
         reached=result.reached,

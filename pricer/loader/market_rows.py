@@ -47,7 +47,7 @@ class SnapshotRow(TableRow):
             Choice.of([TABLE, PRICE_HISTORY]),
             "where correlations come from",
             TABLE,
-            "the table correlations, or an estimate from the table price_history",
+            "table: the table correlations; price history: an estimate from the table price_history",
             TABLE,
             "for the table correlations",
         ),

@@ -79,6 +79,9 @@ class HazardCurve:
         for tenor, spread in zip(tenors, spreads, strict=True):
             if not (math.isfinite(spread) and spread > 0.0):
                 raise ValueError(f"credit {name}: the spread of {tenor} must be above 0; got {spread}")
+            period = to_period(tenor)
+            if period.units() not in (ql.Months, ql.Years) or (period.units() == ql.Months and period.length() % 3):
+                raise ValueError(f"credit {name}: premiums are paid each quarter, which {tenor} does not hold")
         dates, survival = _bootstrap(name, discount, recovery, tenors, spreads)
         times = [year_fraction(discount.valuation_date, day) for day in dates]
         logs = [math.log(probability) for probability in survival]

@@ -16,8 +16,9 @@ Array = NDArray[np.float64]
 
 #: Nodes reach this many standard deviations of the log-level at the forward, both sides.
 REACH = 8.0
-#: Nodes of a row; with the reach, 0.2 standard deviations apart.
-NODES = 81
+#: Nodes of a row; with the reach, 0.13 standard deviations apart. With 81, smiles of two-humped densities came back
+#: through the forward equation only within 0.07 vol points, with 121 within 0.014, with 161 within 0.011.
+NODES = 121
 #: Cells in time grow by at most this factor and to at most this many years.
 GROWTH, LONGEST_CELL = 1.15, 0.25
 #: g is not let below this: where the density (nearly) vanishes Dupire's quotient means nothing.

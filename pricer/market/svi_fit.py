@@ -53,18 +53,34 @@ def fit_slice(
 ) -> Slice:
     """The SVI slice of :func:`fit_svi`, brought to the quotes by a smooth correction where it misses them.
 
-    Quotes that were left out stay so. See :mod:`pricer.market.slice_correction` for how far a correction may go.
+    Quotes that were left out come back if the correction meets all of them: they are odd then, but no contradiction.
+    See :mod:`pricer.market.slice_correction` for how far a correction may go.
     """
     base, weights = fit_svi(quotes, time, before, later)
     kept = weights > 0.0
-    k, volatilities = quotes.log_moneyness[kept], quotes.volatilities[kept]
-    if k.size < LEAST_QUOTES:
+    if np.count_nonzero(kept) < LEAST_QUOTES:
         return base
-    variance = float(base.total_variance(0.0))
-    far = np.maximum(np.abs(k) / math.sqrt(variance) - NEAR, 0.0)
-    fade = np.maximum(np.exp(-0.25 * far * far), LEAST_WEIGHT)
-    smile = corrected(base, k, volatilities, quotes.allowance / fade, time, before, FINE_GRID)
+    if not kept.all():
+        smile = _corrected(base, quotes, np.ones(kept.size, dtype=bool), time, before)
+        errors = np.sqrt(smile.total_variance(quotes.log_moneyness) / time) - quotes.volatilities
+        if np.all(np.abs(errors) <= 2.0 * _allowances(base, quotes)):
+            return smile
+    return _corrected(base, quotes, kept, time, before)
+
+
+def _corrected(
+    base: SviSlice, quotes: SmileQuotes, kept: NDArray[np.bool_], time: float, before: Slice | None
+) -> Slice:
+    k, volatilities, allowances = quotes.log_moneyness, quotes.volatilities, _allowances(base, quotes)
+    smile = corrected(base, k[kept], volatilities[kept], allowances[kept], time, before, FINE_GRID)
     return smile if smile is base or is_admissible(smile, before) else base
+
+
+def _allowances(base: SviSlice, quotes: SmileQuotes) -> Array:
+    """Errors that need no bend, (n,): those of ``quotes``, and more far from the forward."""
+    far = np.maximum(np.abs(quotes.log_moneyness) / math.sqrt(float(base.total_variance(0.0))) - NEAR, 0.0)
+    out: Array = quotes.allowance / np.maximum(np.exp(-0.25 * far * far), LEAST_WEIGHT)
+    return out
 
 
 def fit_svi(

@@ -26,6 +26,10 @@ CREDIT = "Credit, funding, agreements"
 FORWARD_STANDARD_ERRORS, FORWARD_BP = 5.0, 0.01
 #: A quoted rate that its curve misses by this many basis points is marked.
 CURVE_BP = 0.01
+_FORWARDS_NOTE = (
+    "After the day's dividends. Marked: a simulated forward that is off by more than "
+    f"{FORWARD_STANDARD_ERRORS:g} standard errors and {FORWARD_BP:g} bp."
+)
 _VIOLATIONS_SHOWN = 60
 _NO_SURFACE = "The market quotes no smile: volatilities are flat in strike."
 
@@ -94,7 +98,7 @@ def market_table_sheets(outcome: Outcome, frames: Frames) -> list[Table]:
         Table(
             CURVES,
             CURVES,
-            f"One row a date of a curve. A row is marked where the curve misses its quote by {CURVE_BP:g} bp or more.",
+            "" if curves.empty else f"Marked: a quote that its curve misses by {CURVE_BP:g} bp or more.",
             columns.CURVES,
             curves,
             [_mark(abs(bp) >= CURVE_BP) for bp in curves["repricing_difference_bp"]],
@@ -103,8 +107,7 @@ def market_table_sheets(outcome: Outcome, frames: Frames) -> list[Table]:
         Table(
             FORWARDS,
             FORWARDS,
-            "One row an underlying and date, after the day's dividends. A row is marked where the simulated forward is "
-            f"off by more than {FORWARD_STANDARD_ERRORS:g} standard errors and {FORWARD_BP:g} bp.",
+            "" if forwards.empty else _FORWARDS_NOTE,
             columns.FORWARDS,
             forwards,
             [
@@ -124,11 +127,13 @@ def market_note(market: MarketFacts) -> str:
     if not market.surfaces:
         return _NO_SURFACE
     failing = sum(not surface.passes for surface in market.surfaces)
-    return f"{len(market.surfaces):,} volatility surfaces, of which {failing:,} fail. {_calibration_note(market)}"
+    return f"{len(market.surfaces):,} volatility surfaces, {failing:,} failing. {_calibration_note(market)}"
 
 
 def _calibration_note(market: MarketFacts) -> str:
     quotes = all_quotes(market.surfaces)
+    if not quotes:
+        return ""
     counted = [reach(quote) for quote in quotes if quote.counts]
     beyond, apart = counted.count(Reach.BEYOND), counted.count(Reach.NOT_SIMULATED)
     note = (

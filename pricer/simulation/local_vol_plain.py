@@ -49,15 +49,14 @@ def look_up(table: Words, lowest: float, per_node: float, states: Array) -> tupl
 def path_sums(plan: LocalVolPlan, grid: TimeGrid, steps: LognormalSteps, motions: Array) -> Array:
     """Sums over paths, (3 + 4 n,), as ``kernels.local_vol_paths.accumulate`` describes them.
 
-    ``motions`` : (n_pieces + 1, n_rows, paths) of ``brownian`` at the times of ``steps``, which are in the plan's order.
+    ``motions`` : (n_steps + 1, n_rows, paths) of ``brownian`` at the times of ``grid``; ``steps`` in the plan's order.
     """
     tables = LocalVolTables.of(plan.surfaces, grid, steps.shifts)
-    of_pieces = np.diff(motions, axis=0)
-    moves = np.diff(motions[np.searchsorted(steps.times, grid.times * (1.0 - 1e-12))], axis=0)
+    moves = np.diff(motions, axis=0)
     n, rows, last = plan.n_assets, motions.shape[1], grid.n_steps - 2
     starts, levels, slopes = (np.empty((n, motions.shape[2])) for _ in range(3))
     deviations, turns = np.empty_like(starts), np.empty_like(starts)
-    logs = steps.starts(grid)[:rows, None] + np.einsum("ti,tip->ip", steps.volatilities[:-1, :rows], of_pieces[:-1])
+    logs = steps.starts[:rows, None] + np.einsum("ti,tip->ip", steps.volatilities[:-1, :rows], moves[:-1])
     rates = np.where((plan.rates >= 0)[:, None], np.exp(logs)[plan.rates + n if rows > n else plan.rates * 0], 1.0)
     for i in range(n):
         q = np.full(motions.shape[2], float(tables.starts[i]))

@@ -48,7 +48,7 @@ class LocalVolSampler:
         self._rank_weights = plan.design.rank_weights.astype(np.float32)
         used = slice(0, n_rows)  # rates that only shift are not simulated
         self._control = (
-            (_LOG2_E * steps.starts(grid)[used]).astype(np.float32),
+            (_LOG2_E * steps.starts[used]).astype(np.float32),
             np.ascontiguousarray(_LOG2_E * steps.volatilities[:-1, used], dtype=np.float32),
             steps.last_deviations[used].astype(np.float32),
             steps.last_drifts.astype(np.float32),
@@ -72,7 +72,6 @@ class LocalVolSampler:
             self.sums[:] = 0.0
         paths_kernel.accumulate(
             *noise.arguments(self.points, points, self.grid),
-            noise.pieces(self.steps.times),
             float(self.grid.lengths[-1]),
             tables.moves,
             tables.before[-1],

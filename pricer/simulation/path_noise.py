@@ -80,10 +80,6 @@ class PathNoise:
             raise ValueError("the grid has times that this noise has not")
         return (places - 1).astype(np.int64)
 
-    def pieces(self, times: Array) -> NDArray[np.int64]:
-        """As ``uses``, for ``times`` from 0."""
-        return self.uses(TimeGrid(times, np.zeros(0, dtype=np.int64)))
-
     def arguments(self, first: int, last: int, grid: TimeGrid) -> tuple[object, ...]:
         """What every path kernel takes first, for points ``first`` to ``last`` on ``grid``."""
         b = self.bridge

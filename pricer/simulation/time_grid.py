@@ -54,10 +54,6 @@ class TimeGrid:
         pieces = [a + (b - a) * part for a, b, part in zip(ends[:-1], ends[1:], parts, strict=True)]
         return cls(np.concatenate([[0.0], *pieces]), np.cumsum(counts))
 
-    def through(self, times: Array) -> TimeGrid:
-        """The same dates on ``times``, which hold all of the grid's."""
-        return TimeGrid(times, np.searchsorted(times, self.times[self.dates] * (1.0 - 1e-12)).astype(np.int64))
-
     @classmethod
     def with_ending(cls, years: float, ending: float) -> TimeGrid:
         """Three steps, the last two of ``ending`` years each: where all but the last step is exact at any length."""

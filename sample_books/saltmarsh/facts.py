@@ -5,6 +5,8 @@ from __future__ import annotations
 from datetime import date
 from typing import Any
 
+from pricer.market.calendars import year_fraction
+
 Row = dict[str, Any]
 Tables = dict[str, list[Row]]
 
@@ -40,3 +42,8 @@ COUNTERPARTIES = {
 
 #: Spot exchange rates: units of the second currency for one of the first.
 FX_SPOTS = {"EURUSD": 1.1032, "EURGBP": 0.8614, "GBPUSD": 1.2807}
+
+
+def years_to(day: date) -> float:
+    """Years from the valuation date, as volatilities count them."""
+    return year_fraction(VALUATION_DATE, day)

@@ -22,7 +22,7 @@ from collections.abc import Callable
 from datetime import date
 
 from saltmarsh.facts import Row, Tables
-from saltmarsh.market import quoted_volatility
+from saltmarsh.volatilities import quoted_volatility
 
 
 def broken_book(book: Tables) -> Tables:
@@ -83,7 +83,7 @@ def _broken_volatilities(rows: list[Row]) -> list[Row]:
     kept = [row for row in rows if row["underlying"] != "WEXMOOR"]
     january, winter = date(2027, 1, 15), date(2027, 12, 17)
     teskir = [row for row in kept if row["underlying"] == "TESKIR" and row["expiry_date"] == winter]
-    # One strike three points too high, and the expiry after it six points too low.
+    # One strike three points too high, and the expiry after it nine points too low.
     teskir[4]["volatility_decimal"] = round(teskir[4]["volatility_decimal"] + 0.03, 4)
     _slip(kept, "volatility_decimal", lambda x: round(x - 0.09, 4), underlying="TESKIR", expiry_date=date(2028, 12, 15))
     # Strikes 1 % apart, the middle one 0.3 points too high.

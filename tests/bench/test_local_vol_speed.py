@@ -114,7 +114,6 @@ def test_points_per_second_against_bilinear_numpy(n):
     plan, grid = laid_out.plan, TimeGrid.of(1.0, steps=STEPS)
     steps = LognormalSteps.of(
         grid,
-        grid.halved(),
         *constant(np.sqrt(problem.variances[:, 1]), 1.0),
         problem.correlation,
         problem.rates,

@@ -206,6 +206,8 @@ def test_exactly_the_trades_that_depend_on_a_mistake_are_refused():
     assert len(refused) == 60
     assert {trade.trade_id for trade in admitted} == {trade.trade_id for trade in book()} - set(refused)
     assert len(admitted) == 25
+    # A composite of which one leg is missing is not said to convert nothing.
+    assert "idle-conversion" not in {issue.code for issue in admitted.issues}
 
 
 def test_accepting_failing_surfaces_brings_back_the_trades_that_need_no_more_than_that():

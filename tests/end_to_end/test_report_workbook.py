@@ -477,7 +477,9 @@ def test_the_market_sheet_leads_with_what_was_wrong_and_goes_on_to_how_quotes_ar
         "How well the quotes are repriced",
         "Violations of arbitrage",
     ]
-    assert sheet["A2"].value.startswith("5 volatility surfaces, of which 1 fail. 250 quotes, ")
+    assert sheet["A2"].value.startswith(
+        "5 volatility surfaces, 1 failing. 250 quotes, 160 of them between 10 and 90 delta"
+    )
     repaired = [cell.value for cell in row_of(sheet, "correlation repaired")]
     assert repaired[1:4] == ["warning", 1, "may_market.xlsx, sheet correlations"]
     assert any("the largest change is 0.012" in str(value) for value in repaired)

@@ -103,7 +103,7 @@ def test_each_smile_by_strike_has_seven_to_nine_quotes_at_each_of_eight_expiries
 
 def test_smiles_are_steeper_the_sooner_they_expire():
     """Volatility at 95 % less that at 105 % of the forward, for the first, the fourth and the last expiry."""
-    expiries = saltmarsh("market").EXPIRIES
+    expiries = saltmarsh("volatilities").EXPIRIES
     times = [year_fraction(market().valuation_date, expiries[i]) for i in (0, 3, -1)]
     for name, surface in market().surfaces.items():
         low, high = (surface.surface.volatility(np.log(strike), times) for strike in (0.95, 1.05))
@@ -112,7 +112,7 @@ def test_smiles_are_steeper_the_sooner_they_expire():
 
 
 def test_the_euro_curve_meets_its_deposits_and_swaps():
-    maker, curve = saltmarsh("market"), market().curves["EUR", ""]
+    maker, curve = saltmarsh("rates"), market().curves["EUR", ""]
     found = reprice("EUR", market().valuation_date, maker.euro_quotes(), curve.discount_factor)
     assert len(found) == 12
     assert max(abs(quote.error) for quote in found) < 1e-10

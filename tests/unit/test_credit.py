@@ -85,3 +85,10 @@ def test_impossible_terms_are_refused():
     sound = HazardCurve.from_hazard_rates("N", TODAY, 0.4, DATES, [0.01, 0.01])
     with pytest.raises(ValueError, match="lies before the valuation date"):
         replace(sound, name="M").survival_probability(date(2026, 11, 29))
+
+
+@pytest.mark.parametrize("tenor", ["1M", "20M", "10W"])
+def test_tenors_that_no_quarterly_premium_fits_are_refused(tenor):
+    assert refused(0.4, [tenor], [0.01]) == (
+        f"credit NORDHAVN: premiums are paid each quarter, which {tenor} does not hold"
+    )

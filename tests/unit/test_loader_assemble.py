@@ -14,8 +14,9 @@ from pricer.contracts.option import Conversion
 from pricer.contracts.profile import Profile, ProfileKind
 from pricer.core.issues import Severity
 from pricer.core.source import Place
-from pricer.loader import load_book, write_tables
-from pricer.loader.examples import EXAMPLE_BOOK
+from pricer.loader import load_book, load_market, write_tables
+from pricer.loader.examples import EXAMPLE_BOOK, EXAMPLE_MARKET
+from pricer.run.admission import admit
 
 
 @pytest.fixture
@@ -63,6 +64,13 @@ def test_the_examples_become_the_trades_they_describe(load, tables):
     assert best.contract.aggregate == Aggregate.best_of(2, cash=1.0)
     assert [trade.model for trade in book] == [None, Model.LOCAL_VOLATILITY, None, None, None, None]
     assert [trade.contract.conversion for trade in book] == [None] * 5 + [Conversion.QUANTO]
+
+
+def test_the_examples_can_be_priced_on_the_example_market(load, tables, tmp_path):
+    write_tables(EXAMPLE_MARKET, tmp_path / "market.xlsx")
+    admitted = admit(load(tables), load_market(tmp_path / "market.xlsx"))
+    assert len(admitted) == 6
+    assert admitted.issues == ()
 
 
 @pytest.mark.parametrize(

@@ -46,9 +46,8 @@ def compare(problem, *, coarse=False, points=2048, settings=SETTINGS):
     """Means of the kernel's sums and of its twin's, (randomisations, 3 + 4 n)."""
     paths = paths_of(problem, settings=settings)
     sampler = paths.coarse if coarse else paths.fine
-    words = sobol.random_words(stream(1, "test", Purpose.PRICE, 0), 4, len(paths.steps.lengths) * len(paths.plan.sizes))
-    used = np.searchsorted(paths.steps.times, sampler.steps.times * (1.0 - 1e-12))
-    motions = [plain.brownian(paths.plan, paths.steps.times, w, points)[used] for w in words]
+    words = sobol.random_words(stream(1, "test", Purpose.PRICE, 0), 4, len(paths.grid.lengths) * len(paths.plan.sizes))
+    motions = [plain.brownian(paths.plan, paths.grid.times, w, points)[:: 2 if coarse else 1] for w in words]
     want = np.stack([plain.path_sums(paths.plan, sampler.grid, sampler.steps, m) for m in motions]) / points
     return sampler.extend(points) / points, want
 

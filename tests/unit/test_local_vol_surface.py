@@ -92,8 +92,8 @@ def test_a_row_holds_the_mean_of_dupires_quotient_over_its_cell():
 def test_clipped_nodes_are_counted_and_those_near_the_forward_apart():
     falling = ImpliedSurface(TODAY, (day(182), day(365)), (182 / 365, 1.0), (SviSlice.flat(0.03), SviSlice.flat(0.02)))
     clipping = LocalVolSurface.from_implied(falling, times=[182 / 365, 1.0]).clipping
-    assert (clipping.nodes, clipping.falling, clipping.thin, clipping.capped) == (162, 81, 0, 0)
-    assert clipping.central == 31  # within three deviations, 0.2 apart
+    assert (clipping.nodes, clipping.falling, clipping.thin, clipping.capped) == (242, 121, 0, 0)
+    assert clipping.central == 45  # within three deviations, 2/15 apart
     vogt = ImpliedSurface(TODAY, (day(365),), (1.0,), (SviSlice(-0.041, 0.1331, 0.306, 0.3586, 0.4153),))
     local = LocalVolSurface.from_implied(vogt)
     assert local.clipping.thin > 0

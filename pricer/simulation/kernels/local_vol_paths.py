@@ -261,7 +261,6 @@ _NOISE_TYPES = (
 )
 _ACCUMULATE = types.void(
     *_NOISE_TYPES,
-    _PLACES,
     types.float64,
     _TABLES[3],
     _TABLES[2],
@@ -340,7 +339,6 @@ def accumulate(
     uses: Any,
     loadings: Any,
     widths: Any,
-    pieces: Any,
     last_length: float,
     moves: Any,
     before_last: Any,
@@ -380,12 +378,11 @@ def accumulate(
 
     Points: ``first``, ``last``, ``columns``, ``words`` as in ``fused.accumulate``, coordinate
     ``t * dims + j`` drives factor j at time t of the bridge ``at``, ``left``, ``right``, ``weights``.
-    Steps end at times ``uses`` (n_steps,) of the bridge, the last of ``last_length`` years; ``pieces`` (n_pieces,)
-    are these times and any between them, where volatilities of the lognormal levels change.
+    Steps end at times ``uses`` (n_steps,) of the bridge, the last of ``last_length`` years.
     ``loadings`` : (n_rows, dims padded to 4) of n assets and of the exchange rates after them; ``widths`` :
     (n_rows,) as in ``log_levels``. Tables: see ``LocalVolTables``. ``shares`` : (n,) moving part of the forward.
     Lognormal levels and exchange rates: base-2 logs ``control_starts`` (n_rows,) before any noise,
-    ``volatilities`` (n_pieces - 1, n_rows) per unit of noise in each piece, ``deviations`` (n_rows,) natural,
+    ``volatilities`` (n_steps - 1, n_rows) per unit of noise in each step, ``deviations`` (n_rows,) natural,
     of the last step. ``drifts`` : (n,) taken off the unit noise of the last step. ``rates`` : (n,) which
     exchange rate converts each level, -1 for none.
     ``smooth``, ``inverse``, ``n_common``, ``degree`` : see ``split_factor``.
@@ -419,18 +416,10 @@ def accumulate(
                 for p in range(BLOCK):
                     planes[CONTROL, i, p] = control_starts[i]
             previous = -1
-            piece = 0
             for s in range(n_steps - 1):
-                increments(walks, dims, previous, pieces[piece], drives)
+                increments(walks, dims, previous, uses[s], drives)
                 log_levels(loadings, widths, drives, noise)
-                _track_control(volatilities[piece], noise, planes[CONTROL])
-                while pieces[piece] < uses[s]:
-                    increments(walks, dims, pieces[piece], pieces[piece + 1], drives)
-                    piece += 1
-                    log_levels(loadings, widths, drives, planes[RANKS])
-                    _track_control(volatilities[piece], planes[RANKS], planes[CONTROL])
-                    add(planes[RANKS], noise)
-                piece += 1
+                _track_control(volatilities[s], noise, planes[CONTROL])
                 if s < n_steps - 2:
                     evolve(moves[s], lowest[s], per_node[s], noise, states, tangents, with_ratios, places, fetched)
                 else:
