@@ -79,7 +79,7 @@ def sample_local_vol(
     """Sample until the standard errors of the value and of every log-delta are within tolerance.
 
     Tolerances as in ``monte_carlo.sample``; ``reached`` also asks that the bias of the time steps be within
-    half of ``value_tolerance`` as far as can be told. The result depends on the problem, the group's name,
+    half of ``value_tolerance`` as far as can be told, and with the standard error within all of it. The result depends on the problem, the group's name,
     the seed, the settings and the tolerances only. Safe to call from several threads.
     """
     tolerances = _Tolerances(value_tolerance, delta_tolerance, delta_fraction)
@@ -134,17 +134,19 @@ def _sample_paths(
     answer = _undiscounted(known, df)
     unsmoothed = not paths.plan.smooth and bool(problem.payoff.knots)
     no_deltas = unsmoothed and not problem.payoff.is_continuous
+    left = min(abs(step) / 3.0, limit)  # of the bias: error and bias together are to meet the tolerance
+    asked = float(np.sqrt(tolerances.value**2 - left**2))
     while True:
         found = local_vol_estimates(paths.plan, paths.fine.extend(points) / points, points, answer)
         error = df * found.value_error
         delta_error = 0.0 if no_deltas else df * float(np.max(found.log_delta_errors))
         delta_limit = max(tolerances.delta, tolerances.fraction * df * float(np.sum(np.abs(found.log_deltas))))
-        precise = error <= tolerances.value and delta_error <= delta_limit
+        precise = error <= asked and delta_error <= delta_limit
         if precise or points >= sampling.maximum_points:
             break
         points *= 2
 
-    notes = ["precision reached" if precise else _miss(error, tolerances.value, delta_error, delta_limit)]
+    notes = ["precision reached" if precise else _miss(error, asked, delta_error, delta_limit)]
     if biased:
         steps = f"{paths.grid.n_steps} time steps" if not problem.is_lognormal else "the last time step's length"
         notes.append(f"{steps} leave{'s' if problem.is_lognormal else ''} a bias of about {abs(step) / 3.0:.2g} "
@@ -184,7 +186,7 @@ def _sample_paths(
         degrees_of_freedom=found.degrees_of_freedom,
     )
     if problem.is_lognormal:
-        vegas, vega_errors = _vegas(paths, known, no_deltas)
+        vegas, vega_errors = _vegas(paths, known, result.log_deltas)
         return replace(result, lognormal=as_lognormal(result, vegas, vega_errors))
     if problem.has_floors:
         lognormal = sample_local_vol(
@@ -209,17 +211,23 @@ def _sample_paths(
     )
 
 
-def _vegas(paths: PathSamplers, known: Sample, missing: bool) -> tuple[Array, Array]:
-    """Of lognormal X above known amounts, to the deviations of ln X: vegas and errors (n,).
+def _vegas(paths: PathSamplers, known: Sample, log_deltas: Array) -> tuple[Array, Array]:
+    """Of lognormal X above known amounts, to the deviations of ln X at fixed forwards: vegas and errors (n,).
 
-    Those of the control are known; the difference of the two is smooth, and small, and is differentiated on common draws.
+    Those of the control are known; the difference of the two is smooth, and small, and is differentiated
+    on common draws. A quanto's forward moves with the deviation: that part is taken off again, as
+    the lognormal engine's vegas do not have it. ``log_deltas`` : (n,) discounted. NaN for composites, whose
+    correlations would move too.
     """
     problem = paths.problem
-    vegas, errors = (np.full(problem.n_assets, np.nan) for _ in range(2))
-    points = paths.fine.points
-    for asset, variance in enumerate(problem.covariance.diagonal()[: problem.n_assets]):
-        deviation = np.sqrt(variance)
-        if missing or deviation == 0.0:
+    n, points, shares = problem.n_assets, paths.fine.points, paths.shares
+    vegas, errors = (np.full(n, np.nan) for _ in range(2))
+    if paths.converts or not np.all(np.isfinite(log_deltas)):
+        return vegas, errors
+    covariance = problem.covariance
+    for asset, rate in enumerate(problem.rates):
+        deviation = np.sqrt(covariance[asset, asset])
+        if deviation == 0.0:
             continue
         up, down = (
             paths.with_lognormal_deviation(asset, factor).fine.extend(points)[:, :2] / points
@@ -227,9 +235,10 @@ def _vegas(paths: PathSamplers, known: Sample, missing: bool) -> tuple[Array, Ar
         )
         moves = problem.discount_factor * (up - down) / (2.0 * _BUMP * deviation)
         (move,), (move_error,) = batch_estimate(moves[:, [0]] - moves[:, [1]])
-        share = paths.shares[asset]
-        vegas[asset] = share * known.deviation_vegas[asset] + move
-        errors[asset] = np.hypot(share * known.deviation_vega_errors[asset], move_error)
+        drift = 0.0 if rate is None else covariance[asset, n + rate] / deviation
+        of_control = known.deviation_vegas[asset] - drift * known.log_deltas[asset]
+        vegas[asset] = shares[asset] * of_control + move + drift * log_deltas[asset]
+        errors[asset] = np.hypot(shares[asset] * known.deviation_vega_errors[asset], move_error)
     return vegas, errors
 
 

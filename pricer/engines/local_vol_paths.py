@@ -62,7 +62,7 @@ class PathSamplers:
         sampling, n = settings.sampling, problem.n_assets
         self.problem, self.group, self.seed, self.settings = problem, group, seed, settings
         self.shares = problem.scales / problem.forwards
-        converted = problem.composite and any(rate is not None for rate in problem.rates)
+        self.converts = converted = problem.composite and any(rate is not None for rate in problem.rates)
         rows = len(problem.variances) if converted else n
         covariance = self._of_levels(problem.covariance)
         triangular = sampling.ordering == "cholesky" or (

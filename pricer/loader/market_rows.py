@@ -42,13 +42,13 @@ class SnapshotRow(TableRow):
     valuation_date: Annotated[date, Column(Day(), "the date of the snapshot", "2026-03-31")]
     reporting_currency: Annotated[str, Column(Currency(), "the currency of all totals", "EUR")]
     correlation_source: Annotated[
-        str,
+        str | None,
         Column(
             Choice.of([TABLE, PRICE_HISTORY]),
             "where correlations come from",
             TABLE,
             "table: the table correlations; price history: an estimate from the table price_history",
-            TABLE,
+            None,
             "for the table correlations",
         ),
     ]

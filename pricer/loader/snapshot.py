@@ -160,14 +160,13 @@ class _Tables:
         table = self.read[name] = read_table(sheet, header, model)
         return table
 
-    def correlations(self, source: str) -> Sheet | Table[PriceHistoryRow] | None:
-        """What correlations come from, one of two tables; a warning if the other is there and not empty."""
-        from_history = source == PRICE_HISTORY
-        other = self._sheet(CORRELATIONS if from_history else "price_history", None)
-        if other is not None and len(other.rows) > 1:
-            self.findings.add([_unused(other, from_history=from_history)])
-        if from_history:
+    def correlations(self, source: str | None) -> Sheet | Table[PriceHistoryRow] | None:
+        """What correlations come from; a warning if a price history is there and nobody chose between the two."""
+        if source == PRICE_HISTORY:
             return self.get("price_history", PriceHistoryRow, Severity.ERROR)
+        history = self._sheet("price_history", None)
+        if source is None and history is not None and len(history.rows) > 1:
+            self.findings.add([_unused(history)])
         return self._sheet(CORRELATIONS, Severity.ERROR)
 
     def _sheet(self, name: str, absence: Severity | None) -> Sheet | None:
@@ -194,17 +193,15 @@ def _snapshot_row(table: Table[SnapshotRow], findings: Findings) -> SnapshotRow 
     return table.rows[0].value
 
 
-def _unused(sheet: Sheet, *, from_history: bool) -> Issue:
-    source, other = (PRICE_HISTORY, CORRELATIONS) if from_history else (TABLE, "price_history")
-    wanted = TABLE if from_history else PRICE_HISTORY
+def _unused(history: Sheet) -> Issue:
     return Issue(
         "unused-table",
-        f"a table {other}, while correlation_source in the table snapshot is {quoted(source)}",
-        f"the table {other} only where correlation_source is {quoted(wanted)}",
-        "Ignored. Change correlation_source, or delete the table.",
+        "a table price_history, and a blank correlation_source in the table snapshot",
+        f"correlation_source {quoted(TABLE)} or {quoted(PRICE_HISTORY)}",
+        "The table correlations is used, and the history is not; say so in correlation_source.",
         Severity.WARNING,
-        sheet.file,
-        sheet.name,
+        history.file,
+        history.name,
     )
 
 

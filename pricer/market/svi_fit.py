@@ -5,18 +5,19 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import replace
-from typing import Any
+from typing import Any, TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
 
-from pricer.market.corrected_slice import Slice, base_of
+from pricer.market.corrected_slice import CorrectedSlice, Slice, base_of
 from pricer.market.slice_correction import corrected
 from pricer.market.smile_quotes import SmileQuotes
 from pricer.market.svi import SviSlice
 from pricer.market.svi_repair import is_butterfly_free, repaired
 
 Array = NDArray[np.float64]
+_Either = TypeVar("_Either", SviSlice, CorrectedSlice)
 
 #: Bounds are kept, and calendar order is promised, this many standard deviations of the log-level from the forward.
 RANGE = 8.0
@@ -32,6 +33,8 @@ STEEPEST_IN_DEVIATIONS = 2.5
 #: A slice that crosses the one before between points of ``GRID`` is lifted by up to this share of its variance (a
 #: quarter of a per cent of its volatility); where more is needed, the bounds are first imposed harder.
 SMALL_LIFT = 5e-3
+#: A corrected slice is lifted by up to this share only: 0.004 vol points of a volatility of 20 %.
+TINY_LIFT = 4e-4
 #: A quote missed by more than this volatility is suspected to be mistyped, ...
 OUTLIER = 0.005
 #: ... and left out if the others' error then falls below this share.
@@ -73,7 +76,13 @@ def _corrected(
 ) -> Slice:
     k, volatilities, allowances = quotes.log_moneyness, quotes.volatilities, _allowances(base, quotes)
     smile = corrected(base, k[kept], volatilities[kept], allowances[kept], time, before, FINE_GRID)
-    return smile if smile is base or is_admissible(smile, before) else base
+    if not isinstance(smile, CorrectedSlice):
+        return base
+    # Its deviation at the forward is another than the base's, and so is the range in which it must lie above.
+    raised = lifted(smile, before)
+    if raised is None or base_of(raised).a - base.a > TINY_LIFT * float(base.total_variance(0.0)):
+        return base
+    return raised if _is_free(raised) else base
 
 
 def _allowances(base: SviSlice, quotes: SmileQuotes) -> Array:
@@ -165,13 +174,15 @@ def excess(before: Slice, later: Slice) -> tuple[float, float]:
     return at, most
 
 
-def lifted(later: SviSlice, before: Slice | None) -> SviSlice | None:
+def lifted(later: _Either, before: Slice | None) -> _Either | None:
     """``later`` raised at all strikes by what it lacks to lie above ``before``; None where wings cross far out."""
     for _ in range(12):  # a higher slice is also compared further out
         lack = 0.0 if before is None else excess(before, later)[1]
         if lack <= 0.0:
             return later
-        later = replace(later, a=later.a + 1.01 * lack + 1e-10)
+        base = base_of(later)
+        higher = replace(base, a=base.a + 1.01 * lack + 1e-10)
+        later = replace(later, base=higher) if isinstance(later, CorrectedSlice) else higher
     return None
 
 

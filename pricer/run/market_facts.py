@@ -42,7 +42,8 @@ def _surface(checked: CheckedSurface, calibration: Calibration | None) -> Surfac
         )
         for quote, repriced in zip(checked.quotes, simulated, strict=True)
     )
-    violations = tuple(str(violation) for violation in checked.violations)
+    worst_first = sorted(checked.violations, key=lambda violation: -violation.size)
+    violations = tuple(str(violation) for violation in worst_first)
     return SurfaceFacts(checked.underlying_id, checked.passes, checked.failures, violations, quotes)
 
 

@@ -42,12 +42,8 @@ def small_book(*trade_ids: str) -> dict[str, list[dict]]:
 
 
 def write_desk(folder: Path, *trade_ids: str) -> tuple[Path, Path]:
-    """A book of these trades and the sample's market as workbooks in ``folder``.
-
-    The market is without its price history, which it does not use and which loading it would warn of.
-    """
+    """A book of these trades and the sample's market as workbooks in ``folder``."""
     book, market = folder / "book.xlsx", folder / "market.xlsx"
     write_tables(small_book(*trade_ids), book)
-    tables = sample_maker().market_tables()
-    write_tables({name: rows for name, rows in tables.items() if name != "price_history"}, market)
+    write_tables(sample_maker().market_tables(), market)
     return book, market

@@ -38,7 +38,6 @@ WARNINGS = {
     ("curve_points", "B23", "stale-point"),
     ("curve_points", "B24", "stale-point"),
     ("fx", "A2", "inconsistent-fx"),
-    ("price_history", None, "unused-table"),
 }
 #: Once EURGBP has no volatility, no chain of pairs leads to this currency.
 CUT_OFF = "GBP"

@@ -87,14 +87,27 @@ def test_without_the_table_there_is_no_matrix(load, tmp_path):
     ]
 
 
-def test_a_table_of_correlations_beside_the_history_is_told_and_not_used(load):
+def test_a_table_of_correlations_beside_the_history_is_not_used(load):
     market = load(ROWS, correlations=full_market()["correlations"])
-    assert [str(issue) for issue in market.issues] == [
-        "market/correlations.csv: found a table correlations, while correlation_source in the table snapshot is "
-        '"price history"; expected the table correlations only where correlation_source is "table". Ignored. Change '
-        "correlation_source, or delete the table."
-    ]
+    assert market.issues == ()
     assert market.correlation.sub(["ORLUMA", "TESKIR"])[0, 1] != 0.55
+
+
+def test_a_history_beside_the_matrix_is_told_unless_the_choice_is_stated(tmp_path):
+    tables = full_market() | {"price_history": ROWS}
+    said = []
+    for source in (None, "table"):
+        tables["snapshot"][0]["correlation_source"] = source
+        write_tables(tables, tmp_path / f"{source}.xlsx")
+        said.append([str(issue) for issue in load_market(tmp_path / f"{source}.xlsx").issues])
+    assert said == [
+        [
+            "None.xlsx, sheet price_history: found a table price_history, and a blank correlation_source in the table "
+            'snapshot; expected correlation_source "table" or "price history". The table correlations is used, and the '
+            "history is not; say so in correlation_source."
+        ],
+        [],
+    ]
 
 
 def test_an_empty_history_leaves_no_correlations_and_says_so_of_each_id(load):

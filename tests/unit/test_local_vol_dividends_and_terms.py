@@ -111,22 +111,28 @@ def test_flat_surfaces_with_known_amounts_are_the_lognormal_model_with_them(case
     assert got.model_difference_error >= got.standard_error
 
 
-@pytest.mark.parametrize("case", OTHERS)
+@pytest.mark.parametrize("case", [*OTHERS, "quanto"])
 def test_vegas_above_known_amounts_are_differences_of_values(case):
-    problem = replace(skewed(*OTHERS[case], floors=FLOORS), surfaces=())
+    is_quanto = case == "quanto"
+    problem = replace(skewed(*OTHERS["best-of call" if is_quanto else case], floors=FLOORS), surfaces=())
+    if is_quanto:
+        problem = converted(problem, composite=False)
     base = run(problem)
     vegas, errors = base.lognormal.deviation_vegas, base.lognormal.deviation_vega_errors
-    deviations = np.sqrt(problem.variances[:, -1])
-    for i in range(3):
+    covariance = problem.covariance
+    for i, rate in enumerate(problem.rates):
+        deviation = np.sqrt(covariance[i, i])
         values = []
         for factor in (1.03, 0.97):
             variances = problem.variances.copy()
             variances[i] *= factor**2
             # own draws: nothing is shared with the engine's own differences
             values.append(run(replace(problem, variances=variances), seed=5))
-        slope = (values[0].value - values[1].value) / (0.06 * deviations[i])
-        noise = np.hypot(values[0].standard_error, values[1].standard_error) / (0.06 * deviations[i])
-        assert vegas[i] == pytest.approx(slope, abs=4.0 * errors[i] + 0.6 * noise + 0.02 * np.abs(vegas).max())
+        slope = (values[0].value - values[1].value) / (0.06 * deviation)
+        noise = np.hypot(values[0].standard_error, values[1].standard_error) / (0.06 * deviation)
+        drift = 0.0 if rate is None else -covariance[i, 3 + rate] / deviation  # of the forward's logarithm
+        want = pytest.approx(slope, abs=4.0 * errors[i] + 0.6 * noise + 0.02 * np.abs(vegas).max())
+        assert vegas[i] + drift * base.log_deltas[i] == want
     assert np.all(errors < 0.05 * np.abs(vegas).max())
 
 

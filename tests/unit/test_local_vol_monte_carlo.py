@@ -183,3 +183,16 @@ def test_problems_that_do_not_fit_are_refused():
         replace(problem, years=0.0)
     with pytest.raises(ValueError, match="even and at least 4"):
         LocalVolSettings(initial_steps=3)
+
+
+@pytest.mark.parametrize("strike", [150.0, 200.0, 260.0])
+def test_what_hardly_any_path_reaches_has_an_error_that_says_so(strike):
+    payoff = Profile(ProfileKind.CASH_DIGITAL_CALL, strike, cash_amount=100.0).payoff()
+    problem = skewed(BASKET, payoff)
+    few = run(problem, settings=fixed(256))
+    many = run(problem, settings=fixed(2**16))
+    assert few.standard_error > 0.0
+    # t of 30 degrees of freedom: 99.8 %
+    assert abs(few.value - many.value) < 3.4 * np.hypot(few.standard_error, many.standard_error)
+    if strike > 200.0:
+        assert "few of 8192 paths came past a kink" in few.ending

@@ -15,6 +15,14 @@ def test_every_date_ends_an_even_step():
     assert grid.dates[0] == 8  # a quarter of a year is 22 % of the root of five years
 
 
+def test_every_interval_gets_its_least_steps_and_a_short_ending_of_its_own():
+    grid = TimeGrid.of([0.02, 2.0], steps=16, least=8, ending=0.25, every=True)
+    assert list(grid.dates) == [8, 22]
+    for end in grid.dates:
+        last, before = grid.lengths[end - 1], grid.lengths[end - 3]
+        assert last == pytest.approx(0.25 * before)
+
+
 def test_halving_joins_steps_in_pairs_and_keeps_the_dates():
     grid = TimeGrid.of([0.5, 2.0], steps=16, ending=0.25)
     half = grid.halved()
@@ -56,6 +64,22 @@ def test_coordinates_go_to_the_end_point_and_the_largest_factor_first():
     assert sorted(places.ravel()) == list(range(8))
     assert places[3, 0] == 0 and places[1, 0] == 1 and {places[0, 0], places[2, 0]} == {2, 3}
     assert places[3, 1] == 4
+
+
+@pytest.mark.parametrize("dates", [[8], [2, 8], [1, 2, 5, 8], [3, 4, 5, 6, 8]])
+def test_a_bridge_by_way_of_dates_has_the_same_covariance_and_makes_the_dates_first(dates):
+    times = np.concatenate([[0.0], np.cumsum(np.linspace(0.1, 0.5, 8))])
+    bridge = Bridge.through(times, np.array(dates))
+    walk = bridge.walk(np.eye(8))
+    assert walk @ walk.T == pytest.approx(np.minimum.outer(times[1:], times[1:]), abs=1e-14)
+    assert sorted(bridge.at[: len(dates)] + 1) == dates
+
+
+def test_weights_bring_early_dates_forward():
+    times = np.linspace(0.0, 1.0, 5)
+    bridge = Bridge.through(times, np.array([1, 4]))
+    places = bridge.coordinates(np.ones(1), 1.0 / np.sqrt(times[1:]))
+    assert list(places[[3, 0], 0]) == [0, 1]
 
 
 def test_coordinates_beyond_the_table_are_as_evenly_spread_as_those_in_it():
