@@ -79,8 +79,9 @@ def sample_local_vol(
     """Sample until the standard errors of the value and of every log-delta are within tolerance.
 
     Tolerances as in ``monte_carlo.sample``; ``reached`` also asks that the bias of the time steps be within
-    half of ``value_tolerance`` as far as can be told, and with the standard error within all of it. The result depends on the problem, the group's name,
-    the seed, the settings and the tolerances only. Safe to call from several threads.
+    half of ``value_tolerance`` as far as can be told, and together with the standard error within all of
+    it. The result depends on the problem, the group's name, the seed, the settings and the tolerances only.
+    Safe to call from several threads.
     """
     tolerances = _Tolerances(value_tolerance, delta_tolerance, delta_fraction)
     problem = problem.with_floors_in_payoff()
