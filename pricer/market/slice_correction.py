@@ -104,10 +104,11 @@ class Correction:
             found = np.linalg.solve(normal + 10.0**loose * self.penalty, right)
         return found, 10.0**loose
 
-    def bounded(self, coefficients: Array, penalty: float, before: Slice | None) -> Array:
-        """The coefficients again, after imposing the bounds where they lack, linearised round by round.
+    def bounded(self, coefficients: Array, penalty: float, before: Slice | None) -> tuple[Array, bool]:
+        """The coefficients after imposing the bounds where they lack, round by round, and whether all are kept.
 
-        g is bounded on this slice and ``BETWEEN`` it and the one before; W by the one before, and by its own base.
+        Bounds are linearised. g is bounded on this slice and ``BETWEEN`` it and the one before; W by the one
+        before, and by its own base.
         """
         base = self._scaled(self.base)
         c: Array = coefficients
@@ -143,9 +144,9 @@ class Correction:
                     matrix += a.T @ a
                     vector += a.T @ (_G_WEIGHT * (bound - g)[held] + a @ c)
             if sound:
-                break
+                return c, True
             c = np.asarray(np.linalg.solve(matrix, vector), dtype=float)
-        return c
+        return c, False
 
     def _scaled(self, smile: Slice) -> tuple[Array, Array, Array]:
         """W and two derivatives in x on the grid, of any slice, in this one's units."""
@@ -183,7 +184,9 @@ def corrected(
     if not problem.is_needed:
         return base
     coefficients, penalty = problem.smoothest()
-    coefficients = problem.bounded(coefficients, penalty, before)
+    coefficients, sound = problem.bounded(coefficients, penalty, before)
+    if sound:
+        return problem.slice(coefficients)
     inner = problem.s * problem.x  # elsewhere nothing is changed
     earlier = None if before is None else before.derivatives(inner)
     at = base.derivatives(inner)

@@ -39,6 +39,9 @@ TINY_LIFT = 4e-4
 OUTLIER = 0.005
 #: ... and left out if the others' error then falls below this share.
 SPOILT = 0.3
+#: A quote off the others' slice by up to this (1 vol point) may still be meant; by more it stays left out, and is
+#: reported as missed, even where no arbitrage would forbid to meet it.
+ODD = 0.01
 #: Weights of quotes far from the forward fall to this.
 LEAST_WEIGHT = 0.1
 #: Up to as many standard deviations (a call of 10 or 90 delta lies nearer) quotes are met alike; beyond, less closely.
@@ -56,14 +59,16 @@ def fit_slice(
 ) -> Slice:
     """The SVI slice of :func:`fit_svi`, brought to the quotes by a smooth correction where it misses them.
 
-    Quotes that were left out come back if the correction meets all of them: they are odd then, but no contradiction.
+    Quotes that were left out come back if they are off by no more than ``ODD`` and the correction meets all of
+    them: they are odd then, but no contradiction.
     See :mod:`pricer.market.slice_correction` for how far a correction may go.
     """
     base, weights = fit_svi(quotes, time, before, later)
     kept = weights > 0.0
     if np.count_nonzero(kept) < LEAST_QUOTES:
         return base
-    if not kept.all():
+    misses = np.sqrt(base.total_variance(quotes.log_moneyness) / time) - quotes.volatilities
+    if not kept.all() and np.max(np.abs(misses[~kept])) <= ODD:
         smile = _corrected(base, quotes, np.ones(kept.size, dtype=bool), time, before)
         errors = np.sqrt(smile.total_variance(quotes.log_moneyness) / time) - quotes.volatilities
         if np.all(np.abs(errors) <= 2.0 * _allowances(base, quotes)):

@@ -58,7 +58,7 @@ def test_quotes_free_of_arbitrage_give_a_surface_free_of_it_that_meets_them_and_
     surface = built(quotes, [CashDividend(day(150 + 365 * i), amount) for i in range(3)])
     assert surface.passes and not [v for v in surface.violations if not v.quoted]
     rounding = rounding_of(np.array([quote.volatility for quote in quotes]))
-    # Half the rounding, or a hundredth of a vol point, in all but one smile in a hundred; this bound is for all of them.
+    # Half the rounding, or a hundredth of a vol point, in all but one smile in a hundred; this bound is for all.
     most = 3e-4 if rounding < 5e-4 else 4e-4
     for fit in surface.quotes:
         if fit.in_the_middle:

@@ -95,13 +95,13 @@ def test_values_with_skews_agree_with_a_plain_euler_scheme(case, is_composite):
     problem = converted(skewed(aggregate, payoff, cells=64), composite=is_composite)
     got = run(problem, settings=fixed(8192, 16))
     want, error = euler(problem)
-    # two independent errors; 0.02 for the bias of 150 Euler steps, of order a hundredth of a 3 to 10 point value
+    # two independent errors; 0.02 for the bias of 100 Euler steps, of order a hundredth of a 3 to 10 point value
     assert abs(got.value - want) < 4.0 * np.hypot(error, got.standard_error) + 0.02
     other = run(replace(problem, rate_of=(None,) * 3, composite=False), settings=fixed(8192, 16))
     assert abs(got.value - other.value) > 20.0 * got.standard_error  # the conversion is seen
 
 
-def euler(problem: LocalVolProblem, steps: int = 150, paths: int = 40_000) -> tuple[float, float]:
+def euler(problem: LocalVolProblem, steps: int = 100, paths: int = 30_000) -> tuple[float, float]:
     """Log-Euler of X and of ln Q in their own currencies, antithetic, weighted to the payment currency's measure.
 
     Under the level's own measure X has no drift, and the density of the payment currency's measure is 1/Y with

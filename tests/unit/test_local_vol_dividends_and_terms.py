@@ -75,7 +75,7 @@ def test_lognormal_levels_above_known_amounts_have_the_value_of_a_plain_sample(c
 @pytest.mark.parametrize("case", OTHERS)
 def test_the_short_last_step_of_lognormal_levels_hardly_matters(case):
     problem = replace(skewed(*OTHERS[case], floors=FLOORS), surfaces=())
-    got = run(problem, settings=fixed(8192))
+    got = run(problem)
     # half of 0.1 bp of the level is what a trade may ask for
     assert abs(got.step_difference) / 3.0 < 5e-4 + 2.0 * got.step_difference_error
     assert np.all(np.abs(got.martingale_means - 1.0) < 5.0 * got.martingale_mean_errors + 3e-6)
@@ -117,7 +117,7 @@ def test_vegas_above_known_amounts_are_differences_of_values(case):
     problem = replace(skewed(*OTHERS["best-of call" if is_quanto else case], floors=FLOORS), surfaces=())
     if is_quanto:
         problem = converted(problem, composite=False)
-    base = run(problem)
+    base = run(problem, settings=fixed(1024))
     vegas, errors = base.lognormal.deviation_vegas, base.lognormal.deviation_vega_errors
     covariance = problem.covariance
     for i, rate in enumerate(problem.rates):
@@ -127,7 +127,7 @@ def test_vegas_above_known_amounts_are_differences_of_values(case):
             variances = problem.variances.copy()
             variances[i] *= factor**2
             # own draws: nothing is shared with the engine's own differences
-            values.append(run(replace(problem, variances=variances), seed=5))
+            values.append(run(replace(problem, variances=variances), settings=fixed(1024), seed=5))
         slope = (values[0].value - values[1].value) / (0.06 * deviation)
         noise = np.hypot(values[0].standard_error, values[1].standard_error) / (0.06 * deviation)
         drift = 0.0 if rate is None else -covariance[i, 3 + rate] / deviation  # of the forward's logarithm

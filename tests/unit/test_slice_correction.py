@@ -115,6 +115,18 @@ def test_a_quote_left_out_of_the_slice_is_left_out_of_the_correction():
     assert np.sqrt(float(fit_slice(given, 0.5).total_variance(k[6])) / 0.5) - volatilities[6] < -0.045
 
 
+def test_an_odd_quote_that_contradicts_nothing_is_met_up_to_a_vol_point():
+    """Off a smooth smile at one of nine strikes three quarters of a deviation apart: SVI alone leaves it out."""
+    k = np.linspace(-0.42, 0.42, 9)
+    for off, met in ((0.007, True), (0.02, False)):
+        volatilities = 0.2000012345 - 0.1 * k + 0.2 * k * k
+        volatilities[5] += off
+        given = SmileQuotes.of(day(182), k, volatilities)
+        assert fit_svi(given, 0.5)[1][5] == 0.0
+        missed = given.volatilities[5] - np.sqrt(float(fit_slice(given, 0.5).total_variance(k[5])) / 0.5)
+        assert missed == pytest.approx(0.0 if met else off, abs=4e-4 if not met else 5e-5)
+
+
 @pytest.mark.parametrize(
     ("volatilities", "unit"),
     [
