@@ -85,17 +85,9 @@ def sample_local_vol(
     """
     tolerances = _Tolerances(value_tolerance, delta_tolerance, delta_fraction)
     problem = problem.with_floors_in_payoff()
-    if problem.is_lognormal:
-        if problem.has_floors:
-            return _sample_paths(problem, group, seed, tolerances, settings)
+    if problem.is_lognormal and not problem.has_floors:
         return without_paths(_lognormal(problem.lognormal, group, seed, tolerances, settings))
     return _sample_paths(problem, group, seed, tolerances, settings)
-
-
-def prepare() -> None:
-    """Compile the kernels, or load them from the disk cache, ahead of the first trade."""
-    import pricer.simulation.kernels.local_vol_tables
-    import pricer.simulation.local_vol_sampler  # noqa: F401
 
 
 def _lognormal(

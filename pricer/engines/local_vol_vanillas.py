@@ -114,11 +114,6 @@ def reprice(
     )
 
 
-def prepare() -> None:
-    """Compile the kernels, or load them from the disk cache, ahead of the first underlying."""
-    import pricer.simulation.vanilla_sampler  # noqa: F401
-
-
 def _variances(surface: LocalVolatility, expiries: Sequence[float]) -> Array:
     """Total variances at the expiries of the volatility at the forward: of the lognormal control."""
     y = np.linspace(-surface.reach, surface.reach, surface.values.shape[1])
