@@ -15,8 +15,8 @@ from pricer.market.black import call, vega
 from pricer.market.calendars import year_fraction
 from pricer.market.implied_surface import ImpliedSurface
 from pricer.market.slice_correction import is_material
+from pricer.market.slice_order import FINE_GRID, RANGE, excess
 from pricer.market.smile_quotes import SmileQuotes
-from pricer.market.svi_fit import FINE_GRID, RANGE, excess
 from pricer.market.svi_repair import least_butterfly
 
 Array = NDArray[np.float64]
@@ -93,7 +93,7 @@ def quote_violations(valuation_date: date, quotes: Sequence[SmileQuotes]) -> tup
 
 
 def surface_violations(surface: ImpliedSurface) -> tuple[Violation, ...]:
-    """Arbitrage left in a surface, within :data:`svi_fit.RANGE` standard deviations; none after a sound fit.
+    """Arbitrage left in a surface, within :data:`slice_order.RANGE` standard deviations; none after a sound fit.
 
     Slices are checked for butterflies, and so are the smiles a quarter, half and three quarters of the way
     between expiries: linear total variance does not exclude them by itself. Those in between are checked

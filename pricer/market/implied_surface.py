@@ -13,9 +13,11 @@ from numpy.typing import ArrayLike, NDArray
 
 from pricer.market.calendars import year_fraction
 from pricer.market.corrected_slice import CorrectedSlice, Slice, base_of, cubic_derivatives
+from pricer.market.slice_fit import fit_slice
+from pricer.market.slice_order import is_admissible
 from pricer.market.smile_quotes import Smile, SmileParameters, SmileQuotes
 from pricer.market.svi import SviSlice, butterfly
-from pricer.market.svi_fit import fit_slice, is_admissible
+from pricer.market.svi_fit import next_deviation
 from pricer.market.volatility import VolatilityCurve
 
 Array = NDArray[np.float64]
@@ -74,7 +76,7 @@ class ImpliedSurface:
     def from_quotes(cls, valuation_date: date, smiles: Sequence[Smile]) -> ImpliedSurface:
         """Slices fitted from short to long, each without butterfly arbitrage and above the one before.
 
-        Total variance is therefore ordered in time within :data:`svi_fit.RANGE` standard deviations of each
+        Total variance is therefore ordered in time within :data:`slice_order.RANGE` standard deviations of each
         expiry's forward. Slices are SVI, with a smooth correction where quotes are
         not SVI-shaped. Quotes that contradict this are missed by as much as needed: ``fit_errors`` says by
         how much, :mod:`pricer.market.arbitrage` where. A smile of parameters is taken as is where it is free of
@@ -100,10 +102,11 @@ class ImpliedSurface:
         for i, (smile, quote, time) in enumerate(zip(smiles, quotes, times, strict=True)):
             before = slices[-1] if slices else None
             stated = smile.slice(time) if isinstance(smile, SmileParameters) else None
-            if stated is not None and is_admissible(stated, before):
+            ahead = totals[i + 1 : i + 3]
+            if stated is not None and is_admissible(stated, before, next_deviation(ahead)):
                 slices.append(stated)
             else:
-                slices.append(fit_slice(quote, time, before, totals[i + 1 : i + 3]))
+                slices.append(fit_slice(quote, time, before, ahead))
         return cls(valuation_date, tuple(dates), tuple(times), tuple(slices), tuple(quotes))
 
     @classmethod

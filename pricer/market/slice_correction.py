@@ -45,6 +45,8 @@ TOUCH = 2e-5
 _STIFFEST, _LOOSEST, _HALVINGS = 2.0, -8.0, 9
 #: Weights of lacking g and lacking W against an error of one allowance; rounds of imposing the bounds.
 _G_WEIGHT, _W_WEIGHT, _ROUNDS = 3e3, 1e5, 8
+#: Parts of a step tried until the sum of squares falls.
+_STEPS = (1.0, 0.5, 0.25, 0.1, 0.03)
 #: Parts of the correction tried where bounds remain broken.
 _PARTS = (1.0, 0.98, 0.95, 0.9, 0.8, 0.7, 0.6, 0.5, 0.4, 0.3, 0.2, 0.1)
 
@@ -121,32 +123,46 @@ class Correction:
             floor = np.maximum(floor, earlier[0])
         floor = floor + W_MARGIN
         normal, right = self.rows.T @ self.rows + penalty * self.penalty, self.rows.T @ self.target
-        held_g = [np.zeros(self.x.size, dtype=bool) for _ in shares]
-        held_w = np.zeros(self.x.size, dtype=bool)
-        for _ in range(_ROUNDS):
+
+        def linearised(c: Array) -> tuple[float, bool, Array, Array]:
+            """The sum of squares at ``c``, whether all bounds are kept, and the equations of the next step."""
             h = self.value @ c, self.first @ c, self.second @ c
-            lacks_w = base[0] + h[0] < floor - W_MARGIN
-            held_w |= lacks_w
-            sound = not lacks_w.any()
-            v, f = _W_WEIGHT * self.value[held_w], _W_WEIGHT * (floor - base[0])[held_w]
-            matrix, vector = normal + v.T @ v, right + v.T @ f
-            for share, start, bound, held in zip(shares, starts, least, held_g, strict=True):
+            lack = floor - base[0] - h[0]
+            held = lack > 0.0
+            sound = bool(np.all(lack <= W_MARGIN))
+            v = _W_WEIGHT * self.value[held]
+            matrix, vector = normal + v.T @ v, right + _W_WEIGHT * v.T @ (floor - base[0])[held]
+            total = float(c @ (normal @ c) - 2.0 * right @ c) + _W_WEIGHT**2 * float(lack[held] @ lack[held])
+            for share, start, bound in zip(shares, starts, least, strict=True):
                 w, slope, curvature = (x + share * y for x, y in zip(start, h, strict=True))
                 g, by_w, by_slope = self._g(np.maximum(w, LEAST_VARIANCE * start[0]), slope, curvature)
-                lacks_g = g < bound - G_MARGIN
-                if share < 1.0 and lacks_g.any():
-                    lacks_g &= is_material(self.s * self.x, self.s**2 * w)
-                held |= lacks_g
-                sound = sound and not lacks_g.any()
+                held = g < bound
+                if share < 1.0 and held.any():
+                    held &= is_material(self.s * self.x, self.s**2 * w)
                 if held.any():
+                    lack = (bound - g)[held]
+                    sound = sound and bool(np.all(lack <= G_MARGIN))
                     a = by_w[held, None] * self.value[held] + by_slope[held, None] * self.first[held]
                     a = _G_WEIGHT * share * (a + 0.5 * self.second[held])
                     matrix += a.T @ a
-                    vector += a.T @ (_G_WEIGHT * (bound - g)[held] + a @ c)
+                    vector += a.T @ (_G_WEIGHT * lack + a @ c)
+                    total += _G_WEIGHT**2 * float(lack @ lack)
+            return total, sound, matrix, vector
+
+        total, sound, matrix, vector = linearised(c)
+        for _ in range(_ROUNDS):
             if sound:
-                return c, True
-            c = np.asarray(np.linalg.solve(matrix, vector), dtype=float)
-        return c, False
+                break
+            step = np.linalg.solve(matrix, vector) - c
+            for part in _STEPS:  # g is far from linear where the first spline ripples
+                trial = linearised(c + part * step)
+                if trial[0] < total:
+                    break
+            else:
+                return c, False
+            c = c + part * step
+            total, sound, matrix, vector = trial
+        return c, sound
 
     def _scaled(self, smile: Slice) -> tuple[Array, Array, Array]:
         """W and two derivatives in x on the grid, of any slice, in this one's units."""

@@ -13,6 +13,9 @@ from pricer.market.svi import SviSlice
 
 Array = NDArray[np.float64]
 
+#: Nothing is quoted outside these, 0.0001 % and 1000 % a year; far outside, its variance would not be a number.
+LEAST_VOLATILITY, LARGEST_VOLATILITY = 1e-6, 10.0
+_VOLATILITIES = f"from {LEAST_VOLATILITY:g} to {LARGEST_VOLATILITY:g}"
 #: Units to which volatilities are rounded in practice, from 0.1 vol points down; what none of them divides is exact.
 ROUNDINGS = (1e-3, 5e-4, 1e-4, 5e-5, 1e-5)
 #: Errors in volatility that are not worth a bend of the smile: half the quotes' rounding, but within these.
@@ -44,14 +47,14 @@ class SmileQuotes:
 
         ``rounding`` is read off the volatilities by :func:`rounding_of` where it is not given.
 
-        Raises ValueError unless there is one volatility above 0 per log-moneyness, all are finite
-        and no log-moneyness comes twice.
+        Raises ValueError unless there is one volatility per log-moneyness, from ``LEAST_VOLATILITY`` to
+        ``LARGEST_VOLATILITY``, all are finite and no log-moneyness comes twice.
         """
         k, volatility = (np.atleast_1d(np.asarray(x, dtype=float)) for x in (log_moneyness, volatilities))
         if k.ndim != 1 or k.shape != volatility.shape or k.size == 0:
             raise ValueError(f"{volatility.shape} volatilities do not fit log-moneyness of shape {k.shape}")
-        if not (np.all(np.isfinite(k)) and np.all(np.isfinite(volatility)) and np.all(volatility > 0.0)):
-            raise ValueError(f"the volatilities of {expiry_date} must be above 0, and all its quotes finite")
+        if not (np.all(np.isfinite(k)) and np.all(is_volatility(volatility))):
+            raise ValueError(f"the volatilities of {expiry_date} must be {_VOLATILITIES}, and all its quotes finite")
         order = np.argsort(k, kind="stable")
         k, volatility = k[order], volatility[order]
         if np.any(np.diff(k) <= 0.0):
@@ -75,8 +78,8 @@ class SmileParameters:
 
     def __post_init__(self) -> None:
         numbers = (self.volatility, self.skew, 0.0 if self.curvature is None else self.curvature)
-        if not (all(map(math.isfinite, numbers)) and self.volatility > 0.0):
-            raise ValueError(f"the volatility of {self.expiry_date} must be above 0, and all its quotes finite")
+        if not (all(map(math.isfinite, numbers)) and is_volatility(self.volatility)):
+            raise ValueError(f"the volatility of {self.expiry_date} must be {_VOLATILITIES}, and all its quotes finite")
 
     def slice(self, time: float) -> SviSlice:
         """The slice with these three at ``time`` years; where no convex total variance has them, the nearest one."""
@@ -90,6 +93,13 @@ class SmileParameters:
         """Nine volatilities of :meth:`slice` within two standard deviations of the forward."""
         k = np.linspace(-2.0, 2.0, 9) * self.volatility * math.sqrt(time)
         return SmileQuotes(self.expiry_date, k, np.sqrt(self.slice(time).total_variance(k) / time))
+
+
+def is_volatility(volatility: ArrayLike) -> NDArray[np.bool_]:
+    """Whether each lies from ``LEAST_VOLATILITY`` to ``LARGEST_VOLATILITY``, any shape; a NaN does not."""
+    volatility = np.asarray(volatility, dtype=float)
+    out: NDArray[np.bool_] = (volatility >= LEAST_VOLATILITY) & (volatility <= LARGEST_VOLATILITY)
+    return out
 
 
 def rounding_of(volatilities: Array) -> float:

@@ -15,7 +15,15 @@ from numpy.typing import NDArray
 from pricer.market.affine_price import AffineLevel, AffinePrice
 from pricer.market.calendars import year_fraction
 from pricer.market.pure_smile import pure_deviations, pure_log_strikes, pure_parameters
-from pricer.market.smile_quotes import Smile, SmileParameters, SmileQuotes, rounding_of
+from pricer.market.smile_quotes import (
+    LARGEST_VOLATILITY,
+    LEAST_VOLATILITY,
+    Smile,
+    SmileParameters,
+    SmileQuotes,
+    is_volatility,
+    rounding_of,
+)
 
 Array = NDArray[np.float64]
 
@@ -143,6 +151,14 @@ def _faults(group: Sequence[VolatilityQuote], level: AffineLevel, any_shape: boo
                 "finite numbers, and a volatility above 0",
                 "Enter 20 % as 0.20.",
             )
+        elif not is_volatility(quote.volatility):
+            yield QuoteFault(
+                day,
+                quote.strike,
+                f"a volatility of {quote.volatility:g} for {day}",
+                f"a volatility from {LEAST_VOLATILITY:g} to {LARGEST_VOLATILITY:g}",
+                "Enter 20 % as 0.20.",
+            )
         elif quote.strike is not None and quote.relative_strike is not None:
             yield QuoteFault(
                 day,
@@ -197,7 +213,7 @@ def _expiry(group: Sequence[VolatilityQuote], level: AffineLevel, time: float) -
     strikes = np.array([quote.on(level.forward) for quote in group])
     volatilities = np.array([quote.volatility for quote in group])
     found = pure_deviations(level, strikes, volatilities * root) / root
-    bad = np.flatnonzero(~np.isfinite(found))
+    bad = np.flatnonzero(~is_volatility(found))
     if not bad.size and not group[0].has_shape:
         quotes = SmileQuotes.of(day, pure_log_strikes(level, strikes), found, rounding_of(volatilities))
         return ExpiryQuotes(day, time, level, strikes, volatilities, quotes, None)

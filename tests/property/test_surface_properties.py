@@ -9,13 +9,13 @@ from hypothesis import strategies as st
 from pricer.market.arbitrage import ArbitrageKind, surface_violations
 from pricer.market.implied_surface import ImpliedSurface
 from pricer.market.local_vol_surface import LocalVolSurface
+from pricer.market.slice_order import RANGE
 from pricer.market.smile_quotes import SmileQuotes
 from pricer.market.svi import SviSlice
-from pricer.market.svi_fit import RANGE
 from pricer.market.volatility import VolatilityCurve
 from tests.unit.smiles import TODAY, day, smiles
 
-UNHURRIED = settings(max_examples=40, deadline=None)
+REPEATABLE = settings(max_examples=25, deadline=None, derandomize=True)
 DAYS = (7, 30, 91, 365, 1095)
 
 
@@ -38,7 +38,7 @@ def surface_of(slices):
     return ImpliedSurface(TODAY, tuple(day(d) for d in DAYS), tuple(d / 365 for d in DAYS), slices)
 
 
-@UNHURRIED
+@REPEATABLE
 @given(ordered_slices())
 def test_slices_that_theory_says_are_sound_are_found_sound(slices):
     surface = surface_of(slices)
@@ -46,7 +46,7 @@ def test_slices_that_theory_says_are_sound_are_found_sound(slices):
     assert violations == []
 
 
-@UNHURRIED
+@REPEATABLE
 @given(ordered_slices())
 def test_quotes_read_off_sound_slices_are_met_without_arbitrage(slices):
     quotes = []
@@ -59,7 +59,7 @@ def test_quotes_read_off_sound_slices_are_met_without_arbitrage(slices):
     check_order_and_density(surface)
 
 
-@UNHURRIED
+@REPEATABLE
 @given(st.integers(0, 10**6), st.booleans(), st.sampled_from([0.0, 0.001, 0.003]), st.integers(1, 9))
 def test_noisy_quotes_in_any_number_give_an_ordered_surface_without_butterflies(seed, index, noise, n):
     surface = ImpliedSurface.from_quotes(TODAY, smiles(seed, index=index, noise=noise, n=n, days=DAYS))
@@ -79,7 +79,7 @@ def check_order_and_density(surface):
             assert fall.max() <= 1e-9 + 1e-7 * float(smile.total_variance(0.0))
 
 
-@UNHURRIED
+@REPEATABLE
 @given(st.lists(st.floats(0.05, 1.0), min_size=5, max_size=5))
 def test_without_skew_the_local_volatility_is_the_forward_volatility(rises):
     variances = np.cumsum(np.array(rises) ** 2 * np.diff((0, *DAYS)) / 365)

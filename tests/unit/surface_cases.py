@@ -17,6 +17,15 @@ CASH = tuple(CashDividend(date(year, 5, 12), 3.0) for year in range(2027, 2032))
 DAYS = (30, 91, 182, 365, 730)
 RELATIVE = (0.8, 0.9, 0.95, 1.0, 1.05, 1.1, 1.2)
 
+#: A smile that flattens with time, rounded to 0.05 vol points: days, first and last log-moneyness, volatilities in %.
+FLATTENING = (
+    (7, -0.02529, 0.02575, (11.9, 11.1, 10.75, 10.65, 10.65, 10.85, 11.25, 12.15)),
+    (30, -0.05467, 0.05566, (12.7, 11.75, 11.3, 11.1, 11.15, 11.4, 12.0, 13.05)),
+    (91, -0.09898, 0.10078, (12.9, 12.15, 11.7, 11.55, 11.6, 11.85, 12.4, 13.3)),
+    (365, -0.20601, 0.20975, (12.6, 12.3, 12.05, 12.0, 12.0, 12.2, 12.45, 12.85)),
+    (1095, -0.36217, 0.36875, (12.4, 12.25, 12.2, 12.15, 12.2, 12.25, 12.4, 12.55)),
+)
+
 
 def price(cash=()):
     return AffinePrice.of("ARVENNE", 100.0, Dividends(0.01, (), tuple(cash)), curve())
@@ -28,6 +37,15 @@ def heston_quotes(days=DAYS, strikes=RELATIVE, model="heston"):
         VolatilityQuote(day(d), float(v), relative_strike=m)
         for d in days
         for m, v in zip(strikes, MODELS[model](np.log(strikes), d / 365), strict=True)
+    ]
+
+
+def flattening_quotes():
+    """Quotes at strikes even in log-moneyness."""
+    return [
+        VolatilityQuote(day(days), v / 100, relative_strike=float(np.exp(k)))
+        for days, low, high, volatilities in FLATTENING
+        for k, v in zip(np.linspace(low, high, len(volatilities)), volatilities, strict=True)
     ]
 
 

@@ -3,6 +3,7 @@
 import math
 from dataclasses import replace
 from datetime import date
+from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -11,9 +12,10 @@ from scipy.stats import norm
 from pricer.market.affine_price import AffinePrice
 from pricer.market.checked_surface import UnusableQuotesError, VolatilityQuote, build_surface
 from pricer.market.dividends import CashDividend, Dividends
+from pricer.market.slice_order import excess
 from tests.unit.markets import TODAY, curve
 from tests.unit.smiles import day
-from tests.unit.surface_cases import CASH, DAYS, RELATIVE, built, heston_quotes, price
+from tests.unit.surface_cases import CASH, DAYS, RELATIVE, built, flattening_quotes, heston_quotes, price
 
 
 def faults_of(*quotes, cash=()):
@@ -173,6 +175,14 @@ def test_several_faults_are_told_at_once_in_order():
     )
 
 
+@pytest.mark.parametrize("bad", [1e-300, 1e-7, 10.5, 1e300])
+def test_a_volatility_that_nothing_has_is_refused(bad):
+    error = faults_of(*heston_quotes(days=(91,)), VolatilityQuote(day(91), bad, relative_strike=1.3))
+    assert str(error) == (
+        f"found a volatility of {bad:g} for 2027-03-01; expected a volatility from 1e-06 to 10. Enter 20 % as 0.20."
+    )
+
+
 @pytest.mark.parametrize("bad", [0.0, -5.0])
 def test_a_strike_that_is_no_price_is_refused(bad):
     error = faults_of(VolatilityQuote(day(91), 0.2, strike=bad), VolatilityQuote(day(91), 0.2))
@@ -225,3 +235,12 @@ def test_the_forward_of_the_price_counts_for_relative_strikes():
     rich = AffinePrice.of("ARVENNE", 100.0, Dividends(-0.10), curve())
     surface = build_surface("ARVENNE", rich, TODAY, heston_quotes(days=(365,)))
     assert surface.quotes[3].strike == pytest.approx(rich.at(day(365)).forward)
+
+
+def test_a_slice_whose_wings_touch_the_expiry_before_is_still_brought_to_its_quotes():
+    """Three years of a smile that flattens: its SVI slice is held up by one year's wings, eight deviations out."""
+    surface = built(flattening_quotes())
+    assert max(abs(fit.error) for fit in surface.quotes) < 2.1e-4
+    assert surface.passes and surface.violations == ()
+    for before, after in pairwise(surface.surface.slices):
+        assert excess(before, after)[1] <= 0.0

@@ -5,11 +5,16 @@ import pytest
 from scipy.optimize import least_squares
 
 from pricer.market import svi_kernel
+from pricer.market.checked_surface import VolatilityQuote
+from pricer.market.dividends import CashDividend
+from pricer.market.slice_fit import fit_slice
+from pricer.market.slice_order import RANGE, excess, is_admissible, lifted
 from pricer.market.smile_quotes import SmileParameters, SmileQuotes
 from pricer.market.svi import SviSlice
-from pricer.market.svi_fit import GRID, RANGE, excess, fit_slice, lifted
+from pricer.market.svi_fit import GRID
 from pricer.market.svi_repair import is_butterfly_free
-from tests.unit.smiles import day
+from tests.unit.smiles import day, smiles
+from tests.unit.surface_cases import built
 
 T = 0.5
 
@@ -114,6 +119,29 @@ def test_a_short_expiry_leaves_room_for_the_quotes_of_later_ones():
     assert bound.total_variance(-0.5) <= far[1][0] * 1.01
 
 
+def test_a_slice_must_be_sound_as_far_out_as_the_next_expiry_reaches():
+    """This wing's density ends between nine and twelve of its own deviations of 0.36; the next expiry's is 0.54."""
+    planted = SviSlice(-0.6728, 0.4778, -0.8, -2.0, 2.6)
+    assert planted.butterfly(-8.4 * 0.36) > 0.0 > planted.butterfly(-8.0 * 0.54)
+    assert is_admissible(planted, None)
+    assert not is_admissible(planted, None, 0.54)
+
+
+def test_a_steep_wing_has_a_density_wherever_the_next_expiry_matters():
+    """With noise of 0.2 vol points: two years' wing, alone, has none at twelve deviations, eight of the five years'."""
+    quotes_ = smiles(28, index=True, noise=0.002)
+    priced = [
+        VolatilityQuote(q.expiry_date, float(v), relative_strike=float(np.exp(k)))
+        for q in quotes_
+        for k, v in zip(q.log_moneyness, q.volatilities, strict=True)
+    ]
+    surface = built(priced, [CashDividend(day(150 + 365 * i), 2.0) for i in range(5)])
+    assert [v for v in surface.violations if not v.quoted] == []
+    two_years, five_years = surface.surface.slices[-2:]
+    k = np.linspace(-RANGE, RANGE, 801) * float(np.sqrt(five_years.total_variance(0.0)))
+    assert two_years.butterfly(k).min() >= 0.0
+
+
 def test_lifting_closes_a_gap_between_the_points_of_the_grid():
     before, later = SviSlice(0.01, 0.1, -0.3, 0.013, 0.01), SviSlice(0.0115, 0.1, -0.3, 0.013, 0.008)
     smile = lifted(later, SviSlice(before.a + 0.002, before.b, before.rho, before.m, before.sigma))
@@ -175,8 +203,14 @@ def test_quotes_are_sorted_and_checked():
     given = SmileQuotes.of(day(30), [0.1, -0.1], [0.2, 0.25])
     np.testing.assert_array_equal(given.log_moneyness, [-0.1, 0.1])
     np.testing.assert_array_equal(given.volatilities, [0.25, 0.2])
-    for k, volatilities in (([0.0, 0.0], [0.2, 0.2]), ([0.0], [0.0]), ([0.0], [np.nan]), ([], []), ([0.0, 0.1], [0.2])):
-        with pytest.raises(ValueError, match=r"two volatilities|above 0|do not fit"):
+    bad = [
+        ([0.0, 0.0], [0.2, 0.2]),
+        ([], []),
+        ([0.0, 0.1], [0.2]),
+        *(([0.0], [v]) for v in (0.0, 1e-300, 11.0, np.nan)),
+    ]
+    for k, volatilities in bad:
+        with pytest.raises(ValueError, match=r"two volatilities|from 1e-06 to 10|do not fit"):
             SmileQuotes.of(day(30), k, volatilities)
 
 
@@ -187,5 +221,5 @@ def test_parameters_are_the_volatility_and_its_derivatives_at_the_forward():
     assert (high - low) / (2 * h) == pytest.approx(-0.1, rel=1e-6)
     assert (high - 2 * mid + low) / h**2 == pytest.approx(0.3, rel=1e-5)
     for wrong in ({"volatility": 0.0}, {"volatility": 0.2, "skew": np.inf}):
-        with pytest.raises(ValueError, match="must be above 0"):
+        with pytest.raises(ValueError, match="must be from 1e-06 to 10"):
             SmileParameters(day(182), **wrong)
