@@ -31,6 +31,9 @@ ValuationDate = Annotated[
 EveryProblem = Annotated[
     bool, typer.Option("--every-problem", help="Print every problem, not only the first of each kind.")
 ]
+Strict = Annotated[
+    bool, typer.Option("--strict", help="Exit with 1 on any warning or error, even if all trades can be priced.")
+]
 AcceptFailingSurfaces = Annotated[
     bool,
     typer.Option(

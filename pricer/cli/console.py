@@ -17,8 +17,11 @@ from rich.table import Table
 from pricer.core.issues import Issue, Severity
 from pricer.core.progress import Progress, Silent
 from pricer.engines.cross_check import ALARMS
-from pricer.report.surface_fits import TARGET, Reach, all_quotes, reach
+from pricer.report.reference_coverage import checked_total
+from pricer.report.surface_fits import TARGET, Reach, all_quotes, reach, smiles
 from pricer.report.totals import Total, book_total, group_totals
+from pricer.report.verdicts import by_model
+from pricer.run.market_outline import AtTheForward, UnderlyingOutline
 from pricer.run.outcome import Outcome
 
 #: Problems of one kind that are printed before the rest is only counted.
@@ -148,11 +151,49 @@ def show_outcome(outcome: Outcome) -> None:
     lines = [
         f"priced {len(outcome.valuations)}, not priced {len(outcome.refusals)}",
         f"less precise than asked: {whole.precision_not_reached}",
-        f"cross-checks: {len(outcome.cross_checks)}, of which disagree: {alarms}",
+        f"cross-checks: {_by_model(outcome)}, of which disagree: {alarms}",
+        *_checked_lines(outcome),
         *_model_lines(outcome, whole),
     ]
     for line in lines:
         out.print(line, markup=False)
+
+
+def _by_model(outcome: Outcome) -> str:
+    """How many cross-checks were made under which model."""
+    parts = [f"{len(checks)} under {model}" for model, checks in by_model(outcome.cross_checks)]
+    return f"{len(outcome.cross_checks)} ({', '.join(parts)})" if parts else "0"
+
+
+def _checked_lines(outcome: Outcome) -> list[str]:
+    """What the cross-checks say of the values that lead; nothing without a value."""
+    found = checked_total(outcome)
+    parts = ", ".join(f"{kind} {count}" for kind, count in found.by.items())
+    return [f"leading values checked under their own model, of {found.trades}: {parts}"] if found.trades else []
+
+
+def show_market(rows: Sequence[UnderlyingOutline]) -> None:
+    """Forwards and volatilities at the forward, at the first and last quoted date of each underlying.
+
+    In plain columns, which neither a narrow terminal nor a log cuts short.
+    """
+    heading = ("underlying", "spot", "", *("quoted", "forward", "volatility") * 2)
+    lines: list[Sequence[str]] = [heading]
+    for row in rows:
+        ends = [cell for end in (row.first, row.last) for cell in _at_the_forward(end)]
+        lines.append((row.underlying, f"{row.spot:,.6g}", row.currency, *ends))
+    widths = [max(len(line[i]) for line in lines) for i in range(len(heading))]
+    out.print("first and last quoted date, with the forward and the volatility at the forward", markup=False)
+    for line in lines:
+        cells = [
+            cell.rjust(width) if name in ("spot", "forward", "volatility") else cell.ljust(width)
+            for cell, width, name in zip(line, widths, heading, strict=True)
+        ]
+        out.print("  ".join(cells).rstrip(), markup=False)
+
+
+def _at_the_forward(end: AtTheForward | None) -> tuple[str, str, str]:
+    return ("-", "-", "-") if end is None else (str(end.day), f"{end.forward:,.6g}", f"{100.0 * end.volatility:.2f} %")
 
 
 def _model_lines(outcome: Outcome, whole: Total) -> list[str]:
@@ -165,7 +206,7 @@ def _model_lines(outcome: Outcome, whole: Total) -> list[str]:
         lines.append(
             f"local volatility less lognormal: {difference} {currency}, standard error {error}, trades: {compared}"
         )
-    surfaces = outcome.market.surfaces
+    surfaces = smiles(outcome.market.surfaces)
     if surfaces:
         failing = sum(not surface.passes for surface in surfaces)
         reached = [reach(quote) for quote in all_quotes(surfaces) if quote.counts and quote.simulated is not None]

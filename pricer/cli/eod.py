@@ -8,7 +8,7 @@ from typing import Annotated
 
 import typer
 
-from pricer.cli.arguments import AcceptFailingSurfaces, BookPath, EveryProblem, MarketPath, ValuationDate
+from pricer.cli.arguments import AcceptFailingSurfaces, BookPath, EveryProblem, MarketPath, Strict, ValuationDate
 
 
 def eod(
@@ -64,6 +64,7 @@ def eod(
         int | None,
         typer.Option("--workers", min=1, help="Trades priced side by side. [default: all cores]", show_default=False),
     ] = None,
+    strict: Strict = False,
     quiet: Annotated[bool, typer.Option("--quiet", help="Print nothing but problems.")] = False,
     every_problem: EveryProblem = False,
 ) -> None:
@@ -87,7 +88,7 @@ def eod(
         raise typer.BadParameter(f"{target.parent} cannot be written. Name another folder.", param_hint="--out")
 
     from pricer.cli import console
-    from pricer.cli.inputs import read_inputs
+    from pricer.cli.inputs import read_inputs, strict_status
     from pricer.core.issues import InputError
     from pricer.report import default_folder, write_report
     from pricer.run.pricing import price
@@ -121,4 +122,4 @@ def eod(
     if not quiet:
         console.show_outcome(outcome)
         console.say(f"report: {written}")
-    raise typer.Exit(outcome.exit_status)
+    raise typer.Exit(strict_status(outcome.exit_status, outcome.issues) if strict else outcome.exit_status)

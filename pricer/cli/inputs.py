@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from datetime import date
 from pathlib import Path
 
@@ -31,6 +32,11 @@ def parse_model(text: str | None) -> Model | None:
     except ValueError:
         expected = " or ".join(f'"{model}"' for model in Model)
         raise typer.BadParameter(f"found {text!r}; expected {expected}.", param_hint="--model") from None
+
+
+def strict_status(status: int, issues: Sequence[Issue]) -> int:
+    """The exit status where any problem, be it only a warning, is one."""
+    return max(status, 1) if issues else status
 
 
 def read_inputs(book_path: Path, market_path: Path, valuation_date: date | None) -> tuple[Book, Market]:

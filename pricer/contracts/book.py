@@ -54,7 +54,8 @@ class Trade:
 class Refusal:
     """A trade that cannot be priced, and why.
 
-    What could be read of it stays readable, so that it is listed and counted, never lost.
+    What could be read of it stays readable, so that it is listed and counted, never lost. ``notional`` in the trade's
+    currency, where the market allows to tell it.
     """
 
     trade_id: str
@@ -63,6 +64,9 @@ class Refusal:
     currency: str = ""
     counterparty: str = ""
     strategy: str = ""
+    netting_set: str = ""
+    expiry_date: date | None = None
+    notional: float | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -87,6 +87,11 @@ class EuropeanOption:
         return float(Aggregate(self.aggregate.kind, weights)(levels))
 
     @property
+    def has_fixed_notional(self) -> bool:
+        """Whether the amount that one unit refers to is the same at all prices."""
+        return self.on_performance or self._is_cash_digital
+
+    @property
     def _is_cash_digital(self) -> bool:
         return self.profile.kind in (ProfileKind.CASH_DIGITAL_CALL, ProfileKind.CASH_DIGITAL_PUT)
 

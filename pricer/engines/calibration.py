@@ -24,7 +24,7 @@ from pricer.market.pure_smile import price_deviations, price_error
 
 @dataclass(frozen=True, slots=True)
 class Simulated:
-    """A number from paths and its standard error."""
+    """A number from paths and its standard error, with what time steps may leave."""
 
     value: float
     standard_error: float
@@ -54,8 +54,9 @@ def calibrate(checked: CheckedSurface, price: AffinePrice, dates: Sequence[date]
         group=f"{checked.underlying_id}/vanillas",
         seed=seed,
     )
+    errors_with_steps = [np.hypot(e, b) for e, b in zip(found.errors, found.step_biases, strict=True)]
     simulated: dict[tuple[date, float], Simulated] = {}
-    for day, time, values, errors in zip(dates, times, found.values, found.errors, strict=True):
+    for day, time, values, errors in zip(dates, times, found.values, errors_with_steps, strict=True):
         level, root = price.at(day), math.sqrt(time)
         k = np.array([quote.pure_log_strike for quote in quotes[day]])
         deviations = deviation_of_time_value(k, values)

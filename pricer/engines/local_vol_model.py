@@ -22,13 +22,11 @@ from pricer.engines.selector import headline
 from pricer.engines.surface_replication import surface_reference
 from pricer.engines.unit_terms import UnitTerms
 from pricer.market.calendars import year_fraction
+from pricer.market.fx import currencies_of
 from pricer.market.local_vol_surface import LocalVolSurface
 from pricer.market.market import Market
 
 Array = NDArray[np.float64]
-
-#: The scheme is of weak order 2: of what halving the steps changes, a third is left.
-_LEFT = 1.0 / 3.0
 
 #: Simulated forwards off by more than this and five standard errors are not those of the market.
 _DRIFT = 1e-4
@@ -36,16 +34,17 @@ _DRIFT = 1e-4
 
 def path_problem(trade: Trade, terms: UnitTerms, market: Market, *, smiled: bool) -> LocalVolProblem:
     """The trade as paths see it, with every underlying's smile or with lognormal levels."""
-    option, expiry = trade.contract, trade.contract.expiry_date
+    option = trade.contract
     names = option.underlyings
     currencies = [market.underlyings[name].currency for name in names]
-    abroad = sorted({currency for currency in currencies if currency != trade.currency})
-    factors = [*names, *(currency + trade.currency for currency in abroad)]
+    chains = [market.fx.log_factors(c, trade.currency) if c != trade.currency else {} for c in currencies]
+    pairs = sorted({pair for chain in chains for pair in chain})
+    factors = [*names, *pairs]
     times, variances = _variances(names, factors, market, trade)
     surfaces = (LocalVolSurface.from_implied(market.implied_surface(name), horizon=terms.years) for name in names)
     return LocalVolProblem(
         surfaces=tuple(surfaces) if smiled else (),
-        correlation=market.driver_correlation(factors, expiry),
+        correlation=market.driver_correlation(factors),
         scales=terms.law.forwards * np.exp(-terms.drifts),
         floors=terms.floors,
         variance_times=times,
@@ -54,7 +53,9 @@ def path_problem(trade: Trade, terms: UnitTerms, market: Market, *, smiled: bool
         aggregate=terms.aggregate,
         payoff=terms.payoff,
         discount_factor=terms.discount_factor,
-        rate_of=tuple(abroad.index(c) if c in abroad else None for c in currencies),
+        exposures=np.array([[chain.get(pair, 0.0) for pair in pairs] for chain in chains]).reshape(
+            len(names), len(pairs)
+        ),
         composite=terms.is_composite,
     )
 
@@ -79,10 +80,13 @@ def lognormal_value_by_paths(
 
 
 def _variances(names: tuple[str, ...], factors: list[str], market: Market, trade: Trade) -> tuple[Array, Array]:
-    """Common times from 0 to expiry (k + 1,), and the total variances of the lognormal model then (factors, k + 1)."""
+    """Common times from 0 to expiry (k + 1,), every one at which a volatility jumps, and total variances.
+
+    The latter are those of the lognormal model at these times, (factors, k + 1).
+    """
     expiry, today = trade.contract.expiry_date, market.valuation_date
     quoted = {day for name in names for day in market.pure_volatility(name).dates}
-    quoted |= {day for curve in market.fx.volatilities.values() for day in curve.dates}
+    quoted |= {day for pair in factors[len(names) :] for day in market.fx.volatilities[currencies_of(pair)].dates}
     dates = [*sorted(day for day in quoted if day < expiry), expiry]
     times = np.array([0.0, *(year_fraction(today, day) for day in dates)])
     variances = np.zeros((len(factors), len(times)))
@@ -119,10 +123,9 @@ def _value(found: LocalVolSample, asked: Asked, known: tuple[Reference, ...], *,
 
 def _as_sample(found: LocalVolSample, vegas_of: Sample) -> Sample:
     """With the bias that the time steps leave in the error, and the lognormal model's vegas."""
-    bias = _LEFT * abs(found.step_difference)
     return Sample(
         value=found.value,
-        standard_error=math.hypot(found.standard_error, bias),
+        standard_error=math.hypot(found.standard_error, found.step_bias),
         log_deltas=found.log_deltas,
         log_delta_errors=found.log_delta_errors,
         log_gammas=None,

@@ -35,9 +35,9 @@ from pricer.engines.local_vol_sample import LocalVolSample, as_lognormal, withou
 from pricer.engines.monte_carlo import Sample, sample
 from pricer.engines.problem import EuropeanProblem
 from pricer.simulation.batch_means import batch_estimate
-from pricer.simulation.local_vol_estimates import KnownAnswer, LocalVolEstimates, local_vol_estimates, step_difference
+from pricer.simulation.local_vol_estimates import KnownAnswer, LocalVolEstimates, StepEvidence, local_vol_estimates
 
-__all__ = ["LocalVolProblem", "LocalVolSample", "LocalVolSettings", "prepare", "sample_local_vol"]
+__all__ = ["LocalVolProblem", "LocalVolSample", "LocalVolSettings", "sample_local_vol"]
 
 Array = NDArray[np.float64]
 
@@ -112,25 +112,27 @@ def _sample_paths(
     limit = 0.5 * tolerances.value
     points = sampling.initial_points
     while True:
-        step, step_error = (
-            df * x for x in step_difference(paths.fine.extend(points) / points, paths.coarse.extend(points) / points)
-        )
-        biased = (abs(step) - 2.0 * step_error) / 3.0 > limit
-        if biased and paths.can_be_cut:
+        found_steps = StepEvidence.of(*paths.halvings(points))
+        biased = df * found_steps.bias > limit
+        told = found_steps.least_bias > 0.0 if biased else df * found_steps.noise <= limit
+        if biased and told and paths.can_be_cut:
             paths.cut(paths.level + 1)
-        elif biased or 2.0 * step_error / 3.0 <= limit or points >= sampling.maximum_points:
+        elif told or points >= sampling.maximum_points:
             break
-        else:  # cannot tell yet
+        else:
             points *= 2
+    bias = df * found_steps.bias
 
     known = _lognormal(paths.control, group + "/lognormal", seed, tolerances.finer, settings)
     answer = _undiscounted(known, df)
     unsmoothed = not paths.plan.smooth and bool(problem.payoff.knots)
     no_deltas = unsmoothed and not problem.payoff.is_continuous
-    left = min(abs(step) / 3.0, limit)  # of the bias: error and bias together are to meet the tolerance
+    left = min(bias, limit)  # error and bias together are to meet the tolerance
     asked = float(np.sqrt(tolerances.value**2 - left**2))
     while True:
-        found = local_vol_estimates(paths.plan, paths.fine.extend(points) / points, points, answer)
+        means = paths.fine.extend(points) / points
+        means[:, :2] += found_steps.correction
+        found = local_vol_estimates(paths.plan, means, points, answer)
         error = df * found.value_error
         delta_error = 0.0 if no_deltas else df * float(np.max(found.log_delta_errors))
         delta_limit = max(tolerances.delta, tolerances.fraction * df * float(np.sum(np.abs(found.log_deltas))))
@@ -142,14 +144,14 @@ def _sample_paths(
     notes = ["precision reached" if precise else _miss(error, asked, delta_error, delta_limit)]
     if biased:
         steps = f"{paths.grid.n_steps} time steps" if not problem.is_lognormal else "the last time step's length"
-        notes.append(f"{steps} leave{'s' if problem.is_lognormal else ''} a bias of about {abs(step) / 3.0:.2g} "
+        notes.append(f"{steps} leave{'s' if problem.is_lognormal else ''} a bias of about {bias:.2g} "
                      f"against {limit:.2g}")  # fmt: skip
     n_paths = sampling.randomisations * points
     if found.few_decide:
         notes.append(f"few of {n_paths} paths came past a kink: errors include what all may have missed")
     means = found.means
     if not problem.composite:
-        means = np.where([rate is None for rate in problem.rates], means, np.nan)
+        means = np.where(problem.is_converted, np.nan, means)
     drifted = np.abs(means - 1.0) > 5.0 * found.mean_errors + _FORWARD
     if np.any(drifted):
         worst = int(np.nanargmax(np.abs(means - 1.0) * drifted))
@@ -168,8 +170,9 @@ def _sample_paths(
         model_difference_error=0.0,
         lognormal=known,
         steps=paths.grid.n_steps,
-        step_difference=step,
-        step_difference_error=step_error,
+        step_difference=df * found_steps.difference,
+        step_difference_error=df * found_steps.difference_error,
+        step_bias=bias,
         martingale_means=means,
         martingale_mean_errors=found.mean_errors,
         paths=n_paths,
@@ -218,7 +221,7 @@ def _vegas(paths: PathSamplers, known: Sample, log_deltas: Array) -> tuple[Array
     if paths.converts or not np.all(np.isfinite(log_deltas)):
         return vegas, errors
     covariance = problem.covariance
-    for asset, rate in enumerate(problem.rates):
+    for asset, exposures in enumerate(problem.rate_exposures):
         deviation = np.sqrt(covariance[asset, asset])
         if deviation == 0.0:
             continue
@@ -228,7 +231,7 @@ def _vegas(paths: PathSamplers, known: Sample, log_deltas: Array) -> tuple[Array
         )
         moves = problem.discount_factor * (up - down) / (2.0 * _BUMP * deviation)
         (move,), (move_error,) = batch_estimate(moves[:, [0]] - moves[:, [1]])
-        drift = 0.0 if rate is None else covariance[asset, n + rate] / deviation
+        drift = covariance[asset, n:] @ exposures / deviation
         of_control = known.deviation_vegas[asset] - drift * known.log_deltas[asset]
         vegas[asset] = shares[asset] * of_control + move + drift * log_deltas[asset]
         errors[asset] = np.hypot(shares[asset] * known.deviation_vega_errors[asset], move_error)

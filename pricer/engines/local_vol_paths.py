@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field, replace
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
 from pricer.core.randomness import Purpose, stream
 from pricer.engines.local_vol_problem import FlatVolatility, LocalVolProblem
@@ -25,18 +25,36 @@ ENDING = 0.25
 #: The last step of lognormal levels above known amounts, as part of the whole time, to begin with.
 _LOGNORMAL_ENDING = 1.0 / 32.0
 
+#: How often that may be halved.
+_LOGNORMAL_CUTS = 4
+
+#: Steps are joined in pairs this often: two successive halvings tell whether they fall as the scheme's order says.
+HALVINGS = 2
+
+
+def grid_of(dates: ArrayLike, kinks: ArrayLike, *, steps: int, level: int, every: bool = False) -> TimeGrid:
+    """The grid number ``level`` of trades and of repriced vanillas; each cuts every step of the one before in two.
+
+    Every kink ends a step: local volatility jumps in time at quoted expiries. The first grid has about ``steps``
+    steps and four at least between kinks. Measured on such grids, between two and sixteen steps an interval:
+    weak order 1.4 to 2 on smooth surfaces, 1 where local volatility is clipped and so has corners in the level, too.
+    """
+    cuts = HALVINGS + level
+    finer = 2**level
+    return TimeGrid.of(dates, steps=steps * finer, kinks=kinks, least=2**cuts, cuts=cuts, ending=ENDING, every=every)
+
 
 @dataclass(frozen=True, slots=True)
 class LocalVolSettings:
     """How much is drawn, and how finely time is cut.
 
-    Steps are doubled from ``initial_steps`` until the bias that halving them reveals is within half
-    the value's tolerance, or ``maximum_steps`` are reached.
+    Steps are doubled from some ``initial_steps``, four at least between quoted expiries, until the bias that halving
+    them reveals is within half the value's tolerance, or doubling would exceed ``maximum_steps``.
     """
 
     sampling: SamplingSettings = field(default_factory=SamplingSettings)
     initial_steps: int = 8  # even
-    maximum_steps: int = 64
+    maximum_steps: int = 512
 
     def __post_init__(self) -> None:
         if self.initial_steps < 4 or self.initial_steps % 2:
@@ -62,7 +80,7 @@ class PathSamplers:
         sampling, n = settings.sampling, problem.n_assets
         self.problem, self.group, self.seed, self.settings = problem, group, seed, settings
         self.shares = problem.scales / problem.forwards
-        self.converts = converted = problem.composite and any(rate is not None for rate in problem.rates)
+        self.converts = converted = problem.composite and bool(np.any(problem.is_converted))
         rows = len(problem.variances) if converted else n
         covariance = self._of_levels(problem.covariance)
         triangular = sampling.ordering == "cholesky" or (
@@ -77,7 +95,7 @@ class PathSamplers:
             problem.correlation[:rows, :rows],
             problem.forwards,
             self.shares,
-            [-1 if rate is None or not converted else rate for rate in problem.rates],
+            problem.rate_exposures[:, : rows - n],
             np.sqrt(np.diag(covariance))[n:rows],
             problem.aggregate,
             problem.payoff,
@@ -98,37 +116,46 @@ class PathSamplers:
 
         problem, plan = self.problem, self.plan
         if problem.is_lognormal:
-            grid = TimeGrid.with_ending(problem.years, _LOGNORMAL_ENDING * 0.5**level * problem.years)
-            coarse = grid.without_last_cut()
+            ending = _LOGNORMAL_ENDING * 0.5**level * problem.years
+            grids = [TimeGrid.with_ending(problem.years, ending, cuts=HALVINGS)]
+            for _ in range(HALVINGS):
+                grids.append(grids[-1].without_last_cut())
         else:
-            grid = TimeGrid.of(problem.years, steps=self.settings.initial_steps * 2**level, ending=ENDING)
-            coarse = grid.halved()
-        self.level, self.grid = level, grid
-        of_grid, of_coarse = (
-            LognormalSteps.of(
-                on,
-                problem.variance_times,
-                problem.variances,
-                problem.correlation,
-                problem.rates,
-                composite=problem.composite,
-            )
-            for on in (grid, coarse)
-        )
-        order, shares = plan.design.order, plan.shares
+            kinks = problem.variance_times
+            grids = [grid_of(problem.years, kinks, steps=self.settings.initial_steps, level=level)]
+            for _ in range(HALVINGS):
+                grids.append(grids[-1].halved())
+        self.level, self.grid = level, grids[0]
         noise = PathNoise(
-            grid,
+            self.grid,
             plan.loadings,
             plan.sizes,
             stream(self.seed, self.group, Purpose.PRICE, 0),
             self.settings.sampling.randomisations,
         )
-        self.fine = LocalVolSampler(plan, grid, of_grid.ordered(order, shares), noise)
-        self.coarse = LocalVolSampler(plan, coarse, of_coarse.ordered(order, shares), noise, with_ratios=False)
+        samplers = []
+        for grid in grids:
+            steps = LognormalSteps.of(
+                grid,
+                problem.variance_times,
+                problem.variances,
+                problem.correlation,
+                problem.rate_exposures,
+                composite=problem.composite,
+            ).ordered(plan.design.order, plan.shares)
+            samplers.append(LocalVolSampler(plan, grid, steps, noise, with_ratios=grid is self.grid))
+        self.fine, self.coarse, self.coarsest = samplers
 
     @property
     def can_be_cut(self) -> bool:
-        return bool(self.settings.initial_steps * 2 ** (self.level + 1) <= self.settings.maximum_steps)
+        if self.problem.is_lognormal:
+            return self.level < _LOGNORMAL_CUTS
+        return 2 * self.grid.n_steps <= self.settings.maximum_steps
+
+    def halvings(self, points: int) -> tuple[Array, Array, Array]:
+        """Means of each randomisation's sums over ``points`` on all steps, on half as many, and on a quarter."""
+        fine, coarse, coarsest = (s.extend(points) / points for s in (self.fine, self.coarse, self.coarsest))
+        return fine, coarse, coarsest
 
     def with_lognormal_deviation(self, asset: int, factor: float) -> PathSamplers:
         """The same draws, grid and layout, one asset's lognormal deviation times ``factor`` at all times."""

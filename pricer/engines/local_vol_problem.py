@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from pricer.contracts.aggregate import Aggregate, AggregateKind
 from pricer.contracts.profile import PiecewiseLinear
 from pricer.engines.problem import EuropeanProblem
-from pricer.market.currency_conversion import composite, quanto, with_rates
+from pricer.market.currency_conversion import composite, quanto
 from pricer.market.joint_lognormal import JointLognormal
 from pricer.simulation.local_vol_tables import LocalVolatility
 
@@ -22,19 +22,20 @@ class LocalVolProblem:
     """Value of ``discount_factor * E[payoff(aggregate(levels))]`` per unit at ``years``.
 
     Level i is ``scales[i] X_i + floors[i]``: X_i a martingale from 1 in its own currency, the floor known
-    cash dividends. Three ways of paying it:
+    cash dividends. Its exchange rate Q (payment currency per unit of the level's) is a product of m factors F with
+    constantly correlated Brownian motions, pairs that have a volatility: ``ln Q = exposures[i] @ ln F``. Three ways of
+    paying it:
 
-    - in its own currency: ``rate_of[i]`` is None;
-    - quanto: ``rate_of[i]`` names the exchange rate Q (payment currency per unit of the level's); the number
-      is paid as it stands, X_i has the drift that the payment currency's measure gives it;
+    - in its own currency: ``exposures[i]`` are 0;
+    - quanto: the number is paid as it stands, X_i has the drift that the payment currency's measure gives it;
     - composite: the level is ``(scales[i] X_i + floors[i]) Y`` with Y the rate's own martingale from 1 under the
       payment currency's measure; scales and floors are in the payment currency at the rate's forward.
 
     ``surfaces`` : (n,) local volatility of each X; empty for lognormal X of the variances below.
     ``scales`` : (n,) > 0 and ``floors`` : (n,) >= 0 in units of the reference level.
-    ``correlation`` : (n + m, n + m) of the Brownian motions of the assets and of m exchange rates after them.
+    ``correlation`` : (n + m, n + m) of the Brownian motions of the assets and of the factors after them.
     ``variance_times`` : (k + 1,) years from 0 to ``years`` or beyond, ``variances`` : (n + m, k + 1) total
-    variances of the lognormal model's ln X and ln Q at these times, not decreasing, linear in between. For the
+    variances of the lognormal model's ln X and ln F at these times, not decreasing, linear in between. For the
     assets they define the model that local volatility is compared with and make the control variate: take those of
     the surfaces at the forward, which bend in time where the surfaces do.
     """
@@ -49,7 +50,7 @@ class LocalVolProblem:
     aggregate: Aggregate
     payoff: PiecewiseLinear
     discount_factor: float
-    rate_of: tuple[int | None, ...] = ()
+    exposures: Array | None = None  # (n, m) of -1, 0 and 1; None: all are paid in their own currency
     composite: bool = False
 
     def __post_init__(self) -> None:
@@ -61,10 +62,10 @@ class LocalVolProblem:
             raise ValueError(f"scales, floors, variances, correlation of shapes {shapes} do not fit {times} times")
         if self.aggregate.cash is not None:
             raise ValueError("fold the cash level into the payoff first")
-        if self.rate_of and len(self.rate_of) != n:
-            raise ValueError(f"{len(self.rate_of)} places of exchange rates do not fit {n} assets")
-        if any(rate is not None and not 0 <= rate < rows - n for rate in self.rate_of):
-            raise ValueError(f"exchange rates {self.rate_of} do not fit the {rows - n} rows after the assets")
+        if self.exposures is not None and self.exposures.shape != (n, rows - n):
+            raise ValueError(
+                f"exposures of shape {self.exposures.shape} do not fit {n} assets and {rows - n} rows after them"
+            )
         if not (np.all(self.scales > 0.0) and np.all(self.floors >= 0.0)):
             raise ValueError("scales must be above 0, floors at least 0")
         if not (np.isfinite(self.years) and self.years > 0.0):
@@ -81,9 +82,16 @@ class LocalVolProblem:
         return len(self.scales)
 
     @property
-    def rates(self) -> tuple[int | None, ...]:
-        """The exchange rate of each asset, None for none, (n,)."""
-        return self.rate_of or (None,) * self.n_assets
+    def rate_exposures(self) -> Array:
+        """Of the logarithm of each asset's exchange rate to those of the factors, (n, m)."""
+        if self.exposures is None:
+            return np.zeros((self.n_assets, len(self.variances) - self.n_assets))
+        return self.exposures
+
+    @property
+    def is_converted(self) -> NDArray[np.bool_]:
+        """Which assets are in another currency than the payment's, (n,)."""
+        return np.asarray(np.any(self.rate_exposures != 0.0, axis=1))
 
     @property
     def is_lognormal(self) -> bool:
@@ -102,7 +110,7 @@ class LocalVolProblem:
     def with_floors_in_payoff(self) -> LocalVolProblem:
         """Known amounts taken out of a weighted sum; the problem itself where that cannot be done."""
         summed = self.aggregate.kind is AggregateKind.WEIGHTED_SUM
-        if not (summed and self.has_floors) or (self.composite and any(rate is not None for rate in self.rates)):
+        if not (summed and self.has_floors) or (self.composite and np.any(self.is_converted)):
             return self
         known = float(np.array(self.aggregate.weights) @ self.floors)
         payoff = self.payoff.of_shifted_argument(known)
@@ -110,7 +118,7 @@ class LocalVolProblem:
 
     @property
     def covariance(self) -> Array:
-        """Of the lognormal model's ln X and ln Q over the whole time, exact, (n + m, n + m)."""
+        """Of the lognormal model's ln X and ln F over the whole time, exact, (n + m, n + m)."""
         times = np.unique(np.append(self.variance_times[self.variance_times < self.years], self.years))
         total = np.stack([np.interp(times, self.variance_times, row) for row in self.variances])
         rises = np.sqrt(np.diff(total, axis=1))
@@ -118,14 +126,16 @@ class LocalVolProblem:
         return out
 
     def law_of(self, covariance: Array) -> JointLognormal:
-        """Lognormal levels of these forwards under the payment currency's measure; ``covariance`` of ln X and ln Q.
+        """Lognormal levels of these forwards under the payment currency's measure; ``covariance`` of ln X and ln F.
 
         Where there are floors, levels as a whole are taken for lognormal.
         """
         n, forwards = self.n_assets, self.forwards
-        if all(rate is None for rate in self.rates):
+        if not np.any(self.is_converted):
             return JointLognormal(forwards, covariance[:n, :n])
-        both = with_rates(covariance, self.rates)
+        exposures = self.rate_exposures
+        loadings = np.block([[np.eye(n), np.zeros(exposures.shape)], [np.zeros((n, n)), exposures]])
+        both = loadings @ covariance @ loadings.T
         return composite(forwards, np.ones(n), both) if self.composite else quanto(forwards, both)
 
     @property

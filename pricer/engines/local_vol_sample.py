@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -20,8 +21,9 @@ class LocalVolSample:
     dividends per logarithm of spot; with them, times spot over spot less the dividends' present value.
     ``level_deltas`` : (n,) ``dV / d ln level`` at expiry, the level moving in proportion with its smile: summed
     over composite assets of one exchange rate, the sensitivity to the logarithm of that rate.
-    ``step_difference`` : value on these steps less that on half as many, on common draws; the scheme
-    being of weak order 2, about three times the bias left. ``lognormal`` : the lognormal model's sample, with its vegas
+    ``value`` is extrapolated to ever finer steps; ``step_difference`` : value on these steps less that on half as many,
+    on common draws; ``step_bias`` : what to allow the value for its steps, as a standard error that is
+    not in ``standard_error``. ``lognormal`` : the lognormal model's sample, with its vegas
     to the deviations of the levels' logarithms (of ln X where levels above known amounts had to be sampled as paths).
     ``model_difference`` : this value less the lognormal one. ``martingale_means`` : (n,) of X (times its rate, if
     composite) before the last step, 1 but for sampling; NaN for a quanto. ``steps`` is 0 where no path was needed.
@@ -40,6 +42,7 @@ class LocalVolSample:
     steps: int
     step_difference: float
     step_difference_error: float
+    step_bias: float
     martingale_means: Array
     martingale_mean_errors: Array
     paths: int
@@ -65,6 +68,7 @@ def without_paths(known: Sample) -> LocalVolSample:
         steps=0,
         step_difference=0.0,
         step_difference_error=0.0,
+        step_bias=0.0,
         martingale_means=np.ones(n),
         martingale_mean_errors=np.zeros(n),
         paths=known.paths,
@@ -79,7 +83,7 @@ def as_lognormal(result: LocalVolSample, vegas: Array, vega_errors: Array) -> Sa
     """Levels above known amounts, sampled as paths, as an answer of the lognormal engine."""
     return Sample(
         value=result.value,
-        standard_error=result.standard_error,
+        standard_error=math.hypot(result.standard_error, result.step_bias),
         log_deltas=result.log_deltas,
         log_delta_errors=result.log_delta_errors,
         log_gammas=None,

@@ -2,7 +2,7 @@
 
 What a surface is worth shows in the options that it was made from: they are priced here on the paths of
 trades (the same tables, scheme and kind of points), all expiries in one run. The lognormal option on
-the same noise is the control variate; the steps are halved until that moves no volatility that matters.
+the same noise is the control variate; the steps are halved until they leave no more than what matters of a volatility.
 """
 
 from __future__ import annotations
@@ -15,24 +15,23 @@ from numpy.typing import NDArray
 from scipy.special import ndtr
 
 from pricer.core.randomness import Purpose, stream
-from pricer.engines.local_vol_paths import ENDING
+from pricer.engines.local_vol_paths import grid_of
 from pricer.market.black import out_of_the_money, vega
 from pricer.simulation.batch_means import batch_estimate_with
+from pricer.simulation.local_vol_estimates import EXTRAPOLATION, step_bias
 from pricer.simulation.local_vol_tables import LocalVolatility
 from pricer.simulation.path_noise import PathNoise
-from pricer.simulation.time_grid import TimeGrid
 
 Array = NDArray[np.float64]
 
-#: Steps to the last expiry and least steps to each to begin with, the latter as for a trade; and how often both
-#: may be doubled.
-_STEPS, _LEAST_STEPS, _DOUBLINGS = 32, 8, 3
+#: Steps to the last expiry to begin with, dealt out as for a trade; and how often they may be doubled.
+_STEPS, _DOUBLINGS = 32, 3
 
 #: Points per randomisation that tell how much steps matter: the difference is on common draws.
-_POINTS_FOR_STEPS = 1024
+_POINTS_FOR_STEPS = 8192
 
-#: A halving of steps that moves a volatility by less than this (0.03 vol points) leaves about a third of it.
-_STEP_TOLERANCE = 3e-4
+#: Steps are doubled until they leave less than this of a volatility (0.005 vol points).
+_STEP_TOLERANCE = 5e-5
 
 #: Deltas between which that is asked, of the option that is out of the money.
 _WINGS = 0.1
@@ -44,15 +43,15 @@ _ROUNDING = 2.0**-22  # of levels in single precision
 class VanillaSample:
     """Undiscounted options on X (forward 1) by expiry, out of the money: puts for log-strikes below 0, else calls.
 
-    ``values``, ``errors``, ``step_differences`` : one array (n_strikes,) per expiry. ``errors`` are standard
-    errors of ``degrees_of_freedom``; ``step_differences`` are values on these steps less those on half as many, about
-    three times the bias left. ``means``, ``mean_errors`` : (n_expiries,) of X itself, 1 but for sampling.
-    ``reached`` : do steps no longer matter between 10 and 90 delta?
+    ``values``, ``errors``, ``step_biases`` : one array (n_strikes,) per expiry. ``errors`` are standard errors of
+    ``degrees_of_freedom``; values are extrapolated like a trade's, and ``step_biases`` is what to allow them for
+    their steps, likewise as standard errors. ``means``, ``mean_errors`` : (n_expiries,) of X itself, 1 but for
+    sampling. ``reached`` : do steps no longer matter between 10 and 90 delta?
     """
 
     values: tuple[Array, ...]
     errors: tuple[Array, ...]
-    step_differences: tuple[Array, ...]
+    step_biases: tuple[Array, ...]
     means: Array
     mean_errors: Array
     steps: int
@@ -88,23 +87,35 @@ def reprice(
     known = np.concatenate([np.ones((len(table), 1)), out_of_the_money(table, np.sqrt(variances)[:, None])], axis=1)
     weights = _weights(table, np.sqrt(variances)[:, None], np.sqrt(np.asarray(expiries, dtype=float))[:, None])
     one = np.ones((1, 1))
-    for doublings in range(_DOUBLINGS + 1):
-        finer = 2**doublings
-        grid = TimeGrid.of(expiries, steps=_STEPS * finer, least=_LEAST_STEPS * finer, ending=ENDING, every=True)
+    for level in range(_DOUBLINGS + 1):
+        grid = grid_of(expiries, (), steps=_STEPS, level=level, every=True)
         draws = stream(seed, group, Purpose.PRICE, 0)
         noise = PathNoise(grid, one, one[0], draws, randomisations, every_date=True)
         few = min(points, _POINTS_FOR_STEPS)
-        fine, coarse = (vanilla_means(surface, on, noise, table, variances, few) for on in (grid, grid.halved()))
-        halving, noise_of_it = (x[:, 1:] for x in _estimate(fine[:, :, 0] - coarse[:, :, 0], fine - coarse, 0.0))
-        reached = bool(np.all(np.abs(halving) - 2.0 * noise_of_it <= _STEP_TOLERANCE * weights))
+        fine, coarse, coarsest = (
+            vanilla_means(surface, on, noise, table, variances, few)
+            for on in (grid, grid.halved(), grid.halved().halved())
+        )
+        last = fine - coarse
+        moved = last + EXTRAPOLATION * (last - (coarse - coarsest))
+        halving, halving_noise = (x[:, 1:] for x in _estimate(last[:, :, 0], last, 0.0))
+        disagreement, noise_of_it = (x[:, 1:] for x in _estimate(moved[:, :, 0], moved, 0.0))
+        sure = step_bias(
+            np.maximum(np.abs(halving) - 2.0 * halving_noise, 0.0),
+            np.maximum(np.abs(disagreement) - 2.0 * noise_of_it, 0.0),
+        )
+        reached = bool(np.all(sure <= _STEP_TOLERANCE * weights))
         if reached:
             break
     sums = vanilla_means(surface, grid, noise, table, variances, points)
-    value, error = _estimate(sums[:, :, 0], sums, known)
+    extrapolated = sums[:, :, 0].copy()
+    extrapolated[:, :, 1:] += EXTRAPOLATION * last[:, :, 0, 1:]
+    value, error = _estimate(extrapolated, sums, known)
+    biases = step_bias(halving, disagreement)
     return VanillaSample(
         values=tuple(v[1 : 1 + len(k)] for v, k in zip(value, strikes, strict=True)),
         errors=tuple(e[1 : 1 + len(k)] for e, k in zip(error, strikes, strict=True)),
-        step_differences=tuple(h[: len(k)] for h, k in zip(halving, strikes, strict=True)),
+        step_biases=tuple(b[: len(k)] for b, k in zip(biases, strikes, strict=True)),
         means=value[:, 0],
         mean_errors=error[:, 0],
         steps=grid.n_steps,
@@ -136,7 +147,7 @@ def _estimate(means: Array, sums: Array, known: Array | float) -> tuple[Array, A
     of_x[:, :, 0] = 0.0  # X is no control of its own mean
     controls = np.stack([of_lognormal, of_x], axis=-1)
     controls = controls / np.maximum(np.abs(controls).max(axis=0), 1e-300)
-    value, error = batch_estimate_with(means.reshape(n, -1), controls.reshape(n, -1, 2))
+    value, error = batch_estimate_with(means.reshape(n, -1), controls.reshape(n, -1, controls.shape[-1]))
     return value.reshape(shape), np.hypot(error, _ROUNDING).reshape(shape)
 
 

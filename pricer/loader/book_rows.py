@@ -255,7 +255,7 @@ class EuropeanOptionRow(TradeRow):
     def check_payoff_is_decimal(cls, payoff: float | None, info: ValidationInfo) -> float | None:
         limit = HIGHEST_PAYOFFS[info.field_name or ""]
         if payoff is not None and payoff > limit and info.data.get("underlying_level") == PERFORMANCE:
-            raise as_percentage_points(payoff, f"a decimal payoff (0.08 = 8 %) of at most {limit:g}")
+            raise as_percentage_points(payoff, f"a decimal payoff (0.08 = 8 %) of at most {limit:g}", limit)
         return payoff
 
     @field_validator("cash_level")

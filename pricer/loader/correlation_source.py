@@ -2,22 +2,25 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field, replace
 from datetime import date
 
 from pricer.core.issues import Issue
 from pricer.loader.correlations import CorrelationTable, inverted, read_correlations
-from pricer.loader.findings import Findings
+from pricer.loader.findings import Findings, as_warnings
 from pricer.loader.history_correlations import correlations_of
 from pricer.loader.price_history import PriceHistory, read_price_history
 from pricer.loader.sheets import Sheet
 from pricer.loader.table import Table
 from pricer.loader.underlying_rows import PriceHistoryRow
+from pricer.market.calendars import CURRENCY_CALENDARS
 from pricer.market.correlation import CorrelationMatrix, Repair, checked
+from pricer.market.correlation_completion import completed
 from pricer.market.correlation_estimate import CorrelationEstimate
-from pricer.market.fx import FxRates
+from pricer.market.fx import FxRates, currencies_of
 from pricer.market.market import CORRELATIONS
+from pricer.market.underlying import Underlying
 
 
 @dataclass(frozen=True, slots=True)
@@ -28,34 +31,52 @@ class Correlations:
     repair: Repair | None = None
     source: CorrelationTable | PriceHistory | None = None
     estimate: CorrelationEstimate | None = None
+    last_levels: Mapping[str, tuple[date, float]] = field(default_factory=dict)
 
 
 def read_correlation_source(
-    source: Sheet | Table[PriceHistoryRow] | None,
+    matrix: Sheet | None,
+    past: Table[PriceHistoryRow] | None,
+    estimated: bool,
     known: Sequence[str],
-    usable: Sequence[str],
+    underlyings: Mapping[str, Underlying],
     fx: FxRates,
     valuation_date: date,
     half_life: float,
     findings: Findings,
 ) -> Correlations:
-    """Correlations of underlyings and currency pairs.
+    """Correlations of underlyings and currency pairs, from the ``matrix``, or ``estimated`` from the ``past``.
 
-    ``known`` are all listed underlyings, ``usable`` those that are left. Pairs may stand either
-    way round if the market has a rate or a volatility of them.
+    ``known`` are all listed underlyings, ``underlyings`` those that are left. Pairs may stand either
+    way round if the market has a rate or a volatility of them. If nothing is estimated from the past, it gives its
+    last levels only, and its faults, which cost nothing then, are warnings.
     """
-    if source is None:
-        return Correlations()
     pairs = [first + second for first, second in {**fx.quotes, **fx.volatilities}]
     names = [*known, *pairs, *map(inverted, pairs)]
-    if isinstance(source, Sheet):
-        return _from_table(source, names, findings)
-    history = read_price_history(source, names, valuation_date, findings)
-    wanted = [*usable, *(first + second for first, second in fx.volatilities)]
-    found = correlations_of(history, wanted, valuation_date, half_life, findings)
+    beside = Findings()
+    history = None if past is None else read_price_history(past, names, valuation_date, beside)
+    findings.add(beside.issues if estimated else as_warnings(beside.issues))
+    last = {} if history is None else history.last_levels(valuation_date)
+    if not estimated:
+        return replace(Correlations() if matrix is None else _from_table(matrix, names, findings), last_levels=last)
+    if history is None:
+        return Correlations()
+    wanted = [*underlyings, *(first + second for first, second in fx.volatilities)]
+    calendars = _calendars(underlyings, [*pairs, *map(inverted, pairs)])
+    found = correlations_of(history, wanted, valuation_date, half_life, calendars, findings)
     if found is None:
-        return Correlations(source=history)
-    return Correlations(found.matrix, found.repair, history, found)
+        return Correlations(source=history, last_levels=last)
+    return Correlations(found.matrix, found.repair, history, found, last)
+
+
+def _calendars(underlyings: Mapping[str, Underlying], pairs: Sequence[str]) -> dict[str, str]:
+    """The calendars on which ids have levels; a rate has them where both currencies settle."""
+    own = {name: underlying.calendar for name, underlying in underlyings.items()}
+    for pair in pairs:
+        settled = [CURRENCY_CALENDARS[currency] for currency in currencies_of(pair) if currency in CURRENCY_CALENDARS]
+        if settled:
+            own[pair] = "+".join(settled)
+    return own
 
 
 def _from_table(sheet: Sheet, known: Sequence[str], findings: Findings) -> Correlations:
@@ -73,8 +94,10 @@ def _from_table(sheet: Sheet, known: Sequence[str], findings: Findings) -> Corre
     if not table.ids:
         findings.charge(CORRELATIONS, table.issues)
         return Correlations(source=table)
+    for (a, b), issues in table.unknown.items():
+        findings.charge(f"{CORRELATIONS}:{a}:{b}", issues)
     try:
-        return Correlations(*checked(table.ids, table.matrix), table)
+        return Correlations(*checked(table.ids, completed(table.matrix)), table)
     except ValueError as error:
         findings.reject(CORRELATIONS, [_contradiction(table, error)])
         return Correlations(source=table)

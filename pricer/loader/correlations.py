@@ -18,6 +18,7 @@ from pricer.loader.sheets import Cell, Sheet, is_blank, letters
 from pricer.loader.text import nearest, quoted
 
 _CORRELATION = Number(at_least=-1.0, at_most=1.0, percent=True, decimal_limit=2.0)
+_ENTER = "Enter the correlation as a decimal in either, e.g. 0.45."
 _REMEDY = "Enter a correlation as a decimal, e.g. 0.45, or clear one cell of a mirrored pair."
 #: Mirrored entries that differ by rounding are averaged, those that differ by a little more are told too.
 ROUNDING, SLIGHT = 1e-8, 1e-4
@@ -25,9 +26,10 @@ ROUNDING, SLIGHT = 1e-8, 1e-4
 
 @dataclass(frozen=True, slots=True)
 class CorrelationTable:
-    """The matrix (n, n) of the ids that could be read completely, and everything found on the way.
+    """The matrix (n, n), NaN where a pair has no usable number, and everything found on the way.
 
-    ``refused`` says of the ids that were left out which issues cost them their correlations.
+    ``refused`` says of the ids that were left out which issues cost them their correlations, ``unknown`` the same
+    of the pairs without a number, both being ids of the matrix.
     """
 
     ids: tuple[str, ...]
@@ -37,6 +39,7 @@ class CorrelationTable:
     rows: dict[str, int]
     columns: dict[str, int]
     refused: dict[str, tuple[Issue, ...]]
+    unknown: dict[tuple[str, str], tuple[Issue, ...]]
 
     def place(self, first: str, second: str) -> Place | None:
         """The cell of a pair."""
@@ -49,8 +52,9 @@ class CorrelationTable:
 def read_correlations(sheet: Sheet, known: Collection[str]) -> CorrelationTable:
     """Read the matrix.
 
-    Of a mirrored pair one cell may be blank, and so may the diagonal. An underlying whose
-    cells cannot all be read is left out and told; one that is not ``known`` is left out too.
+    Of a mirrored pair one cell may be blank, and so may the diagonal. A pair whose cells give
+    no number is told and unknown. An id that is given twice, or without a single usable pair, is
+    left out and told; one that is not ``known`` is left out too.
     """
     return _Matrix(sheet).read(known)
 
@@ -78,12 +82,18 @@ class _Matrix:
         for i, a in enumerate(ids):
             for j, b in enumerate(ids[:i]):
                 matrix[i, j] = matrix[j, i] = self._pair(a, b, values[a, b], values[b, a])
-        kept = self._complete(ids)
+        kept = self._connected(ids)
         index = [ids.index(name) for name in kept]
         refused: dict[str, tuple[Issue, ...]] = {}
+        unknown: dict[tuple[str, str], tuple[Issue, ...]] = {}
         for a, b, issue in self._spoilt:
             for name in {a, b}.difference(kept):
                 refused[name] = (*refused.get(name, ()), issue)
+            if {a, b} <= set(kept):
+                i, j = kept.index(a), kept.index(b)
+                pair = (a, b) if (b, a) not in unknown else (b, a)
+                unknown[pair] = (*unknown.get(pair, ()), issue)
+                matrix[index[i], index[j]] = matrix[index[j], index[i]] = np.nan
         return CorrelationTable(
             ids=tuple(kept),
             matrix=matrix[np.ix_(index, index)],
@@ -92,6 +102,7 @@ class _Matrix:
             rows=self._rows,
             columns=self._columns,
             refused=refused,
+            unknown=unknown,
         )
 
     def _read_names(self) -> None:
@@ -168,7 +179,7 @@ class _Matrix:
         here = self._rows[a], self._columns[b]
         if not given:
             found, expected = "a blank cell, and so is its mirror image", "the correlation in at least one of the two"
-            self._spoil(a, b, self._tell(*here, Fault("blank-cell", found, expected, _REMEDY)))
+            self._spoil(a, b, self._tell(*here, Fault("blank-cell", found, expected, _ENTER)))
             return float("nan")
         difference = abs(given[0] - given[-1])
         if difference > ROUNDING:
@@ -183,13 +194,18 @@ class _Matrix:
                 self._tell(*here, note, Severity.WARNING)
         return 0.5 * (given[0] + given[-1])
 
-    def _complete(self, ids: list[str]) -> list[str]:
-        """The ids that are left when those with spoilt pairs are taken out, the most spoilt first."""
-        kept = list(ids)
-        while spoilt := [(a, b) for a, b, _ in self._spoilt if {a, b} <= set(kept)]:
-            counts = Counter(name for pair in spoilt for name in set(pair))
+    def _connected(self, ids: list[str]) -> list[str]:
+        """The ids that are left without those spoilt by themselves, or in all their pairs; the most spoilt go first."""
+        alone = {a for a, b, _ in self._spoilt if a == b}
+        kept = [name for name in ids if name not in alone]
+        while len(kept) > 1:
+            spoilt = dict.fromkeys((a, b) for a, b, _ in self._spoilt if {a, b} <= set(kept))
+            counts = Counter(name for pair in {frozenset(pair) for pair in spoilt} for name in pair)
             # Of equally spoilt ones, that of the row: a bad row costs its own underlying.
-            kept.remove(max([*(row for row, _ in spoilt), *counts], key=counts.__getitem__))
+            lost = [name for name in [*(row for row, _ in spoilt), *counts] if counts[name] == len(kept) - 1]
+            if not lost:
+                break
+            kept.remove(lost[0])
         return kept
 
     def _spoil(self, a: str, b: str, issue: Issue) -> None:

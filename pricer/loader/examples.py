@@ -24,8 +24,8 @@ EXAMPLE_BOOK: Tables = {
             "trade_date": date(2026, 3, 2),
             "premium": 410_000.0,
             "premium_date": date(2026, 3, 4),
-            "counterparty": "Ostrevane Trust",
-            "netting_set": "OST-1",
+            "counterparty": "Guldmar Bank",
+            "netting_set": "GUL-1",
             "strategy": "basket hedges",
         },
         {

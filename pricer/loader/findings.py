@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections import defaultdict
 from collections.abc import Iterable, Sequence
+from dataclasses import replace
 from typing import TypeVar
 
 from pricer.core.issues import Issue, Severity
@@ -11,7 +12,7 @@ from pricer.loader.belonging import belongings
 from pricer.loader.columns import TableRow
 from pricer.loader.faults import Fault
 from pricer.loader.table import UNREAD, Row, Table
-from pricer.loader.text import quoted
+from pricer.loader.text import misspelt, quoted
 
 R = TypeVar("R", bound=TableRow)
 
@@ -54,6 +55,11 @@ class Findings:
         return {name: tuple(issues) for name, issues in self._rejected.items() if issues}
 
 
+def as_warnings(issues: Iterable[Issue]) -> list[Issue]:
+    """Issues of a table on which nothing depends."""
+    return [replace(issue, severity=Severity.WARNING) for issue in issues]
+
+
 def by_own_id(table: Table[R], column: str, findings: Findings) -> dict[str, Row[R]]:
     """Rows by the id that they define. An id defined twice is rejected; rows without an id are told."""
     rows: dict[str, Row[R]] = {}
@@ -80,18 +86,24 @@ def by_owner(table: Table[R], column: str, owners: Iterable[str], findings: Find
     """Rows by the id that they refer to.
 
     A row with a fault costs its owner; one whose id cannot be followed costs those that may
-    have lost it; one that clearly belongs to nothing is told once per id, and ignored.
+    have lost it, be they its neighbours or the id most like its own; ids that are like none
+    are told once each, and cost nothing.
     """
     known = frozenset(owners)
     rows: dict[str, list[Row[R]]] = defaultdict(list)
-    ignored: dict[str, list[int]] = defaultdict(list)
+    strays: dict[str, list[int]] = defaultdict(list)
+    meant: dict[str, str | None] = {}
     for row, belonging in belongings(table.rows, column, known):
         if belonging.owner is not None:
             rows[belonging.owner].append(row)
             findings.reject(belonging.owner, row.issues)
             continue
-        if belonging.name and not belonging.suspects:
-            ignored[belonging.name].append(row.number)
+        if belonging.name and belonging.name not in meant:
+            meant[belonging.name] = misspelt(belonging.name, known)
+        # An id that is like a known one means that one, wherever the row stands.
+        likely = meant.get(belonging.name)
+        if belonging.name and (not belonging.suspects or likely not in (None, *belonging.suspects)):
+            strays[belonging.name].append(row.number)
             continue
         issues = list(row.issues)
         if belonging.name:
@@ -102,8 +114,12 @@ def by_owner(table: Table[R], column: str, owners: Iterable[str], findings: Find
         findings.add(issues)
         for suspect in belonging.suspects:
             findings.charge(suspect, issues)
-    for name, numbers in ignored.items():
-        findings.add([_ignored(table, column, name, numbers)])
+    for name, numbers in strays.items():
+        likely = meant[name]
+        issue = _stray(table, column, name, numbers, likely)
+        findings.add([issue])
+        if likely is not None:
+            findings.charge(likely, [issue])
     return rows
 
 
@@ -120,11 +136,13 @@ def by_name(table: Table[R], column: str, findings: Findings) -> dict[str, list[
     return rows
 
 
-def _ignored(table: Table[R], column: str, name: str, numbers: Sequence[int]) -> Issue:
+def _stray(table: Table[R], column: str, name: str, numbers: Sequence[int], meant: str | None) -> Issue:
     more = f" (and {len(numbers) - 1} more rows)" if len(numbers) > 1 else ""
-    mend = "Ignored. Add it to its own table, or delete these rows."
+    mend = "Not used. Add it to its own table, or delete these rows."
+    if meant is not None:
+        mend = f"Did you mean {quoted(meant)}? Correct the id, or add it to its own table, or delete these rows."
     fault = Fault(f"unknown-{column}", f"{quoted(name)}{more}", f"a known {column}", mend)
-    return table.issue(numbers[0], column, fault, Severity.WARNING)
+    return table.issue(numbers[0], column, fault)
 
 
 def repeated_dates(table: Table[R], rows: Sequence[Row[R]], column: str) -> list[Issue]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from bisect import bisect_left
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
@@ -15,6 +16,8 @@ from pricer.loader.text import clean, fold, nearest, quoted, slip_of
 
 #: From this likeness on, an unknown column next to a missing optional one is taken for a slip of the finger.
 SURELY_MEANT = 0.85
+#: A unit at the end of a column's name, as people write it. A name that differs in nothing else is surely meant.
+_UNIT = re.compile(r"(?:decimals?|dec|percent(?:age)?|pct|%|bps?|basispoints?|(?:vol)?points|days)$")
 
 
 @dataclass(frozen=True, slots=True)
@@ -52,10 +55,10 @@ def find_sheet(sheets: Sheets, name: str, *, required: Severity | None) -> tuple
     guess = nearest(name, sheets.unread, likeness=SURELY_MEANT if required is None else 0.6)
     if required is None and guess is None:
         return None, []
-    there = ", ".join(quoted(other) for other in sheets.unread) or "no other table"
+    there = f", but {', '.join(map(quoted, sheets.unread))}" if sheets.unread else ""
     issue = Issue(
         "missing-sheet",
-        f"no table {name}, but {there}",
+        f"no table {name}{there}",
         f"a table named {name}",
         f'Did you mean "{guess}"? Rename it.' if guess else "Add it; the command template writes an empty one.",
         required or Severity.FATAL,  # an optional table that is there but misspelt must not be ignored
@@ -120,8 +123,18 @@ def _missing(
 ) -> list[Issue]:
     """Missing columns; an unknown column that was surely meant is taken out of ``unknown``."""
     issues = []
-    for name, column in columns.items():
+    by_stem = {_without_unit(text): text for text in unknown}
+    same_stem = {
+        name: by_stem[stem] for name in columns if name not in positions and (stem := _without_unit(name)) in by_stem
+    }
+    # Before likeness is asked: "skew" is the skew, however alike another missing column may be.
+    for name in sorted(columns, key=lambda name: name not in same_stem):
+        column = columns[name]
         if name in positions:
+            continue
+        guess = same_stem.get(name)
+        if guess is not None and guess in unknown:
+            issues.append(_other_unit(sheet, row, name, column, guess, unknown.pop(guess)))
             continue
         guess = nearest(name, unknown, likeness=0.6 if column.is_needed else SURELY_MEANT) or slip_of(name, unknown)
         if guess is not None:
@@ -133,6 +146,22 @@ def _missing(
             mend = f"Add it: {column.meaning}, e.g. {column.example}."
             issues.append(_issue(sheet, row, "missing-column", f"no column {name}", f"a column {name}", mend))
     return issues
+
+
+def _other_unit(sheet: Sheet, row: int, name: str, column: Column, found: str, position: int) -> Issue:
+    """A column whose name lacks its unit or has another: what the values are counted in is to be checked too."""
+    values = f", with values {column.unit}" if column.unit else ""
+    delete = "" if column.is_needed else ", or delete it"
+    mend = f'Did you mean "{name}"? Rename the column{values}{delete}.'
+    return _issue(
+        sheet, row, "misspelt-column", f"the column {quoted(found)}", f"a column {name}", mend, found, position
+    )
+
+
+def _without_unit(name: str) -> str:
+    """The name as names are compared, without brackets and without its unit, unless the unit is all of it."""
+    folded = re.sub(r"[()\[\]]", "", fold(name))
+    return _UNIT.sub("", folded) or folded
 
 
 def _unknown(sheet: Sheet, row: int, unknown: Mapping[str, int]) -> list[Issue]:

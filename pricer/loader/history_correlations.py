@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from datetime import date
 
 import numpy as np
@@ -10,32 +10,37 @@ from numpy.typing import NDArray
 
 from pricer.core.issues import Issue, Severity
 from pricer.loader.correlations import both_ways, inverted
-from pricer.loader.faults import Fault
+from pricer.loader.faults import Fault, number_in_words
 from pricer.loader.findings import Findings
-from pricer.loader.price_history import PriceHistory
+from pricer.loader.price_history import OLD_HISTORY_DAYS, PriceHistory, is_old
 from pricer.loader.table import Table
 from pricer.loader.text import quoted
 from pricer.loader.underlying_rows import PriceHistoryRow
 from pricer.market.calendars import is_business_day
 from pricer.market.correlation import CorrelationError
 from pricer.market.correlation_estimate import (
+    JUMP,
+    JUMP_DEVIATIONS,
     CorrelationEstimate,
     HistoryRules,
     business_days_between,
     estimate,
-    log_returns,
+    usable_returns,
 )
 from pricer.market.market import CORRELATIONS
 
-#: A history whose last level is older than this many business days is reported.
-OLD_HISTORY_DAYS = 5
-
 
 def correlations_of(
-    history: PriceHistory, wanted: Sequence[str], valuation_date: date, half_life: float, findings: Findings
+    history: PriceHistory,
+    wanted: Sequence[str],
+    valuation_date: date,
+    half_life: float,
+    calendars: Mapping[str, str],
+    findings: Findings,
 ) -> CorrelationEstimate | None:
     """The correlations of all ids that have enough levels; ``wanted`` ids without any are told.
 
+    ``calendars`` names the calendars of ids: a level is missing only where its own market was open.
     None, with ``CORRELATIONS`` charged, where no id is left or the correlations contradict each other too much.
     """
     own = findings.under(CORRELATIONS)
@@ -66,7 +71,7 @@ def correlations_of(
     held = np.asarray((~np.isnan(columns)).any(axis=1))
     days = [day for day, is_held in zip(dates, held, strict=True) if is_held]
     try:
-        found = estimate(kept, days, columns[held], rules)
+        found = estimate(kept, days, columns[held], rules, calendars=calendars)
     except CorrelationError as error:
         findings.reject(CORRELATIONS, [_contradiction(history, error)])
         return None
@@ -75,6 +80,7 @@ def correlations_of(
         findings.reject(CORRELATIONS, [table.issue(history.first_rows[kept[0]], "underlying", fault)])
         return None
     findings.add(_gaps(history, found, days, rules))
+    findings.add(_jumps(history, found))
     return found
 
 
@@ -100,7 +106,7 @@ def _enough(
     is_open = [is_business_day(rules.calendar, day) for day in dates]
     days = [day for day, opened in zip(dates, is_open, strict=True) if opened]
     spans = business_days_between(days, rules.calendar)
-    returns, _ = log_returns(levels[np.array(is_open, dtype=bool)], spans, rules.stale_run)
+    returns, _, _ = usable_returns(levels[np.array(is_open, dtype=bool)], spans, rules.stale_run)
     present = (~np.isnan(returns)).astype(int)
     counts = present.T @ present  # [i, j]: returns that both have
     kept = list(range(len(names)))
@@ -154,16 +160,33 @@ def _gaps(history: PriceHistory, found: CorrelationEstimate, dates: Sequence[dat
     return issues
 
 
+def _jumps(history: PriceHistory, found: CorrelationEstimate) -> list[Issue]:
+    """The first return of each id that was left out as a jump, at the level it leads to."""
+    issues = []
+    for i, name in enumerate(found.matrix.ids):
+        own = [jump for jump in found.jumps if jump.name == name]
+        if not own:
+            continue
+        first = own[0]
+        more = f" (and {_count(len(own) - 1, 'more such move')})" if len(own) > 1 else ""
+        fault = Fault(
+            "history-jump",
+            f"{number_in_words(first.level)} for {name} on {first.day}, after {number_in_words(first.before)} on "
+            f"{first.earlier}{more}",
+            f"moves below {100.0 * JUMP:g} %, or within {JUMP_DEVIATIONS:g} times what is usual for it",
+            f"Left out: {int(found.counts[i, i])} returns are used. A split that is not adjusted for, or a slip of the "
+            "decimal point? Correct the levels.",
+        )
+        issues.append(history.table.issue(history.levels[name][first.day][1], "level", fault, Severity.WARNING))
+    return issues
+
+
 def _count(number: int, what: str) -> str:
     return f"{number} {what}{'s' * (number != 1)}"
 
 
 def _old(table: Table[PriceHistoryRow], last: date, valuation_date: date, rules: HistoryRules) -> list[Issue]:
-    day, passed = last, 0
-    while passed <= OLD_HISTORY_DAYS and day < valuation_date:
-        day = date.fromordinal(day.toordinal() + 1)
-        passed += is_business_day(rules.calendar, day)
-    if passed <= OLD_HISTORY_DAYS:
+    if not is_old(last, valuation_date, rules.calendar):
         return []
     fault = Fault(
         "old-history",

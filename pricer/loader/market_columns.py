@@ -39,7 +39,9 @@ def point_tenor() -> Column:
 
 def rate(meaning: str, example: str, unit: str, blank: object = REQUIRED, blank_words: str = "") -> Column:
     """A rate per year as a decimal, of either sign."""
-    return Column(Number(percent=True, decimal_limit=HIGHEST_RATE), meaning, example, unit, blank, blank_words)
+    return Column(
+        Number(percent=True, decimal_limit=HIGHEST_RATE, is_rate=True), meaning, example, unit, blank, blank_words
+    )
 
 
 def volatility() -> Column:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 import re
+from collections.abc import Sequence
 from dataclasses import dataclass
 from datetime import date
 from decimal import Decimal
@@ -25,7 +26,8 @@ class Number:
 
     ``percent`` allows text such as ``22.5%``. A value beyond ``decimal_limit`` in size is
     taken for percentage points typed where a decimal belongs, and refused with that guess;
-    with ``basis_points``, from 10 on, for basis points.
+    with ``basis_points`` for basis points, or below 10 for either; with ``is_rate`` for basis points
+    where it is too large for percentage points. No guess breaks a limit itself.
     """
 
     above: float | None = None
@@ -36,6 +38,7 @@ class Number:
     percent: bool = False
     decimal_limit: float | None = None
     basis_points: bool = False
+    is_rate: bool = False
 
     def words(self) -> str:
         limits = [
@@ -56,20 +59,31 @@ class Number:
 
     def read(self, cell: Cell, reading: Reading) -> float:
         number = read_number(cell, reading, percent=self.percent)
-        inside = (
+        if self.decimal_limit is not None and abs(number) > self.decimal_limit:
+            raise self._not_a_decimal(number)
+        if not self._allows(number):
+            raise Fault("out-of-range", in_words(cell))
+        return number
+
+    def _allows(self, number: float) -> bool:
+        return (
             (self.above is None or number > self.above)
             and (self.at_least is None or number >= self.at_least)
             and (self.below is None or number < self.below)
             and (self.at_most is None or number <= self.at_most)
             and not (self.not_zero and number == 0.0)
+            and (self.decimal_limit is None or abs(number) <= self.decimal_limit)
         )
-        if self.decimal_limit is not None and abs(number) > self.decimal_limit:
-            if self.basis_points and abs(number) >= 10.0:
-                raise as_basis_points(number, self.words())
-            raise as_percentage_points(number, self.words())
-        if not inside:
-            raise Fault("out-of-range", in_words(cell))
-        return number
+
+    def _not_a_decimal(self, number: float) -> Fault:
+        """The fault of a number beyond the decimal limit, with what it may have meant."""
+        percent, basis_points = (number / 100.0, "%"), (number / 10_000.0, "basis points")
+        if self.basis_points:
+            guesses = [percent, basis_points] if abs(number) < 10.0 else [basis_points]
+        else:
+            guesses = [percent] if self._allows(percent[0]) or not self.is_rate else [basis_points]
+        fitting = [unit for decimal, unit in guesses if self._allows(decimal)]
+        return Fault("not-a-decimal", number_in_words(number), self.words(), _did_you_mean(number, fitting))
 
 
 @dataclass(frozen=True, slots=True)
@@ -113,18 +127,22 @@ class NumberList:
         return numbers
 
 
-def as_percentage_points(number: float, expected: str = "") -> Fault:
-    """The fault of a number that looks like percentage points where a decimal belongs."""
-    decimal = number_in_words(float(Decimal(repr(number)) / 100))
-    points = number_in_words(number)
-    return Fault("not-a-decimal", points, expected, f"Did you mean {decimal} ({points} %)?")
+#: Units in which a decimal is mistaken, and how many of them make 1.
+_UNITS = {"%": 100, "basis points": 10_000}
 
 
-def as_basis_points(number: float, expected: str) -> Fault:
-    """The fault of a number that looks like basis points where a decimal belongs."""
-    decimal = number_in_words(float(Decimal(repr(number)) / 10_000))
+def as_percentage_points(number: float, expected: str, limit: float) -> Fault:
+    """The fault of a number beyond ``limit``, where a decimal belongs: if it fits, it looks like percentage points."""
+    guesses = ["%"] if abs(number) / 100.0 <= limit else []
+    mend = _did_you_mean(number, guesses) or "Enter a decimal: 22.5 % is 0.225."
+    return Fault("not-a-decimal", number_in_words(number), expected, mend)
+
+
+def _did_you_mean(number: float, units: Sequence[str]) -> str:
+    """``Did you mean 0.225 (22.5 %)?``, or nothing where no unit is named."""
     points = number_in_words(number)
-    return Fault("not-a-decimal", points, expected, f"Did you mean {decimal} ({points} basis points)?")
+    decimals = [f"{number_in_words(float(Decimal(repr(number)) / _UNITS[unit]))} ({points} {unit})" for unit in units]
+    return f"Did you mean {' or '.join(decimals)}?" if decimals else ""
 
 
 def read_number(cell: Cell, reading: Reading, *, percent: bool = False) -> float:

@@ -11,8 +11,13 @@ from pricer.core.source import Place
 from pricer.loader.faults import Fault, number_in_words
 from pricer.loader.findings import Findings
 from pricer.loader.table import UNREAD, Table
-from pricer.loader.text import nearest, quoted
+from pricer.loader.text import misspelt, quoted
 from pricer.loader.underlying_rows import PriceHistoryRow
+from pricer.market.calendars import is_business_day
+from pricer.market.correlation_estimate import HistoryRules
+
+#: Levels older than this many business days are no longer those of the market.
+OLD_HISTORY_DAYS = 5
 
 
 @dataclass(frozen=True, slots=True)
@@ -26,6 +31,24 @@ class PriceHistory:
     def place(self, name: str) -> Place | None:
         """The cell of an id's first level."""
         return self.table.place(self.first_rows[name], "underlying") if name in self.first_rows else None
+
+    def last_levels(self, valuation_date: date) -> dict[str, tuple[date, float]]:
+        """Day and level of the last row of each id, unless it is old."""
+        last = {name: max(levels) for name, levels in self.levels.items() if levels}
+        return {
+            name: (day, self.levels[name][day][0])
+            for name, day in last.items()
+            if not is_old(day, valuation_date, HistoryRules().calendar)
+        }
+
+
+def is_old(last: date, valuation_date: date, calendar: str) -> bool:
+    """Whether more than ``OLD_HISTORY_DAYS`` business days passed from ``last`` to the valuation date."""
+    day, passed = last, 0
+    while passed <= OLD_HISTORY_DAYS and day < valuation_date:
+        day = date.fromordinal(day.toordinal() + 1)
+        passed += is_business_day(calendar, day)
+    return passed > OLD_HISTORY_DAYS
 
 
 def read_price_history(
@@ -76,13 +99,13 @@ def _second(name: str, day: date, level: float, other: tuple[float, int]) -> Fau
 
 def _unknown(table: Table[PriceHistoryRow], name: str, numbers: Sequence[int], known: Collection[str]) -> Issue:
     more = f" (and {len(numbers) - 1} more rows)" if len(numbers) > 1 else ""
-    guess = nearest(name, known, likeness=0.75)
-    mend = (
-        f"Did you mean {quoted(guess)}? Ignored." if guess else "Ignored. Add it to the market, or delete these rows."
-    )
+    guess = misspelt(name, known)
+    mend = "Not used. Add it to the market, or delete these rows."
+    if guess is not None:
+        mend = f"Did you mean {quoted(guess)}? Correct the id: these levels are missing."
     expected = "an underlying or a currency pair of the market"
     fault = Fault("unknown-underlying", f"{quoted(name)}{more}", expected, mend)
-    return table.issue(numbers[0], "underlying", fault, Severity.WARNING)
+    return table.issue(numbers[0], "underlying", fault)
 
 
 def _after(table: Table[PriceHistoryRow], later: Sequence[tuple[int, date]], valuation_date: date) -> Issue:

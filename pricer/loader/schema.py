@@ -46,8 +46,8 @@ _MARKET_PURPOSES = {
         "EURUSD. The diagonal, and one of two mirrored cells, may be blank."
     ),
     "price_history": (
-        "One row per day and underlying or currency pair. Read where correlation_source in the table snapshot is "
-        '"price history"; may be left out.'
+        "One row per day and underlying or currency pair. Correlations come from it where correlation_source in the "
+        'table snapshot is "price history"; its last levels are compared with spots. May be left out.'
     ),
     "curves": "One row per discount curve: one curve per currency and collateral.",
     "curve_points": (

@@ -16,7 +16,7 @@ from pricer.loader.discount_curves import read_curves
 from pricer.loader.exchange_rates import read_exchange_rates
 from pricer.loader.faults import Fault
 from pricer.loader.files import read_sheets
-from pricer.loader.findings import Findings
+from pricer.loader.findings import Findings, as_warnings
 from pricer.loader.headers import find_sheet, match_header, unread_sheets
 from pricer.loader.market_places import Places
 from pricer.loader.market_rows import (
@@ -55,17 +55,24 @@ _ABSENCE = {
 
 
 #: Kinds of the market's items, as its quality gates name them: the table, the columns of the id and that of the cell.
-_CELLS: dict[str, tuple[str, tuple[str, ...], str]] = {
-    "valuation_date": ("snapshot", (), "valuation_date"),
-    "dividend_yield": ("underlyings", ("underlying",), "dividend_yield_decimal"),
-    "dividends": ("dividends", ("underlying",), "underlying"),
-    "repo": ("repo", ("underlying",), "underlying"),
-    "volatility": ("volatilities", ("underlying", "expiry_date"), "volatility_decimal"),
-    "curve": ("curves", ("curve",), "curve"),
-    "fx": ("fx", ("pair",), "pair"),
-    "fx_volatilities": ("fx_volatilities", ("pair",), "pair"),
-    "credit": ("credit", ("name",), "name"),
-}
+_CELLS: tuple[tuple[str, str, tuple[str, ...], str], ...] = (
+    ("valuation_date", "snapshot", (), "valuation_date"),
+    ("spot", "underlyings", ("underlying",), "spot"),
+    ("dividend_yield", "underlyings", ("underlying",), "dividend_yield_decimal"),
+    ("dividends", "dividends", ("underlying",), "underlying"),
+    ("dividends", "dividends", ("underlying", "ex_date"), "ex_date"),
+    ("repo", "repo", ("underlying",), "underlying"),
+    ("repo", "repo", ("underlying", "date"), "date"),
+    ("volatility", "volatilities", ("underlying", "expiry_date"), "volatility_decimal"),
+    ("curve", "curves", ("curve",), "curve"),
+    ("curve_points", "curve_points", ("curve", "tenor"), "tenor"),
+    ("curve_points", "curve_points", ("curve", "date"), "date"),
+    ("fx", "fx", ("pair",), "pair"),
+    ("fx_volatilities", "fx_volatilities", ("pair",), "pair"),
+    ("fx_volatilities", "fx_volatilities", ("pair", "expiry_date"), "volatility_decimal"),
+    ("credit", "credit", ("name",), "name"),
+    ("agreements", "agreements", ("netting_set",), "currency"),
+)
 
 
 def load_market(path: str | Path, *, valuation_date: date | None = None) -> Market:
@@ -87,7 +94,7 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
     agreement_rows = tables.get("agreements", AgreementRow)
     findings = tables.findings
     row = None if snapshot is None else _snapshot_row(snapshot, findings)
-    correlation_rows = None if row is None else tables.correlations(row.correlation_source)
+    matrix, past = (None, None) if row is None else tables.correlations(row.correlation_source)
     if underlying_rows is None or curve_rows is None or point_rows is None or row is None or tables.are_fatal():
         raise InputError(findings.issues)
 
@@ -110,8 +117,8 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
     hazards, credit_quotes = read_credit(credit_rows, curves, findings)
     funding = read_funding(funding_rows, row.reporting_currency, today, findings)
     agreements = read_agreements(agreement_rows, findings)
-    correlations = read_correlation_source(correlation_rows, known, list(underlyings), fx, today,
-                                           row.correlation_half_life_days, findings)  # fmt: skip
+    estimated, half_life = row.correlation_source == PRICE_HISTORY, row.correlation_half_life_days
+    correlations = read_correlation_source(matrix, past, estimated, known, underlyings, fx, today, half_life, findings)
     if not underlyings or not curves:
         findings.add([_nothing_left(sheets, "underlying" if not underlyings else "curve")])
         raise InputError(findings.issues)
@@ -131,14 +138,18 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
         credit=hazards,
         funding=funding,
         agreements=agreements,
-        quotes=MarketQuotes(credit_quotes, correlations.estimate),
+        quotes=MarketQuotes(credit_quotes, correlations.estimate, correlations.last_levels),
     )
     place = Places(correlations.source)
-    for kind, (name, ids, shown) in _CELLS.items():
+    for kind, name, ids, shown in _CELLS:
         if name != "snapshot" or today == row.valuation_date:
             place.add(kind, tables.read.get(name), ids, shown)
-    findings.add(quality.gates(market, correlations.repair, place))
-    return replace(market, issues=tuple(findings.issues))
+    place.add_quotes(volatilities, market)
+    review = quality.review(market, correlations.repair, place)
+    findings.add(review.issues)
+    for name, issues in review.refused.items():
+        findings.charge(name, issues)
+    return replace(market, issues=tuple(findings.issues), rejected=findings.rejected, doubts=review.doubts)
 
 
 class _Tables:
@@ -160,14 +171,25 @@ class _Tables:
         table = self.read[name] = read_table(sheet, header, model)
         return table
 
-    def correlations(self, source: str | None) -> Sheet | Table[PriceHistoryRow] | None:
-        """What correlations come from; a warning if a price history is there and nobody chose between the two."""
+    def correlations(self, source: str | None) -> tuple[Sheet | None, Table[PriceHistoryRow] | None]:
+        """The matrix, unless correlations come from the price history, and that history.
+
+        A warning if both are there and nobody chose.
+        """
         if source == PRICE_HISTORY:
-            return self.get("price_history", PriceHistoryRow, Severity.ERROR)
+            return None, self.get("price_history", PriceHistoryRow, Severity.ERROR)
         history = self._sheet("price_history", None)
         if source is None and history is not None and len(history.rows) > 1:
             self.findings.add([_unused(history)])
-        return self._sheet(CORRELATIONS, Severity.ERROR)
+        return self._sheet(CORRELATIONS, Severity.ERROR), self._beside(history)
+
+    def _beside(self, history: Sheet | None) -> Table[PriceHistoryRow] | None:
+        """A history from which no correlations come: what is wrong with it costs nothing."""
+        if history is None or not history.rows:
+            return None
+        header, issues = match_header(history, columns_of(PriceHistoryRow))
+        self.findings.add(as_warnings(issues))
+        return None if header is None else read_table(history, header, PriceHistoryRow)
 
     def _sheet(self, name: str, absence: Severity | None) -> Sheet | None:
         sheet, issues = find_sheet(self._sheets, name, required=absence)
@@ -187,7 +209,9 @@ def _snapshot_row(table: Table[SnapshotRow], findings: Findings) -> SnapshotRow 
         )
     if len(table.rows) != 1:
         row_number = table.rows[1].number if table.rows else table.header.row
-        fault = Fault("not-one-row", f"{len(table.rows)} rows", "exactly one row", "Keep the row of this market.")
+        mend = "Keep the row of this market." if table.rows else "Add the row of this market below the header."
+        found = f"{len(table.rows)} rows" if table.rows else "no row"
+        fault = Fault("not-one-row", found, "exactly one row", mend)
         findings.add([table.issue(row_number, "valuation_date", fault, Severity.FATAL)])
         return None
     return table.rows[0].value
@@ -198,7 +222,7 @@ def _unused(history: Sheet) -> Issue:
         "unused-table",
         "a table price_history, and a blank correlation_source in the table snapshot",
         f"correlation_source {quoted(TABLE)} or {quoted(PRICE_HISTORY)}",
-        "The table correlations is used, and the history is not; say so in correlation_source.",
+        "Correlations come from the table correlations, not from the history; say so in correlation_source.",
         Severity.WARNING,
         history.file,
         history.name,

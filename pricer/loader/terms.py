@@ -101,7 +101,8 @@ def _weight_faults(row: _TradeRow, legs: Sequence[_Leg]) -> Iterator[tuple[str, 
             yield column, Fault("out-of-range", number_in_words(amount), expected, "Correct the sign.")
         limit = HIGHEST_PERFORMANCE * sum(map(abs, weights))
         if row.get("underlying_level") == PERFORMANCE and abs(amount) > limit:
-            yield column, as_percentage_points(amount, f"a decimal performance (1.00 = 100 %) of at most {limit:g}")
+            expected = f"a decimal performance (1.00 = 100 %) of at most {limit:g}"
+            yield column, as_percentage_points(amount, expected, limit)
 
 
 def _weight_notes(row: _TradeRow, legs: Sequence[_Leg]) -> Iterator[tuple[str, Fault]]:

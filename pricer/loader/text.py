@@ -77,6 +77,16 @@ def quoted(text: str, *, limit: int = 60) -> str:
     return f'"{shown}"' if len(shown) <= limit else f'"{shown[: limit - 3]}..."'
 
 
+def misspelt(name: str, names: Iterable[str]) -> str | None:
+    """The one of ``names`` that ``name`` may be with a slip of the finger, the most alike; None if there is none."""
+    likeness = [
+        (difflib.SequenceMatcher(None, fold(name), fold(known)).ratio(), known)
+        for known in names
+        if looks_misspelt(name, known)
+    ]
+    return max(likeness)[1] if likeness else None
+
+
 def looks_misspelt(name: str, known: str) -> bool:
     """Whether ``name`` may be ``known`` with a slip of the finger.
 

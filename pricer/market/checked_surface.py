@@ -25,7 +25,14 @@ from pricer.market.arbitrage import ArbitrageKind, Violation, quote_violations, 
 from pricer.market.implied_surface import ImpliedSurface
 from pricer.market.pure_smile import price_deviations, price_error, price_strikes, pure_log_strikes
 from pricer.market.smile_quotes import Smile, SmileParameters, SmileQuotes
-from pricer.market.surface_quotes import ExpiryQuotes, QuoteFault, UnusableQuotesError, VolatilityQuote, by_expiry
+from pricer.market.surface_quotes import (
+    SAME_STRIKE,
+    ExpiryQuotes,
+    QuoteFault,
+    UnusableQuotesError,
+    VolatilityQuote,
+    by_expiry,
+)
 from pricer.market.volatility import VolatilityCurve
 
 __all__ = ["CheckedSurface", "QuoteFault", "QuoteFit", "UnusableQuotesError", "VolatilityQuote", "build_surface"]
@@ -48,7 +55,8 @@ class QuoteFit:
     ``strike`` in currency, ``relative_strike`` over the forward of S, ``delta`` the call's forward delta N(d1) at the
     quoted volatility. ``quoted_volatility`` and ``fitted_volatility`` are those of S; ``pure_log_strike`` is where to
     read the surface of X. A smile given by parameters stands as three quotes, at the forward and one standard
-    deviation to either side, each what the parameters mean there (to second order, where no smile has them).
+    deviation to either side, each what the parameters mean there (to second order, where no smile has them); the
+    latter two are ``derived``, not quoted.
     """
 
     expiry_date: date
@@ -58,6 +66,7 @@ class QuoteFit:
     quoted_volatility: float
     fitted_volatility: float
     pure_log_strike: float
+    derived: bool = False
 
     @property
     def error(self) -> float:
@@ -154,7 +163,8 @@ def _fits(surface: ImpliedSurface, group: ExpiryQuotes) -> Iterator[QuoteFit]:
     fitted = price_deviations(group.level, k, np.sqrt(surface.total_variance(k, group.time))) / root
     deviations = volatilities * root
     deltas = ndtr(-np.log(strikes / forward) / deviations + 0.5 * deviations)
-    columns = (strikes, strikes / forward, deltas, volatilities, fitted, k)
+    derived = (group.stated is not None) & (np.abs(strikes / forward - 1.0) > SAME_STRIKE)
+    columns = (strikes, strikes / forward, deltas, volatilities, fitted, k, derived)
     for values in zip(*(column.tolist() for column in columns), strict=True):
         yield QuoteFit(group.expiry_date, *values)
 

@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 
 from pricer.contracts.book import Trade
 from pricer.core.issues import Issue
-from pricer.market.findings import Locate, error, warning
+from pricer.market.findings import Locate, error, markets_reason, warning
+from pricer.market.fx import currencies_of
 from pricer.market.market import Market
 
 
@@ -54,25 +55,73 @@ def _rate(trade: Trade, market: Market, currency: str, place: Locate) -> Iterato
             f"Add a curve of {currency} with empty collateral to the curves table.",
         )
         return
+    conversion = f"a {trade.contract.conversion} trade from {currency} to {trade.currency}"
     try:
         market.fx.rate(currency, trade.currency)
+    except LookupError:
+        yield error(
+            here,
+            "no-fx-rate",
+            f"{conversion}, which no quoted pairs link",
+            f"the rate of {pair}, or a chain of pairs",
+            _refused(pair, market, "")
+            or f"Add {pair} to the tables fx, fx_volatilities and correlations of the market.",
+        )
+        return
+    try:
         factors = market.fx.log_factors(currency, trade.currency)
-    except (LookupError, ValueError):
+    except LookupError:
+        quoted = "".join(_as_quoted(currency, trade.currency, market))
         yield error(
             here,
             "no-fx-volatility",
-            f"a {trade.contract.conversion} trade from {currency} to {trade.currency}, whose rate has no volatility",
-            f"the rate of {pair} and its volatility, or a chain of pairs that have both",
-            f"Add {pair} to the tables fx, fx_volatilities and correlations of the market.",
+            f"{conversion}, whose rate has no volatility",
+            f"volatilities of {quoted}, or of a chain of pairs",
+            _refused(quoted, market, "fx_volatilities:")
+            or f"Add {quoted} to the table fx_volatilities of the market"
+            + (
+                "."
+                if _is_correlated(quoted, market)
+                else ", and a row and a column of that name to the table correlations."
+            ),
         )
         return
-    held = market.correlation
-    missing = [name for name in factors if held is None or (name not in held and name[3:] + name[:3] not in held)]
+    yield from _volatilities_reach(trade, market, list(factors), place)
+    missing = [name for name in factors if not _is_correlated(name, market)]
     for name in missing:
         yield error(
             here,
             "no-fx-correlation",
-            f"a {trade.contract.conversion} trade from {currency} to {trade.currency}, and no correlations of {name}",
+            f"{conversion}, and no correlations of {name}",
             "the exchange rate's correlations with the trade's underlyings",
             f'Add a row and a column "{name}" to the correlations table of the market.',
         )
+
+
+def _volatilities_reach(trade: Trade, market: Market, factors: Sequence[str], place: Locate) -> Iterator[Issue]:
+    expiry = trade.contract.expiry_date
+    for name in factors:
+        last = market.fx.volatilities[currencies_of(name)].last_date
+        if expiry > last:
+            yield warning(
+                place("expiry_date"),
+                "beyond-volatility",
+                f"expiry date {expiry}, after {last}, the last volatility date of the rate {name}",
+                "volatilities that reach the expiry date",
+                "The last volatility is used beyond its date; add a later expiry to the table fx_volatilities.",
+            )
+
+
+def _as_quoted(first: str, second: str, market: Market) -> tuple[str, str]:
+    """The pair the way round in which the market has its rate, if it has."""
+    return (second, first) if (second, first) in market.fx.quotes else (first, second)
+
+
+def _is_correlated(pair: str, market: Market) -> bool:
+    held = market.correlation
+    return held is not None and (pair in held or pair[3:] + pair[:3] in held)
+
+
+def _refused(pair: str, market: Market, kind: str) -> str:
+    """Why the market could not use what it was given of the pair, either way round."""
+    return markets_reason(market.rejected.get(f"{kind}{pair}", market.rejected.get(f"{kind}{pair[3:]}{pair[:3]}", ())))

@@ -7,6 +7,8 @@ not a return of its own day is left out and counted:
 - a missing level costs the return into it and the return out of it;
 - a level repeated over ``stale_run`` business days or more is stale: the returns of the run, and the
   one that ends it and catches up, are left out for that id;
+- a move that is large for any day and far outside what is usual for its id is no return of a day, but
+  a split that was not adjusted for or a slip of the decimal point: the return is left out;
 - rows on days off are dropped.
 
 A return over a longer gap common to all ids (a holiday) counts as one day, divided by the root of
@@ -16,7 +18,7 @@ low by daily returns; nothing here corrects that.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from datetime import date
 from enum import StrEnum
@@ -29,6 +31,11 @@ from pricer.market.calendars import is_business_day
 from pricer.market.correlation import CorrelationMatrix, Repair, checked
 
 Returns = NDArray[np.float64]  # (n_returns, n_ids), NaN where left out
+
+#: A log-return above this size, and above this many of its id's usual deviations, is a jump (rules of our own).
+JUMP, JUMP_DEVIATIONS = 0.25, 12.0
+#: A normal variable's standard deviation over the median of its size (Hampel 1974).
+_DEVIATION_OF_MEDIAN = 1.4826
 
 
 class Window(StrEnum):
@@ -57,13 +64,25 @@ class HistoryRules:
             raise ValueError(f"a correlation needs 2 returns or more; got {self.minimum_returns}")
 
 
+@dataclass(frozen=True, slots=True)
+class Jump:
+    """A return that was left out as no return of a day: from the level ``before`` to that of ``day``."""
+
+    name: str
+    earlier: date
+    before: float
+    day: date
+    level: float
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class CorrelationEstimate:
     """The matrix, the ``repair`` it took (None for none), and what it was made from, in the order of its ids.
 
     ``counts`` (n, n) are the returns used for each pair, ``effective`` (n, n) the number of equally
     weighted returns that would be as precise (Kish 1965). ``missing`` and ``stale`` (n,) count the levels
-    missing and the returns left out as stale; ``days_off`` the rows dropped.
+    missing on business days of each id's own calendar, and the returns left out as stale; ``days_off`` the
+    rows dropped; ``jumps`` are the returns left out as such.
     """
 
     matrix: CorrelationMatrix
@@ -73,6 +92,7 @@ class CorrelationEstimate:
     missing: NDArray[np.int64]
     stale: NDArray[np.int64]
     days_off: int
+    jumps: tuple[Jump, ...] = ()
 
 
 def estimate(
@@ -82,8 +102,11 @@ def estimate(
     rules: HistoryRules | None = None,
     *,
     limit: float = 0.10,
+    calendars: Mapping[str, str] | None = None,
 ) -> CorrelationEstimate:
     """Correlations of ``ids`` from ``levels`` (n_dates, n_ids), NaN where missing, on increasing ``dates``.
+
+    ``calendars`` names the calendar of an id; those without one have levels on all business days of the rules.
 
     Raises ValueError for shapes that do not fit, levels that are not positive, dates out of
     order, pairs that share too few returns, and ids that never move; and
@@ -96,7 +119,7 @@ def estimate(
     table = table[open_days]
     kept = [day for day, is_open in zip(dates, open_days, strict=True) if is_open]
     spans = business_days_between(kept, rules.calendar)
-    returns, stale = log_returns(table, spans, rules.stale_run)
+    returns, stale, jumped = usable_returns(table, spans, rules.stale_run)
     if rules.window is Window.COMPLETE:
         returns = np.where(np.isnan(returns).any(axis=1, keepdims=True), np.nan, returns)
     ages = np.concatenate([np.cumsum(spans[::-1])[::-1][1:], [0.0]]) if len(spans) else np.zeros(0)
@@ -104,8 +127,10 @@ def estimate(
     counts, effective = _counts(returns, weights)
     _check_counts(names, counts, returns, rules.minimum_returns)
     matrix, repair = checked(names, weighted_correlation(returns, weights), limit)
-    missing = np.isnan(table).sum(axis=0)
-    return CorrelationEstimate(matrix, repair, counts, effective, missing, stale, int((~open_days).sum()))
+    expected = _open(names, kept, rules, calendars or {})
+    missing = (np.isnan(table) & expected).sum(axis=0)
+    jumps = [Jump(names[j], kept[i], float(table[i, j]), kept[i + 1], float(table[i + 1, j])) for i, j in jumped]
+    return CorrelationEstimate(matrix, repair, counts, effective, missing, stale, int((~open_days).sum()), tuple(jumps))
 
 
 def business_days_between(dates: Sequence[date], calendar: str) -> NDArray[np.float64]:
@@ -140,6 +165,33 @@ def log_returns(
             stale[len(returns) - run :, column] = True
     returns[stale] = np.nan
     return returns, stale.sum(axis=0)
+
+
+def usable_returns(
+    levels: NDArray[np.float64], spans: NDArray[np.float64], stale_run: int
+) -> tuple[Returns, NDArray[np.int64], list[tuple[int, int]]]:
+    """The returns of :func:`log_returns` without jumps, the numbers of stale ones, and row and column of each jump.
+
+    What is usual for an id is read from the median size of its returns, which a few jumps do not move.
+    """
+    returns, stale = log_returns(levels, spans, stale_run)
+    jumped = np.zeros(returns.shape, dtype=bool)
+    for column in range(returns.shape[1]):
+        size = np.abs(returns[:, column])
+        if not np.isnan(size).all():
+            usual = _DEVIATION_OF_MEDIAN * float(np.nanmedian(size))
+            jumped[:, column] = (size > JUMP_DEVIATIONS * usual) & (size * np.sqrt(spans) > JUMP)
+    returns[jumped] = np.nan
+    return returns, stale, [(int(row), int(column)) for row, column in np.argwhere(jumped)]
+
+
+def _open(
+    ids: tuple[str, ...], dates: Sequence[date], rules: HistoryRules, calendars: Mapping[str, str]
+) -> NDArray[np.bool_]:
+    """Whether an id has a level of its own on a day: (n_dates, n_ids)."""
+    own = [calendars.get(name, rules.calendar) for name in ids]
+    open_on = {calendar: [is_business_day(calendar, day) for day in dates] for calendar in set(own)}
+    return np.array([open_on[calendar] for calendar in own], dtype=bool).T.reshape(len(dates), len(ids))
 
 
 def weighted_correlation(returns: Returns, weights: NDArray[np.float64]) -> NDArray[np.float64]:

@@ -3,14 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from itertools import combinations
 
 from pricer.contracts.book import Trade
-from pricer.core.issues import Issue
+from pricer.core.issues import Issue, Severity
 from pricer.core.source import Place
 from pricer.market.conversion_coverage import conversion_coverage
 from pricer.market.date_coverage import date_coverage
 from pricer.market.dividend_quality import EXCEEDED
-from pricer.market.findings import Locate, did_you_mean, error, warning, words
+from pricer.market.doubt_coverage import doubts, refused_rates
+from pricer.market.findings import Locate, did_you_mean, error, markets_reason, warning, words
 from pricer.market.market import CORRELATIONS, Market, MissingMarketDataError
 from pricer.market.size_coverage import size_coverage
 from pricer.market.underlying import Underlying
@@ -33,9 +35,13 @@ def coverage(
         *_surfaces(trade, market, place, accepted=accept_failing_surfaces),
         *conversion_coverage(trade, market, place),
         *_correlations(trade, market, place),
+        *_unknown_pairs(trade, market, place),
         *date_coverage(trade, market, place),
         *size_coverage(trade, market, place),
+        *refused_rates(trade, market, place),
     ]
+    if all(issue.severity is Severity.WARNING for issue in issues):  # it will be priced
+        issues.extend(doubts(trade, market, place))
     return tuple(issue.for_trade(trade.trade_id) for issue in issues)
 
 
@@ -86,7 +92,7 @@ def _currencies(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
 def _underlyings(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
     for name in dict.fromkeys(trade.contract.underlyings):
         here = place(f"underlying:{name}")
-        why = _why(market.rejected.get(name, ()))
+        why = markets_reason(market.rejected.get(name, ()))
         underlying = market.underlyings.get(name)
         if underlying is None and why:
             yield error(
@@ -173,7 +179,7 @@ def _correlations(trade: Trade, market: Market, place: Locate) -> Iterator[Issue
             "no-correlations",
             "no usable correlation matrix",
             f"correlations among {words(names)}",
-            _why(market.rejected.get(CORRELATIONS, ()))
+            markets_reason(market.rejected.get(CORRELATIONS, ()))
             or "Add the correlations of the trade's underlyings to the correlations table of the market.",
         )
         return
@@ -189,8 +195,31 @@ def _correlations(trade: Trade, market: Market, place: Locate) -> Iterator[Issue
                 "missing-correlation",
                 f'no correlation of underlying "{name}" with {words(others)}',
                 "a correlation for every pair of the trade's underlyings",
-                _why(market.rejected.get(f"{CORRELATIONS}:{name}", ()))
+                markets_reason(market.rejected.get(f"{CORRELATIONS}:{name}", ()))
                 or f'Add a row and a column "{name}" to the correlations table of the market.',
+            )
+
+
+def _unknown_pairs(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
+    """Pairs of the trade's underlyings and exchange rates whose cells in the matrix gave no number."""
+    ids = {name: f"underlying:{name}" for name in trade.contract.underlyings if name in market.underlyings}
+    if trade.contract.conversion is not None:
+        currencies = dict.fromkeys(market.underlyings[name].currency for name in ids)
+        for currency in (other for other in currencies if other != trade.currency):
+            try:
+                factors = market.fx.log_factors(currency, trade.currency)
+            except (LookupError, ValueError):
+                continue  # told with the conversion
+            ids |= {name: "conversion" for pair in factors for name in (pair, pair[3:] + pair[:3])}
+    for first, second in combinations(ids, 2):
+        why = market.why_unknown(first, second)
+        if why:
+            yield error(
+                place(ids[first]) or place("currency"),
+                "missing-correlation",
+                f"no correlation of {first} with {second}",
+                "a correlation for every pair that the trade depends on",
+                markets_reason(why),
             )
 
 
@@ -206,21 +235,11 @@ def _converts(market: Market, currency: str) -> bool:
     return True
 
 
-def _why(issues: tuple[Issue, ...]) -> str:
-    """The market's own reason, short enough to stand in a trade's issue."""
-    if not issues:
-        return ""
-    first, more = issues[0], len(issues) - 1
-    place = f"{first.place()}: " if first.place() else ""
-    rest = f" (and {more} more)" if more else ""
-    return f"Mend the market first: {place}found {first.found}; expected {first.expected}{rest}."
-
-
 def _refused_curve(market: Market) -> str:
     """The reason of a curve that was given but refused: it may be the one that is missing."""
     for name, issues in market.rejected.items():
         if any((issue.sheet or "").casefold().startswith("curve") for issue in issues):
-            return f'Curve "{name}" could not be used. {_why(issues)}'
+            return f'Curve "{name}" could not be used. {markets_reason(issues)}'
     return ""
 
 
@@ -233,4 +252,4 @@ def _refused_pair(market: Market, currency: str, *, other: bool) -> str:
     }
     own = [name for name in refused if currency in (name[:3], name[3:])]
     chosen = own or (list(refused) if other else [])
-    return _why(refused[chosen[0]]) if chosen else ""
+    return markets_reason(refused[chosen[0]]) if chosen else ""

@@ -117,12 +117,14 @@ def _volatilities_reach(trade: Trade, market: Market, place: Locate) -> Iterator
     for name in dict.fromkeys(trade.contract.underlyings):
         last = _last_volatility(name, market)
         if last is not None and expiry > last:
+            smile = "The smile keeps its shape in standard deviations beyond that date"
+            kept = smile if name in market.surfaces else "The last volatility is used beyond its date"
             yield warning(
                 place("expiry_date"),
                 "beyond-volatility",
                 f'expiry date {expiry}, after {last}, the last volatility date of underlying "{name}"',
                 "volatilities that reach the expiry date",
-                "The last volatility is used beyond its date; add a later expiry to the volatilities table.",
+                f"{kept}; add a later expiry to the volatilities table.",
             )
 
 

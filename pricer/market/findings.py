@@ -45,6 +45,16 @@ def did_you_mean(name: str, known: Iterable[str]) -> str:
     return f'Did you mean "{by_folded[close[0]]}"? ' if close else ""
 
 
+def markets_reason(issues: tuple[Issue, ...]) -> str:
+    """Why the market refused something, short enough to stand in a trade's issue; nothing if it did not."""
+    if not issues:
+        return ""
+    first, more = issues[0], len(issues) - 1
+    place = f"{first.place()}: " if first.place() else ""
+    rest = f" (and {more} more)" if more else ""
+    return f"Mend the market first: {place}found {first.found}; expected {first.expected}{rest}."
+
+
 def _at(place: Place | None, issue: Issue) -> Issue:
     if place is None:
         return issue

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from datetime import date
+from itertools import combinations
 
 import numpy as np
 from numpy.typing import NDArray
@@ -46,10 +47,14 @@ class Market:
     holds underlyings and currency pairs ("EURUSD", either way round).
     ``rejected`` says of underlyings and curves (by their ids) and of the correlation matrix
     (as ``CORRELATIONS``) that were given but cannot be used, why, of exchange rates by their
-    pairs, and of an underlying left out of the matrix as ``CORRELATIONS:ID``. An underlying
+    pairs, of an underlying left out of the matrix as ``CORRELATIONS:ID``, and of two ids whose
+    correlation alone is not known as ``CORRELATIONS:ID:ID``. An underlying
     that lost only its volatility may stand in both ``underlyings`` and ``rejected``. Volatilities of
     exchange rates stand there as "fx_volatilities:EURUSD", names as "credit:NAME", agreements as
     "agreements:NETTING_SET" and the funding curve as "funding".
+    A rate that stands in ``fx`` and in ``rejected`` contradicts the others: nothing may be converted at it.
+    ``doubts`` are warnings about items that are used though they are implausible: of underlyings by their ids,
+    of "repo:ID", "fx:EURUSD" and "fx_volatilities:EURUSD".
     ``quotes`` are those from which curves, hazard rates and correlations were made.
     """
 
@@ -69,6 +74,7 @@ class Market:
     funding: FundingCurve | None = None
     agreements: Mapping[str, Agreement] = field(default_factory=dict)
     quotes: MarketQuotes = field(default_factory=MarketQuotes)
+    doubts: Mapping[str, tuple[Issue, ...]] = field(default_factory=dict)
 
     def growth_curve(self, underlying_id: str) -> DiscountCurve:
         """The curve at which the spot grows: the mid of the underlying's repo rates, if it has any, else the
@@ -156,22 +162,13 @@ class Market:
         out: NDArray[np.float64] = 0.5 * (spread + spread.T)  # symmetric to the last bit
         return out
 
-    def driver_correlation(self, names: Sequence[str], day: date) -> NDArray[np.float64]:
+    def driver_correlation(self, names: Sequence[str]) -> NDArray[np.float64]:
         """Correlation of the Brownian motions that drive X of underlyings and the rates of currency pairs: (n, n).
 
-        Names as for :meth:`log_covariance`, which it is the constant correlation of. Where a pair is a chain of
-        pairs, whose own would depend on time, all are correlations of the logarithms on ``day`` instead.
+        Names are underlyings and pairs that have a volatility of their own, as ``fx.log_factors`` gives them.
+        Raises :class:`MissingMarketDataError`.
         """
-        pairs = [name for name in names if name not in self.underlyings]
-        factors = {pair: self._fx_factors(pair) for pair in pairs}
-        if all(len(chain) == 1 for chain in factors.values()):
-            signs = np.array([next(iter(factors[name].values())) if name in factors else 1.0 for name in names])
-            held = [next(iter(factors[name])) if name in factors else name for name in names]
-            return self._correlation(held) * np.outer(signs, signs)
-        spread = self.log_covariance(names, day)
-        root = np.sqrt(np.diag(spread))
-        out: NDArray[np.float64] = spread / np.outer(root, root)
-        return out
+        return self._correlation(names)
 
     def joint_lognormal(
         self,
@@ -232,6 +229,15 @@ class Market:
         """
         return self._curve(currency, collateral).discount_factor(day)
 
+    def why_unknown(self, first: str, second: str) -> tuple[Issue, ...]:
+        """Why the correlation of two ids that the matrix holds is not known; empty if it is.
+
+        The matrix has a number for them all the same, which no trade may see.
+        """
+        return self.rejected.get(f"{CORRELATIONS}:{first}:{second}") or self.rejected.get(
+            f"{CORRELATIONS}:{second}:{first}", ()
+        )
+
     def to_reporting(self, currency: str) -> float:
         """Units of the reporting currency for one unit of ``currency``; raises MissingRate."""
         return self.fx.rate(currency, self.reporting_currency)
@@ -278,6 +284,9 @@ class Market:
         )
         if missing:
             raise MissingMarketDataError(f"the market's correlation matrix does not hold {', '.join(missing)}")
+        for first, second in combinations(held.values(), 2):
+            if self.why_unknown(first, second):
+                raise MissingMarketDataError(f"the correlation of {first} with {second} is not known")
         signs = np.array([1.0 if held[name] == name else -1.0 for name in factors])
         return self.correlation.sub([held[name] for name in factors]) * np.outer(signs, signs)
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from datetime import date
 
 from pricer.market.correlation_estimate import CorrelationEstimate
 
@@ -25,9 +26,12 @@ class SpreadQuotes:
 @dataclass(frozen=True, slots=True, eq=False)
 class MarketQuotes:
     """``credit`` by name; ``correlation`` is the estimate, where correlations come from a price history.
+    ``last_levels`` : day and last level of each underlying and currency pair in the price history, whether or not
+    correlations come from it.
 
     Quoted rates stand in their curves, quoted volatilities in their surfaces.
     """
 
     credit: Mapping[str, SpreadQuotes] = field(default_factory=dict)
     correlation: CorrelationEstimate | None = None
+    last_levels: Mapping[str, tuple[date, float]] = field(default_factory=dict)

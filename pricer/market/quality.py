@@ -2,56 +2,119 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator, Mapping
+from dataclasses import dataclass
 from datetime import date
-from itertools import pairwise
 
-from pricer.core.issues import Issue
-from pricer.core.source import Place
+from pricer.core.issues import Issue, Severity
+from pricer.market.agreements import Agreement
 from pricer.market.correlation import Repair
 from pricer.market.credit import HazardCurve
+from pricer.market.curve_quality import curve_gates, repo_gates
 from pricer.market.curves import DiscountCurve
-from pricer.market.dividend_quality import dividend_gates
+from pricer.market.dividend_quality import dividend_gates, weekend_ex_dates
 from pricer.market.findings import Locate, nowhere, percent, warning
-from pricer.market.fx_quality import fx_gates
+from pricer.market.fx_quality import rate_gates, volatility_triangles
+from pricer.market.level_quality import level_gates
+from pricer.market.local_vol_check import local_vol_gates
 from pricer.market.market import Market
 from pricer.market.surface_quality import surface_gates
 from pricer.market.underlying import Underlying
+from pricer.market.volatility_quality import fx_volatility_gates, volatility_gates, weekend_expiries
 
-#: Zero rates outside this range are reported.
-PLAUSIBLE_ZERO_RATES = (-0.05, 0.30)
 #: Continuous dividend yields, which may hold a repo margin, outside this range are reported.
 PLAUSIBLE_YIELDS = (-0.05, 0.25)
 #: Hazard rates above this are reported.
 PLAUSIBLE_HAZARD_RATE = 0.50
 
 
+@dataclass(frozen=True, slots=True)
+class Review:
+    """What the gates say about a market.
+
+    ``refused`` : issues of exchange rates that must not be used, by pair; ``doubts`` : warnings about what is used
+    though it is implausible. Both as in :class:`~pricer.market.market.Market`.
+    """
+
+    issues: tuple[Issue, ...]
+    refused: Mapping[str, tuple[Issue, ...]]
+    doubts: Mapping[str, tuple[Issue, ...]]
+
+
 def gates(market: Market, repair: Repair | None = None, place: Locate = nowhere) -> tuple[Issue, ...]:
+    """The issues of :func:`review`."""
+    return review(market, repair, place).issues
+
+
+def review(market: Market, repair: Repair | None = None, place: Locate = nowhere) -> Review:
     """Warnings about ``market``, and about the ``repair`` its correlation matrix took; errors of what cannot be used.
 
-    ``place`` gives the cell of "valuation_date", "curve:ID", "repo:UNDERLYING", "volatility:UNDERLYING:EXPIRY",
-    "dividend_yield:UNDERLYING", "dividends:UNDERLYING", "fx:EURUSD", "fx_volatilities:EURUSD", "credit:NAME" or
-    "correlation:A:B", or None.
+    ``place`` gives the cell of "valuation_date", "spot:UNDERLYING", "dividend_yield:UNDERLYING", "credit:NAME",
+    "agreements:NETTING_SET", "correlation:A:B", and of what the modules of the gates name; or None.
     """
-    issues: list[Issue] = [*_weekend(market.valuation_date, place)]
+    found = _Found()
+    found.add(_weekend(market.valuation_date, place))
     if repair is not None:
-        issues.append(_repair(repair, place))
-    for curve in market.curves.values():
-        here = place(f"curve:{curve.curve_id}")
-        issues.extend(_rates(curve, here))
-        issues.extend(_forward_rates(curve, here))
+        found.add([_repair(repair, place)])
+    sound: dict[str, DiscountCurve] = {}
+    for (currency, collateral), curve in market.curves.items():
+        told = list(curve_gates(curve, place))
+        found.add(told)
+        if not told and not collateral:
+            sound[currency] = curve
     for name, repo in market.repo.items():
-        for curve in (repo.long, repo.short):
-            issues.extend(_rates(curve, place(f"repo:{name}")))
-    for underlying in market.underlyings.values():
-        issues.extend(_dividend_yield(underlying, place))
-    issues.extend(dividend_gates(market, place))
+        found.add(repo_gates(name, repo, sound.get(repo.mid.currency), place), f"repo:{name}")
+    for name, underlying in market.underlyings.items():
+        found.add(_dividend_yield(underlying, place), name)
+        found.add(dividend_gates(underlying, market, place), name)
+        found.add(weekend_ex_dates(underlying, market, place))
+        found.add(volatility_gates(name, market, place), name)
+        found.add(weekend_expiries(name, market, place))
     for surface in market.surfaces.values():
-        issues.extend(surface_gates(surface, place))
+        found.add(surface_gates(surface, place))
+        found.add(local_vol_gates(surface, place))
     for credit in market.credit.values():
-        issues.extend(_hazard_rates(credit, place))
-    issues.extend(fx_gates(market, place))
-    return tuple(issues)
+        found.add(_hazard_rates(credit, place))
+    for agreement in market.agreements.values():
+        found.add(_agreement_currency(agreement, market, place))
+    for pairs, issue in rate_gates(market.fx, place):
+        names = ["".join(pair) for pair in pairs]
+        if issue.severity is Severity.WARNING:
+            found.add([issue], *(f"fx:{name}" for name in names))
+        else:
+            found.refuse(issue, names)
+    for pair in market.fx.volatilities:
+        found.add(fx_volatility_gates(pair, market, place), f"fx_volatilities:{pair[0]}{pair[1]}")
+    found.add(volatility_triangles(market, place))
+    for item, issue in level_gates(market, found.refused, place):
+        found.add([issue], item)
+    return found.review()
+
+
+class _Found:
+    """Issues in order, and by the items that they put in doubt or keep from being used."""
+
+    def __init__(self) -> None:
+        self._issues: list[Issue] = []
+        self.refused: dict[str, tuple[Issue, ...]] = {}
+        self._doubts: dict[str, tuple[Issue, ...]] = {}
+
+    def add(self, issues: Iterable[Issue], *items: str) -> None:
+        """Remember issues; the warnings among them put ``items`` in doubt."""
+        for issue in issues:
+            self._issues.append(issue)
+            if issue.severity is Severity.WARNING:
+                for item in items:
+                    self._doubts[item] = (*self._doubts.get(item, ()), issue)
+
+    def refuse(self, issue: Issue, pairs: Iterable[str]) -> None:
+        """Remember an issue that keeps exchange rates from being used."""
+        self._issues.append(issue)
+        for pair in pairs:
+            self.refused[pair] = (*self.refused.get(pair, ()), issue)
+
+    def review(self) -> Review:
+        return Review(tuple(self._issues), self.refused, self._doubts)
 
 
 def _weekend(day: date, place: Locate) -> Iterator[Issue]:
@@ -77,40 +140,6 @@ def _repair(repair: Repair, place: Locate) -> Issue:
     )
 
 
-def _rates(curve: DiscountCurve, here: Place | None) -> Iterator[Issue]:
-    low, high = PLAUSIBLE_ZERO_RATES
-    rates = [(curve.zero_rate(day), day) for day in curve.dates]
-    strange = [(rate, day) for rate, day in rates if not low <= rate <= high]
-    if strange:
-        rate, day = max(strange, key=lambda item: abs(item[0]))
-        yield warning(
-            here,
-            "implausible-rate",
-            f"a zero rate of {percent(rate, 2)} for {day} on curve {curve.curve_id}",
-            f"zero rates between {percent(low)} and {percent(high)}",
-            "Check the unit: 2.5 % is entered as 0.025. The rate is used as given.",
-        )
-
-
-def _forward_rates(curve: DiscountCurve, here: Place | None) -> Iterator[Issue]:
-    days = (curve.valuation_date, *curve.dates)
-    spans = zip(pairwise(days), pairwise(curve.times), pairwise(curve.log_discount_factors), strict=True)
-    forwards = [((x - y) / (t - s), start, end) for (start, end), (s, t), (x, y) in spans]
-    # Flat stretches of rounded quotes miss 0 by rounding only.
-    falling = [item for item in forwards if item[0] < -1e-8]
-    if falling:
-        rate, start, end = min(falling)
-        others = f" (and over {len(falling) - 1} other spans)" if len(falling) > 1 else ""
-        yield warning(
-            here,
-            "negative-forward-rate",
-            f"discount factors that rise from {start} to {end} on curve {curve.curve_id}, "
-            f"a forward rate of {percent(rate, 2)}{others}",
-            "discount factors that fall with time, unless rates are negative",
-            "Check the curve's points around these dates; they are used as given.",
-        )
-
-
 def _dividend_yield(underlying: Underlying, place: Locate) -> Iterator[Issue]:
     (low, high), rate = PLAUSIBLE_YIELDS, underlying.dividends.yield_rate
     if not low <= rate <= high:
@@ -132,4 +161,19 @@ def _hazard_rates(credit: HazardCurve, place: Locate) -> Iterator[Issue]:
             f"a hazard rate of {percent(rate, 1)} a year to {day} for {credit.name}",
             f"hazard rates up to {percent(PLAUSIBLE_HAZARD_RATE)}",
             "Check the unit: a spread of 120 basis points is entered as 0.012. The rates are used as given.",
+        )
+
+
+def _agreement_currency(agreement: Agreement, market: Market, place: Locate) -> Iterator[Issue]:
+    # A curve that was given but refused may be the one: its own issue says enough.
+    refused = any((i.sheet or "").casefold().startswith("curve") for own in market.rejected.values() for i in own)
+    if (agreement.currency, "") not in market.curves and not refused:
+        yield warning(
+            place(f"agreements:{agreement.netting_set}"),
+            "agreement-without-curve",
+            f"currency {agreement.currency} of the agreement of netting set {agreement.netting_set}, which has no "
+            "standard discount curve",
+            f"a curve of {agreement.currency} with empty collateral, over which collateral earns its spread",
+            "Correct the currency, or add its curve to the curves table. No value in this report depends on it; "
+            "valuation adjustments will.",
         )

@@ -3,7 +3,8 @@
 Conventions by currency (common practice), in :data:`CONVENTIONS`: overnight index with its
 day count and calendar, days from trade to spot, days from the end of a swap period to its
 payment. Swaps pay yearly (once, if shorter), modified following, both legs in the index's day
-count, as do deposits. A deposit of one day begins tonight, everything else at spot.
+count, as do deposits. A deposit of one day begins tonight, everything else at spot. On a day
+without business, quotes are those of the next business day; until then the first rate accrues.
 """
 
 from __future__ import annotations
@@ -124,6 +125,14 @@ class Bootstrap:
     instruments: tuple[Instrument, ...]
 
 
+def first_day(currency: str, valuation_date: date) -> date:
+    """The day from which quotes in ``currency`` count: the valuation date, or the next business day of its market."""
+    if currency not in CONVENTIONS:
+        return valuation_date
+    calendar = CONVENTIONS[currency].index().fixingCalendar()
+    return from_quantlib(calendar.adjust(to_quantlib(valuation_date), ql.Following))
+
+
 def bootstrap(currency: str, valuation_date: date, quotes: Sequence[RateQuote], day_count: str) -> Bootstrap:
     """Discount factors that reprice every quote, log-linear in years of ``day_count`` in between.
 
@@ -132,7 +141,7 @@ def bootstrap(currency: str, valuation_date: date, quotes: Sequence[RateQuote], 
     """
     if not quotes:
         raise ValueError("no quotes are given")
-    with evaluation_date(valuation_date):
+    with evaluation_date(first_day(currency, valuation_date)):
         made = [(_helper(currency, quote), quote) for quote in quotes]
         instruments = sorted(
             (_instrument(helper, currency, quote) for helper, quote in made), key=lambda i: i.last_date
@@ -153,7 +162,7 @@ def reprice(
     currency: str, valuation_date: date, quotes: Sequence[RateQuote], discount_factor: Callable[[date], float]
 ) -> tuple[RepricedQuote, ...]:
     """Each quote beside the rate that ``discount_factor`` gives for it, by last date."""
-    with evaluation_date(valuation_date):
+    with evaluation_date(first_day(currency, valuation_date)):
         instruments = [_instrument(_helper(currency, quote), currency, quote) for quote in quotes]
     return repriced(instruments, discount_factor)
 

@@ -3,14 +3,14 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterator, Sequence
-from datetime import date
+from collections.abc import Iterator, Sequence
 
 from pricer.core.issues import Issue
 from pricer.core.source import Place
 from pricer.market.arbitrage import ArbitrageKind, Violation
-from pricer.market.checked_surface import CheckedSurface
+from pricer.market.checked_surface import WORST_CONTRADICTION, CheckedSurface
 from pricer.market.findings import Locate, error, nowhere, percent, warning
+from pricer.market.volatility_quality import quote_place
 
 #: Quotes between 10 and 90 delta that are missed by more than this volatility (0.05 vol points) are reported.
 VISIBLE_MISS = 5e-4
@@ -21,22 +21,43 @@ MOST_VIOLATIONS = 10
 def surface_gates(surface: CheckedSurface, place: Locate = nowhere) -> tuple[Issue, ...]:
     """Warnings about the quotes and the fit of ``surface``, and one error if it fails.
 
-    ``place`` gives the cell of "volatility:UNDERLYING:EXPIRY", the first quote of an expiry (a date
-    like 2027-05-31), or None.
+    ``place`` gives the cell of "volatility:UNDERLYING:EXPIRY:STRIKE" or, for the first quote of an expiry (a date
+    like 2027-05-31), "volatility:UNDERLYING:EXPIRY", or None.
     """
     name = surface.underlying_id
 
-    def at(day: date) -> Place | None:
-        return place(f"volatility:{name}:{day}")
+    def at(violation: Violation) -> Place | None:
+        return _nearest_cell(surface, violation, place)
 
     ordered = sorted(surface.violations, key=lambda violation: -violation.size)
-    issues = [_violation(name, violation, at(violation.expiry_date)) for violation in ordered[:MOST_VIOLATIONS]]
+    issues = [_violation(name, violation, at(violation)) for violation in ordered[:MOST_VIOLATIONS]]
     if len(ordered) > MOST_VIOLATIONS:
-        issues.append(_rest(name, ordered[MOST_VIOLATIONS:], at(ordered[MOST_VIOLATIONS].expiry_date)))
-    issues.extend(_misses(surface, at))
+        issues.append(_rest(name, ordered[MOST_VIOLATIONS:], at(ordered[MOST_VIOLATIONS])))
+    issues.extend(_misses(surface, place))
     if not surface.passes:
-        issues.append(_failure(surface, at(surface.surface.dates[0])))
+        issues.append(_failure(surface, _worst_cell(surface, ordered, place)))
     return tuple(issues)
+
+
+def _nearest_cell(surface: CheckedSurface, violation: Violation, place: Locate) -> Place | None:
+    """The quote of the violation's (earlier) expiry next to its strike."""
+    own = [fit for fit in surface.quotes if fit.expiry_date == violation.expiry_date]
+    if not own:
+        return place(f"volatility:{surface.underlying_id}:{violation.expiry_date}")
+    nearest = min(own, key=lambda fit: abs(math.log(fit.relative_strike) - violation.log_moneyness))
+    return quote_place(surface.underlying_id, nearest, place)
+
+
+def _worst_cell(surface: CheckedSurface, ordered: Sequence[Violation], place: Locate) -> Place | None:
+    """The quote that the first of the surface's failures is about."""
+    for grave in (
+        [v for v in ordered if v.quoted and v.size > WORST_CONTRADICTION],
+        [v for v in ordered if not v.quoted],
+    ):
+        if grave:
+            return _nearest_cell(surface, grave[0], place)
+    middle = [fit for fit in surface.quotes if fit.in_the_middle] or list(surface.quotes)
+    return quote_place(surface.underlying_id, max(middle, key=lambda fit: abs(fit.error)), place)
 
 
 def _violation(name: str, violation: Violation, here: Place | None) -> Issue:
@@ -72,14 +93,14 @@ def _rest(name: str, rest: Sequence[Violation], here: Place | None) -> Issue:
     )
 
 
-def _misses(surface: CheckedSurface, place: Callable[[date], Place | None]) -> Iterator[Issue]:
+def _misses(surface: CheckedSurface, place: Locate) -> Iterator[Issue]:
     missed = [fit for fit in surface.quotes if fit.in_the_middle and abs(fit.error) > VISIBLE_MISS]
     if not missed:
         return
     worst = max(missed, key=lambda fit: abs(fit.error))
     others = f", and {len(missed) - 1} more of its quotes by less" if len(missed) > 1 else ""
     yield warning(
-        place(worst.expiry_date),
+        quote_place(surface.underlying_id, worst, place),
         "volatility-miss",
         f"a surface of {surface.underlying_id} that misses the quote of {worst.expiry_date} at strike "
         f"{worst.strike:.6g} ({percent(worst.relative_strike, 1)} of the forward) by {_points(abs(worst.error))}: "

@@ -27,6 +27,10 @@ from pricer.market.smile_quotes import (
 
 Array = NDArray[np.float64]
 
+#: A strike this many standard deviations from the forward, if its option is worth nothing, is a slip of strike or spot.
+FARTHEST_STRIKE = 6.0
+#: The only quote of an expiry must lie within this share of the forward, or within these standard deviations of it.
+LONE_QUOTE_SHARE, LONE_QUOTE_DEVIATIONS = 0.02, 0.5
 #: Strikes closer than this share of the forward are one strike.
 SAME_STRIKE = 1e-9
 
@@ -130,7 +134,8 @@ def by_expiry(price: AffinePrice, valuation_date: date, quotes: Sequence[Volatil
         level, time = price.at(day), year_fraction(valuation_date, day)
         group = sorted(group, key=lambda quote: quote.on(level.forward))
         own = list(_faults(group, level, any_shape))
-        made = _expiry(group, level, time) if not own else None
+        own = own or list(_lone(group, level, time))
+        made = _expiry(group, level, time, price.spot) if not own else None
         if isinstance(made, ExpiryQuotes):
             found.append(made)
         faults.extend(own if made is None else [made] if isinstance(made, QuoteFault) else [])
@@ -208,7 +213,24 @@ def _faults(group: Sequence[VolatilityQuote], level: AffineLevel, any_shape: boo
         )
 
 
-def _expiry(group: Sequence[VolatilityQuote], level: AffineLevel, time: float) -> ExpiryQuotes | QuoteFault:
+def _lone(group: Sequence[VolatilityQuote], level: AffineLevel, time: float) -> Iterator[QuoteFault]:
+    """A single quote says what the volatility is at the forward only if it is quoted near it."""
+    quote = group[0]
+    strike, forward = quote.on(level.forward), level.forward
+    near = max(LONE_QUOTE_SHARE, LONE_QUOTE_DEVIATIONS * quote.volatility * math.sqrt(time))
+    if len(group) == 1 and abs(math.log(strike / forward)) > near:
+        yield QuoteFault(
+            quote.expiry_date,
+            strike,
+            f"a single volatility for {quote.expiry_date}, at strike {strike:.6g}, where the forward is {forward:.6g}",
+            "at least three strikes, or one volatility at the forward",
+            "Add quotes at other strikes, or clear the strike if it is the volatility at the forward.",
+        )
+
+
+def _expiry(
+    group: Sequence[VolatilityQuote], level: AffineLevel, time: float, spot: float
+) -> ExpiryQuotes | QuoteFault:
     day, root = group[0].expiry_date, math.sqrt(time)
     strikes = np.array([quote.on(level.forward) for quote in group])
     volatilities = np.array([quote.volatility for quote in group])
@@ -224,6 +246,15 @@ def _expiry(group: Sequence[VolatilityQuote], level: AffineLevel, time: float) -
         except ValueError:
             bad = np.array([0])
     i = int(bad[0])
+    if abs(math.log(strikes[i] / level.forward)) > FARTHEST_STRIKE * volatilities[i] * root:
+        return QuoteFault(
+            day,
+            float(strikes[i]),
+            f"strike {strikes[i]:.6g} for {day}, where the spot is {spot:.6g} and the forward {level.forward:.6g}",
+            f"a strike where an option at a volatility of {100.0 * volatilities[i]:.2f} % is worth more than nothing",
+            "Check the strike and the spot: pence against pounds, a split, or per cent of the forward in the column of "
+            "absolute strikes?",
+        )
     return QuoteFault(
         day,
         float(strikes[i]),

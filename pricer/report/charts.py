@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 from pricer.report.styles import BLUE, FAINT, FONT, INK, LINE, ORANGE
@@ -47,20 +47,24 @@ def scatter_chart(
     x_title: str,
     y_title: str,
     x: Reference,
-    inside: Reference,
+    inside: Mapping[str, Reference],
     outside: Reference | None,
     limits: Sequence[tuple[Reference, Reference]],
 ) -> ScatterChart:
-    """Points inside and outside two level limits, each given by its ends.
+    """Points inside and outside two level limits, each given by its ends; those inside in one or two named clouds.
 
-    The two clouds differ in shape and lightness, not in hue alone.
+    The clouds differ in shape and lightness, not in hue alone.
     """
     from openpyxl.chart import ScatterChart
 
     chart = ScatterChart()
     chart.style = 2
     chart.scatterStyle = "lineMarker"
-    chart.series.append(cloud(x, inside, "agrees", "circle", 4, BLUE))
+    names = list(inside)
+    if len(names) > 1:
+        chart.series.append(cloud(x, inside[names[0]], names[0], "x", 5, FAINT))
+    if names:
+        chart.series.append(cloud(x, inside[names[-1]], names[-1], "circle", 4, BLUE))
     if outside is not None:
         chart.series.append(cloud(x, outside, "differs", "triangle", 9, ORANGE))
     chart.series.extend(limit(*ends) for ends in limits)
@@ -80,7 +84,7 @@ def cloud(x: Reference, y: Reference, name: str, symbol: str, size: int, color: 
     series.marker.symbol = symbol
     series.marker.size = size
     series.marker.graphicalProperties.solidFill = color
-    series.marker.graphicalProperties.line.solidFill = color if symbol == "circle" else INK
+    series.marker.graphicalProperties.line.solidFill = color if symbol in ("circle", "x") else INK
     series.graphicalProperties.line.noFill = True
     series.smooth = False  # some programs take the lack of a word for yes
     return series

@@ -102,6 +102,13 @@ VALUATIONS: tuple[Column, ...] = (
     Column("status", "status", Kind.STATUS, "How the pricing of the trade ended, in one word.", widest=22),
     text_column("model", "model", "How the underlyings' levels move in the value shown.", 16),
     text_column(
+        "checked",
+        "checked, under its model, by",
+        "Which independent reference under the same model stands beside the value. The status tells whether it "
+        "disagrees.",
+        15,
+    ),
+    text_column(
         "method",
         "method, or why not priced",
         "How the value was obtained. For a trade without a value the first reason in short; the plain file leaves it "
@@ -364,8 +371,15 @@ CROSS_CHECK: tuple[Column, ...] = (
         printed=False,
     ),
     Column(
-        "agrees",
-        "difference where it agrees (tolerances)",
+        "agrees_local_volatility",
+        "difference under local volatility where it agrees (tolerances)",
+        Kind.FIXED,
+        "Difference over tolerance, for the summary's chart.",
+        printed=False,
+    ),
+    Column(
+        "agrees_lognormal",
+        "difference under lognormal levels where it agrees (tolerances)",
         Kind.FIXED,
         "Difference over tolerance, for the summary's chart.",
         printed=False,
@@ -385,6 +399,19 @@ CROSS_CHECK: tuple[Column, ...] = (
         printed=False,
     ),
     text_column("source", "source of reference", "Where the reference's formula was published.", 60, printed=False),
+)
+
+REFUSAL_CAUSES: tuple[Column, ...] = (
+    Column("trades", "trades (number)", Kind.COUNT, "Trades that have no price because of it."),
+    Column("alone", "for no other cause (number)", Kind.COUNT, "Those of them that would have a price without it."),
+    text_column("side", "mend in", "The input that most likely needs mending: book or market.", 10),
+    text_column("kind", "kind", "What is wrong, in a few words.", 26),
+    Column("found", "found", Kind.PROSE, "What was found.", widest=44),
+    Column("expected", "expected", Kind.PROSE, "What a trade needs.", widest=34),
+    Column("mend", "how to mend it", Kind.PROSE, "What to do.", widest=56),
+    text_column("first_trade", "first trade", "The first trade that it costs.", 18),
+    Column("place", "its place", Kind.PROSE, "Where it was found for that trade.", widest=30),
+    text_column("code", "code", "A short stable word for machines.", 24, printed=False),
 )
 
 PROBLEMS: tuple[Column, ...] = (

@@ -48,6 +48,23 @@ READING: tuple[tuple[str, str], ...] = (
         "target of 0.05 vol points",
         "Asked of the simulated model on every quoted vanilla whose call has a forward delta of 10 to 90 %.",
     ),
+    (
+        "derived points",
+        "Where the market quotes a level, a skew and a curvature instead of strikes, what these mean one standard "
+        "deviation to either side of the forward is repriced too, and not counted as quotes.",
+    ),
+    (
+        "mean of simulated less fitted",
+        "In standard errors of the simulated volatilities, over all points. Points of one underlying share their "
+        "draws, so chance moves the mean by about one over the root of the number of underlyings; what is more is a "
+        "bias, most likely of the time steps.",
+    ),
+    (
+        "checked, under its model, by",
+        "A cross-check tests the engine under the model it was made for. Most closed forms and bounds are of lognormal "
+        "levels: beside a value under local volatility they test the sampling, not that value. The column says which "
+        "reference of the leading model stands beside the value.",
+    ),
     ("1 bp of notional", "0.01 % of the trade's notional."),
     (
         "reporting currency",
@@ -70,9 +87,10 @@ INTERVALS: dict[Interval, str] = {
 STATUSES: dict[Status, str] = {
     Status.PRICED: "The value is as precise as asked; its deltas' errors stand beside them.",
     Status.PRECISION_NOT_REACHED: "Priced, but the value less precisely than asked: read its standard error.",
-    Status.DISPUTED: "Priced, but a cross-check of the trade disagrees: find out why before using the number.",
+    Status.DISPUTED: "Priced, but a cross-check of the trade, under either model, disagrees: find out why before using "
+    "the number. Without it, nothing that was compared disagrees; whether anything was, stands under checked.",
     Status.FAILING_SURFACE: "Priced because the user asked for it, from a volatility surface that fails its checks: "
-    "the sheet Market says which and why.",
+    "the sheet Market says which and why. It comes before disputed and precision not reached.",
     Status.NOT_PRICED: "No value; Valuations has the reason, short in place of the method and in full at the end.",
 }
 

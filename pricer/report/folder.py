@@ -23,7 +23,8 @@ if TYPE_CHECKING:
 WORKBOOK = "report.xlsx"
 # The table of times is in run.json: plain tables must be the same on every run of the same input and seed.
 _AS_CSV = (
-    *("valuations", "deltas", "underlying_deltas", "summaries", "cross_check", "problems", "not_priced"),
+    *("valuations", "deltas", "underlying_deltas", "summaries", "cross_check"),
+    *("problems", "not_priced", "refusal_causes"),
     *("market_problems", "surfaces", "violations", "calibration", "curves", "forwards"),
     *("credit", "funding", "agreements"),
 )

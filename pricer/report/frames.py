@@ -17,6 +17,8 @@ from pricer.report import tidy
 from pricer.report.market_frames import market_tables
 from pricer.report.model_differences import model_difference_bp
 from pricer.report.rates import Rates
+from pricer.report.reference_coverage import checked
+from pricer.report.refusal_causes import RefusalCause, refusal_causes
 from pricer.report.sums import ratio
 from pricer.report.text import shorten
 from pricer.report.totals import GROUPINGS, Total, group_totals, priced
@@ -48,6 +50,12 @@ def tables(outcome: Outcome) -> Mapping[str, Frame]:
         "cross_check": cross_check(outcome),
         "problems": problems(outcome),
         "not_priced": not_priced(outcome),
+        "refusal_causes": tidy.records(
+            refusal_causes(outcome),
+            RefusalCause,
+            text="kind found expected mend first_trade place side code",
+            whole="trades alone",
+        ),
         "seconds": seconds(outcome),
         **market_tables(outcome, _all_issues(outcome)),
     }
@@ -63,7 +71,7 @@ def valuations(outcome: Outcome) -> Frame:
     def number(name: str) -> list[Any]:
         return [None if _status(item) is Status.NOT_PRICED else getattr(item, name) for item in items]
 
-    rates = Rates.from_outcome(outcome)
+    rates, checks = Rates.from_outcome(outcome), checked(outcome)
     currencies, differences = known("currency"), number("model_difference")
     difference_errors = number("model_difference_standard_error")
 
@@ -85,6 +93,7 @@ def valuations(outcome: Outcome) -> Frame:
             "interval": number("interval"),
             "method": number("method"),
             "status": [_status(item) for item in items],
+            "checked": [checks.get(item.trade_id) if isinstance(item, Valuation) else None for item in items],
             "notional": known("notional"),
             "unpaid_premium": number("unpaid_premium"),
             "reporting_currency": [outcome.facts.reporting_currency] * len(items),
@@ -108,7 +117,7 @@ def valuations(outcome: Outcome) -> Frame:
             "time_steps": number("time_steps"),
             "ending": [reason(item) if isinstance(item, Refusal) else item.ending for item in items],
         },
-        text="trade_id product currency interval method status reporting_currency model counterparty strategy "
+        text="trade_id product currency interval method status checked reporting_currency model counterparty strategy "
         "netting_set ending",
         whole="paths randomisations degrees_of_freedom time_steps",
         dates="expiry_date",
@@ -191,7 +200,10 @@ def cross_check(outcome: Outcome) -> Frame:
 
 
 def problems(outcome: Outcome) -> Frame:
-    """One row a problem, the gravest first; those of the refused trades name the trade they refuse."""
+    """One row a problem, the gravest first; those of the refused trades name the trade they refuse.
+
+    One that costs many trades has as many rows; ``refusal_causes`` tells it once.
+    """
     rows = sorted(_all_issues(outcome), key=lambda issue: _SEVERITIES.index(issue.severity))
     order = ["severity", "trade_id", "file", "sheet", "row", "column", "cell", "code", "found", "expected", "mend"]
     text = " ".join(name for name in order if name != "row")

@@ -9,11 +9,20 @@ _EXPIRY = Column("expiry_date", "expiry", Kind.DATE, "The expiry that is quoted.
 
 MARKET_PROBLEMS: tuple[Column, ...] = (
     text_column("kind", "kind of problem", "What was wrong, in two or three words.", 34),
+    text_column("table", "table", "The table of the market in which it was found.", 18),
     Column("severity", "severity", Kind.STATUS, "As on the sheet Problems."),
     Column("number", "places (number)", Kind.COUNT, "Places at which it was found; the sheet Problems has every one."),
     Column("place", "first place", Kind.PROSE, "Where it was found first."),
     Column("found", "found there", Kind.PROSE, "What stands at the first place."),
     Column("mend", "what was done, or how to mend it", Kind.PROSE, "For the first place.", widest=56),
+)
+
+LACKING: tuple[Column, ...] = (
+    text_column("kind", "kind", "What is wrong, in a few words.", 34),
+    Column("trades", "trades (number)", Kind.COUNT, "Trades of the book that have no price because of it."),
+    text_column("first_trade", "first trade", "The first of them.", 18),
+    Column("found", "found", Kind.PROSE, "What was found."),
+    Column("mend", "how to mend it", Kind.PROSE, "What to do."),
 )
 
 SURFACES: tuple[Column, ...] = (
@@ -23,21 +32,37 @@ SURFACES: tuple[Column, ...] = (
         "verdict",
         Kind.STATUS,
         "Fails: its quotes contradict each other, the fitted surface has arbitrage, or a quote is missed widely. "
-        "Trades are priced from it only where the user asked for that, and then marked. Misses target: it passes, but "
-        "a quote between 10 and 90 delta is missed by more than 0.05 vol points.",
+        "Trades are priced from it only where the user asked for that, and then marked. Cannot be used: the underlying "
+        "lacks something, or something of it was refused. Misses target: it passes, but "
+        "a quote between 10 and 90 delta is missed by more than 0.05 vol points. No smile: volatilities at the forward "
+        "alone, which every model gives back.",
         widest=14,
     ),
+    Column("trades", "trades (number)", Kind.COUNT, "Trades of the book that depend on the underlying."),
+    Column(
+        "trades_refused",
+        "not priced because of it (number)",
+        Kind.COUNT,
+        "Those of them that have no price because of it, perhaps for other reasons too.",
+    ),
     Column("expiries", "expiries (number)", Kind.COUNT, "Expiries that are quoted."),
-    Column("quotes", "quotes (number)", Kind.COUNT, "Vanillas that are quoted."),
+    Column("quotes", "quotes (number)", Kind.COUNT, "Volatilities that are quoted."),
+    Column(
+        "derived",
+        "derived points (number)",
+        Kind.COUNT,
+        "What quoted skews and curvatures mean one standard deviation to either side of the forward; no quotes, but "
+        "judged like them.",
+    ),
     Column("violations", "violations (number)", Kind.COUNT, "Violations of arbitrage by quotes and fitted surface."),
     Column(
-        "worst_fit_error_middle",
+        "worst_fit_error_middle_vol_points",
         "worst fit error, 10 to 90 delta (vol points)",
         Kind.FINE,
         "Largest absolute difference of fitted and quoted volatility among the quotes between 10 and 90 delta.",
     ),
     Column(
-        "worst_simulated_error_middle",
+        "worst_simulated_error_middle_vol_points",
         "worst simulated error, 10 to 90 delta (vol points)",
         Kind.FINE,
         "The same of the volatility implied from the paths that trades are valued on; blank where not simulated.",
@@ -55,18 +80,18 @@ SURFACES: tuple[Column, ...] = (
         "Quotes between 10 and 90 delta whose simulated error is larger than 0.05 vol points.",
     ),
     Column(
-        "worst_fit_error_wings",
+        "worst_fit_error_wings_vol_points",
         "worst fit error outside (vol points)",
         Kind.FINE,
         "Among the quotes outside 10 to 90 delta, where no target applies.",
     ),
     Column(
-        "worst_simulated_error_wings",
+        "worst_simulated_error_wings_vol_points",
         "worst simulated error outside (vol points)",
         Kind.FINE,
         "Among the quotes outside 10 to 90 delta.",
     ),
-    Column("why", "why it fails, or its first violation", Kind.PROSE, "In words.", widest=56),
+    Column("why", "why it fails or cannot be used, or its first violation", Kind.PROSE, "In words.", widest=56),
 )
 
 VIOLATIONS: tuple[Column, ...] = (
@@ -77,10 +102,21 @@ VIOLATIONS: tuple[Column, ...] = (
 CALIBRATION: tuple[Column, ...] = (
     _UNDERLYING,
     _EXPIRY,
-    Column("strike", "strike (underlying's currency)", Kind.AMOUNT, "The quoted strike."),
+    text_column(
+        "origin",
+        "origin",
+        "A quote of the market, or a point derived from a quoted skew and curvature, which is not counted as a quote.",
+        9,
+    ),
+    Column("strike", "strike (underlying's currency)", Kind.AMOUNT, "The strike."),
     Column("strike_percent_of_forward", "strike (% of forward)", Kind.FIXED, "The strike over the forward."),
     Column("delta_percent", "delta of the call (%)", Kind.FIXED, "Forward delta of the call at the quoted volatility."),
-    Column("quoted_volatility_percent", "quoted volatility (%)", Kind.FIXED, "As the market snapshot has it."),
+    Column(
+        "quoted_volatility_percent",
+        "quoted volatility (%)",
+        Kind.FIXED,
+        "As the market snapshot has it, or as its parameters mean it.",
+    ),
     Column("fitted_volatility_percent", "fitted volatility (%)", Kind.FIXED, "What the fitted surface says."),
     Column("fit_error_vol_points", "fit error (vol points)", Kind.FINE, "Fitted less quoted volatility."),
     Column(
@@ -97,9 +133,9 @@ CALIBRATION: tuple[Column, ...] = (
     ),
     Column(
         "simulated_standard_error_vol_points",
-        "sampling error (vol points)",
+        "standard error of simulation (vol points)",
         Kind.FINE,
-        "Standard error of the simulated volatility.",
+        "Of the simulated volatility: sampling, and the bias that the time steps leave, together.",
     ),
     Column(
         "target",

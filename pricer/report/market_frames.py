@@ -14,7 +14,7 @@ from pricer.market.agreements import Agreement
 from pricer.report import tidy
 from pricer.report.market_problems import MarketProblem, market_problems
 from pricer.report.sums import ratio
-from pricer.report.surface_fits import SurfaceFit, all_quotes, fit_error, reach, simulated_error, surface_fits
+from pricer.report.surface_fits import Origin, SurfaceFit, all_points, fit_error, reach, simulated_error, surface_fits
 from pricer.run.outcome import MarketFacts, Outcome
 
 if TYPE_CHECKING:
@@ -29,14 +29,14 @@ def market_tables(outcome: Outcome, issues: Sequence[Issue]) -> Mapping[str, Fra
     problems = market_problems(issues, outcome.facts.sources)
     return {
         "market_problems": tidy.records(
-            problems, MarketProblem, text="severity kind place found expected mend code", whole="number"
+            problems, MarketProblem, text="severity kind table place found expected mend code", whole="number"
         ),
         "surfaces": tidy.records(
             surface_fits(outcome),
             SurfaceFit,
             text="underlying verdict why",
-            whole="expiries quotes violations fit_beyond_target beyond_target",
-        ),
+            whole="trades trades_refused expiries quotes derived violations fit_beyond_target beyond_target",
+        ).rename(columns=_in_vol_points),
         "violations": violations(market),
         "calibration": calibration(market),
         "curves": curves(market),
@@ -55,12 +55,13 @@ def violations(market: MarketFacts) -> Frame:
 
 
 def calibration(market: MarketFacts) -> Frame:
-    """One row a quoted vanilla, by underlying, expiry and strike."""
-    quotes = sorted(all_quotes(market.surfaces), key=lambda q: (q.underlying, q.expiry_date, q.strike))
+    """One row a quoted vanilla or derived point, by underlying, expiry and strike."""
+    quotes = sorted(all_points(market.surfaces), key=lambda q: (q.underlying, q.expiry_date, q.strike))
     return tidy.frame(
         {
             "underlying": [q.underlying for q in quotes],
             "expiry_date": [q.expiry_date for q in quotes],
+            "origin": [Origin.DERIVED if q.derived else Origin.QUOTED for q in quotes],
             "strike": [q.strike for q in quotes],
             "strike_percent_of_forward": [_percent(q.strike_of_forward) for q in quotes],
             "delta_percent": [_percent(q.delta) for q in quotes],
@@ -72,7 +73,7 @@ def calibration(market: MarketFacts) -> Frame:
             "simulated_standard_error_vol_points": [_percent(q.simulated_standard_error) for q in quotes],
             "target": [reach(q) for q in quotes],
         },
-        text="underlying target",
+        text="underlying origin target",
         dates="expiry_date",
     )
 
@@ -159,6 +160,10 @@ def agreements(market: MarketFacts) -> Frame:
     frame = tidy.records(market.agreements, Agreement, text=text, whole="margin_period_days")
     frame["collateral_spread"] = [_bp(spread) for spread in frame["collateral_spread"]]
     return frame.rename(columns={"collateral_spread": "collateral_spread_bp"})
+
+
+def _in_vol_points(name: str) -> str:
+    return f"{name}_vol_points" if name.startswith("worst_") else name
 
 
 def _percent(value: float | None) -> float | None:

@@ -1,4 +1,4 @@
-"""What was wrong with the snapshot, counted by kind; the table of problems has every one of them."""
+"""What was wrong with the snapshot, counted by kind and table; the table of problems has every one of them."""
 
 from __future__ import annotations
 
@@ -15,13 +15,14 @@ BOOK_SHEETS = frozenset({"trades", "constituents"})
 
 @dataclass(frozen=True, slots=True)
 class MarketProblem:
-    """All problems of one kind and severity.
+    """All problems of one kind, table and severity.
 
-    ``number`` counts places; the rest describes the first of them.
+    ``table`` is blank where no table is at fault. ``number`` counts places; the rest describes the first of them.
     """
 
     severity: Severity
     kind: str
+    table: str
     number: int
     place: str
     found: str
@@ -33,16 +34,19 @@ class MarketProblem:
 def market_problems(issues: Sequence[Issue], sources: Sequence[SourceFile]) -> list[MarketProblem]:
     """Problems of the market among ``issues``, the gravest kinds first and the most frequent first among those.
 
+    A kind is told table by table: 50 levels of the price history that are no numbers do not hide one such rate.
+
     ``sources`` are the files read, the book's before the market's.
     """
-    kinds: dict[tuple[Severity, str], list[Issue]] = {}
+    kinds: dict[tuple[Severity, str, str], list[Issue]] = {}
     # One that is charged to several trades stands at one place.
     for issue in dict.fromkeys(replace(issue, trade_id=None) for issue in issues if _of_market(issue, sources)):
-        kinds.setdefault((issue.severity, issue.code), []).append(issue)
+        kinds.setdefault((issue.severity, issue.code, issue.sheet or ""), []).append(issue)
     problems = [
         MarketProblem(
             severity=severity,
             kind=code.replace("-", " "),
+            table=table,
             number=len(found),
             place=found[0].place(),
             found=found[0].found,
@@ -50,7 +54,7 @@ def market_problems(issues: Sequence[Issue], sources: Sequence[SourceFile]) -> l
             mend=found[0].mend,
             code=code,
         )
-        for (severity, code), found in kinds.items()
+        for (severity, code, table), found in kinds.items()
     ]
     return sorted(problems, key=lambda p: (_GRAVEST_FIRST.index(p.severity), -p.number))
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from typing import TYPE_CHECKING
 
@@ -9,9 +10,10 @@ from pricer.core.issues import Severity
 from pricer.report import market_columns as columns
 from pricer.report.columns import Column
 from pricer.report.fitting import Table
+from pricer.report.refusal_causes import Side
 from pricer.report.stacked_sheet import Stacked, add_stacked_sheet
 from pricer.report.styles import Mark
-from pricer.report.surface_fits import TARGET, Reach, Standing, all_quotes, reach
+from pricer.report.surface_fits import TARGET, Reach, Standing, all_points, all_quotes, mean_pull, reach, smiles
 from pricer.run.outcome import MarketFacts, Outcome
 
 if TYPE_CHECKING:
@@ -37,6 +39,8 @@ _NO_SURFACE = "The market quotes no smile: volatilities are flat in strike."
 def add_market_sheet(workbook: Workbook, outcome: Outcome, frames: Frames) -> None:
     """Add the sheet on the quality of the snapshot and of its repricing."""
     problems, surfaces, violations = frames["market_problems"], frames["surfaces"], frames["violations"]
+    causes = frames["refusal_causes"]
+    lacking = causes[causes["side"] == Side.MARKET].reset_index(drop=True)
     shown, rest = violations.head(_VIOLATIONS_SHOWN), len(violations) - _VIOLATIONS_SHOWN
     more = f", the first {len(shown)} of {len(violations):,}: the rest is in violations.csv" if rest > 0 else ""
     stack = [
@@ -48,22 +52,32 @@ def add_market_sheet(workbook: Workbook, outcome: Outcome, frames: Frames) -> No
                 [Mark.NONE if severity == Severity.WARNING else Mark.LOOK for severity in problems["severity"]],
                 "Nothing was found wrong with the market snapshot.",
             ),
-            spans=(1, 1, 1, 4, 4, 1),
+            spans=(1, 1, 1, 1, 5, 5, 1),
         ),
         Stacked(
             _table(
-                "How well the quotes are repriced",
+                "What the market lacks for trades of the book",
+                columns.LACKING,
+                lacking,
+                [Mark.LOOK] * len(lacking),
+                "No trade lacks anything of the market.",
+            ),
+            spans=(1, 1, 2, 6, 5),
+        ),
+        Stacked(
+            _table(
+                "The underlyings, and how well their quotes are repriced",
                 columns.SURFACES,
                 surfaces,
-                [_mark(verdict != Standing.PASSES) for verdict in surfaces["verdict"]],
-                _NO_SURFACE,
+                [_mark(verdict not in (Standing.PASSES, Standing.NO_SMILE)) for verdict in surfaces["verdict"]],
+                "No underlying is quoted or used.",
             )
         ),
     ]
     if len(violations):
         marks = [Mark.NONE] * len(shown)
         table = _table(f"Violations of arbitrage{more}", columns.VIOLATIONS, shown, marks, "")
-        stack.append(Stacked(table, spans=(1, 11)))
+        stack.append(Stacked(table, spans=(1, 14)))
     add_stacked_sheet(workbook, MARKET, market_note(outcome.market), stack, outcome.facts)
 
 
@@ -122,15 +136,30 @@ def market_table_sheets(outcome: Outcome, frames: Frames) -> list[Table]:
     ]
 
 
+def surfaces_note(market: MarketFacts) -> str:
+    """How many surfaces there are and fail."""
+    surfaces = smiles(market.surfaces)
+    if not surfaces:
+        return _NO_SURFACE
+    failing = sum(not surface.passes for surface in surfaces)
+    return f"{len(surfaces):,} volatility surfaces, {failing:,} failing."
+
+
 def market_note(market: MarketFacts) -> str:
     """How the surfaces stand, in one line."""
-    if not market.surfaces:
-        return _NO_SURFACE
-    failing = sum(not surface.passes for surface in market.surfaces)
-    return f"{len(market.surfaces):,} volatility surfaces, {failing:,} failing. {_calibration_note(market)}"
+    calibration = f"{_quotes_note(market)}." if smiles(market.surfaces) else ""
+    return f"{surfaces_note(market)} {calibration}".strip()
 
 
 def _calibration_note(market: MarketFacts) -> str:
+    """As :func:`market_note`, with how far the simulated model lies from the fitted surface on the whole."""
+    note, pull = _quotes_note(market), mean_pull(all_points(market.surfaces))
+    if not note:
+        return ""
+    return f"{note}. Mean of simulated less fitted: {pull:+.1f} standard errors." if math.isfinite(pull) else f"{note}."
+
+
+def _quotes_note(market: MarketFacts) -> str:
     quotes = all_quotes(market.surfaces)
     if not quotes:
         return ""
@@ -140,7 +169,11 @@ def _calibration_note(market: MarketFacts) -> str:
         f"{len(quotes):,} quotes, {len(counted):,} of them between 10 and 90 delta: simulated error beyond {TARGET:g}"
     )
     note = f"{note} vol points for {beyond:,}"
-    return f"{note}; {apart:,} were not simulated." if apart else f"{note}."
+    points = [point for point in all_points(market.surfaces) if point.derived]
+    if points:
+        missed = sum(reach(point) is Reach.BEYOND for point in points)
+        note = f"{note}, and for {missed:,} of {len(points):,} derived points"
+    return f"{note}; {apart:,} were not simulated" if apart else note
 
 
 def _table(heading: str, shown: tuple[Column, ...], frame: pandas.DataFrame, marks: list[Mark], empty: str) -> Table:

@@ -10,7 +10,8 @@ from typing import Any
 
 from pricer.core.issues import Severity
 from pricer.report.explanations import CAUTION
-from pricer.report.surface_fits import Reach, all_quotes, reach
+from pricer.report.reference_coverage import checked_total
+from pricer.report.surface_fits import Reach, all_quotes, reach, smiles
 from pricer.report.text import CSV_RULE, clean
 from pricer.report.totals import book_total
 from pricer.report.verdicts import without_sampling
@@ -25,8 +26,9 @@ def run_facts(outcome: Outcome, severities: Counter[str]) -> dict[str, Any]:
     headline = book_total(outcome)
     whole = headline.total
     verdicts = Counter(check.verdict for check in outcome.cross_checks)
-    surfaces = outcome.market.surfaces
-    quotes = all_quotes(surfaces)
+    surfaces = smiles(outcome.market.surfaces)
+    quotes = all_quotes(outcome.market.surfaces)
+    references = checked_total(outcome)
     return {
         "format": FORMAT,
         "book": facts.book_name,
@@ -55,6 +57,7 @@ def run_facts(outcome: Outcome, severities: Counter[str]) -> dict[str, Any]:
             "surfaces_failing": sum(not surface.passes for surface in surfaces),
             "quotes": len(quotes),
             "quotes_beyond_target": sum(reach(quote) is Reach.BEYOND for quote in quotes),
+            "leading_values_checked": {kind.value: count for kind, count in references.by.items()},
             "cross_checks": {verdict.value: verdicts[verdict] for verdict in Verdict},
             "cross_checks_without_sampling": sum(map(without_sampling, outcome.cross_checks)),
             "problems": {severity.value: severities[severity.value] for severity in Severity},

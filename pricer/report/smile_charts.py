@@ -42,7 +42,7 @@ def smile_chart(
     x_range: tuple[float, float],
     y_range: tuple[float, float],
 ) -> ScatterChart:
-    """One expiry: quotes as dashes, the fitted smile as a line, the simulated one as triangles.
+    """One expiry: quotes as crosses, the fitted smile as a line, the simulated one as triangles between their arms.
 
     ``x_range`` in percent of the forward and ``y_range`` in percent are the least and the largest number drawn.
     """
@@ -54,9 +54,9 @@ def smile_chart(
     curve.graphicalProperties = line(BLUE, _WIDTH_OF_LINE)
     curve.smooth = False
     chart.series.append(curve)
-    chart.series.append(cloud(strikes, quoted, "quoted", "dash", 11, INK))
+    chart.series.append(cloud(strikes, quoted, "quoted", "x", 10, INK))
     if simulated is not None:
-        chart.series.append(cloud(strikes, simulated, "simulated", "triangle", 4, ORANGE))
+        chart.series.append(cloud(strikes, simulated, "simulated", "triangle", 7, ORANGE))
     dress(chart, f"{title}, by strike (% of forward)", "", "volatility (%)")
     _scale(chart, *_rounded(x_range), *_rounded(y_range))
     legend_below(chart)

@@ -13,10 +13,10 @@ from pricer.report.columns import Kind
 from pricer.report.layout import LAST, LEFT, ROW_HEIGHT, THIRDS, Canvas
 from pricer.report.market_columns import CALIBRATION
 from pricer.report.market_sheet import CALIBRATION as CALIBRATION_TITLE
-from pricer.report.market_sheet import market_note
+from pricer.report.market_sheet import surfaces_note
 from pricer.report.page import set_up_page
 from pricer.report.smile_charts import error_chart, smile_chart
-from pricer.report.surface_fits import TARGET, SurfaceFit, fit_error, simulated_error, surface_fit
+from pricer.report.surface_fits import TARGET, SurfaceFit, fit_error, simulated_error, smiles, surface_fit
 from pricer.report.table_sheet import HEADING_ROW
 from pricer.run.outcome import MarketFacts, Outcome, QuoteFit, SurfaceFacts
 
@@ -37,8 +37,8 @@ def add_smile_sheet(workbook: Workbook, outcome: Outcome, calibration: pandas.Da
     sheet = workbook.create_sheet(TITLE)
     canvas = Canvas(sheet)
     put_text(sheet, canvas.take(24.0), LEFT, TITLE, "title")
-    put_text(sheet, canvas.take(), LEFT, market_note(outcome.market), "subtitle")
-    if not calibration.empty:
+    put_text(sheet, canvas.take(), LEFT, surfaces_note(outcome.market), "subtitle")
+    if not calibration.empty and smiles(outcome.market.surfaces):
         canvas.take(8.0)
         _errors(canvas, workbook[CALIBRATION_TITLE], outcome.market, calibration)
         _smiles(canvas, outcome.market)
@@ -55,7 +55,7 @@ def worst_surfaces(market: MarketFacts, n_surfaces: int) -> list[SurfaceFacts]:
         errors = (fit.worst_simulated_error_middle, fit.worst_fit_error_middle)
         return surface.passes, -max((error for error in errors if not math.isnan(error)), default=0.0)
 
-    quoted = [surface for surface in market.surfaces if surface.quotes]
+    quoted = [surface for surface in smiles(market.surfaces) if surface.quotes]
     return sorted(quoted, key=rank)[:n_surfaces]
 
 
@@ -65,7 +65,7 @@ def _errors(canvas: Canvas, source: Worksheet, market: MarketFacts, calibration:
     quotes = [quote for surface in market.surfaces for quote in surface.quotes]
     reach = 4.0 * TARGET
     far = sum(abs(fit_error(q)) > reach or abs(simulated_error(q)) > reach for q in quotes)
-    beyond = f"; {far:,} quotes with an error beyond {reach:.2f} lie outside the chart" if far else ""
+    beyond = f"; {far:,} points with an error beyond {reach:.2f} lie outside the chart" if far else ""
     canvas.section(canvas.take(), LEFT, f"How closely the quotes are repriced{beyond}", LAST - LEFT + 1)
     row = canvas.take_rows(_ERROR_ROWS + 1)
 

@@ -22,6 +22,7 @@ if TYPE_CHECKING:
 
 _TITLE_HEIGHT = 24.0
 _SECTION_HEIGHT = 17.0
+_ROWS_ABOVE = 3  # of a table's first row: air, section title, headings
 _KEPT_TOGETHER = 3  # rows that stand on a page with their heading at least
 
 
@@ -60,8 +61,15 @@ def add_stacked_sheet(workbook: Workbook, title: str, note: str, stack: Sequence
         if left_on_page < sum(heights[: 1 + _KEPT_TOGETHER]):
             sheet.row_breaks.append(Break(id=row - 1))
             left_on_page = page
+        first_row = row + _ROWS_ABOVE
         row = lines.put(row)
-        left_on_page = (left_on_page - sum(heights)) % page
+        left_on_page -= heights[0]
+        for i, height in enumerate(heights[1:]):
+            # Broken here and not where a program runs out of page, or what follows would be placed by a wrong count.
+            if left_on_page < height:
+                sheet.row_breaks.append(Break(id=first_row + i - 1))
+                left_on_page = page
+            left_on_page -= height
     sheet.print_area = f"A1:{get_column_letter(len(widths))}{row - 1}"
     sheet.sheet_view.showGridLines = False
     set_up_page(sheet, facts)

@@ -19,6 +19,8 @@ if TYPE_CHECKING:
     from openpyxl.chart import Reference
     from openpyxl.worksheet.worksheet import Worksheet
 
+#: Columns of the table of cross-checks that the chart draws where engine and reference agree, and their names there.
+_AGREES = {"agrees_lognormal": "agrees, lognormal", "agrees_local_volatility": "agrees, local volatility"}
 _VALUE_COLUMN = 4  # of a block table's columns, counted from its name
 
 
@@ -41,13 +43,14 @@ def add_bars(
 
 
 def add_scatter(sheet: Worksheet, area: Area, source: Worksheet, checks: pandas.DataFrame) -> None:
-    """Differences from exact references in units of their tolerance, over the reference value.
+    """Differences from exact references in units of their tolerance, over the reference value, by model.
 
     ``source`` is the sheet that shows ``checks``; its rows may be sorted and filtered: the chart follows.
     """
     from openpyxl.chart import Reference
 
-    drawn = checks[checks["agrees"].notna() | checks["differs"].notna()]
+    clouds = [name for name in (*_AGREES, "differs") if checks[name].notna().any()]
+    drawn = checks[checks[clouds].notna().any(axis=1)]
     percents = drawn["reference_percent"].dropna()
     if percents.empty:
         put_text(sheet, area.row, area.column, "No exact reference could be set beside the engine.", "note")
@@ -62,8 +65,8 @@ def add_scatter(sheet: Worksheet, area: Area, source: Worksheet, checks: pandas.
         "reference value (% of notional)",
         "difference (tolerances)",
         x=column("reference_percent"),
-        inside=column("agrees"),
-        outside=column("differs") if drawn["differs"].notna().any() else None,
+        inside={words: column(name) for name, words in _AGREES.items() if name in clouds},
+        outside=column("differs") if "differs" in clouds else None,
         limits=_limits(sheet, area, float(percents.min()), float(percents.max())),
     )
     place(sheet, chart, area)

@@ -13,14 +13,24 @@ from pricer.engines.cross_check import ALARMS
 from pricer.report.cells import put_number, put_text, workbook_of
 from pricer.report.chart_area import Area
 from pricer.report.columns import Kind
+from pricer.report.frames import without_value
 from pricer.report.layout import HALVES, LAST, LEFT, N_COLUMNS, RIGHT, ROW_HEIGHT, THIRDS, Canvas
 from pricer.report.page import set_up_page
+from pricer.report.reference_coverage import checked_total
+from pricer.report.refusal_causes import refusal_causes
 from pricer.report.styles import Mark, body_style, decimals_for
 from pricer.report.summary_charts import add_bars, add_scatter
-from pricer.report.summary_tables import group_table, model_difference_table, underlying_table, verdict_table
+from pricer.report.summary_tables import (
+    checked_table,
+    group_table,
+    model_difference_table,
+    underlying_table,
+    verdict_tables,
+)
+from pricer.report.surface_fits import smiles
 from pricer.report.text import shorten
 from pricer.report.totals import BookTotal, book_total, priced
-from pricer.run.outcome import Outcome, Status
+from pricer.run.outcome import Outcome
 
 if TYPE_CHECKING:
     import pandas
@@ -29,7 +39,7 @@ if TYPE_CHECKING:
 
 
 TITLE = "Summary"
-_GROUPINGS = ("currency", "strategy", "counterparty", "product", "model")
+_GROUPINGS = ("currency", "strategy", "counterparty", "product")
 _REASONS_SHOWN = 5
 _REASON_LENGTH = 140  # what one line between the list's third column and the page's edge holds
 
@@ -41,12 +51,18 @@ def add_summary_sheet(workbook: Workbook, outcome: Outcome, frames: Mapping[str,
     whole = book_total(outcome)
     _heading(canvas, outcome)
     _key_figures(canvas, outcome, whole, frames["problems"])
-    _not_priced(canvas, frames["not_priced"])
+    _not_priced(canvas, outcome)
     chart_areas = _chart_areas(canvas, outcome)
     by = {grouping: group_table(outcome, whole, grouping) for grouping in _GROUPINGS}
     underlyings = underlying_table(outcome)
     first = canvas.stacks(
-        (by["currency"], by["strategy"], by["counterparty"], by["model"], verdict_table(outcome)),
+        (
+            by["currency"],
+            by["strategy"],
+            by["counterparty"],
+            checked_table(outcome),
+            *verdict_tables(outcome),
+        ),
         (model_difference_table(outcome, whole), by["product"], underlyings),
     )
     if chart_areas:
@@ -96,6 +112,7 @@ def _key_figures(canvas: Canvas, outcome: Outcome, whole: BookTotal, problems: p
     first = canvas.take()
     canvas.section(first, LEFT, "Value of the book")
     canvas.section(first, RIGHT, "What was done")
+    references = checked_total(outcome)
     compared = total.trades - total.not_priced - total.without_model_difference
     amounts = (
         (f"total value ({currency})", total.value),
@@ -106,9 +123,10 @@ def _key_figures(canvas: Canvas, outcome: Outcome, whole: BookTotal, problems: p
         (f"unpaid premium inside the total ({currency})", whole.unpaid_premium),
         (f"local volatility less lognormal, {compared:,} trades ({currency})", total.model_difference),
         (f"standard error of that model difference ({currency})", total.model_difference_standard_error),
+        (f"inside the total: values that no reference checks ({currency})", references.unchecked_value),
         ("precision asked for (bp of notional)", outcome.facts.precision_bp),
     )
-    surfaces = outcome.market.surfaces
+    surfaces = smiles(outcome.market.surfaces)
     failing = sum(not surface.passes for surface in surfaces)
     flagged = sum(check.verdict in ALARMS for check in outcome.cross_checks)
     severities = [int((problems["severity"] == severity).sum()) for severity in Severity]
@@ -119,6 +137,7 @@ def _key_figures(canvas: Canvas, outcome: Outcome, whole: BookTotal, problems: p
         ("priced, disputed by a cross-check", total.disputed, True),
         ("priced from a failing volatility surface", total.failing_surface, True),
         ("not priced, left out of every total", total.not_priced, True),
+        (f"values beside an exact reference of their model, of {references.trades:,}", references.checked, False),
         (f"cross-checks that disagree, of {len(outcome.cross_checks):,} made", flagged, True),
         (f"volatility surfaces that fail, of {len(surfaces):,}", failing, True),
         ("problems found (number)", sum(severities), True),
@@ -131,7 +150,8 @@ def _key_figures(canvas: Canvas, outcome: Outcome, whole: BookTotal, problems: p
             style = body_style(workbook_of(sheet), Kind.STATUS, mark=look)
             for column in range(first, first + N_COLUMNS - 1):
                 put_text(sheet, row, column, words if column == first else "", style)
-        places = decimals if i < 4 else decimals_for([amount])
+        # Amounts share the headline's decimals: a tiny one must not look more exact than the total beside it.
+        places = decimals if label.endswith(f"({currency})") else decimals_for([amount])
         cell = put_number(sheet, row, LEFT + N_COLUMNS - 1, amount, Kind.AMOUNT, places)
         put_number(sheet, row, RIGHT + N_COLUMNS - 1, count, Kind.COUNT, mark=mark)
         if i == 0:
@@ -159,28 +179,32 @@ def _headline(canvas: Canvas, row: int, column: int, cell: Cell, instead: str) -
     canvas.sheet.merge_cells(start_row=row, end_row=row, start_column=column, end_column=column + 1)
 
 
-def _not_priced(canvas: Canvas, missing: pandas.DataFrame) -> None:
-    if missing.empty:
+def _not_priced(canvas: Canvas, outcome: Outcome) -> None:
+    """The causes that cost most trades, with the first trade of each."""
+    causes = refusal_causes(outcome)
+    if not causes:
         return
-    shown = missing.head(_REASONS_SHOWN)
-    rest = len(missing) - len(shown)
+    products = {item.trade_id: item.product for item in without_value(outcome)}
+    shown = causes[:_REASONS_SHOWN]
+    rest = len(causes) - len(shown)
     canvas.reserve(ROW_HEIGHT * (3 + len(shown) + (rest > 0)))
     canvas.section(canvas.take(), LEFT, "Not priced", LAST - LEFT + 1)
     row = canvas.take()
     text_style = body_style(workbook_of(canvas.sheet), Kind.TEXT)
     for column in range(LEFT, LAST + 1):
-        text = {LEFT: "trade", LEFT + 1: "product", LEFT + 4: "reason"}.get(column, "")
+        text = {LEFT: "trades", LEFT + 1: "product", LEFT + 4: "cause"}.get(column, "")
         put_text(canvas.sheet, row, column, text, "heading")
-    for trade_id, product, reasons in shown[["trade_id", "product", "reasons"]].itertuples(index=False):
+    for cause in shown:
         row = canvas.take()
+        others = cause.trades - 1
         texts = {
-            LEFT: shorten(trade_id, 26),
-            LEFT + 1: shorten(product, 36),
-            LEFT + 4: shorten(reasons, _REASON_LENGTH),
+            LEFT: shorten(cause.first_trade, 26 if not others else 16) + (f" and {others:,} more" if others else ""),
+            LEFT + 1: "" if others else shorten(products.get(cause.first_trade, ""), 36),
+            LEFT + 4: shorten(cause.words, _REASON_LENGTH),
         }
         for column in range(LEFT, LAST + 1):
             put_text(canvas.sheet, row, column, texts.get(column, ""), text_style)
     if rest:
-        text = f"and {rest:,} more: sheet Valuations, status “{Status.NOT_PRICED}”, and sheet Problems"
+        text = f"and {rest:,} more causes: sheet Why not priced"
         put_text(canvas.sheet, canvas.take(), LEFT, text, "note")
     canvas.take(8.0)

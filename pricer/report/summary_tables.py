@@ -2,12 +2,16 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 from pricer.report.columns import Kind
 from pricer.report.layout import BlockTable
 from pricer.report.model_differences import model_differences
+from pricer.report.reference_coverage import checked_totals
 from pricer.report.styles import decimals_for
 from pricer.report.top import (
     SHOWN,
+    lines_of_checked,
     lines_of_groups,
     lines_of_model_differences,
     lines_of_underlyings,
@@ -15,7 +19,8 @@ from pricer.report.top import (
 )
 from pricer.report.totals import BookTotal, group_totals
 from pricer.report.underlying_totals import underlying_totals
-from pricer.run.outcome import Outcome
+from pricer.report.verdicts import by_model
+from pricer.run.outcome import CrossCheck, Outcome
 
 _PRODUCTS_SHOWN = 20  # no chart has to hold them, and a book has many
 
@@ -66,10 +71,37 @@ def underlying_table(outcome: Outcome) -> BlockTable:
     )
 
 
-def verdict_table(outcome: Outcome) -> BlockTable:
+def checked_table(outcome: Outcome) -> BlockTable:
+    """Value by leading model, and how many of the values have a reference under that model."""
+    currency = outcome.facts.reporting_currency
+    return BlockTable(
+        title="Value by model, and by what it is checked",
+        headings=(
+            "model",
+            "exactly (number)",
+            "by bounds (number)",
+            "by no reference (number)",
+            f"value ({currency})",
+            f"of it unchecked ({currency})",
+        ),
+        kinds=(Kind.COUNT, Kind.COUNT, Kind.COUNT, Kind.AMOUNT, Kind.AMOUNT),
+        lines=lines_of_checked(checked_totals(outcome)),
+        empty="No trade has a value.",
+    )
+
+
+def verdict_tables(outcome: Outcome) -> list[BlockTable]:
+    """One a model that was checked; one that says so where none was."""
+    groups = by_model(outcome.cross_checks)
+    return [_verdict_table(f"Cross-checks under {model}", checks) for model, checks in groups] or [
+        _verdict_table("Cross-checks", [])
+    ]
+
+
+def _verdict_table(title: str, checks: Sequence[CrossCheck]) -> BlockTable:
     """How many cross-checks ended how, and how far off they were."""
     return BlockTable(
-        title="Cross-checks by verdict",
+        title=title,
         headings=(
             "verdict",
             "checks (number)",
@@ -79,7 +111,7 @@ def verdict_table(outcome: Outcome) -> BlockTable:
             "largest (standard errors)",
         ),
         kinds=(Kind.COUNT, Kind.FIXED, Kind.FIXED, Kind.FIXED, Kind.FIXED),
-        lines=lines_of_verdicts(outcome.cross_checks),
+        lines=lines_of_verdicts(checks),
         empty="No cross-checks were made in this run.",
     )
 

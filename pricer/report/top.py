@@ -10,6 +10,7 @@ from typing import TypeVar
 
 from pricer.engines.cross_check import ALARMS
 from pricer.report.model_differences import ModelDifference
+from pricer.report.reference_coverage import Checked, CheckedTotal
 from pricer.report.styles import Mark
 from pricer.report.sums import quadrature, ratio, total
 from pricer.report.totals import Total
@@ -91,14 +92,27 @@ def lines_of_underlyings(totals: Sequence[UnderlyingTotal]) -> list[Line]:
     return [*lines, line("total", totals, Mark.TOTAL)] if totals else []
 
 
+def lines_of_checked(totals: Sequence[CheckedTotal]) -> list[Line]:
+    """Values checked exactly, by bounds and by nothing, value, and that of the unchecked; the last is the total."""
+    return [
+        Line(
+            item.model,
+            (*(item.by[kind] for kind in Checked), item.value, item.unchecked_value),
+            Mark.TOTAL if item is totals[-1] else Mark.NONE,
+        )
+        for item in totals
+    ]
+
+
 def lines_of_verdicts(checks: Sequence[CrossCheck]) -> list[Line]:
     """Number, share in percent, median and largest absolute difference in basis points of notional, and the largest
-    in standard errors where that says something; every verdict has a line, so that none that did not occur is left
-    unsaid."""
+    in standard errors where that says something. Disagreements have a line whether they occurred or not."""
     if not checks:
         return []
     lines = []
     for name, verdict, mine in by_verdict(checks):
+        if not mine and verdict not in ALARMS:
+            continue
         sizes = [abs(c.difference_bp) for c in mine]
         errors = [abs(c.difference_standard_errors) for c in mine if c.difference_standard_errors is not None]
         if verdict not in MEASURED_IN_ERRORS:
@@ -117,7 +131,8 @@ def lines_of_verdicts(checks: Sequence[CrossCheck]) -> list[Line]:
 def lines_of_model_differences(differences: Sequence[ModelDifference], whole: Total) -> list[Line]:
     """Difference in basis points of notional and in percent of the value, value, difference, its standard error.
 
-    ``differences`` come largest first and amounts are in the reporting currency; the total has those of all.
+    ``differences`` come largest first and amounts are in the reporting currency. Trades that do not differ, and those
+    valued under one model only, have a line each, so that the values add up to the book's.
     """
 
     def line(item: ModelDifference) -> Line:
@@ -129,6 +144,7 @@ def lines_of_model_differences(differences: Sequence[ModelDifference], whole: To
     moved = [item for item in differences if item.difference != 0.0]
     if not moved:
         return []
+    unmoved = [item.valuation.reporting_value for item in differences if item.difference == 0.0]
     largest, rest = _split(moved, MODEL_DIFFERENCES_SHOWN)
     lines = [line(item) for item in largest]
     if rest:
@@ -140,9 +156,14 @@ def lines_of_model_differences(differences: Sequence[ModelDifference], whole: To
             quadrature(item.standard_error for item in rest),
         )
         lines.append(Line(f"other ({len(rest):,})", numbers))
-    value = total(item.valuation.reporting_value for item in moved)
-    share = 100.0 * ratio(whole.model_difference, abs(value))
-    numbers = (math.nan, share, value, whole.model_difference, whole.model_difference_standard_error)
+    if unmoved:
+        lines.append(Line(f"no difference ({len(unmoved):,})", (0.0, 0.0, total(unmoved), 0.0, 0.0)))
+    if whole.without_model_difference:
+        compared = total(item.valuation.reporting_value for item in differences)
+        numbers = (math.nan, math.nan, whole.value - compared, math.nan, math.nan)
+        lines.append(Line(f"under one model only ({whole.without_model_difference:,})", numbers))
+    share = 100.0 * ratio(whole.model_difference, abs(whole.value))
+    numbers = (math.nan, share, whole.value, whole.model_difference, whole.model_difference_standard_error)
     return [*lines, Line("total", numbers, Mark.TOTAL)]
 
 

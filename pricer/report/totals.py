@@ -69,7 +69,7 @@ _BY_REFUSAL: dict[str, Callable[[Refusal], str]] = {
     "product": lambda r: r.product,
     "strategy": lambda r: r.strategy,
     "counterparty": lambda r: r.counterparty,
-    "netting_set": lambda r: "",
+    "netting_set": lambda r: r.netting_set,
     "model": lambda r: Status.NOT_PRICED,
 }
 GROUPINGS = tuple(_BY_VALUATION)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from pricer.run.outcome import CrossCheck, Verdict
+from pricer.run.outcome import CrossCheck, Model, Verdict
 
 #: What a reader should see first comes first; an approximation says least about the engine.
 ORDER = (
@@ -18,6 +18,12 @@ ORDER = (
 NO_SAMPLING = "agrees, engine exact too"
 #: Verdicts of which the difference in standard errors says something: a bound is meant to lie apart.
 MEASURED_IN_ERRORS = frozenset({Verdict.AGREES, Verdict.DIFFERS, Verdict.OUTSIDE_BOUND})
+
+
+def by_model(checks: Sequence[CrossCheck]) -> list[tuple[Model, list[CrossCheck]]]:
+    """The checks of each model that has any, local volatility first: it leads wherever there is a smile."""
+    groups = [(model, [c for c in checks if c.model == model]) for model in (Model.LOCAL_VOLATILITY, Model.LOGNORMAL)]
+    return [(model, mine) for model, mine in groups if mine]
 
 
 def without_sampling(check: CrossCheck) -> bool:

@@ -21,8 +21,8 @@ from pricer.report.summary_sheet import add_summary_sheet
 from pricer.report.sums import total
 from pricer.report.table_sheet import add_table_sheet
 from pricer.report.totals import Total, book_total
-from pricer.report.verdicts import by_verdict
-from pricer.run.outcome import Outcome, Status, Verdict
+from pricer.report.verdicts import by_model, by_verdict
+from pricer.run.outcome import Model, Outcome, Status, Verdict
 
 if TYPE_CHECKING:
     import pandas
@@ -69,7 +69,7 @@ def _tables(outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> list[Ta
     # Its place in print tells why there is no value; the plain table keeps methods and reasons apart.
     missing = valuations["status"] == Status.NOT_PRICED
     valuations.loc[missing, "method"] = [short_reason(item) for item in without_value(outcome)]
-    checks, problems = frames["cross_check"], frames["problems"]
+    checks, causes, problems = frames["cross_check"], frames["refusal_causes"], frames["problems"]
     return [
         Table(
             "Valuations",
@@ -111,6 +111,15 @@ def _tables(outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> list[Ta
             empty="No cross-checks were made in this run.",
         ),
         Table(
+            "Why not priced",
+            "Why not priced",
+            _causes_note(whole, causes),
+            columns.REFUSAL_CAUSES,
+            causes,
+            [Mark.NONE] * len(causes),
+            empty="Every trade was priced.",
+        ),
+        Table(
             "Problems",
             "Problems",
             ", ".join(f"{severity} {int((problems['severity'] == severity).sum()):,}" for severity in Severity),
@@ -144,20 +153,33 @@ def _valuations_note(whole: Total) -> str:
     return f"{note}. More columns on screen, right of what prints."
 
 
-def _cross_check_note(outcome: Outcome) -> str:
-    found = "; ".join(f"{name} {len(checks):,}" for name, _, checks in by_verdict(outcome.cross_checks) if checks)
+def _causes_note(whole: Total, causes: pandas.DataFrame) -> str:
+    if causes.empty:
+        return ""
+    n = len(causes)
     return (
-        f"{found}. Disagreements first, approximations last; more columns on screen, right of what prints."
-        if found
-        else ""
+        f"{whole.not_priced:,} trades have no price, for {n:,} cause{'s' if n > 1 else ''}; a trade counts with each "
+        "of its own. The sheet Problems has every one at its cell."
     )
 
 
+def _cross_check_note(outcome: Outcome) -> str:
+    parts = []
+    for model, mine in by_model(outcome.cross_checks):
+        found = "; ".join(f"{name} {len(checks):,}" for name, _, checks in by_verdict(mine) if checks)
+        parts.append(f"Under {model}: {found}.")
+    order = "Disagreements first, approximations last; more columns on screen, right of what prints."
+    return " ".join([*parts, order]) if parts else ""
+
+
 def _with_clouds(checks: pandas.DataFrame) -> pandas.DataFrame:
-    """The table with the differences from exact references in two columns, one for each cloud of the chart."""
-    verdicts, differences = checks["verdict"], checks["difference_tolerances"]
+    """The table with the differences from exact references in a column for each cloud of the chart."""
+    models, verdicts, differences = checks["model"], checks["verdict"], checks["difference_tolerances"]
+    agree = verdicts == Verdict.AGREES
     return checks.assign(
-        agrees=differences.where(verdicts == Verdict.AGREES), differs=differences.where(verdicts == Verdict.DIFFERS)
+        agrees_local_volatility=differences.where(agree & (models == Model.LOCAL_VOLATILITY)),
+        agrees_lognormal=differences.where(agree & (models == Model.LOGNORMAL)),
+        differs=differences.where(verdicts == Verdict.DIFFERS),
     )
 
 

@@ -5,11 +5,14 @@ from __future__ import annotations
 from dataclasses import replace
 from functools import partial
 
+import numpy as np
+
 from pricer.contracts.book import Book, Refusal, Trade
 from pricer.core.issues import Issue, Severity
 from pricer.core.source import Place
 from pricer.market.coverage import coverage
 from pricer.market.market import Market
+from pricer.market.netting_coverage import netting_coverage
 
 
 def admit(book: Book, market: Market, *, accept_failing_surfaces: bool = False) -> Book:
@@ -28,9 +31,10 @@ def admit(book: Book, market: Market, *, accept_failing_surfaces: bool = False) 
         found.extend(issues)
         errors = tuple(issue for issue in issues if issue.severity is not Severity.WARNING)
         if errors:
-            refused.append(refusal(trade, errors))
+            refused.append(refusal(trade, market, errors))
         else:
             kept.append(trade)
+    found.extend(netting_coverage(book.trades, market, partial(_place, book)))
     return replace(
         book,
         trades=tuple(kept),
@@ -39,9 +43,31 @@ def admit(book: Book, market: Market, *, accept_failing_surfaces: bool = False) 
     )
 
 
-def refusal(trade: Trade, issues: tuple[Issue, ...]) -> Refusal:
+def refusal(trade: Trade, market: Market, issues: tuple[Issue, ...]) -> Refusal:
     """The trade as it is listed when it cannot be priced."""
-    return Refusal(trade.trade_id, issues, trade.contract.product, trade.currency, trade.counterparty, trade.strategy)
+    return Refusal(
+        trade_id=trade.trade_id,
+        issues=issues,
+        product=trade.contract.product,
+        currency=trade.currency,
+        counterparty=trade.counterparty,
+        strategy=trade.strategy,
+        netting_set=trade.netting_set,
+        expiry_date=trade.contract.expiry_date,
+        notional=_notional(trade, market),
+    )
+
+
+def _notional(trade: Trade, market: Market) -> float | None:
+    """In the trade's currency; None where it takes a price or a rate that the market lacks."""
+    option = trade.contract
+    try:
+        spots = [market.spot_in(name, trade.currency, option.conversion) for name in option.underlyings]
+    except LookupError:
+        if not option.has_fixed_notional:
+            return None
+        spots = [1.0] * len(option.underlyings)
+    return abs(trade.position) * option.unit_notional(np.array(spots))
 
 
 def _place(book: Book, trade: Trade, column: str) -> Place | None:

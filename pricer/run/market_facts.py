@@ -10,13 +10,35 @@ from pricer.market.checked_surface import CheckedSurface
 from pricer.market.curves import DiscountCurve
 from pricer.market.market import Market
 from pricer.market.quoted_curves import reprice
-from pricer.run.outcome import CreditPoint, CurvePoint, ForwardPoint, FundingPoint, MarketFacts, QuoteFit, SurfaceFacts
+from pricer.run.outcome import (
+    CreditPoint,
+    CurvePoint,
+    ForwardPoint,
+    FundingPoint,
+    MarketFacts,
+    QuoteFit,
+    SurfaceFacts,
+    UnderlyingStanding,
+)
 
 
-def market_facts(market: Market, used: Iterable[str], calibrations: Mapping[str, Calibration]) -> MarketFacts:
-    """Facts of the whole market; forwards of the underlyings in ``used`` only, which can be priced."""
+def market_facts(
+    market: Market,
+    used: Iterable[str],
+    surfaces: Mapping[str, CheckedSurface],
+    calibrations: Mapping[str, Calibration],
+    standings: tuple[UnderlyingStanding, ...] = (),
+) -> MarketFacts:
+    """Facts of the whole market; forwards of the underlyings in ``used`` only, which can be priced.
+
+    ``surfaces`` : those of the market, and flat ones of the used underlyings that have no smile.
+    """
     return MarketFacts(
-        surfaces=tuple(_surface(surface, calibrations.get(name)) for name, surface in sorted(market.surfaces.items())),
+        surfaces=tuple(
+            _surface(surface, calibrations.get(name), has_smile=name in market.surfaces)
+            for name, surface in sorted(surfaces.items())
+        ),
+        underlyings=standings,
         curves=tuple(point for _, curve in sorted(market.curves.items()) for point in _curve(curve)),
         forwards=tuple(point for name in sorted(used) for point in _forwards(name, market, calibrations.get(name))),
         credit=tuple(_credit(market)),
@@ -25,7 +47,7 @@ def market_facts(market: Market, used: Iterable[str], calibrations: Mapping[str,
     )
 
 
-def _surface(checked: CheckedSurface, calibration: Calibration | None) -> SurfaceFacts:
+def _surface(checked: CheckedSurface, calibration: Calibration | None, *, has_smile: bool) -> SurfaceFacts:
     simulated = calibration.quotes if calibration is not None else (None,) * len(checked.quotes)
     quotes = tuple(
         QuoteFit(
@@ -39,12 +61,13 @@ def _surface(checked: CheckedSurface, calibration: Calibration | None) -> Surfac
             simulated=None if repriced is None else repriced.value,
             simulated_standard_error=None if repriced is None else repriced.standard_error,
             counts=quote.in_the_middle,
+            derived=quote.derived,
         )
         for quote, repriced in zip(checked.quotes, simulated, strict=True)
     )
     worst_first = sorted(checked.violations, key=lambda violation: -violation.size)
     violations = tuple(str(violation) for violation in worst_first)
-    return SurfaceFacts(checked.underlying_id, checked.passes, checked.failures, violations, quotes)
+    return SurfaceFacts(checked.underlying_id, checked.passes, checked.failures, violations, quotes, has_smile)
 
 
 def _curve(curve: DiscountCurve) -> Iterator[CurvePoint]:

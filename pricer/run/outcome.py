@@ -71,7 +71,7 @@ class Valuation:
     """The value of one position, in the trade's currency (``reporting_*`` in the book's).
 
     ``model_difference`` is the value under local volatility less that under lognormal levels, whichever
-    leads: 0 where no underlying has a smile, None where only one of the two was computed.
+    leads: 0 where no underlying has a smile, None where models were not compared.
     """
 
     trade_id: str
@@ -141,7 +141,8 @@ class QuoteFit:
 
     ``simulated`` is implied from the prices of the paths that trades are valued on, with the sampling
     error ``simulated_standard_error``; None where the underlying was not simulated. ``counts``: whether
-    the quote lies between 10 and 90 delta, where the target applies.
+    the quote lies between 10 and 90 delta, where the target applies. ``derived``: no quote of the market but a
+    point that the quoted skew and curvature stand for.
     """
 
     underlying: str
@@ -154,17 +155,36 @@ class QuoteFit:
     simulated: float | None
     simulated_standard_error: float | None
     counts: bool
+    derived: bool = False
 
 
 @dataclass(frozen=True, slots=True)
 class SurfaceFacts:
-    """How one underlying's volatility quotes stand up: ``failures`` and ``violations`` in words, empty if none."""
+    """How one underlying's volatility quotes stand up: ``failures`` and ``violations`` in words, empty if none.
+
+    ``has_smile`` is False where only volatilities at the forward are quoted: there is nothing to fit or to fail.
+    """
 
     underlying: str
     passes: bool
     failures: tuple[str, ...]
     violations: tuple[str, ...]
     quotes: tuple[QuoteFit, ...]
+    has_smile: bool = True
+
+
+@dataclass(frozen=True, slots=True)
+class UnderlyingStanding:
+    """What the market is to one underlying's trades.
+
+    ``trades`` of the book on it, ``trades_refused`` those of them that have no price because of it, perhaps for other
+    reasons too. ``unusable`` : why no option on it can be priced, in words; empty if one can.
+    """
+
+    underlying: str
+    trades: int
+    trades_refused: int
+    unusable: tuple[str, ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -225,6 +245,7 @@ class MarketFacts:
     """What the run made of the snapshot, for the report's market sheets."""
 
     surfaces: tuple[SurfaceFacts, ...] = ()
+    underlyings: tuple[UnderlyingStanding, ...] = ()
     curves: tuple[CurvePoint, ...] = ()
     forwards: tuple[ForwardPoint, ...] = ()
     credit: tuple[CreditPoint, ...] = ()

@@ -22,15 +22,18 @@ _MIRRORED = {
 }
 
 
-def valuation(appraisal: Appraisal, market: Market, *, disputed: bool = False) -> Valuation:
-    """The position's value, errors and sensitivities, with its unpaid premium inside the value."""
+def valuation(appraisal: Appraisal, market: Market, *, disputed: bool = False, compared: bool = True) -> Valuation:
+    """The position's value, errors and sensitivities, with its unpaid premium inside the value.
+
+    Without ``compared`` no model difference is told, not even the 0 of a trade without a smile.
+    """
     trade, lead, drawn = appraisal.trade, appraisal.leading.headline, appraisal.leading.sample
     size = abs(trade.position)
     low, high = sorted((trade.position * lead.lower, trade.position * lead.upper))
     premium = unpaid_premium(trade, market)
     value = trade.position * lead.value + premium
     to_reporting = market.to_reporting(trade.currency)
-    difference, difference_error = _model_difference(appraisal)
+    difference, difference_error = _model_difference(appraisal) if compared else (None, None)
     return Valuation(
         trade_id=trade.trade_id,
         product=trade.contract.product,

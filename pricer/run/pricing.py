@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import platform
 import time
+from collections.abc import Mapping
 from dataclasses import replace
 from datetime import UTC, datetime
 from functools import partial
@@ -15,14 +16,17 @@ from pricer.core.progress import Progress, Silent
 from pricer.engines.calibration import Calibration, calibrate
 from pricer.engines.cross_check import ALARMS, APPROXIMATION_BP, FALSE_ALARM, IMMATERIAL, is_test
 from pricer.engines.european import Appraisal, AppraisalSettings, appraise
+from pricer.market.checked_surface import CheckedSurface
 from pricer.market.correlation_stress import stressed
 from pricer.market.market import Market
 from pricer.run.admission import admit, refusal
+from pricer.run.flat_quotes import flat_surface, is_random
 from pricer.run.local import map_groups
 from pricer.run.market_facts import forward_dates, market_facts
 from pricer.run.outcome import Outcome, RunFacts, UnderlyingFacts
 from pricer.run.position import cross_checks, valuation
 from pricer.run.settings import Settings
+from pricer.run.underlying_standing import underlying_standings
 
 _LIBRARIES = ("pricer", "numpy", "scipy", "numba", "QuantLib", "pandas", "openpyxl")
 
@@ -58,20 +62,36 @@ def price(book: Book, market: Market, settings: Settings | None = None, progress
     disputed = {check.trade_id for check in checks if check.verdict in ALARMS}
     priced = time.perf_counter() - clock
     used = sorted({name for appraisal in appraisals for name in appraisal.trade.contract.underlyings})
+    surfaces = {**market.surfaces, **{name: flat_surface(name, market) for name in used if name not in market.surfaces}}
     simulated = {name for appraisal in appraisals if appraisal.local_volatility is not None
-                 for name in appraisal.trade.contract.underlyings if name in market.surfaces}  # fmt: skip
-    calibrations, uncalibrated = _calibrations(sorted(simulated), market, settings)
+                 for name in appraisal.trade.contract.underlyings if is_random(surfaces[name])}  # fmt: skip
+    calibrations, uncalibrated = _calibrations({name: surfaces[name] for name in sorted(simulated)}, market, settings)
+    refused = {refusal.trade_id for refusal in (*admitted.refusals, *failures)}
 
     return Outcome(
         facts=_facts(book, market, settings, started, priced, time.perf_counter() - clock, appraisals),
         valuations=tuple(
-            valuation(appraisal, market, disputed=appraisal.trade.trade_id in disputed) for appraisal in appraisals
+            valuation(
+                appraisal,
+                market,
+                disputed=appraisal.trade.trade_id in disputed,
+                compared=settings.compare_models,
+            )
+            for appraisal in appraisals
         ),
         cross_checks=checks,
         refusals=(*admitted.refusals, *failures),
         issues=(*admitted.issues, *(issue for failure in failures for issue in failure.issues), *uncalibrated),
         underlyings=tuple(_underlying_facts(name, market) for name in used),
-        market=market_facts(market, used, calibrations),
+        market=market_facts(
+            market,
+            used,
+            surfaces,
+            calibrations,
+            underlying_standings(
+                book.trades, refused, market, accept_failing_surfaces=settings.accept_failing_surfaces
+            ),
+        ),
     )
 
 
@@ -85,27 +105,28 @@ def _stressed(market: Market, settings: Settings) -> Market:
 
 
 def _calibrations(
-    names: list[str], market: Market, settings: Settings
+    surfaces: Mapping[str, CheckedSurface], market: Market, settings: Settings
 ) -> tuple[dict[str, Calibration], tuple[Issue, ...]]:
     """Every quoted vanilla of these underlyings through the paths that trades are valued on; what failed is told."""
     found = map_groups(
         partial(_try_calibrate, market=market, settings=settings),
-        names,
+        list(surfaces.values()),
         workers=settings.workers,
         progress=Silent(),
-        label=str,
+        label=lambda surface: surface.underlying_id,
     )
-    pairs = list(zip(names, found, strict=True))
+    pairs = list(zip(surfaces, found, strict=True))
     return (
         {name: result for name, result in pairs if isinstance(result, Calibration)},
         tuple(result for _, result in pairs if isinstance(result, Issue)),
     )
 
 
-def _try_calibrate(name: str, market: Market, settings: Settings) -> Calibration | Issue:
+def _try_calibrate(surface: CheckedSurface, market: Market, settings: Settings) -> Calibration | Issue:
+    name = surface.underlying_id
     try:
         dates = forward_dates(name, market)
-        return calibrate(market.surfaces[name], market.affine_price(name), dates, seed=settings.seed)
+        return calibrate(surface, market.affine_price(name), dates, seed=settings.seed)
     except (ArithmeticError, ValueError, LookupError) as error:
         return Issue(
             code="calibration-failed",
@@ -130,7 +151,7 @@ def _try_appraise(trade: Trade, market: Market, settings: AppraisalSettings) -> 
             severity=Severity.ERROR,
             trade_id=trade.trade_id,
         )
-        return refusal(trade, (issue,))
+        return refusal(trade, market, (issue,))
 
 
 def _underlying_facts(name: str, market: Market) -> UnderlyingFacts:

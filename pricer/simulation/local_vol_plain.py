@@ -57,7 +57,8 @@ def path_sums(plan: LocalVolPlan, grid: TimeGrid, steps: LognormalSteps, motions
     starts, levels, slopes = (np.empty((n, motions.shape[2])) for _ in range(3))
     deviations, turns = np.empty_like(starts), np.empty_like(starts)
     logs = steps.starts[:rows, None] + np.einsum("ti,tip->ip", steps.volatilities[:-1, :rows], moves[:-1])
-    rates = np.where((plan.rates >= 0)[:, None], np.exp(logs)[plan.rates + n if rows > n else plan.rates * 0], 1.0)
+    drops = steps.conversion_drops[:, :, None]
+    rates = np.exp(plan.exposures @ logs[n:] - drops[0])
     for i in range(n):
         q = np.full(motions.shape[2], float(tables.starts[i]))
         tangent = np.full(motions.shape[2], float(tables.start_slopes[i]))
@@ -82,8 +83,7 @@ def path_sums(plan: LocalVolPlan, grid: TimeGrid, steps: LognormalSteps, motions
         starts[i] = levels[i] * rates[i]
     noise = moves[-1] / np.sqrt(float(grid.lengths[-1]))
     b = steps.last_deviations[:rows, None]
-    ending = np.exp(b * noise - 0.5 * b**2)
-    rate_moves = np.where((plan.rates >= 0)[:, None], ending[plan.rates + n if rows > n else plan.rates * 0], 1.0)
+    rate_moves = np.exp(plan.exposures @ (b * noise)[n:] - drops[1])
     drifts = steps.last_drifts[:, None]
     local = _finish(plan, starts, slopes, deviations, turns, noise, drifts, rate_moves)
     ones = np.ones_like(starts)

@@ -27,10 +27,11 @@ _SINGULAR = 1e-8
 
 @dataclass(frozen=True, slots=True)
 class LocalVolPlan:
-    """Arrays are in the design's asset order; rows are the assets, then the simulated exchange rates.
+    """Arrays are in the design's asset order; rows are the assets, then the simulated factors of exchange rates.
 
     ``forwards`` : (n,) of the levels before any change of measure; ``shares`` : (n,) part of each that moves,
-    the rest being known dividends. ``rates`` : (n,) which exchange rate converts each level, -1 for none.
+    the rest being known dividends. ``exposures`` : (n, n_rows - n) of the logarithm of the exchange rate that converts
+    each level to those of the factors of rates, 0 for none.
     ``loadings`` : (n_rows, dims) of unit Brownian motions on independent ones; ``sizes`` : (dims,) how far each
     of these moves the aggregate. ``inverse`` : (n_rows, n_rows) of the correlation. ``degree`` : by how much the
     aggregate's logarithm moves when all levels' do by 1.
@@ -40,7 +41,7 @@ class LocalVolPlan:
     surfaces: tuple[LocalVolatility, ...]
     forwards: Array
     shares: Array
-    rates: NDArray[np.int64]
+    exposures: Array
     loadings: Array
     sizes: Array
     inverse: Array
@@ -55,7 +56,7 @@ class LocalVolPlan:
         correlation: Array,
         forwards: Array,
         shares: Array,
-        rates: Sequence[int],
+        exposures: Array,
         rate_deviations: Array,
         aggregate: Aggregate,
         payoff: PiecewiseLinear,
@@ -65,18 +66,19 @@ class LocalVolPlan:
         """From arrays in the problem's order.
 
         ``law`` : lognormal levels to lay out by. ``correlation`` : (n_rows, n_rows) of the Brownian motions;
-        ``rate_deviations`` : (n_rows - n,) of the exchange rates' logarithms over the whole time.
+        ``exposures`` : (n, n_rows - n); ``rate_deviations`` : (n_rows - n,) of the factors' logarithms over
+        the whole time.
         """
         design = Design.of(law, aggregate, payoff, triangular=triangular)
         order, n = design.order, law.n_assets
         rows = np.concatenate([order, np.arange(n, len(correlation))])
         rho = correlation[np.ix_(rows, rows)]
-        rate = np.asarray(rates, dtype=np.int64)[order]
+        exposed = np.asarray(exposures, dtype=float)[order]
         geometric = aggregate.kind is AggregateKind.GEOMETRIC
         weights = np.abs(design.weights) * (1.0 if geometric else design.forwards)
         if aggregate.is_ranked:
             weights = np.ones(n)
-        of_rates = np.array([weights[rate == j].sum() for j in range(len(correlation) - n)])
+        of_rates = np.abs(exposed).T @ weights
         importance = np.concatenate([weights * design.deviations, of_rates * rate_deviations])
         importance = np.maximum(importance / np.max(importance), 1e-3)
         ones = np.ones(len(rows))
@@ -89,7 +91,7 @@ class LocalVolPlan:
             surfaces=tuple(surfaces[i] for i in order),
             forwards=np.asarray(forwards, dtype=float)[order],
             shares=np.asarray(shares, dtype=float)[order],
-            rates=rate,
+            exposures=exposed,
             loadings=loadings,
             sizes=np.linalg.norm(importance[:, None] * loadings, axis=0),
             inverse=np.ascontiguousarray(inverse),

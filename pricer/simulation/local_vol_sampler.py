@@ -46,13 +46,15 @@ class LocalVolSampler:
         f = plan.design.payoff
         self._profile = np.array([f.intercept, f.slope, *f.knots, *f.bends, *f.jumps], dtype=float)
         self._rank_weights = plan.design.rank_weights.astype(np.float32)
-        used = slice(0, n_rows)  # rates that only shift are not simulated
+        used = slice(0, n_rows)  # factors of rates that only shift are not simulated
         self._control = (
             (_LOG2_E * steps.starts[used]).astype(np.float32),
             np.ascontiguousarray(_LOG2_E * steps.volatilities[:-1, used], dtype=np.float32),
             steps.last_deviations[used].astype(np.float32),
             steps.last_drifts.astype(np.float32),
         )
+        self._exposures = np.ascontiguousarray(plan.exposures, dtype=np.float32)
+        self._drops = np.ascontiguousarray(_LOG2_E * steps.conversion_drops, dtype=np.float32)
         self._planes = aligned((paths_kernel.PLANES, n_rows, BLOCK), np.float32)
         self._precisions = aligned((n, BLOCK), np.float64)
         self._rows = aligned((3, BLOCK), np.float64)
@@ -82,7 +84,8 @@ class LocalVolSampler:
             tables.start_slopes,
             plan.shares,
             *self._control,
-            plan.rates,
+            self._exposures,
+            self._drops,
             plan.smooth,
             plan.inverse,
             design.n_common,

@@ -14,7 +14,6 @@ theorem): a known amount, taken off each increment.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -33,12 +32,14 @@ class LognormalSteps:
     """What the steps of a grid do to lognormal levels, n of assets and then those of exchange rates.
 
     ``lengths`` : (n_steps,) years. ``volatilities`` : (n_steps, n_rows) annualised, over each step.
-    ``shifts`` : (n_steps, n) taken off the Brownian increments of the assets.
+    ``shifts`` : (n_steps, n) taken off the Brownian increments of the assets. ``rate_variances`` : (n_steps, n) of the
+    logarithm of the exchange rate that converts each asset, over each step; 0 where none does.
     """
 
     lengths: Array
     volatilities: Array
     shifts: Array
+    rate_variances: Array
 
     @classmethod
     def of(
@@ -47,40 +48,50 @@ class LognormalSteps:
         variance_times: Array,
         variances: Array,
         correlation: Array,
-        rate_of: Sequence[int | None],
+        exposures: Array,
         *,
         composite: bool,
     ) -> LognormalSteps:
         """Steps of ``grid``.
 
-        ``variance_times`` : (k + 1,) from 0, ``variances`` : (n_rows, k + 1) total. ``rate_of`` : (n,) place of each
-        asset's exchange rate among the rates, None for none. Where ``composite``, the rate is simulated, and the
-        shift is that of its simulated volatility: level times rate is then a martingale to the last digit.
+        ``variance_times`` : (k + 1,) from 0, ``variances`` : (n_rows, k + 1) total. ``exposures`` : (n, m) of the
+        logarithm of each asset's exchange rate to those of the m factors of rates, 0 for none: a rate that is a chain
+        of others has no constant correlation of its own. Where ``composite``, factors are simulated, and the
+        shift is that of their simulated volatility: level times rate is then a martingale to the last digit.
         """
-        n, lengths = len(rate_of), grid.lengths
+        n, lengths = len(exposures), grid.lengths
         total = np.stack([np.interp(grid.times, variance_times, row) for row in variances], axis=1)
         volatilities = np.sqrt(np.maximum(np.diff(total, axis=0), 0.0) / lengths[:, None])
         volatilities[:, :n] = np.maximum(volatilities[:, :n], _LEAST)
-        shifts = np.zeros((grid.n_steps, n))
-        for i, rate in enumerate(rate_of):
-            if rate is None:
-                continue
-            row = n + rate
-            if composite:
-                moved = volatilities[:, row] * lengths
-            else:
-                pieces = np.sqrt(np.maximum(np.diff(variances[row]), 0.0) * np.diff(variance_times))
-                moved = np.diff(np.interp(grid.times, variance_times, np.concatenate([[0.0], np.cumsum(pieces)])))
-            shifts[:, i] = correlation[i, row] * moved
-        return cls(lengths, volatilities, shifts)
+        rho = correlation[n:, n:]
+        of_rates = volatilities[:, n:]
+        if composite:
+            moved = of_rates * lengths[:, None]
+            covariances = rho * of_rates[:, :, None] * of_rates[:, None, :] * lengths[:, None, None]
+            rate_variances = np.einsum("ij,sjk,ik->si", exposures, covariances, exposures)
+        else:
+            pieces = np.sqrt(np.maximum(np.diff(variances[n:], axis=1), 0.0) * np.diff(variance_times))
+            risen = np.pad(np.cumsum(pieces, axis=1), ((0, 0), (1, 0)))
+            moved = np.empty((grid.n_steps, len(risen)))
+            for j, row in enumerate(risen):
+                moved[:, j] = np.diff(np.interp(grid.times, variance_times, row))
+            rate_variances = np.zeros((grid.n_steps, n))
+        shifts = moved @ (exposures * correlation[:n, n:]).T
+        return cls(lengths, volatilities, shifts, rate_variances)
 
     @property
     def starts(self) -> Array:
-        """Log-levels over forwards before the last step but for noise, (n_rows,)."""
+        """Log-levels over forwards before the last step but for noise, (n_rows,); 0 for factors of rates."""
         volatilities, n = self.volatilities[:-1], self.shifts.shape[1]
         out: Array = -0.5 * (volatilities**2 * self.lengths[:-1, None]).sum(axis=0)
         out[:n] -= (volatilities[:, :n] * self.shifts[:-1]).sum(axis=0)
+        out[n:] = 0.0
         return out
+
+    @property
+    def conversion_drops(self) -> Array:
+        """Taken off the logarithm of each asset's exchange rate before and in the last step: a martingale, (2, n)."""
+        return 0.5 * np.stack([self.rate_variances[:-1].sum(axis=0), self.rate_variances[-1]])
 
     @property
     def last_deviations(self) -> Array:
@@ -100,4 +111,4 @@ class LognormalSteps:
         rows = np.concatenate([order, np.arange(n, self.volatilities.shape[1])])
         volatilities = self.volatilities[:, rows]
         volatilities[:, :n] *= shares
-        return LognormalSteps(self.lengths, volatilities, self.shifts[:, order])
+        return LognormalSteps(self.lengths, volatilities, self.shifts[:, order], self.rate_variances[:, order])

@@ -116,7 +116,7 @@ def test_points_per_second_against_bilinear_numpy(n):
         grid,
         *constant(np.sqrt(problem.variances[:, 1]), 1.0),
         problem.correlation,
-        problem.rates,
+        problem.rate_exposures,
         composite=False,
     )
     steps = steps.ordered(plan.design.order, plan.shares)

@@ -16,7 +16,7 @@ from tests.end_to_end.desk import BROKEN_MARKET, SAMPLE
 ERRORS = {
     ("dividends", "A73", "cash-dividends-exceed-spot"),
     ("repo", "D6", "not-a-decimal"),
-    ("volatilities", "C72", "failing-surface"),
+    ("volatilities", "C110", "failing-surface"),
     ("volatilities", "C474", "not-a-decimal"),
     ("credit", "C23", "not-a-decimal"),
     ("credit", "C27", "unusable-spreads"),
@@ -27,11 +27,11 @@ ERRORS = {
 }
 #: The same of everything that is odd, but used or ignored.
 WARNINGS = {
-    ("volatilities", "C106", "butterfly-arbitrage"),
-    ("volatilities", "C106", "calendar-arbitrage"),
-    ("volatilities", "C106", "volatility-miss"),
-    ("volatilities", "C363", "butterfly-arbitrage"),
-    ("volatilities", "C363", "volatility-miss"),
+    ("volatilities", "C110", "butterfly-arbitrage"),
+    ("volatilities", "C110", "calendar-arbitrage"),
+    ("volatilities", "C110", "volatility-miss"),
+    ("volatilities", "C373", "butterfly-arbitrage"),
+    ("volatilities", "C373", "volatility-miss"),
     ("volatilities", "B142", "expired-quote"),
     ("volatilities", "B145", "expired-quote"),
     ("correlations", "C2", "correlation-repaired"),
@@ -131,8 +131,8 @@ def test_csv_files_and_workbook_have_the_same_mistakes():
             "(and 2 more rows); expected an expiry after the valuation date 2026-11-30. Ignored. Delete the rows.",
         ),
         (
-            *("volatilities", "C363", "butterfly-arbitrage"),
-            'market.xlsx, sheet volatilities, row 363, column "volatility_decimal" (cell C363): found butterfly '
+            *("volatilities", "C373", "butterfly-arbitrage"),
+            'market.xlsx, sheet volatilities, row 373, column "volatility_decimal" (cell C373): found butterfly '
             "arbitrage of 0.13 vol points in the quotes of SORBEQ for 2027-01-15, at strike 100.0 % of the forward; "
             "expected option prices that are convex in strike. Lower the volatility at this strike by 0.13 vol points, "
             "or raise its neighbours.",
@@ -174,7 +174,7 @@ def test_mistakes_are_told_in_full(sheet, cell, code, words):
 
 
 def test_a_failing_surface_names_its_contradictions_and_the_way_to_insist():
-    told = message("volatilities", "C72", "failing-surface")
+    told = message("volatilities", "C110", "failing-surface")
     assert "a volatility surface of TESKIR that fails its checks: quotes contradict each other: calendar" in told
     assert "or run with --accept-failing-surfaces: trades on it are then priced and marked." in told
 

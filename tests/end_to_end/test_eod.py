@@ -199,6 +199,25 @@ def test_check_prices_nothing_and_reports_the_status(desk, tmp_path, monkeypatch
     assert not list(tmp_path.iterdir())
 
 
+def test_check_shows_forwards_and_volatilities_before_anything_is_priced(desk):
+    lines = run("check", *desk).output.splitlines()
+    (orluma,) = [line.split() for line in lines if line.startswith("ORLUMA ")]
+    assert orluma[:4] == ["ORLUMA", "84.2", "EUR", "2026-12-18"]
+    assert len([line for line in lines if line.count(" %") == 2]) == 12
+
+
+def test_with_strict_any_problem_makes_the_exit_status_1(desk, tmp_path):
+    assert run("check", *desk, "--strict").exit_code == 0
+    book, market = write_desk(tmp_path, TRADES[0])
+    asked = ("--date", "2026-12-01")  # another date than the snapshot's: a warning
+    quick = ("--one-model", "--precision", "50", "--quiet")
+    assert run("check", book, market, *asked).exit_code == 0
+    assert run("check", book, market, *asked, "--strict").exit_code == 1
+    assert run("eod", book, market, *asked, *quick, "--out", tmp_path / "lenient").exit_code == 0
+    assert run("eod", book, market, *asked, *quick, "--out", tmp_path / "strict", "--strict").exit_code == 1
+    assert (tmp_path / "strict" / "report.xlsx").is_file()
+
+
 def test_templates_are_written_and_say_where(tmp_path):
     result = run("template", tmp_path / "mine")
     assert result.exit_code == 0

@@ -157,7 +157,7 @@ def test_quality_gates_point_at_the_cells_of_the_new_tables(tmp_path):
     write_tables(tables, tmp_path / "market.xlsx")
     market = load_market(tmp_path / "market.xlsx")
     assert {(issue.code, issue.sheet, issue.cell) for issue in market.issues} >= {
-        ("implausible-rate", "repo", "A2"),
+        ("implausible-rate", "repo", "B4"),
         ("heavy-cash-dividends", "dividends", "A4"),
         ("implausible-hazard-rate", "credit", "A2"),
         ("inconsistent-fx-volatility", "fx_volatilities", "A5"),

@@ -489,7 +489,7 @@ def test_a_csv_file_with_a_byte_order_mark(folder):
 
 
 def test_a_csv_file_in_another_encoding(folder):
-    rewritten(folder, "trades", lambda data: data.replace(b"Ostrevane", b"\xd6strevane"))
+    rewritten(folder, "trades", lambda data: data.replace(b"Guldmar", b"G\xd6ldmar"))
     position = (folder / "trades.csv").read_bytes().index(b"\xd6")
     assert str(refused(folder)) == (
         f"book/trades.csv: found byte 0xD6 at position {position} (line 2), which is not UTF-8; expected UTF-8 text. "
@@ -620,4 +620,4 @@ def test_one_trade_is_counted_in_the_singular(tmp_path, tables):
     tables["trades"] = tables["trades"][:1]
     tables["constituents"] = tables["constituents"][:3]
     result = checked_with(tmp_path, tables, EXAMPLE_MARKET)
-    assert result.output == "1 trade can be priced, 0 cannot.\n"
+    assert result.output.endswith("\n1 trade can be priced, 0 cannot.\n")

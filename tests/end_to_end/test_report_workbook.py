@@ -13,15 +13,17 @@ import pandas as pd
 import pytest
 from openpyxl.utils import get_column_letter, range_boundaries
 
+from pricer.contracts.book import Refusal
 from pricer.report import columns, market_columns, tables, write_report
 from pricer.report.explanations import CAUTION
 from pricer.report.text import looks_like_formula
 from pricer.report.widths import heading_lines, heading_width
 from pricer.run.outcome import MarketFacts
-from tests.unit.report_outcomes import WARNINGS, empty, facts, outcome, refusals, valuation
+from tests.unit.report_outcomes import WARNINGS, empty, facts, issue, outcome, refusals, valuation
 
 SHEETS = [
-    *("Summary", "Valuations", "Deltas by trade", "Deltas by underlying", "Cross-check", "Problems"),
+    *("Summary", "Valuations", "Deltas by trade", "Deltas by underlying", "Cross-check"),
+    *("Why not priced", "Problems"),
     *("Market", "Calibration", "Smiles", "Curves", "Forwards", "Credit, funding, agreements", "Run"),
 ]
 TABLE_SHEETS = {
@@ -29,6 +31,7 @@ TABLE_SHEETS = {
     "Deltas by trade": ("deltas", columns.DELTAS),
     "Deltas by underlying": ("underlying_deltas", columns.UNDERLYING_DELTAS),
     "Cross-check": ("cross_check", columns.CROSS_CHECK),
+    "Why not priced": ("refusal_causes", columns.REFUSAL_CAUSES),
     "Problems": ("problems", columns.PROBLEMS),
     "Calibration": ("calibration", market_columns.CALIBRATION),
     "Curves": ("curves", market_columns.CURVES),
@@ -111,7 +114,7 @@ def test_the_parts_on_the_summary_add_up_to_the_total(workbook, folder):
     total = json.loads((folder / "run.json").read_text())["total"]["value"]
     rows = list(summary.iter_rows())
     for grouping in ("currency", "product", "strategy", "counterparty", "model"):
-        places = [cell for row in rows for cell in row if cell.value == f"Value by {grouping}"]
+        places = [cell for row in rows for cell in row if str(cell.value).startswith(f"Value by {grouping}")]
         head = places[-1]  # the first one of "Value by strategy" is the chart's
         values = []
         row = head.row + 3
@@ -293,11 +296,17 @@ def test_the_charts_draw_cells_of_this_workbook(workbook):
         assert "total" not in names
         assert all(isinstance(value, float) for value in values)
         assert [abs(value) for value in values] == sorted((abs(value) for value in values), reverse=True)
-    agrees, differs, upper, lower = scatter.series
+    lognormal, smiled, differs, upper, lower = scatter.series
+    models = [checks.cell(row, column_of(checks, "model")).value for row in range(HEADING + 1, checks.max_row + 1)]
     verdicts = [checks.cell(row, column_of(checks, "verdict")).value for row in range(HEADING + 1, checks.max_row + 1)]
-    for series, verdict in ((agrees, "agrees"), (differs, "differs")):
+    for series, wanted in (
+        (lognormal, [("agrees", "lognormal")]),
+        (smiled, [("agrees", "local volatility")]),
+        (differs, [("differs", "lognormal"), ("differs", "local volatility")]),
+    ):
         drawn = cells(series.yVal.numRef.f)
-        assert [value is not None for value in drawn] == [found == verdict for found in verdicts]
+        assert any(value is not None for value in drawn)
+        assert [value is not None for value in drawn] == [p in wanted for p in zip(verdicts, models, strict=True)]
         assert len(cells(series.xVal.numRef.f)) == len(verdicts)
     assert cells(upper.yVal.numRef.f) == [1.0, 1.0]
     assert cells(lower.yVal.numRef.f) == [-1.0, -1.0]
@@ -314,14 +323,14 @@ def test_the_title_of_a_chart_counts_in_the_unit_of_its_scale(workbook):
     assert words(workbook["Summary"]._charts[0].y_axis.title) == "thousand EUR"
 
 
-def test_the_summary_takes_two_pages_and_the_run_sheet_prints_no_explanation_of_columns(workbook):
-    assert len(workbook["Summary"].row_breaks.brk) == 1
+def test_the_summary_takes_three_pages_and_the_run_sheet_prints_no_explanation_of_columns(workbook):
+    assert len(workbook["Summary"].row_breaks.brk) == 2
     sheet = workbook["Run"]
     last = int(sheet.print_area.rpartition("$")[2])
     first = [cell.value for cell in sheet["A"]]
     assert any(str(text).startswith("Columns of") for text in first[last:])
     assert not any(str(text).startswith(("Columns of", "Methods")) for text in first[:last])
-    assert len(sheet.row_breaks.brk) == 1
+    assert len(sheet.row_breaks.brk) == 2
     for page in sheet.row_breaks.brk:  # a title stays with its lines: air, then the title
         assert sheet.cell(page.id + 1, 1).value is None
         assert sheet.cell(page.id + 2, 1).style == "section"
@@ -425,13 +434,26 @@ def test_a_large_book_shows_its_largest_groups_and_the_rest_in_one_line(tmp_path
     assert sum(text.startswith("product ") for text in found) == 13  # more than other tables have room for
 
 
-def test_many_refusals_are_counted_and_the_first_are_shown(tmp_path):
-    many = tuple(refusals()[0].__class__(f"R-{i:03}", refusals()[0].issues) for i in range(40))
+def test_many_causes_are_counted_and_the_first_are_shown(tmp_path):
+    many = tuple(Refusal(f"R-{i:03}", (issue(found=f"-{i}"),)) for i in range(40))
     workbook = opened(outcome(5, refused=many), tmp_path / "may")
     found = texts(workbook["Summary"])
     assert sum(text.startswith("R-") for text in found) == 5
-    assert any(text.startswith("and 35 more") for text in found)
+    assert "and 35 more causes: sheet Why not priced" in found
     assert sum(text.startswith("R-") for text in texts(workbook["Valuations"])) == 40
+
+
+def test_a_cause_that_many_trades_share_is_one_line_with_their_number(tmp_path):
+    same = issue(code="no-volatility", sheet="constituents", found='underlying "A", which has no usable volatility')
+    many = tuple(Refusal(f"R-{i:03}", (same, *((issue(found="-1"),) if i == 7 else ()))) for i in range(40))
+    workbook = opened(outcome(5, refused=many), tmp_path / "may")
+    assert "R-000 and 39 more" in texts(workbook["Summary"])
+    sheet = workbook["Why not priced"]
+    assert sheet["A2"].value.startswith("40 trades have no price, for 2 causes;")
+    assert [cell.value for cell in sheet[HEADING + 1]][:5] == [40, 39, "market", "no volatility", same.found]
+    assert [cell.value for cell in sheet[HEADING + 2]][:5] == [1, 0, "book", "not positive", "-1"]
+    assert same.found in texts(workbook["Market"])  # under what the market lacks
+    assert "-1" not in texts(workbook["Market"])
 
 
 def test_a_value_that_is_not_a_number_is_never_passed_over_in_silence(tmp_path):
@@ -474,14 +496,15 @@ def test_the_market_sheet_leads_with_what_was_wrong_and_goes_on_to_how_quotes_ar
     sections = [cell.value for cell in sheet["A"] if cell.style == "section"]
     assert sections == [
         "What was wrong with the snapshot",
-        "How well the quotes are repriced",
+        "What the market lacks for trades of the book",
+        "The underlyings, and how well their quotes are repriced",
         "Violations of arbitrage",
     ]
     assert sheet["A2"].value.startswith(
         "5 volatility surfaces, 1 failing. 250 quotes, 160 of them between 10 and 90 delta"
     )
     repaired = [cell.value for cell in row_of(sheet, "correlation repaired")]
-    assert repaired[1:4] == ["warning", 1, "may_market.xlsx, sheet correlations"]
+    assert repaired[1:5] == ["correlations", "warning", 1, "may_market.xlsx, sheet correlations"]
     assert any("the largest change is 0.012" in str(value) for value in repaired)
 
 
@@ -491,7 +514,7 @@ def test_a_failing_surface_is_marked_by_a_tint_and_a_bold_word_and_says_why(work
     assert (failing[1].value, failing[1].font.bold) == ("fails", True)
     assert (passing[1].value, passing[1].font.bold) == ("passes", False)
     assert failing[0].fill.fgColor.rgb != passing[0].fill.fgColor.rgb
-    assert "strike 80.0 % of the forward: 1.93 vol points" in failing[11].value
+    assert "strike 80.0 % of the forward: 1.93 vol points" in failing[14].value
     assert failing[0].row < passing[0].row
 
 

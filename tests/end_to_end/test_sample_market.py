@@ -150,8 +150,8 @@ def test_correlations_can_be_estimated_from_the_history_instead(tmp_path):
     difference = estimated.correlation.sub(market().correlation.ids) - market().correlation.matrix
     assert 0.0 < np.sqrt(np.mean(difference**2)) < 0.15
     assert admit(book(), estimated).refusals == ()
-    told = [issue for issue in estimated.issues if issue.sheet == "price_history"]
-    assert told, "days off leave gaps, which are told"
+    # Exchanges are closed on different days; a level that none could have is not missing.
+    assert estimated.issues == ()
 
 
 @pytest.mark.parametrize(

@@ -49,7 +49,8 @@ ODD_CELLS = st.one_of(
     st.none(),
     st.floats(),
     st.integers(-5, 5),
-    st.text(max_size=6),
+    # A NUL character says that the file is not text at all, and is refused with it (test_loader_csv).
+    st.text(st.characters(exclude_characters="\0", codec="utf-8"), max_size=6),
     st.dates(),
     st.sampled_from(["", "n/a", "-", "1e9"]),
 )

@@ -112,12 +112,12 @@ def converted(problem: LocalVolProblem, *, composite: bool) -> LocalVolProblem:
     rho[:n, n], rho[:n, n + 1] = -0.3, np.linspace(0.1, 0.35, n)
     rho[n, n + 1] = 0.4
     rho = np.triu(rho) + np.triu(rho, 1).T
-    rate_of = tuple(None if i == 1 else i % 2 for i in range(n))
+    exposures = np.array([[float(i != 1 and i % 2 == j) for j in range(2)] for i in range(n)])
     return replace(
         problem,
         correlation=rho,
         variance_times=times,
         variances=np.vstack([of_assets, of_rates]),
-        rate_of=rate_of,
+        exposures=exposures,
         composite=composite,
     )

@@ -12,6 +12,7 @@ from pricer.loader.examples import EXAMPLE_MARKET
 
 OPTIONAL = ("dividends", "repo", "price_history", "fx", "fx_volatilities", "credit", "funding", "agreements")
 VALUATION_DATE = date(2026, 3, 31)
+SPOTS = (("underlyings", "underlying"), ("fx", "pair"))
 
 
 def full_market():
@@ -40,10 +41,15 @@ def small_market():
 
 
 def price_history(ids, days=90, *, seed=1, last=VALUATION_DATE):
-    """Rows of the table price_history: random walks on weekdays up to ``last``, of one factor and own noise."""
+    """Rows of the table price_history: random walks on weekdays up to ``last``, of one factor and own noise.
+
+    They end at the example's spots.
+    """
     dates = [day for n in range(2 * days) if (day := last - timedelta(days=n)).weekday() < 5][:days][::-1]
     normals = stream(seed, "history", Purpose.FIT, 0).standard_normal((days, len(ids) + 1))
-    levels = 100.0 * np.exp(0.01 * np.cumsum(normals[:, :1] + normals[:, 1:], axis=0))
+    walks = np.exp(0.01 * np.cumsum(normals[:, :1] + normals[:, 1:], axis=0))
+    spots = {row[column]: row["spot"] for table, column in SPOTS for row in EXAMPLE_MARKET[table]}
+    levels = walks / walks[-1] * [spots[name] for name in ids]
     return [
         {"date": day, "underlying": name, "level": float(level)}
         for day, row in zip(dates, levels, strict=True)

@@ -9,6 +9,8 @@ import numpy as np
 from pricer.market.affine_price import AffinePrice
 from pricer.market.checked_surface import VolatilityQuote, build_surface
 from pricer.market.dividends import CashDividend, Dividends
+from pricer.market.implied_surface import ImpliedSurface
+from pricer.market.smile_quotes import SmileQuotes
 from tests.unit.markets import TODAY, curve
 from tests.unit.model_smiles import MODELS
 from tests.unit.smiles import day
@@ -51,3 +53,20 @@ def flattening_quotes():
 
 def built(quotes, cash=()):
     return build_surface("ARVENNE", price(cash), TODAY, quotes)
+
+
+#: Volatilities at the forward by days: a quiet time, an event, and what follows.
+EVENTFUL = {
+    "one event": {7: 0.10, 10: 0.45, 30: 0.30, 91: 0.22, 365: 0.20},
+    "two events": {7: 0.10, 10: 0.35, 30: 0.22, 33: 0.35, 91: 0.26, 365: 0.22},
+}
+
+
+def eventful_surface(levels, skew, curvature):
+    """A smile ``level (1 + skew z + curvature z^2)``, z in standard deviations, on these levels or those of a name."""
+    quotes = []
+    for days, level in (EVENTFUL[levels] if isinstance(levels, str) else levels).items():
+        z = np.linspace(-2.2, 1.8, 9)
+        k = z * level * np.sqrt(days / 365)
+        quotes.append(SmileQuotes.of(day(days), k, level * (1.0 + skew * z + curvature * z * z)))
+    return ImpliedSurface.from_quotes(TODAY, quotes)

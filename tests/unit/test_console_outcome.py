@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from pricer.cli.console import show_outcome
-from pricer.run.outcome import MarketFacts
-from tests.unit.report_outcomes import empty, outcome, valuation
+from pricer.run.outcome import MarketFacts, Model
+from tests.unit.report_outcomes import checks_of, empty, outcome, valuation
 
 
 def lines(capsys, run):
@@ -26,4 +28,16 @@ def test_a_flat_market_under_one_model_is_not_spoken_of(capsys):
     trade = valuation(1, model_difference=None, model_difference_standard_error=None)
     found = lines(capsys, empty(valuations=(trade,), market=MarketFacts()))
     assert not [line for line in found if "surface" in line or "lognormal" in line or "delta" in line]
-    assert found[-1].startswith("cross-checks:")
+    assert found[-2:] == [
+        "cross-checks: 0, of which disagree: 0",
+        "leading values checked under their own model, of 1: exact reference 0, bounds 0, no reference 1",
+    ]
+
+
+def test_the_closing_lines_tell_under_which_model_was_checked(capsys):
+    trade = valuation(1)
+    other = replace(checks_of(trade)[0], model=Model.LOGNORMAL)
+    assert trade.model is Model.LOCAL_VOLATILITY
+    found = lines(capsys, empty(valuations=(trade,), cross_checks=(other, checks_of(trade)[1])))
+    assert "cross-checks: 2 (1 under local volatility, 1 under lognormal), of which disagree: 0" in found
+    assert "leading values checked under their own model, of 1: exact reference 0, bounds 1, no reference 0" in found

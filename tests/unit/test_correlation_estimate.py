@@ -145,3 +145,31 @@ def test_what_cannot_be_estimated_is_told():
     ):
         with pytest.raises(ValueError, match=message):
             HistoryRules(**rules)
+
+
+@pytest.mark.parametrize(
+    ("move", "usual", "is_jump"),
+    [(0.9, 1.0, True), (0.26, 1.0, True), (0.24, 1.0, False), (-0.4, 1.0, True), (0.3, 3.0, False)],
+)
+def test_a_move_is_a_jump_only_if_it_is_large_for_any_day_and_far_from_usual(move, usual, is_jump):
+    """Daily moves of about 1 % times ``usual``: 12 of them are 12 %, or 36 % where they are 3 %."""
+    dates, levels = history(days=200)
+    levels = 100.0 * (levels / 100.0) ** usual
+    jumping = levels * np.where((np.arange(200) >= 90)[:, None] & (np.arange(3) == 1), np.exp(move), 1.0)
+    found = estimate(IDS, dates, jumping)
+    assert [(jump.name, jump.earlier, jump.day) for jump in found.jumps] == [("BELCOR", dates[89], dates[90])] * is_jump
+    assert found.counts.diagonal().tolist() == [199, 199 - is_jump, 199]
+    if is_jump:
+        # One return less of 199 moves a correlation by a few hundredths at most.
+        assert found.matrix.matrix == pytest.approx(estimate(IDS, dates, levels).matrix.matrix, abs=0.1)
+        (jump,) = found.jumps
+        assert (jump.before, jump.level) == (jumping[89, 1], jumping[90, 1])
+
+
+def test_a_level_is_missing_only_where_its_own_calendar_is_open():
+    dates, levels = history(days=120)
+    holiday = dates.index(date(2026, 1, 19))  # the US market's, not that of TARGET
+    levels[holiday, :2] = np.nan
+    found = estimate(IDS, dates, levels, calendars={"ARVENNE": "NYSE", "BELCOR": "TARGET"})
+    assert found.missing.tolist() == [0, 1, 0]
+    assert found.counts.diagonal().tolist() == [117, 117, 119]

@@ -52,7 +52,7 @@ def test_the_examples_become_the_trades_they_describe(load, tables):
     assert basket.contract.aggregate == Aggregate.weighted_sum((0.5, 0.3, 0.2))
     assert basket.contract.profile == Profile(ProfileKind.CALL, strike=1.0, cap=0.3)
     assert basket.premium == Premium(410_000.0, date(2026, 3, 4))
-    assert (basket.counterparty, basket.netting_set, basket.strategy) == ("Ostrevane Trust", "OST-1", "basket hedges")
+    assert (basket.counterparty, basket.netting_set, basket.strategy) == ("Guldmar Bank", "GUL-1", "basket hedges")
     assert worst.contract.aggregate == Aggregate.worst_of(2)
     assert worst.collateral == "USD"
     assert exchange.contract.profile == Profile(ProfileKind.EXCHANGE)
@@ -203,7 +203,7 @@ def test_a_bad_trade_is_refused_with_what_could_be_read_and_the_others_load(load
     assert [trade.trade_id for trade in book] == ["EX-2", "EX-3", "EX-4", "EX-5", "EX-6"]
     (refusal,) = book.refusals
     assert (refusal.trade_id, refusal.product, refusal.currency) == ("EX-1", "european option", "EUR")
-    assert (refusal.counterparty, refusal.strategy) == ("Ostrevane Trust", "basket hedges")
+    assert (refusal.counterparty, refusal.strategy) == ("Guldmar Bank", "basket hedges")
     assert {issue.trade_id for issue in refusal.issues} == {"EX-1"}
     assert set(refusal.issues) <= set(book.issues)
 

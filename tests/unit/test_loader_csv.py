@@ -76,3 +76,9 @@ def test_guarded_text_does_not_begin_like_a_formula(text):
 
 def test_an_apostrophe_that_guards_nothing_stays():
     assert rows("a\n'tis\n")[1] == (2, ["'tis"])
+
+
+def test_a_file_with_a_nul_character_is_refused_as_no_text():
+    error = refusal(b"trade_id,strategy\nA,a\0b\n")
+    assert (error.code, error.found) == ("damaged-csv", "a NUL character at position 21")
+    assert (error.expected, error.mend) == ("plain text", "Copy or export the file again.")

@@ -10,6 +10,7 @@ from pricer.loader.columns import columns_of
 from pricer.loader.headers import find_sheet, match_header, unread_sheets
 from pricer.loader.market_rows import CurveRow, FxRow
 from pricer.loader.sheets import Merged, Sheet, Sheets
+from pricer.loader.underlying_rows import VolatilityRow
 
 FX, CURVES = columns_of(FxRow), columns_of(CurveRow)
 
@@ -187,3 +188,49 @@ def test_sheets_that_differ_by_case_only_are_refused():
 
 def test_sheets_that_nobody_asked_for_are_named():
     assert [issue.sheet for issue in unread_sheets(sheets(unread=["old fx"]))] == ["old fx"]
+
+
+QUOTES = ["underlying", "expiry_date", "volatility_decimal", "strike"]
+
+
+@pytest.mark.parametrize(
+    ("text", "meant", "unit"),
+    [
+        ("skew", "skew_decimal", "as a decimal (-0.12: a strike 1 % lower has about 0.12 vol points more)"),
+        ("Curvature (%)", "curvature_decimal", "as a decimal"),
+        ("strike_of_forward_percent", "strike_of_forward_decimal", "as a decimal (0.95 = 95 %)"),
+        ("strike of forward pct", "strike_of_forward_decimal", "as a decimal (0.95 = 95 %)"),
+    ],
+)
+def test_a_column_without_its_unit_or_with_another_is_refused_and_not_ignored(text, meant, unit):
+    header, issues = match_header(sheet([*QUOTES, text], name="volatilities"), columns_of(VolatilityRow))
+    assert header is None
+    assert [str(issue) for issue in issues] == [
+        f'market.xlsx, sheet volatilities, row 1, column "{text}" (cell E1): found the column "{text}"; expected a '
+        f'column {meant}. Did you mean "{meant}"? Rename the column, with values {unit}, or delete it.'
+    ]
+    assert issues[0].severity is Severity.FATAL
+
+
+def test_a_column_that_differs_by_its_unit_is_told_apart_from_one_that_is_merely_alike():
+    names = [*QUOTES, "skew_pct", "curvature"]
+    _, issues = match_header(sheet(names, name="volatilities"), columns_of(VolatilityRow))
+    assert {issue.column: issue.expected for issue in issues} == {
+        "skew_pct": "a column skew_decimal",
+        "curvature": "a column curvature_decimal",
+    }
+
+
+@pytest.mark.parametrize("text", ["remark", "source", "skewness of the desk", "decimal"])
+def test_a_column_that_is_no_other_still_is_ignored_with_a_warning(text):
+    header, issues = match_header(sheet([*QUOTES, text], name="volatilities"), columns_of(VolatilityRow))
+    assert header is not None
+    assert [(issue.code, issue.severity) for issue in issues] == [("unknown-column", Severity.WARNING)]
+
+
+def test_a_missing_table_beside_no_other_is_told_without_more_words():
+    _, issues = find_sheet(sheets(), "correlations", required=Severity.ERROR)
+    assert [str(issue) for issue in issues] == [
+        "market.xlsx: found no table correlations; expected a table named correlations. Add it; the command template "
+        "writes an empty one."
+    ]

@@ -189,8 +189,8 @@ CASES = [
     pytest.param(
         added("repo", underlying="ZZZ", tenor="1Y", long_rate_decimal=0.03, short_rate_decimal=0.02),
         [
-            'warning: repo, row 5, column "underlying" (cell A5): found "ZZZ"; expected a known underlying. '
-            "Ignored. Add it to its own table, or delete these rows.",
+            'error: repo, row 5, column "underlying" (cell A5): found "ZZZ"; expected a known underlying. '
+            "Not used. Add it to its own table, or delete these rows.",
         ],
         [],
         id="repo of an unknown underlying",
@@ -443,7 +443,7 @@ CASES = [
         changed("credit", 0, cds_spread_decimal=1.2),
         [
             'error: credit, row 2, column "cds_spread_decimal" (cell C2): found 1.2; expected a decimal '
-            "number above 0 and no larger than 1. Did you mean 0.012 (1.2 %)?",
+            "number above 0 and no larger than 1. Did you mean 0.012 (1.2 %) or 0.00012 (1.2 basis points)?",
         ],
         ["credit:Guldmar Bank"],
         id="a spread in percentage points",

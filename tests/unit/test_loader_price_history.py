@@ -82,7 +82,7 @@ def test_without_the_table_there_is_no_matrix(load, tmp_path):
     market = load_market(tmp_path / "market.xlsx")
     assert market.correlation is None
     assert [str(issue) for issue in market.issues] == [
-        "market.xlsx: found no table price_history, but no other table; expected a table named price_history. Add it; "
+        "market.xlsx: found no table price_history; expected a table named price_history. Add it; "
         "the command template writes an empty one."
     ]
 
@@ -103,8 +103,8 @@ def test_a_history_beside_the_matrix_is_told_unless_the_choice_is_stated(tmp_pat
     assert said == [
         [
             "None.xlsx, sheet price_history: found a table price_history, and a blank correlation_source in the table "
-            'snapshot; expected correlation_source "table" or "price history". The table correlations is used, and the '
-            "history is not; say so in correlation_source."
+            'snapshot; expected correlation_source "table" or "price history". Correlations come from the table '
+            "correlations, not from the history; say so in correlation_source."
         ],
         [],
     ]
@@ -127,7 +127,8 @@ def test_an_empty_history_leaves_no_correlations_and_says_so_of_each_id(load):
 def test_missing_and_stale_levels_are_left_out_and_counted_once_per_id(load):
     rows = without(11, 40, 45)
     stuck = [date(2026, 1, day) for day in range(5, 10)]
-    rows = [dict(r, level=99.0) if r["underlying"] == "VADRONE" and r["date"] in stuck else r for r in rows]
+    stuck_level = next(r["level"] for r in rows if r["underlying"] == "VADRONE" and r["date"] == stuck[0])
+    rows = [dict(r, level=stuck_level) if r["underlying"] == "VADRONE" and r["date"] in stuck else r for r in rows]
     market = load(rows)
     assert told(market) == [
         'warning: row 2, column "underlying" (cell B2): found 2 missing levels of ORLUMA; expected a level of its own '
@@ -138,6 +139,74 @@ def test_missing_and_stale_levels_are_left_out_and_counted_once_per_id(load):
         "for every day of the history. They are left out: 84 returns are used. Fill in the levels if they are known.",
     ]
     assert market.correlation.ids == tuple(IDS)
+
+
+def test_levels_are_missing_only_where_their_own_market_was_open(load):
+    """The US market is closed on 19 January and 16 February 2026, TARGET is not: by their published calendars."""
+    holidays = (date(2026, 1, 19), date(2026, 2, 16))
+    rows = [row for row in ROWS if not (row["underlying"] == "EURUSD" and row["date"] in holidays)]
+    market = load(rows)
+    assert market.issues == ()
+    counts = market.quotes.correlation.counts
+    assert counts[4, 4] == counts[0, 0] - 4  # the returns into and out of each holiday
+    assert market.quotes.correlation.missing.tolist() == [0] * 5
+
+
+def test_a_level_ten_times_its_neighbours_costs_its_two_returns_and_is_told(load):
+    rows = [dict(row) for row in ROWS]
+    rows[200]["level"] = 842.0  # ORLUMA
+    before, day = rows[195]["level"], rows[200]["date"]
+    market = load(rows)
+    assert told(market) == [
+        f'warning: row 202, column "level" (cell C202): found 842 for ORLUMA on {day}, after {before!r} on '
+        f"{rows[195]['date']} (and 1 more such move); expected moves below 25 %, or within 12 times what is usual for "
+        "it. Left out: 87 returns are used. A split that is not adjusted for, or a slip of the decimal point? Correct "
+        "the levels."
+    ]
+    assert [(jump.name, jump.day) for jump in market.quotes.correlation.jumps] == [
+        ("ORLUMA", day), ("ORLUMA", rows[205]["date"])
+    ]  # fmt: skip
+    assert market.correlation.sub(IDS) == pytest.approx(load(ROWS).correlation.sub(IDS), abs=0.03)
+
+
+def test_a_split_that_is_not_adjusted_for_costs_one_return(load):
+    market = load([dict(row, level=row["level"] * (2.0 if i < 200 and row["underlying"] == "ORLUMA" else 1.0))
+                   for i, row in enumerate(ROWS)])  # fmt: skip
+    assert [issue.code for issue in market.issues] == ["history-jump"]
+    assert market.quotes.correlation.counts[0].tolist() == [88] * 5
+
+
+def test_the_last_levels_are_handed_on_unless_they_are_old(load):
+    old = [row for row in ROWS if row["underlying"] != "TESKIR" or row["date"] < date(2026, 3, 24)]
+    last = load(old).quotes.last_levels
+    assert sorted(last) == sorted(set(IDS) - {"TESKIR"})
+    assert last["ORLUMA"] == (date(2026, 3, 31), pytest.approx(84.2))
+    assert sorted(load(ROWS).quotes.last_levels) == sorted(IDS)
+
+
+def test_a_history_beside_a_matrix_gives_last_levels_and_its_faults_are_warnings(tmp_path):
+    rows = [dict(row) for row in ROWS]
+    rows[7]["level"] = "n/a"
+    tables = full_market() | {"price_history": [*rows, dict(rows[0], underlying="ORLUNA")]}
+    tables["snapshot"][0]["correlation_source"] = "table"
+    write_tables(tables, tmp_path / "market")
+    market = load_market(tmp_path / "market")
+    assert [(issue.code, str(issue.severity), issue.cell) for issue in market.issues] == [
+        ("not-a-number", "warning", "C9"), ("unknown-underlying", "warning", "B452")
+    ]  # fmt: skip
+    assert market.correlation.sub(["ORLUMA", "TESKIR"])[0, 1] == 0.55
+    assert sorted(market.quotes.last_levels) == sorted(IDS) and market.quotes.correlation is None
+
+
+def test_a_history_with_a_misspelt_column_beside_a_matrix_is_told_and_not_read(tmp_path):
+    tables = full_market() | {"price_history": ROWS}
+    tables["snapshot"][0]["correlation_source"] = "table"
+    write_tables(tables, tmp_path / "market")
+    history = tmp_path / "market" / "price_history.csv"
+    history.write_text(history.read_text(encoding="utf-8").replace("level", "levl", 1), encoding="utf-8")
+    market = load_market(tmp_path / "market")
+    assert [(issue.code, str(issue.severity)) for issue in market.issues] == [("misspelt-column", "warning")]
+    assert market.quotes.last_levels == {}
 
 
 def test_an_id_with_a_short_history_has_no_correlations_and_the_others_keep_theirs(load):
@@ -215,13 +284,13 @@ def test_levels_on_days_off_are_left_out_with_one_warning(load):
     ]
 
 
-def test_ids_that_the_market_does_not_have_are_ignored_with_one_warning_each(load):
+def test_ids_that_the_market_does_not_have_are_told_once_each(load):
     rows = [*ROWS, *(dict(row, underlying="ZZZ") for row in ROWS[:9]), dict(ROWS[-4], underlying="TESKIRR")]
     assert told(load(rows)) == [
-        'warning: row 452, column "underlying" (cell B452): found "ZZZ" (and 8 more rows); expected an underlying or a '
-        "currency pair of the market. Ignored. Add it to the market, or delete these rows.",
-        'warning: row 461, column "underlying" (cell B461): found "TESKIRR"; expected an underlying or a currency pair '
-        'of the market. Did you mean "TESKIR"? Ignored.',
+        'error: row 452, column "underlying" (cell B452): found "ZZZ" (and 8 more rows); expected an underlying or a '
+        "currency pair of the market. Not used. Add it to the market, or delete these rows.",
+        'error: row 461, column "underlying" (cell B461): found "TESKIRR"; expected an underlying or a currency pair '
+        'of the market. Did you mean "TESKIR"? Correct the id: these levels are missing.',
     ]
 
 
@@ -232,7 +301,8 @@ def test_an_underlying_without_a_history_is_missing_from_the_matrix_and_explaine
 
 
 def test_of_a_pair_that_stands_both_ways_the_first_is_used(load):
-    market = load([*ROWS, *(dict(row, underlying="USDEUR") for row in ROWS if row["underlying"] == "EURUSD")])
+    turned = [dict(row, underlying="USDEUR", level=1.0 / row["level"]) for row in ROWS if row["underlying"] == "EURUSD"]
+    market = load([*ROWS, *turned])
     assert told(market) == [
         'error: row 452, column "underlying" (cell B452): found the pair USDEUR, and its inverse in row 6; expected '
         "each pair of currencies in one direction. Delete one of the two rows."
@@ -257,7 +327,7 @@ def contradictory():
 def test_a_history_that_contradicts_itself_too_much_gives_no_matrix(load):
     market = load(contradictory(), fx_volatilities=[])
     assert market.correlation is None
-    issue = market.issues[-1]
+    (issue,) = [issue for issue in market.issues if issue.code == "inconsistent-correlations"]
     # Which of the three pairs is moved most is a tie.
     assert issue.found.startswith("the correlations contradict each other (smallest eigenvalue -1.0000)")
     assert issue.found.endswith("from 1.0000 to 0.5000, more than the limit of 0.1")

@@ -306,11 +306,27 @@ def test_tenors_that_no_quarterly_premium_fits_are_refused(text):
         (125.0, "Did you mean 0.0125 (125 basis points)?"),
         (10.0, "Did you mean 0.001 (10 basis points)?"),
         (-12.5, "Did you mean -0.00125 (-12.5 basis points)?"),
-        (1.25, "Did you mean 0.0125 (1.25 %)?"),
+        (-5.0, "Did you mean -0.05 (-5 %) or -0.0005 (-5 basis points)?"),
+        (2e4, ""),
     ],
 )
 def test_basis_points_in_a_column_of_spreads_are_recognised(typed_number, meant):
     assert fault(Number(percent=True, decimal_limit=1.0, basis_points=True), typed_number).mend == meant
+
+
+@pytest.mark.parametrize(
+    ("kind", "typed_number", "meant"),
+    [
+        (Number(percent=True, decimal_limit=1.0, is_rate=True), 1.97, "Did you mean 0.0197 (1.97 %)?"),
+        (Number(percent=True, decimal_limit=1.0, is_rate=True), 197.0, "Did you mean 0.0197 (197 basis points)?"),
+        (Number(percent=True, decimal_limit=1.0, is_rate=True), 19700.0, ""),
+        (Number(above=0.0, percent=True, decimal_limit=3.0), 2250.0, ""),
+        (Number(above=0.0, percent=True, decimal_limit=3.0), -22.5, ""),
+        (Number(at_least=-1.0, at_most=1.0, percent=True, decimal_limit=2.0), 150.0, ""),
+    ],
+)
+def test_no_guess_at_a_unit_breaks_the_columns_own_limits(kind, typed_number, meant):
+    assert fault(kind, typed_number).mend == meant
 
 
 @pytest.mark.parametrize(

@@ -40,7 +40,8 @@ def exact_law(problem: LocalVolProblem):
     fine = np.linspace(0.0, problem.years, 30_001)  # the kinks at 0.3, 0.9 and 1.0 of 1.5 years are on it
     total = np.stack([np.interp(fine, problem.variance_times, row) for row in problem.variances])
     rises = np.sqrt(np.diff(total, axis=1))
-    covariance = with_rates(problem.correlation * (rises @ rises.T), problem.rate_of)
+    factors = [int(np.argmax(row)) if np.any(row) else None for row in problem.exposures]
+    covariance = with_rates(problem.correlation * (rises @ rises.T), factors)
     if problem.composite:
         return composite(problem.scales, np.ones(problem.n_assets), covariance)
     return quanto(problem.scales, covariance)
@@ -75,7 +76,7 @@ def test_flat_surfaces_give_the_closed_forms_law_and_the_lognormal_engines_value
 @BOTH
 def test_the_forward_of_a_converted_basket_is_known(is_composite):
     problem = converted(skewed(Aggregate.weighted_sum((0.4, 0.3, 0.3)), FORWARD), composite=is_composite)
-    got = run(problem)
+    got = run(problem, settings=fixed(16384))
     weights = problem.discount_factor * np.array(problem.aggregate.weights) * problem.scales
     if is_composite:  # whatever the model: an asset converted at the day's rate is an asset of the payment currency
         assert got.value == pytest.approx(weights.sum(), abs=5.0 * got.standard_error)
@@ -97,8 +98,48 @@ def test_values_with_skews_agree_with_a_plain_euler_scheme(case, is_composite):
     want, error = euler(problem)
     # two independent errors; 0.02 for the bias of 100 Euler steps, of order a hundredth of a 3 to 10 point value
     assert abs(got.value - want) < 4.0 * np.hypot(error, got.standard_error) + 0.02
-    other = run(replace(problem, rate_of=(None,) * 3, composite=False), settings=fixed(8192, 16))
+    other = run(replace(problem, exposures=None, composite=False), settings=fixed(8192, 16))
     assert abs(got.value - other.value) > 20.0 * got.standard_error  # the conversion is seen
+
+
+CHAINS = np.array([[1.0, -1.0], [0.0, 0.0], [0.0, 1.0]])
+
+
+@BOTH
+def test_a_cross_is_the_chain_of_its_factors_whatever_their_volatilities_do(is_composite):
+    # its own correlation with an asset changes as the factors' volatilities do: with flat surfaces both models are one
+    for case in ("basket call", "worst-of put"):
+        problem = replace(converted(skewed(*CASES[case]), composite=is_composite), exposures=CHAINS)
+        wild = problem.variances.copy()
+        rises = np.diff(wild[3:], axis=1)
+        wild[3:, 1:] = np.cumsum(rises * [[4.0, 0.2, 1.0], [0.2, 4.0, 1.0]], axis=1)
+        problem = flat(replace(problem, variances=wild))
+        got = run(problem)
+        fine = np.linspace(0.0, problem.years, 30_001)
+        rises = np.sqrt(np.diff(np.stack([np.interp(fine, problem.variance_times, row) for row in wild]), axis=1))
+        total = problem.correlation * (rises @ rises.T)
+        with_chains = np.block([[np.eye(3), np.zeros((3, 2))], [np.zeros((3, 3)), CHAINS]])
+        both = with_chains @ total @ with_chains.T
+        law = composite(problem.scales, np.ones(3), both) if is_composite else quanto(problem.scales, both)
+        known = sample(
+            EuropeanProblem(law, problem.aggregate, problem.payoff, problem.discount_factor),
+            group="other", seed=2, value_tolerance=1e-9, delta_tolerance=1e-9,
+            settings=SamplingSettings(initial_points=4096, maximum_points=4096),
+        )  # fmt: skip
+        assert problem.lognormal.law.covariance == pytest.approx(law.covariance, rel=1e-9)
+        error = np.hypot(np.hypot(got.standard_error, got.step_bias), known.standard_error)
+        assert abs(got.value - known.value) < 4.0 * error
+        other = run(replace(problem, exposures=np.abs(CHAINS)))
+        assert abs(got.value - other.value) > 10.0 * error  # the sign is seen
+
+
+@BOTH
+def test_crosses_with_skews_agree_with_a_plain_euler_scheme(is_composite):
+    aggregate, payoff = CASES["basket call"]
+    problem = replace(converted(skewed(aggregate, payoff, cells=64), composite=is_composite), exposures=CHAINS)
+    got = run(problem, settings=fixed(8192, 16))
+    want, error = euler(problem)
+    assert abs(got.value - want) < 4.0 * np.hypot(error, got.standard_error) + 0.02  # as above
 
 
 def euler(problem: LocalVolProblem, steps: int = 100, paths: int = 30_000) -> tuple[float, float]:
@@ -123,14 +164,14 @@ def euler(problem: LocalVolProblem, steps: int = 100, paths: int = 30_000) -> tu
         of_rate = np.sqrt(rises[:, s] / h)
         for i in range(n):
             sigma = smile(sigmas[0][i], sigmas[1][i], 0.2)(times[s] + 0.5 * h, logs[i])
-            rate = problem.rate_of[i]
-            drift = 0.0 if rate is None else -problem.correlation[i, n + rate] * of_rate[rate]
+            drift = -(problem.exposures[i] * problem.correlation[i, n:]) @ of_rate
             logs[i] += sigma * (z[i] + drift * h) - 0.5 * sigma**2 * h
         rates += of_rate[:, None] * z[n:] - 0.5 * rises[:, [s]]
     levels = problem.scales[:, None] * np.exp(logs)
     if problem.composite:
-        for i, rate in enumerate(problem.rate_of):
-            levels[i] *= 1.0 if rate is None else np.exp(rates[rate])
+        own = problem.exposures @ (rates + 0.5 * rises.sum(axis=1)[:, None])
+        spread = problem.exposures @ problem.covariance[n:, n:] @ problem.exposures.T
+        levels *= np.exp(own - 0.5 * np.diag(spread)[:, None])
     values = problem.discount_factor * problem.payoff(problem.aggregate(levels.T))
     pairs = 0.5 * (values[:half] + values[half:])
     return float(pairs.mean()), float(pairs.std(ddof=1) / np.sqrt(half))
@@ -158,7 +199,7 @@ def test_the_quanto_drift_is_that_of_a_measure_change_by_weights():
     pairs = 0.5 * (values[:half] + values[half:])
     error = float(pairs.std(ddof=1) / np.sqrt(half))
     assert got.value == pytest.approx(float(pairs.mean()), abs=4.0 * error + 0.01)
-    unshifted = run(replace(problem, rate_of=(None,)), settings=fixed(8192, 16))
+    unshifted = run(replace(problem, exposures=None), settings=fixed(8192, 16))
     assert abs(unshifted.value - got.value) > 5.0 * error + 0.01
 
 
@@ -167,7 +208,7 @@ def test_level_deltas_of_composites_are_derivatives_to_their_exchange_rates(case
     problem = converted(skewed(*CASES[case]), composite=True)
     base = run(problem)
     for rate in (0, 1):
-        of_rate = np.array([own == rate for own in problem.rate_of])
+        of_rate = problem.exposures[:, rate] == 1.0
         up, down = (run(replace(problem, scales=problem.scales * np.exp(h * of_rate))) for h in (0.01, -0.01))
         slope = (up.value - down.value) / 0.02
         noise = np.hypot(up.standard_error, down.standard_error) / 0.02
@@ -197,10 +238,9 @@ def test_converted_values_repeat_themselves_to_the_last_bit(is_composite):
 
 def test_places_of_exchange_rates_that_do_not_fit_are_refused():
     problem = converted(skewed(*CASES["basket call"]), composite=False)
-    with pytest.raises(ValueError, match="do not fit the 2 rows after the assets"):
-        replace(problem, rate_of=(0, 1, 2))
-    with pytest.raises(ValueError, match="2 places of exchange rates do not fit 3 assets"):
-        replace(problem, rate_of=(0, 1))
+    for shape in ((3, 3), (2, 2)):
+        with pytest.raises(ValueError, match=r"do not fit 3 assets and 2 rows after them"):
+            replace(problem, exposures=np.zeros(shape))
     with pytest.raises(ValueError, match="must start at 0 and not decrease"):
         replace(problem, variances=-problem.variances)
     with pytest.raises(ValueError, match="before the expiry at 9"):

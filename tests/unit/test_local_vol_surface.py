@@ -3,11 +3,13 @@
 import numpy as np
 import pytest
 
+from pricer.market.black import call
 from pricer.market.implied_surface import ImpliedSurface
-from pricer.market.local_vol_surface import CAP, GROWTH, LONGEST_CELL, LocalVolSurface, cell_ends
+from pricer.market.local_vol_surface import CAP, FAR_REACH, REACH, LocalVolSurface
 from pricer.market.svi import SviSlice
 from pricer.market.volatility import VolatilityCurve
 from tests.unit.smiles import TODAY, day, smiles
+from tests.unit.surface_cases import eventful_surface
 
 SURFACE = ImpliedSurface.from_quotes(TODAY, smiles(3))
 LOCAL = LocalVolSurface.from_implied(SURFACE)
@@ -28,16 +30,6 @@ def test_no_variance_and_no_forward_variance_are_zero_local_volatility():
     np.testing.assert_allclose(local.values[local.times[1:] > 1.0], 0.0, atol=1e-7)
     nothing = VolatilityCurve.from_quotes(TODAY, [day(365)], [0.0])
     assert np.all(LocalVolSurface.from_implied(ImpliedSurface.flat(nothing)).values == 0.0)
-
-
-def test_every_expiry_ends_a_cell_and_cells_grow_slowly():
-    ends = cell_ends(SURFACE.times)
-    assert set(SURFACE.times) <= set(ends.tolist())
-    lengths = np.diff(np.concatenate(([0.0], ends)))
-    assert lengths.max() <= LONGEST_CELL * (1.0 + 1e-9)
-    late = ends[:-1] > SURFACE.times[0]
-    assert np.all(lengths[1:][late] <= (GROWTH - 1.0) * ends[:-1][late] * (1.0 + 1e-9))
-    assert lengths[0] == pytest.approx(SURFACE.times[0] / 8.0)
 
 
 @pytest.mark.parametrize("horizon", [0.01, 0.5, 5.0, 7.5])
@@ -80,13 +72,33 @@ def test_near_time_zero_the_local_volatility_is_the_limit_of_short_time():
     np.testing.assert_allclose(local.values[0], limit, rtol=2e-3)
 
 
-def test_a_row_holds_the_mean_of_dupires_quotient_over_its_cell():
-    cell = 30
-    start, end = LOCAL.times[cell : cell + 2]
-    k = LOCAL.nodes(cell)[30:51]
+@pytest.mark.parametrize("place", [10, 30, 55])
+def test_a_row_lifts_calls_as_much_as_the_surface_does_in_its_cell(place):
+    """``c_T - c_0 = sigma^2 / 2 times the integral of c_kk - c_k``, prices and derivatives by Black's formula alone."""
+    start, end = LOCAL.times[place : place + 2]
+    k = LOCAL.nodes(place)[38:83]  # three standard deviations, at nodes: no interpolation
+    h = 1e-3 * float(LOCAL.widths[place])
+
+    def calls(x, t):
+        return call(x, np.sqrt(SURFACE.total_variance(x, t)))
+
     moments = start + (np.arange(200)[:, None] + 0.5) / 200 * (end - start)
-    at, g = SURFACE.derivatives(k, moments), SURFACE.butterfly(k, moments)
-    np.testing.assert_allclose(LOCAL.volatility(k, float(end)), np.sqrt(np.mean(at.speed / g, axis=0)), rtol=3e-3)
+    here, left, right = (calls(k + shift, moments) for shift in (0.0, -h, h))
+    density = np.mean((left - 2.0 * here + right) / h**2 - (right - left) / (2.0 * h), axis=0)
+    wanted = np.sqrt(2.0 * (calls(k, end) - calls(k, start)) / (end - start) / density)
+    # Nodes are moved a little for the chords between them; the rest is the Gauss rule.
+    np.testing.assert_allclose(LOCAL.values[place][38:83], wanted, rtol=3e-3)
+
+
+def test_the_bound_on_local_volatility_follows_the_forward_one_after_a_quiet_time():
+    """Forward volatility is ten times the implied one of the first day after: wings are not cut by the latter."""
+    quiet = SviSlice.from_forward(0.06**2 * 0.02, -0.05 * 0.06 * 0.02**0.5, 0.5)
+    loud = SviSlice.from_forward(0.60**2 * 0.04, -0.30 * 0.60 * 0.04**0.5, 0.5)
+    surface = ImpliedSurface(TODAY, (day(7), day(15)), (0.02, 0.04), (quiet, loud))
+    local = LocalVolSurface.from_implied(surface)
+    first = int(np.searchsorted(local.times, 0.02))
+    assert local.clipping.capped == 0
+    assert local.values[first].max() > CAP * np.sqrt(float(surface.total_variance(0.0, local.times[first + 1]))) / 2
 
 
 def test_clipped_nodes_are_counted_and_those_near_the_forward_apart():
@@ -104,3 +116,13 @@ def test_clipped_nodes_are_counted_and_those_near_the_forward_apart():
 def test_times_that_do_not_increase_from_zero_are_refused(times):
     with pytest.raises(ValueError, match="must increase from 0"):
         LocalVolSurface.from_implied(SURFACE, times=times)
+
+
+def test_steep_wings_get_nodes_further_out_unless_total_variance_falls_there():
+    steep = eventful_surface("one event", -0.17, 0.09)
+    local = LocalVolSurface.from_implied(steep)
+    assert local.reach == FAR_REACH and LOCAL.reach == REACH
+    assert local.spacing[-1] / local.widths[-1] == pytest.approx(LOCAL.spacing[-1] / LOCAL.widths[-1])
+    crossing = ImpliedSurface.from_quotes(TODAY, smiles(1206, index=False, n=5, days=(7, 30, 91, 365, 1095)))
+    assert LocalVolSurface.from_implied(crossing, reach=FAR_REACH).clipping.falling > 0
+    assert LocalVolSurface.from_implied(crossing).reach == REACH

@@ -393,3 +393,16 @@ def test_a_date_beyond_the_calendars_is_told_not_crashed_on():
     issue = only(basket("ARVENNE", expiry=date(2297, 12, 17)))
     assert (issue.code, issue.severity) == ("date-too-late", Severity.ERROR)
     assert issue.expected == "dates up to 2199-12-31, where the calendars end"
+
+
+def test_a_pair_of_which_the_matrix_gave_no_number_costs_the_trades_that_hold_both():
+    why = Issue("blank-cell", "a blank cell, and so is its mirror image", "the correlation in at least one of the two",
+                "Enter it.", file="market.xlsx", sheet="correlations", row=3, column="ARVENNE", cell="B3")  # fmt: skip
+    market = small_market(rejected={"correlations:BELCOR:ARVENNE": (why,)})
+    assert str(only(basket("ARVENNE", "BELCOR"), market)) == (
+        CONSTITUENT.replace("row 8", "row 7") + "found no correlation of ARVENNE with BELCOR; expected a correlation "
+        "for every pair that the trade depends on. Mend the market first: market.xlsx, sheet correlations, row 3, "
+        'column "ARVENNE" (cell B3): found a blank cell, and so is its mirror image; expected the correlation in at '
+        "least one of the two."
+    )
+    assert told(basket("ARVENNE"), market) == told(basket("BELCOR"), market) == []

@@ -9,11 +9,10 @@ import pytest
 from pricer.core.issues import Severity
 from pricer.core.source import Place
 from pricer.market.correlation import checked
-from pricer.market.curves import DiscountCurve
 from pricer.market.dividends import Dividends, ProportionalDividend
 from pricer.market.fx import FxRates
 from pricer.market.quality import gates
-from tests.unit.markets import IDS, TODAY, curve, small_market
+from tests.unit.markets import IDS, curve, small_market
 
 
 def only(market, repair=None):
@@ -51,20 +50,6 @@ def test_zero_rates_in_per_cent():
     assert str(issue) == (
         "found a zero rate of 200.50 % for 2031-11-28 on curve EUR-STD; expected zero rates between -5 % and 30 %. "
         "Check the unit: 2.5 % is entered as 0.025. The rate is used as given."
-    )
-
-
-def test_discount_factors_that_rise():
-    rising = DiscountCurve.from_discount_factors(
-        "EUR-STD", "EUR", "", TODAY,
-        [date(2027, 11, 30), date(2028, 11, 29), date(2029, 11, 29), date(2030, 11, 29)], [0.98, 0.985, 0.97, 0.971],
-    )  # fmt: skip
-    issue = only(small_market(curves={("EUR", ""): rising}))
-    assert issue.code == "negative-forward-rate"
-    assert str(issue) == (
-        "found discount factors that rise from 2027-11-30 to 2028-11-29 on curve EUR-STD, a forward rate of -0.51 % "
-        "(and over 1 other spans); expected discount factors that fall with time, unless rates are negative. Check the "
-        "curve's points around these dates; they are used as given."
     )
 
 

@@ -21,7 +21,7 @@ from tests.unit.report_outcomes import empty, facts, outcome, valuation
 
 CSV_FILES = {
     *("valuations.csv", "deltas.csv", "underlying_deltas.csv", "summaries.csv"),
-    *("cross_check.csv", "problems.csv", "not_priced.csv"),
+    *("cross_check.csv", "problems.csv", "not_priced.csv", "refusal_causes.csv"),
     *("market_problems.csv", "surfaces.csv", "violations.csv", "calibration.csv", "curves.csv", "forwards.csv"),
     *("credit.csv", "funding.csv", "agreements.csv"),
 }

@@ -45,9 +45,15 @@ def test_a_table_shows_as_many_groups_as_it_has_room_for(shown):
 def test_standard_errors_measure_exact_references_and_broken_bounds_alone():
     lines = {line.name: line.numbers[-1] for line in lines_of_verdicts(outcome().cross_checks)}
     blank = {name for name, largest in lines.items() if math.isnan(largest)}
-    assert blank == {Verdict.WITHIN_BOUND, Verdict.FAR, Verdict.CLOSE, NO_SAMPLING}
+    assert blank == {Verdict.WITHIN_BOUND, Verdict.FAR, Verdict.CLOSE}
     assert lines[Verdict.DIFFERS] == pytest.approx(9.3)
     assert lines[Verdict.OUTSIDE_BOUND] == pytest.approx(8.1)
+
+
+def test_disagreements_have_a_line_where_none_occurred_and_other_verdicts_have_not():
+    lines = lines_of_verdicts([checks_of(valuation(1))[0]])
+    assert [(line.name, line.numbers[0]) for line in lines] == [("differs", 0), ("outside bound", 0), ("agrees", 1)]
+    assert {line.mark for line in lines} == {Mark.NONE}
 
 
 def test_agreement_of_two_exact_values_is_counted_apart():

@@ -16,9 +16,10 @@ from pricer.loader.book_tables import book_tables
 from pricer.loader.market_rows import MARKET_ROWS
 from pricer.report import tables
 from pricer.report.market_problems import BOOK_SHEETS, market_problems
+from pricer.report.market_sheet import market_note
 from pricer.report.smile_sheet import shown_expiries, worst_surfaces
-from pricer.report.surface_fits import Reach, reach, simulated_error, surface_fit, surface_fits
-from pricer.run.outcome import CurvePoint, ForwardPoint, MarketFacts, SurfaceFacts
+from pricer.report.surface_fits import Reach, mean_pull, reach, simulated_error, surface_fit, surface_fits
+from pricer.run.outcome import CurvePoint, ForwardPoint, MarketFacts, SurfaceFacts, UnderlyingStanding
 from tests.unit.report_markets import FAILING, NOT_SIMULATED, market_facts, quote
 from tests.unit.report_outcomes import WARNINGS, empty, issue, outcome, refusals
 
@@ -223,3 +224,51 @@ def test_a_problem_belongs_to_the_input_in_which_it_was_found(files, file, sheet
 
 def test_a_problem_of_one_trade_without_a_place_is_not_the_markets():
     assert market_problems([Issue("engine-failed", "a", "b", "C.", trade_id="T")], FILES) == []
+
+
+def test_derived_points_are_judged_like_quotes_and_not_counted_as_such():
+    facts = surface(missed_by(0.0), missed_by(0.3, derived=True), missed_by(0.01, derived=True))
+    fit = surface_fit(facts)
+    assert (fit.quotes, fit.derived, fit.beyond_target, fit.verdict) == (1, 2, 1, "misses target")
+    run = empty(market=MarketFacts(surfaces=(facts,)))
+    assert sorted(tables(run)["calibration"]["origin"]) == ["derived", "derived", "quote"]
+    assert market_note(run.market) == (
+        "1 volatility surfaces, 0 failing. 1 quotes, 1 of them between 10 and 90 delta: simulated error beyond 0.05 "
+        "vol points for 0, and for 1 of 2 derived points."
+    )
+
+
+def test_the_mean_pull_tells_a_common_bias():
+    points = [quote(fitted=0.2, simulated=0.2 + pull * 1e-4, simulated_standard_error=1e-4) for pull in (1.0, 2.0)]
+    assert mean_pull([*points, quote(simulated=None, simulated_standard_error=None)]) == pytest.approx(1.5)
+    assert math.isnan(mean_pull([]))
+
+
+def test_an_underlying_without_a_surface_has_a_row_with_why_and_what_it_costs():
+    standings = (
+        UnderlyingStanding("ALDERMOOR", 4, 0, ()),
+        UnderlyingStanding("LOST", 3, 3, ("no volatility in the volatilities table of the market",)),
+        UnderlyingStanding("PLAIN", 2, 0, ()),
+    )
+    run = empty(market=MarketFacts(surfaces=(surface(missed_by(0.0)),), underlyings=standings))
+    frame = tables(run)["surfaces"].set_index("underlying")
+    assert list(frame.index) == ["LOST", "ALDERMOOR", "PLAIN"]
+    assert list(frame["verdict"]) == ["cannot be used", "passes", "no smile"]
+    assert list(frame["trades_refused"]) == [3, 0, 0]
+    assert frame.loc["LOST", "why"] == "no volatility in the volatilities table of the market"
+
+
+def test_numbers_of_the_surfaces_have_their_unit_in_their_name(frames):
+    assert [name for name in frames["surfaces"] if name.startswith("worst_")] == [
+        "worst_fit_error_middle_vol_points",
+        "worst_fit_error_wings_vol_points",
+        "worst_simulated_error_middle_vol_points",
+        "worst_simulated_error_wings_vol_points",
+    ]
+
+
+def test_problems_of_one_kind_are_told_table_by_table():
+    levels = [issue(file="may_market.xlsx", sheet="price_history", row=row, trade_id=None) for row in range(2, 52)]
+    rate = issue(file="may_market.xlsx", sheet="fx", trade_id=None)
+    found = market_problems([*levels, rate], FILES)
+    assert [(p.table, p.number) for p in found] == [("price_history", 50), ("fx", 1)]

@@ -103,3 +103,17 @@ def test_a_difference_that_is_not_a_number_leads_and_is_marked():
     found = lines(empty(valuations=(trade("A", 5.0), trade("B", math.nan))))
     assert (found[0].name, found[0].mark) == ("B", Mark.LOOK)
     assert math.isnan(found[-1].numbers[-2])
+
+
+def test_the_values_beside_the_differences_add_up_to_the_book():
+    trades = (
+        trade("A", 5.0, reporting_value=10.0),
+        trade("B", 0.0, reporting_value=200.0),
+        trade("C", None, None, reporting_value=3000.0),
+    )
+    run = empty(valuations=trades)
+    found = {line.name: line.numbers for line in lines(run)}
+    assert found["no difference (1)"] == (0.0, 0.0, 200.0, 0.0, 0.0)
+    assert found["under one model only (1)"][2] == 3000.0
+    assert found["total"][2] == book_total(run).total.value == 3210.0
+    assert found["total"][3] == 5.0

@@ -94,7 +94,7 @@ def test_small_misses_and_those_far_out_are_not_told():
 
 def test_a_failing_surface_is_one_error_with_every_reason_and_the_remedy():
     failing = replace(SOUND, failures=("quotes contradict each other: X", "a quote is missed by 0.60 vol points: Y"))
-    (issue,) = surface_gates(failing, cell)
+    (issue,) = surface_gates(replace(failing, quotes=(fit(91, 1.0, 4e-4), fit(365, 1.0, 3e-4))), cell)
     assert (issue.code, issue.severity) == ("failing-surface", Severity.ERROR)
     assert str(issue) == (
         'market.xlsx, sheet volatilities, row 7, column "volatility" (cell C7): found a volatility surface of ARVENNE '
@@ -102,3 +102,21 @@ def test_a_failing_surface_is_one_error_with_every_reason_and_the_remedy():
         "quotes that a surface free of arbitrage meets. Correct the quotes of this underlying, or run with "
         "--accept-failing-surfaces: trades on it are then priced and marked."
     )
+
+
+def at_quotes(key):
+    return (
+        Place("market.xlsx", "volatilities", 9, "volatility", key.rpartition(":")[2]) if key.count(":") == 3 else None
+    )
+
+
+def test_each_finding_stands_at_the_quote_it_is_about():
+    quotes = (fit(91, 0.9, 1e-5), fit(91, 1.0, 2e-5), fit(365, 0.9, 0.008), fit(365, 1.1, 3e-5))
+    failing = ("a quote is missed",)
+    miss, failure = surface_gates(with_(quotes=quotes, failures=failing), at_quotes)
+    assert (miss.code, miss.cell) == ("volatility-miss", "90.0")
+    assert (failure.code, failure.cell) == ("failing-surface", "90.0")
+    small = Violation(ArbitrageKind.CALENDAR, day(91), day(365), math.log(0.91), 0.001, True)
+    large = Violation(ArbitrageKind.BUTTERFLY, day(365), None, math.log(1.2), 0.02, True)
+    cells = [issue.cell for issue in surface_gates(with_([small, large], quotes, failing), at_quotes)]
+    assert cells == [str(quotes[3].strike), "90.0", "90.0", str(quotes[3].strike)]

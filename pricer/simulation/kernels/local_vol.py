@@ -228,12 +228,25 @@ def last_levels(deviations: Any, noise: Any, drifts: Any, shift: Any, n_common: 
 
 
 @njit(**OPTIONS)
-def convert(deviation: float, noise: Any, levels: Any) -> None:
-    """``levels *= exp(b h - b^2 / 2)``, an exchange rate's own last step; all (BLOCK,)."""
+def convert(exposures: Any, drop: float, deviations: Any, noise: Any, logs: Any, levels: Any) -> None:
+    """``levels *= 2^(sum of a_j b_j h_j / log 2 - drop)``, an exchange rate's last step, if any exposure a_j is not 0.
+
+    ``exposures``, ``deviations`` (m,) and ``noise`` (m, BLOCK) of the factors of rates; scratch ``logs`` (BLOCK,).
+    """
     use_wide_vectors()
-    slope, drop = _F(_LOG2_E * deviation), _F(0.5 * _LOG2_E * deviation * deviation)
-    for p in range(BLOCK):
-        levels[p] *= exp2_single(min(max(slope * noise[p] - drop, -_WIDEST), _WIDEST))
+    converted = False
+    for j in range(exposures.shape[0]):
+        if exposures[j] == _F(0.0):
+            continue
+        if not converted:
+            logs[:] = -drop
+            converted = True
+        slope = _F(_LOG2_E) * deviations[j] * exposures[j]
+        for p in range(BLOCK):
+            logs[p] += slope * noise[j, p]
+    if converted:
+        for p in range(BLOCK):
+            levels[p] *= exp2_single(min(max(logs[p], -_WIDEST), _WIDEST))
 
 
 @njit(**OPTIONS)

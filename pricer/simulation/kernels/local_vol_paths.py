@@ -51,7 +51,7 @@ _WIDEST = _F(60.0)  # base-2 log-levels are kept within this: single precision e
 #: One more kind of aggregate than ``payoffs`` has: under local volatility it must be sampled.
 GEOMETRIC = 4
 
-#: Planes (n_rows, BLOCK) of single-precision scratch; rows of exchange rates are used in CONTROL and NOISE only.
+#: Planes (n_rows, BLOCK) of single-precision scratch; rows of factors of rates are used in CONTROL and NOISE only.
 STATES, TANGENTS, NOISE, STARTS, DEVIATIONS, LEVEL_SLOPES, DEVIATION_SLOPES, LEVELS, RANKS, CONTROL = range(10)
 PLANES = 10
 
@@ -113,14 +113,23 @@ def _control_before_last(deviations: Any, planes: Any, n: int) -> None:
 
 
 @njit(**OPTIONS)
-def _convert_starts(rates: Any, planes: Any, n: int) -> None:
-    """Levels before the last step times their exchange rates over forwards."""
+def _convert_starts(exposures: Any, drops: Any, planes: Any, n: int) -> None:
+    """Levels before the last step times their exchange rates over forwards; the logarithm of a rate is a sum."""
     use_wide_vectors()
     for i in range(n):
-        if rates[i] >= 0:
-            j = n + rates[i]
+        logs, converted = planes[LEVELS, i], False
+        for j in range(exposures.shape[1]):
+            a = exposures[i, j]
+            if a == _F(0.0):
+                continue
+            if not converted:
+                logs[:] = -drops[0, i]
+                converted = True
             for p in range(BLOCK):
-                planes[STARTS, i, p] *= exp2_single(min(max(planes[CONTROL, j, p], -_WIDEST), _WIDEST))
+                logs[p] += a * planes[CONTROL, n + j, p]
+        if converted:
+            for p in range(BLOCK):
+                planes[STARTS, i, p] *= exp2_single(min(max(logs[p], -_WIDEST), _WIDEST))
 
 
 @njit(**SUM_OPTIONS)
@@ -208,7 +217,8 @@ def _levels_and_factor(
     log2_scale: float,
     rank_weights: Any,
     drifts: Any,
-    rates: Any,
+    exposures: Any,
+    drops: Any,
     deviations: Any,
     planes: Any,
     precisions: Any,
@@ -225,8 +235,7 @@ def _levels_and_factor(
         split_factor(inverse, n_common, degree, noise, precisions, rows, paths)
     last_levels(planes[DEVIATIONS], noise, drifts, rows[0], n_common, planes[STARTS], levels)
     for i in range(n):
-        if rates[i] >= 0:
-            convert(float(deviations[n + rates[i]]), noise[n + rates[i]], levels[i])
+        convert(exposures[i], drops[1, i], deviations[n:], noise[n:], planes[RANKS, i], levels[i])
     if kind == GEOMETRIC:
         geometric(levels, scales, log2_scale, paths)
     elif kind == SUM:
@@ -274,7 +283,8 @@ _ACCUMULATE = types.void(
     _SINGLE[2],
     _SINGLE[1],
     _SINGLE[1],
-    _PLACES,
+    _SINGLE[2],
+    _SINGLE[2],
     types.boolean,
     _DOUBLE[2],
     types.int64,
@@ -352,7 +362,8 @@ def accumulate(
     volatilities: Any,
     deviations: Any,
     drifts: Any,
-    rates: Any,
+    exposures: Any,
+    drops: Any,
     smooth: bool,
     inverse: Any,
     n_common: int,
@@ -379,12 +390,13 @@ def accumulate(
     Points: ``first``, ``last``, ``columns``, ``words`` as in ``fused.accumulate``, coordinate
     ``t * dims + j`` drives factor j at time t of the bridge ``at``, ``left``, ``right``, ``weights``.
     Steps end at times ``uses`` (n_steps,) of the bridge, the last of ``last_length`` years.
-    ``loadings`` : (n_rows, dims padded to 4) of n assets and of the exchange rates after them; ``widths`` :
+    ``loadings`` : (n_rows, dims padded to 4) of n assets and of factors of exchange rates after them; ``widths`` :
     (n_rows,) as in ``log_levels``. Tables: see ``LocalVolTables``. ``shares`` : (n,) moving part of the forward.
-    Lognormal levels and exchange rates: base-2 logs ``control_starts`` (n_rows,) before any noise,
+    Lognormal levels and factors: base-2 logs ``control_starts`` (n_rows,) before any noise,
     ``volatilities`` (n_steps - 1, n_rows) per unit of noise in each step, ``deviations`` (n_rows,) natural,
-    of the last step. ``drifts`` : (n,) taken off the unit noise of the last step. ``rates`` : (n,) which
-    exchange rate converts each level, -1 for none.
+    of the last step. ``drifts`` : (n,) taken off the unit noise of the last step. The logarithm of
+    the exchange rate that converts a level is the sum of the factors' times ``exposures`` (n, n_rows - n), all 0 for
+    none, or without columns, less ``drops`` (2, n) base-2: up to the last step, and over it.
     ``smooth``, ``inverse``, ``n_common``, ``degree`` : see ``split_factor``.
     ``kind`` to ``profile`` as in ``fused.accumulate``, but ``scales`` are per level over forward.
     Scratch: ``table`` (n_times dims, BLOCK), ``walks`` likewise, ``drives`` (dims padded, BLOCK;
@@ -440,7 +452,7 @@ def accumulate(
             for model in range(2):
                 if model == 1:
                     _control_before_last(deviations, planes, n)
-                _convert_starts(rates, planes, n)
+                _convert_starts(exposures, drops, planes, n)
                 if model == 0:
                     _add_rows(planes[STARTS], n, m, sums[r], HEAD_SUMS + 2 * n)
                 _levels_and_factor(
@@ -454,7 +466,8 @@ def accumulate(
                     log2_scale,
                     rank_weights,
                     drifts,
-                    rates,
+                    exposures,
+                    drops,
                     deviations,
                     planes,
                     precisions,
