@@ -156,6 +156,7 @@ def _sample_paths(
     if np.any(drifted):
         worst = int(np.nanargmax(np.abs(means - 1.0) * drifted))
         notes.append(f"the forward of asset {worst + 1} comes out {means[worst]:.6f} times what it is")
+    notes += [f"assets {i + 1} and {j + 1} are tied: only their sensitivities' sum counts" for i, j in problem.ties]
     if no_deltas:
         notes.append("sensitivities not available: the payoff jumps and the correlation leaves no factor to smooth it")
         found = _without_deltas(found)

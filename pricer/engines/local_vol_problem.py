@@ -102,6 +102,22 @@ class LocalVolProblem:
         return bool(np.any(self.floors > 0.0))
 
     @property
+    def ties(self) -> tuple[tuple[int, int], ...]:
+        """Pairs of ranked assets whose levels never differ: which of them is ahead is arbitrary."""
+        if not self.aggregate.is_ranked:
+            return ()
+        own = [self.scales, self.floors, self.variances[: self.n_assets], self.rate_exposures]
+        same = self.correlation[: self.n_assets, : self.n_assets] >= 1.0
+        for rows in own:
+            same = same & np.all(rows[:, None] == rows[None], axis=tuple(range(2, rows.ndim + 1)))
+        pairs = [(int(i), int(j)) for i, j in np.argwhere(np.triu(same, 1))]
+        return tuple(
+            (i, j)
+            for i, j in pairs
+            if self.is_lognormal or np.array_equal(self.surfaces[i].values, self.surfaces[j].values)
+        )
+
+    @property
     def forwards(self) -> Array:
         """Of the levels before any change of measure, (n,)."""
         out: Array = self.scales + self.floors

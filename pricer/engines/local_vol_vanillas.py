@@ -68,7 +68,7 @@ def reprice(
     group: str,
     seed: int,
     randomisations: int = 32,
-    points: int = 8192,
+    points: int = 16384,
 ) -> VanillaSample:
     """Price options of strikes ``exp(log_strikes[i])`` on X at ``expiries[i]`` years, increasing from above 0.
 

@@ -39,7 +39,7 @@ def test_simulated_options_have_the_surfaces_own_implied_volatilities(name):
     deltas = norm.ppf([0.05, 0.1, 0.25, 0.5, 0.75, 0.9, 0.95])
     strikes = [deltas * float(surface.volatility(0.0, t)) * r for t, r in zip(surface.times, roots, strict=True)]
     got = reprice(local, surface.times, strikes, group=name, seed=1)
-    assert got.reached and got.paths == 2**18
+    assert got.reached and got.paths == 2**19
     assert np.all(np.abs(got.means - 1.0) < 4.0 * got.mean_errors + 3e-6)
     for t, root, k, value, error in zip(surface.times, roots, strikes, got.values, got.errors, strict=True):
         deviation = deviation_of_time_value(k, value)

@@ -173,6 +173,19 @@ def test_a_jump_without_a_factor_to_smooth_it_has_no_deltas():
     assert np.isfinite(got.value) and got.standard_error > 0.0
 
 
+def test_ranked_assets_that_never_differ_are_said_to_be_tied():
+    problem = skewed(Aggregate.worst_of(2), Profile(ProfileKind.PUT, 95.0).payoff(), correlation=np.ones((2, 2)))
+    twins = replace(
+        problem,
+        surfaces=problem.surfaces[:1] * 2,
+        scales=np.full(2, problem.scales[0]),
+        variances=np.stack([problem.variances[0]] * 2),
+    )
+    assert "assets 1 and 2 are tied" in run(twins).ending
+    assert twins.ties == ((0, 1),) and problem.ties == ()
+    assert replace(twins, scales=problem.scales[0] * np.array([1.0, 1.01])).ties == ()
+
+
 def test_problems_that_do_not_fit_are_refused():
     problem = skewed(*CASES["basket call"])
     with pytest.raises(ValueError, match="do not fit"):
