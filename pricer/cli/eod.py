@@ -53,7 +53,8 @@ def eod(
             metavar="SHARE",
             min=0.0,
             max=1.0,
-            help="Move all correlations among underlyings by this share of the way to 1.",
+            help="Move all correlations among underlyings by this share of the way to 1; those with exchange "
+            "rates shrink.",
         ),
     ] = 0.0,
     towards_zero: Annotated[
