@@ -36,7 +36,8 @@ def tables():
         for expiry in range(1, EXPIRIES + 1)
         for k in range(STRIKES)
     ]
-    tables["price_history"] = price_history([*ids, *PAIRS], DAYS)
+    spots = dict.fromkeys(ids, 100.0) | dict.fromkeys(PAIRS, 1.0)
+    tables["price_history"] = price_history([*ids, *PAIRS], DAYS, spots=spots)
     return tables
 
 

@@ -40,15 +40,15 @@ def small_market():
     return tables
 
 
-def price_history(ids, days=90, *, seed=1, last=VALUATION_DATE):
+def price_history(ids, days=90, *, seed=1, last=VALUATION_DATE, spots=None):
     """Rows of the table price_history: random walks on weekdays up to ``last``, of one factor and own noise.
 
-    They end at the example's spots.
+    They end at ``spots`` by id, or at the example's.
     """
     dates = [day for n in range(2 * days) if (day := last - timedelta(days=n)).weekday() < 5][:days][::-1]
     normals = stream(seed, "history", Purpose.FIT, 0).standard_normal((days, len(ids) + 1))
     walks = np.exp(0.01 * np.cumsum(normals[:, :1] + normals[:, 1:], axis=0))
-    spots = {row[column]: row["spot"] for table, column in SPOTS for row in EXAMPLE_MARKET[table]}
+    spots = spots or {row[column]: row["spot"] for table, column in SPOTS for row in EXAMPLE_MARKET[table]}
     levels = walks / walks[-1] * [spots[name] for name in ids]
     return [
         {"date": day, "underlying": name, "level": float(level)}
