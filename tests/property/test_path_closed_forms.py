@@ -150,7 +150,7 @@ def test_the_value_of_an_observed_barrier_is_the_mean_of_its_values_on_the_first
     value = on_dates.knock_out(now, level.forward, level.deviation**2, payoff)
     first = math.sqrt(now.variances[0])
     low, high = max(math.log(corridor.lower or 1e-300), -9.0 * first), min(math.log(corridor.upper), 9.0 * first)
-    x, w = np.polynomial.legendre.leggauss(90)
+    x, w = np.polynomial.legendre.leggauss(40)
     points = 0.5 * (low + high) + 0.5 * (high - low) * x
     mean = 0.0
     for point, weight in zip(points, 0.5 * (high - low) * w, strict=True):
@@ -161,8 +161,8 @@ def test_the_value_of_an_observed_barrier_is_the_mean_of_its_values_on_the_first
         later = on_dates.knock_out(rest, level.forward * grown, level.deviation**2 - first**2, payoff).value
         z = (point - math.log(now.forwards[0]) + 0.5 * first**2) / first
         mean += weight * later * math.exp(-0.5 * z * z) / (first * math.sqrt(2.0 * math.pi))
-    import sys; print('DIFF', value.value-mean, file=sys.stderr)
-    assert value.value == pytest.approx(mean, abs=3e-5)
+
+    assert value.value == pytest.approx(mean, abs=1e-8)
 
 
 @repeatable
@@ -197,17 +197,16 @@ def test_an_average_is_the_mean_of_its_values_on_the_first_date(steps, growth, p
         wanted = lognormal_expectations(payoff.of_shifted_argument(0.0), weights * forwards, steps[0])[0]
         assert value.value == pytest.approx(wanted, abs=1e-12)
         return
-    z, mass = np.polynomial.hermite_e.hermegauss(60)
+    # What later returns smooth, in deviations of the first: the trapezoidal rule needs a few nodes in it.
+    assume(weights[1:].sum() * steps[1] > 0.3 * steps[0])
+    z = np.linspace(-9.0, 9.0, 181)
     mean = 0.0
-    for point, weight in zip(z, mass / mass.sum(), strict=True):
+    for point, weight in zip(z, 0.1 * np.exp(-0.5 * z * z) / math.sqrt(2.0 * math.pi), strict=True):
         grown = math.exp(steps[0] * (point - 0.5 * steps[0]))
         later = FixingLaw(forwards[1:, None] * grown, (variances[1:] - variances[0])[:, None, None])
         fixed = weights[0] * forwards[0] * grown
         mean += weight * average_by_convolution(later, weights[1:], payoff, fixed).value
-    # Calls seen from the first date still have a bend of width steps[1]; digitals a jump.
-    smooth = steps[1] / steps[0]
-    assume(smooth > 0.5)
-    assert value.value == pytest.approx(mean, abs=2e-5)
+    assert value.value == pytest.approx(mean, abs=1e-9)
 
 
 @few
