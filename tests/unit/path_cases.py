@@ -1,11 +1,13 @@
 """Path problems that between them use every kind of reading, stop and payment; names and figures invented."""
 
+from dataclasses import replace
+
 import numpy as np
 
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.profile import PiecewiseLinear
 from pricer.engines.paths.law import PathLaw
-from pricer.engines.paths.leg import Branch, Event, Fixing, Leg, Payment, Reading, Trigger, When
+from pricer.engines.paths.leg import Branch, Event, Fixing, Leg, Payment, Reading, Remembered, Trigger, When
 from pricer.engines.paths.plan import PathProblem
 from pricer.simulation import sobol
 from pricer.simulation.bridge import Bridge
@@ -23,7 +25,9 @@ def law_of(n=3, m=4, years=2.0, seed=5):
     lengths = np.diff(times, prepend=0.0)
     volatilities = 0.2 + 0.15 * random.random((m, n))
     correlations = [np.full((n, n), r) + (1 - r) * np.eye(n) for r in 0.3 + 0.4 * random.random(m)]
-    covariances = np.stack([c * np.outer(v, v) * h for c, v, h in zip(correlations, volatilities, lengths)])
+    covariances = np.stack(
+        [c * np.outer(v, v) * h for c, v, h in zip(correlations, volatilities, lengths, strict=True)]
+    )
     forwards = 100.0 * np.exp(np.outer(times, RATE - 0.03 * random.random(n)))
     return PathLaw(times, forwards, covariances)
 
@@ -83,6 +87,16 @@ def memory(law):
     return tuple(legs)
 
 
+def remembered(law, below=None):
+    """The same coupons on the events of one leg."""
+    worst = reading(Aggregate.worst_of(law.n_assets))
+    events = [
+        replace(e, below=below, coupon=Remembered(Trigger(worst, 0.8), 0.02, df(law, e.date)))
+        for e in autocallable(law, coupon=0.0).events
+    ]
+    return Leg(tuple(events))
+
+
 def cliquet(law):
     basket = Aggregate.weighted_sum((1.0 / law.n_assets,) * law.n_assets)
     capped = PiecewiseLinear(-1.0, 1.0).limited(-0.02, 0.04)
@@ -129,7 +143,9 @@ def problems():
         "ranks and basket": PathProblem(law, (corridor(law, ranks, basket),)),
         "crossed": PathProblem(law, (corridor(law, geometric, best, CALL),)),
         "average": PathProblem(law, (corridor(law, best, worst, CALL, basket),)),
-        "memory": PathProblem(law, memory(law)),
+        "branches": PathProblem(law, memory(law)),
+        "memory": PathProblem(law, (remembered(law),)),
+        "memory and a floor": PathProblem(law, (remembered(law, Trigger(best, 0.85)),)),
         "cliquet": PathProblem(law, (cliquet(law),)),
         "forward start": PathProblem(law, (forward_start_stop(law), autocallable(law))),
     }

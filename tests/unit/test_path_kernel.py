@@ -28,10 +28,10 @@ def kernel_means(problem, points=256, randomisations=4, **kwargs):
 @pytest.mark.parametrize("name", NAMES)
 def test_kernel_integrates_the_common_factor_as_its_plain_twin_does(name):
     problem = PROBLEMS[name]
-    points, nodes = 32, 2000
-    _, means = kernel_means(problem, points=points)
+    points, nodes = 16, 1000
+    _, means = kernel_means(problem, points=points, randomisations=2)
     legs = len(problem.legs)
-    for (rest, common), found in zip(sampler_normals(problem, stream(), 4, points), means[:, :legs], strict=True):
+    for (rest, common), found in zip(sampler_normals(problem, stream(), 2, points), means[:, :legs], strict=True):
         expected = plain.smooth_values(problem, rest, common, nodes).mean(axis=1)
         # a jump of up to 1 lies anywhere between two of the twin's nodes, path by path
         assert found == pytest.approx(expected, abs=2.0 / nodes / np.sqrt(points))
@@ -60,6 +60,11 @@ def test_conditioning_leaves_the_value_unchanged(name):
     assert np.all(np.abs(hard.mean(axis=1) - legs.mean(axis=0)) < 4.0 * errors + 1e-9)
 
 
+def deltas_of(tables, means):
+    shape = tables.plan().starts.shape
+    return tables.forward_deltas(means.mean(axis=0)[-shape[0] * shape[1] :].reshape(shape))
+
+
 def bumped(problem, date, asset, by):
     forwards = problem.law.forwards.copy()
     forwards[date, asset] *= np.exp(by)
@@ -67,33 +72,29 @@ def bumped(problem, date, asset, by):
 
 
 def value_of(problem):
-    return float(kernel_means(problem, method=Method.SMOOTH)[1][:, : len(problem.legs)].sum()) / 4.0
-
-
-def deltas_of(problem):
-    tables, means = kernel_means(problem)
-    return tables.forward_deltas(means.mean(axis=0)[-tables.plan().starts.size :].reshape(-1, problem.law.n_assets))
+    _, means = kernel_means(problem, points=1024, randomisations=16, method=Method.SMOOTH)
+    return float(means[:, : len(problem.legs)].sum()) / 16.0
 
 
 @pytest.mark.parametrize("name", NAMES)
 def test_forward_deltas_are_those_of_bumps_on_common_draws(name):
     problem = PROBLEMS[name]
-    deltas, h = deltas_of(problem), 1e-4
+    tables, means = kernel_means(problem, points=1024, randomisations=16)
+    deltas = deltas_of(tables, means)
+    h = 3e-5
     for date in range(len(problem.law.times)):
         for asset in range(problem.law.n_assets):
             up, down = (value_of(bumped(problem, date, asset, side)) for side in (h, -h))
-            # a few of 1024 paths change which asset decides within the bump, and with it their slope
-            assert deltas[date, asset] == pytest.approx((up - down) / (2.0 * h), abs=2e-4)
+            # within the bump some of 16 384 paths change which asset or which date decides, and with it their slope:
+            # the difference shrinks with the bump, until rounding in single precision takes over
+            assert deltas[date, asset] == pytest.approx((up - down) / (2.0 * h), abs=1e-4)
 
 
-@pytest.mark.parametrize("name", NAMES)
-def test_deltas_of_a_date_add_up_to_that_of_all_levels_moving_together(name):
-    """No ranking changes in such a bump, so nothing but its own curvature and rounding is left."""
-    problem = PROBLEMS[name]
-    deltas, h = deltas_of(problem), 1e-3
-    for date in range(len(problem.law.times)):
-        up, down = (value_of(bumped(problem, date, slice(None), side)) for side in (h, -h))
-        assert deltas[date].sum() == pytest.approx((up - down) / (2.0 * h), abs=5e-6)
+def test_coupons_in_memory_are_those_of_one_branch_per_period():
+    one, many = (kernel_means(PROBLEMS[name]) for name in ("memory", "branches"))
+    assert one[1][:, 0] == pytest.approx(many[1][:, : len(PROBLEMS["branches"].legs)].sum(axis=1), abs=1e-10)
+    deltas = [deltas_of(tables, means) for tables, means in (one, many)]
+    assert deltas[0] == pytest.approx(deltas[1], abs=1e-6)  # some rows are kept in single precision
 
 
 def test_a_problem_extended_in_two_goes_is_the_same_to_the_last_bit():
@@ -117,4 +118,6 @@ def test_dates_must_lie_within_the_law():
     problem = PROBLEMS["one asset"]
     law = problem.law
     with pytest.raises(ValueError, match="after the law's last"):
-        PathProblem(replace(law, times=law.times[:2], forwards=law.forwards[:2], covariances=law.covariances[:2]), problem.legs)
+        PathProblem(
+            replace(law, times=law.times[:2], forwards=law.forwards[:2], covariances=law.covariances[:2]), problem.legs
+        )
