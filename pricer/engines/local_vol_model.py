@@ -68,7 +68,7 @@ def local_vol_value(
     found = _sampled(problem, asked, settings)
     surfaces = tuple(market.implied_surface(name) for name in trade.contract.underlyings)
     known = surface_reference(terms, surfaces)
-    return _value(found, asked, () if known is None else (known,), vegas_of=found.lognormal)
+    return _value(found, asked, () if known is None else (known,))
 
 
 def lognormal_value_by_paths(
@@ -76,7 +76,7 @@ def lognormal_value_by_paths(
 ) -> ModelValue:
     """One unit under lognormal random parts on top of known floors."""
     found = _sampled(path_problem(trade, terms, market, smiled=False), asked, settings)
-    return _value(found, asked, (), vegas_of=found.lognormal)
+    return _value(found, asked, ())
 
 
 def _variances(names: tuple[str, ...], factors: list[str], market: Market, trade: Trade) -> tuple[Array, Array]:
@@ -107,8 +107,8 @@ def _sampled(problem: LocalVolProblem, asked: Asked, settings: LocalVolSettings)
     )
 
 
-def _value(found: LocalVolSample, asked: Asked, known: tuple[Reference, ...], *, vegas_of: Sample) -> ModelValue:
-    sample = _as_sample(found, vegas_of)
+def _value(found: LocalVolSample, asked: Asked, known: tuple[Reference, ...]) -> ModelValue:
+    sample = _as_sample(found)
     means, errors = found.martingale_means, found.martingale_mean_errors
     drifted = np.abs(means - 1.0) > 5.0 * errors + _DRIFT  # NaN, a quanto's mean, is no drift
     return ModelValue(
@@ -121,7 +121,7 @@ def _value(found: LocalVolSample, asked: Asked, known: tuple[Reference, ...], *,
     )
 
 
-def _as_sample(found: LocalVolSample, vegas_of: Sample) -> Sample:
+def _as_sample(found: LocalVolSample) -> Sample:
     """With the bias that the time steps leave in the error, and the lognormal model's vegas."""
     return Sample(
         value=found.value,
@@ -130,8 +130,8 @@ def _as_sample(found: LocalVolSample, vegas_of: Sample) -> Sample:
         log_delta_errors=found.log_delta_errors,
         log_gammas=None,
         log_gamma_errors=None,
-        deviation_vegas=vegas_of.deviation_vegas,
-        deviation_vega_errors=vegas_of.deviation_vega_errors,
+        deviation_vegas=found.lognormal.deviation_vegas,
+        deviation_vega_errors=found.lognormal.deviation_vega_errors,
         paths=found.paths,
         randomisations=found.randomisations,
         reached=found.reached,

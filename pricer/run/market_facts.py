@@ -8,6 +8,7 @@ from datetime import date
 from pricer.engines.calibration import Calibration
 from pricer.market.checked_surface import CheckedSurface
 from pricer.market.curves import DiscountCurve
+from pricer.market.dividends import Dividends
 from pricer.market.market import Market
 from pricer.market.quoted_curves import reprice
 from pricer.run.outcome import (
@@ -98,7 +99,7 @@ def _forwards(name: str, market: Market, calibration: Calibration | None) -> Ite
             underlying=name,
             date=day,
             forward=level.forward,
-            dividend=_dividend(name, market, day),
+            dividend=_dividend(price.dividends, level.forward, day),
             floor=level.floor,
             simulated=None if mean is None else level.scale * mean.value + level.floor,
             simulated_standard_error=None if mean is None else level.scale * mean.standard_error,
@@ -113,15 +114,13 @@ def forward_dates(name: str, market: Market) -> tuple[date, ...]:
     return tuple(sorted({*quoted, *(day for day in ex_dates if market.valuation_date < day <= quoted[-1])}))
 
 
-def _dividend(name: str, market: Market, day: date) -> float:
-    """What the forward falls by on ``day`` for its cash and proportional dividends; proportional ones go first."""
-    dividends = market.underlyings[name].dividends
+def _dividend(dividends: Dividends, forward: float, day: date) -> float:
+    """What the forward falls by to ``forward`` on ``day`` for cash and proportional dividends; these go first."""
     cash = sum(dividend.amount for dividend in dividends.cash if dividend.ex_date == day)
     kept = 1.0
     for dividend in dividends.proportional:
         if dividend.ex_date == day:
             kept *= 1.0 - dividend.fraction
-    forward = market.forward(name, day)
     return cash + (forward + cash) * (1.0 / kept - 1.0)
 
 

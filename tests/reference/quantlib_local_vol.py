@@ -5,6 +5,8 @@ from __future__ import annotations
 import numpy as np
 import QuantLib as ql
 
+from pricer.market.local_vol_surface import LocalVolSurface
+
 TODAY = ql.Date(30, 11, 2026)
 DAYS = ql.Actual365Fixed()
 
@@ -44,3 +46,20 @@ def extrapolated(*arguments, size: int) -> tuple[float, float]:
     """Value for grids without end, from two sizes, and half of what the finer one is off (Richardson 1911)."""
     coarse, fine = (value(*arguments, size=s) for s in (size // 2, size))
     return fine + (fine - coarse) / 3.0, abs(fine - coarse) / 6.0
+
+
+def tabulated_in_quantlib(local: LocalVolSurface, today: ql.Date) -> ql.FixedLocalVolSurface:
+    """Our table as QuantLib's. Each cell twice, at both of its ends: QuantLib is linear in time between given times."""
+    times, strikes, columns = [], [], []
+    for cell, (start, end) in enumerate(zip(local.times[:-1], local.times[1:], strict=True)):
+        for moment in (start + 1e-6, end):
+            times.append(float(moment))
+            strikes.append([float(x) for x in np.exp(local.nodes(cell))])
+            columns.append(local.values[cell])
+    matrix = ql.Matrix(local.values.shape[1], len(times))
+    for j, column in enumerate(columns):
+        for i, value in enumerate(column):
+            matrix[i][j] = float(value)
+    table = ql.FixedLocalVolSurface(today, times, strikes, matrix, DAYS)
+    table.enableExtrapolation()
+    return table

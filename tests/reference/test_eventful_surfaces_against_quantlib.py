@@ -9,6 +9,7 @@ import QuantLib as ql
 from pricer.market.black import implied_deviation
 from pricer.market.forward_equation import model_volatilities
 from pricer.market.local_vol_surface import LocalVolSurface
+from tests.reference.quantlib_local_vol import tabulated_in_quantlib
 from tests.unit.smiles import TODAY
 from tests.unit.surface_cases import eventful_surface
 
@@ -28,23 +29,6 @@ def quantlib_day(day):
     return ql.Date(day.day, day.month, day.year)
 
 
-def quantlib_table(local):
-    """Each cell twice, at both of its ends: QuantLib is linear in time between given times."""
-    times, strikes, columns = [], [], []
-    for cell, (start, end) in enumerate(zip(local.times[:-1], local.times[1:], strict=True)):
-        for moment in (start + 1e-6, end):
-            times.append(float(moment))
-            strikes.append([float(x) for x in np.exp(local.nodes(cell))])
-            columns.append(local.values[cell])
-    matrix = ql.Matrix(local.values.shape[1], len(times))
-    for j, column in enumerate(columns):
-        for i, value in enumerate(column):
-            matrix[i][j] = float(value)
-    table = ql.FixedLocalVolSurface(quantlib_day(TODAY), times, strikes, matrix, DAY_COUNT)
-    table.enableExtrapolation()
-    return table
-
-
 # QuantLib's grid ends after 5.6 deviations at the forward, so no steeper wings: they have weight further out.
 @pytest.mark.parametrize("expiry", [1, 2])
 @pytest.mark.parametrize(("skew", "curvature"), [(-0.07, 0.045), (-0.04, 0.01)])
@@ -61,7 +45,7 @@ def test_quantlib_gives_the_event_back_from_our_table(skew, curvature, expiry):
         zero,
         zero,
         ql.BlackVolTermStructureHandle(flat),
-        ql.LocalVolTermStructureHandle(quantlib_table(local)),
+        ql.LocalVolTermStructureHandle(tabulated_in_quantlib(local, quantlib_day(TODAY))),
     )
     prices = []
     for x in k:

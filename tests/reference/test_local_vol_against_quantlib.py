@@ -14,6 +14,7 @@ from pricer.market.forward_equation import model_volatilities
 from pricer.market.implied_surface import ImpliedSurface
 from pricer.market.local_vol_surface import LocalVolSurface
 from pricer.market.smile_quotes import SmileParameters, SmileQuotes
+from tests.reference.quantlib_local_vol import tabulated_in_quantlib
 
 TODAY = date(2026, 11, 30)
 DAY_COUNT = ql.Actual365Fixed()
@@ -75,19 +76,7 @@ def test_quantlibs_finite_differences_on_our_table_give_the_implied_volatilities
     wanted = surface.volatility(k, time)
     ours = model_volatilities(local, [k], [time])[0]
 
-    # Each cell twice, at both of its ends: QuantLib is linear in time between given times.
-    times, strikes, columns = [], [], []
-    for cell, (start, end) in enumerate(zip(local.times[:-1], local.times[1:], strict=True)):
-        for moment in (start + 1e-6, end):
-            times.append(float(moment))
-            strikes.append([float(x) for x in np.exp(local.nodes(cell))])
-            columns.append(local.values[cell])
-    matrix = ql.Matrix(local.values.shape[1], len(times))
-    for j, column in enumerate(columns):
-        for i, value in enumerate(column):
-            matrix[i][j] = float(value)
-    table = ql.FixedLocalVolSurface(quantlib_day(TODAY), times, strikes, matrix, DAY_COUNT)
-    table.enableExtrapolation()
+    table = tabulated_in_quantlib(local, quantlib_day(TODAY))
     zero = ql.YieldTermStructureHandle(ql.FlatForward(quantlib_day(TODAY), 0.0, DAY_COUNT))
     flat = ql.BlackVolTermStructureHandle(ql.BlackConstantVol(quantlib_day(TODAY), ql.NullCalendar(), 0.20, DAY_COUNT))
     process = ql.GeneralizedBlackScholesProcess(
