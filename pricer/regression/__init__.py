@@ -1,0 +1,1 @@
+"""Regression for backward recursions: bases, least squares on held-out samples. Knows no finance."""
