@@ -61,6 +61,26 @@ def eod(
         float,
         typer.Option("--correlation-towards-zero", metavar="SHARE", min=0.0, max=1.0, help="The same towards 0."),
     ] = 0.0,
+    digital_spread: Annotated[
+        float,
+        typer.Option(
+            "--digital-spread",
+            metavar="SHARE",
+            min=0.0,
+            max=0.5,
+            help="Show what it costs to book jumps of payoffs as spreads of this width, a share of the level.",
+        ),
+    ] = 0.0,
+    barrier_shift: Annotated[
+        float,
+        typer.Option(
+            "--barrier-shift",
+            metavar="SHARE",
+            min=0.0,
+            max=0.5,
+            help="Show what it costs to book barriers and triggers moved by this share to the desk's safe side.",
+        ),
+    ] = 0.0,
     workers: Annotated[
         int | None,
         typer.Option("--workers", min=1, help="Trades priced side by side. [default: all cores]", show_default=False),
@@ -90,6 +110,7 @@ def eod(
 
     from pricer.cli import console
     from pricer.cli.inputs import read_inputs, strict_status
+    from pricer.contracts.overhedge import Overhedge
     from pricer.core.issues import InputError
     from pricer.report import default_folder, write_report
     from pricer.run.pricing import price
@@ -110,6 +131,7 @@ def eod(
         accept_failing_surfaces=accept_failing_surfaces,
         correlation_towards_one=towards_one,
         correlation_towards_zero=towards_zero,
+        overhedge=Overhedge(digital_spread, barrier_shift) if max(digital_spread, barrier_shift) > 0.0 else None,
     )
     outcome = price(trades, snapshot, settings, console.progress(quiet=quiet))
     folder = out if out is not None else default_folder(outcome, Path("reports"))

@@ -7,6 +7,7 @@ from dataclasses import dataclass, field
 from datetime import date
 from enum import StrEnum
 
+from pricer.contracts.contract import Contract
 from pricer.contracts.option import EuropeanOption
 from pricer.core.issues import Issue
 from pricer.core.source import Place, SourceFile
@@ -38,7 +39,7 @@ class Trade:
     """
 
     trade_id: str
-    contract: EuropeanOption
+    contract: EuropeanOption | Contract
     position: float
     currency: str
     collateral: str = ""

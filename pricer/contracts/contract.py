@@ -120,12 +120,21 @@ class Contract:
 
     def unit_notional(self, spots: NDArray[np.float64]) -> float:
         """The amount that one unit refers to, by the rules of a European option on the same aggregate."""
+        return self._plain.unit_notional(spots)
+
+    @property
+    def has_fixed_notional(self) -> bool:
+        """Whether the amount that one unit refers to is the same at all prices."""
+        return self._plain.has_fixed_notional
+
+    @property
+    def _plain(self) -> EuropeanOption:
+        """A European option that refers to the same amount."""
         n = len(self.underlyings)
         aggregate = self._aggregate or Aggregate.weighted_sum((1.0 / n,) * n)
         profile = self.payout if isinstance(self.payout, Profile) else Profile(ProfileKind.FORWARD)
         day, paid = self.expiry.day, self.expiry.payment_date
-        plain = EuropeanOption(self.underlyings, (1.0,) * n, aggregate, profile, day, paid, self.on_performance)
-        return plain.unit_notional(spots)
+        return EuropeanOption(self.underlyings, (1.0,) * n, aggregate, profile, day, paid, self.on_performance)
 
     @property
     def _aggregate(self) -> Aggregate | None:

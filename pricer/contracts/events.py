@@ -11,12 +11,24 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pricer.contracts.aggregate import Aggregate, AggregateKind
+from pricer.contracts.contract import Contract
+from pricer.contracts.expiry_level import ExpiryLevel
 from pricer.contracts.feature import Appointment
 from pricer.contracts.life_cycle import AsOf
-from pricer.contracts.trigger import Trigger
+from pricer.contracts.profile import Profile, ProfileKind
+from pricer.contracts.trigger import Direction, Trigger
 
 #: Observations this many calendar days or fewer apart, a weekend and a holiday, are a daily series.
 DAILY = 4
+#: Where options pay that have a strike and one side of it.
+_PAYS = {
+    ProfileKind.CALL: Direction.UP,
+    ProfileKind.PUT: Direction.DOWN,
+    ProfileKind.CASH_DIGITAL_CALL: Direction.UP,
+    ProfileKind.CASH_DIGITAL_PUT: Direction.DOWN,
+    ProfileKind.ASSET_DIGITAL_CALL: Direction.UP,
+    ProfileKind.ASSET_DIGITAL_PUT: Direction.DOWN,
+}
 
 
 @dataclass(frozen=True, slots=True)
@@ -27,8 +39,9 @@ class Event:
     compares with ``level`` at today's spots; ``distance`` is the move that remains, as a share of
     ``current`` (-0.10: a fall of 10 %), whichever side the trigger is on; ``deviations`` is the
     same in standard deviations until that day, without drift; ``met_today`` says whether
-    today's levels would meet it. Equal events of a daily series are one, until ``last_day``
-    (None for a single day), to which the deviations are counted then.
+    today's levels would meet it. At the expiry of an option its strike stands for a trigger, met where
+    it pays. Equal events of a daily series are one, until ``last_day`` (None for a single day), to
+    which the deviations are counted then.
     """
 
     day: date
@@ -62,17 +75,34 @@ def events(
     ]
     if state.progress.ending is None:
         covariance = _covariance(contract.underlyings, volatilities, correlations)
-        label = contract.statistic.label or "level"
+        label = contract.statistic.label
+        # The level at expiry is the expiry itself.
+        statistic_days = () if isinstance(contract.statistic, ExpiryLevel) else state.statistic_dates_to_come
         series = [
             [Event(day, "reference set") for day in state.setting_dates_to_come if day <= until],
-            [Event(day, f"{label} observed") for day in state.statistic_dates_to_come if day <= until],
+            [Event(day, f"{label} observed") for day in statistic_days if day <= until],
         ]
         for i in range(len(contract.features)):
             series.append([_event(item, state, covariance) for item in state.appointments(i) if item.day <= until])
         found += [event for each in series for event in _runs_joined(each)]
         if after < contract.expiry.day <= until:
-            found.append(Event(contract.expiry.day, "expiry", None, contract.expiry.payment_date))
+            found.append(_event(_expiry(contract), state, covariance))
     return tuple(sorted(found, key=lambda event: event.day))
+
+
+def _expiry(contract: Contract) -> Appointment:
+    """The expiry; an option's strike is its trigger, met where it would pay."""
+    day, paid, statistic, payout = (
+        contract.expiry.day,
+        contract.expiry.payment_date,
+        contract.statistic,
+        contract.payout,
+    )
+    is_struck = isinstance(payout, Profile) and payout.kind in _PAYS and payout.strike != 0.0
+    if not isinstance(statistic, ExpiryLevel) or not isinstance(payout, Profile) or not is_struck:
+        return Appointment(day, "expiry", paid)
+    trigger = Trigger(_PAYS[payout.kind], statistic.aggregate)
+    return Appointment(day, "expiry", paid, trigger=trigger, level=payout.strike)
 
 
 def _runs_joined(series: Sequence[Event]) -> Iterator[Event]:

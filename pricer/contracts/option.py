@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pricer.contracts.aggregate import Aggregate, AggregateKind
+from pricer.contracts.product_name import family
 from pricer.contracts.profile import PiecewiseLinear, Profile, ProfileKind
 
 
@@ -98,17 +99,4 @@ class EuropeanOption:
     @property
     def product(self) -> str:
         """The trade's everyday name, used to group reports."""
-        return f"{_family(self)} {self.profile.kind}"
-
-
-def _family(option: EuropeanOption) -> str:
-    aggregate = option.aggregate
-    if len(option.underlyings) == 1:
-        return "single-asset"
-    if aggregate.cash is not None:
-        return f"{aggregate.kind} assets and cash"
-    if aggregate.kind is AggregateKind.WEIGHTED_SUM:
-        return "spread" if min(aggregate.weights) < 0.0 < max(aggregate.weights) else "basket"
-    if aggregate.kind is AggregateKind.GEOMETRIC:
-        return "geometric basket"
-    return str(aggregate.kind)
+        return f"{family(self.aggregate)} {self.profile.kind}"

@@ -88,5 +88,7 @@ class PriceRecord:
             "missing-fixing",
             f"no fixing of {name} on {shown}{more}{said}",
             "a fixing for every observation up to now",
-            "Enter the fixings, by the fallback of the trade's terms where the day itself had none.",
+            f"Add {'a row' if len(days) == 1 else 'rows'} to the market's fixings table: underlying {name}, date "
+            f"{days[0]}{' and so on' if len(days) > 1 else ''}, and the official level; where a day itself had none, "
+            "the one that the trade's terms fall back on.",
         )

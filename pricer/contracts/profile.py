@@ -131,6 +131,26 @@ class PiecewiseLinear:
             tuple(j * factor for j in self.jumps),
         )
 
+    def ramped(self, share: float) -> PiecewiseLinear:
+        """Each jump made a straight ramp over ``abs(share)`` of its knot; a jump at 0 stays.
+
+        Ramps lie on the side on which the function nowhere exceeds this one (``share`` above 0) or is nowhere
+        below it (below 0).
+        """
+        bends = dict(zip(self.knots, self.bends, strict=True))
+        kept: dict[float, float] = {}
+        for knot, jump in zip(self.knots, self.jumps, strict=True):
+            width = abs(share * knot)
+            if not jump or not width:
+                kept[knot] = jump
+                continue
+            start = knot if (jump > 0.0) is (share > 0.0) else knot - width
+            for end, bend in ((start, jump / width), (start + width, -jump / width)):
+                bends[end] = bends.get(end, 0.0) + bend
+        knots = tuple(sorted(knot for knot in bends if bends[knot] or kept.get(knot)))
+        jumps = tuple(kept.get(knot, 0.0) for knot in knots)
+        return PiecewiseLinear(self.intercept, self.slope, knots, tuple(bends[knot] for knot in knots), jumps)
+
     def of_shifted_argument(self, by: float) -> PiecewiseLinear:
         """``a -> f(a + by)``: the payoff on an aggregate that lacks a known part."""
         if by == 0.0:
@@ -197,7 +217,8 @@ class Profile:
 
     ``strike`` is in the aggregate's units (currency, or 1.0 = 100 % for performance);
     an exchange pays ``max(aggregate, 0)`` and has no strike. ``cash_amount`` is what a
-    cash digital pays per unit. ``floor`` and ``cap`` limit the payoff per unit.
+    cash digital pays per unit. ``floor`` and ``cap`` limit the payoff per unit. ``jump_ramp`` other than 0
+    pays jumps as the ramps of :meth:`PiecewiseLinear.ramped`, as an overhedge does; no trade is booked with it.
     """
 
     kind: ProfileKind
@@ -205,6 +226,7 @@ class Profile:
     cash_amount: float = 1.0
     floor: float | None = None
     cap: float | None = None
+    jump_ramp: float = 0.0
 
     def payoff(self) -> PiecewiseLinear:
         """The payoff per unit as a function of the aggregate."""
@@ -228,4 +250,5 @@ class Profile:
                 base = PiecewiseLinear(0.0, 1.0, (k,), (-1.0,), (-k,))
             case ProfileKind.EXCHANGE:
                 base = PiecewiseLinear(0.0, 0.0, (0.0,), (1.0,), (0.0,))
-        return base.limited(self.floor, self.cap)
+        payoff = base.limited(self.floor, self.cap)
+        return payoff.ramped(self.jump_ramp) if self.jump_ramp else payoff

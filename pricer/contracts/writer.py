@@ -11,8 +11,9 @@ class StructuralDefault:
     """Default at expiry if the value of the writer's assets is below ``liabilities`` then.
 
     ``assets`` is the id under which the market quotes the value of the assets, as an underlying;
-    ``deadweight_cost`` is the share of the assets that the default itself destroys
-    (alpha of Klein 1996; 0 and the option as the only liability is Johnson & Stulz 1987).
+    ``deadweight_cost`` is the share of the assets that the default itself destroys (alpha of Klein 1996).
+    Liabilities of 0 say that the position itself is all that the writer owes: the assets are paid where they are
+    less than that (Johnson & Stulz 1987).
     """
 
     assets: str
@@ -20,11 +21,13 @@ class StructuralDefault:
     deadweight_cost: float = 0.0
 
     def __post_init__(self) -> None:
-        if self.liabilities <= 0.0 or not 0.0 <= self.deadweight_cost < 1.0:
+        if self.liabilities < 0.0 or not 0.0 <= self.deadweight_cost < 1.0:
             raise ValueError(
-                f"liabilities must be above 0 and the deadweight cost from 0 to below 1; "
+                f"liabilities must be 0 or more and the deadweight cost from 0 to below 1; "
                 f"got {self.liabilities} and {self.deadweight_cost}"
             )
+        if self.liabilities == 0.0 and self.deadweight_cost:
+            raise ValueError("a writer who owes nothing else is paid out without a deadweight cost")
 
 
 @dataclass(frozen=True, slots=True)

@@ -19,6 +19,7 @@ class Purpose(IntEnum):
     PRICE = 1
     FIT = 2
     CERTIFY = 3
+    CHECK = 4  # a second sample that shares nothing with the first
 
 
 def stream(seed: int, group: str, purpose: Purpose, block: int) -> np.random.Generator:

@@ -8,11 +8,12 @@ standard error is itself estimated from few randomisations.
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from enum import StrEnum
 
-from pricer.engines.monte_carlo import Sample
 from pricer.engines.problem import Reference, ReferenceKind
+from pricer.engines.sampled_value import Sampled
 from pricer.engines.selector import sampling_quantile
 
 #: Probability that a book without any error shows even one false disagreement.
@@ -54,21 +55,24 @@ def is_test(reference: Reference) -> bool:
 
 
 def compare(
-    sample: Sample, reference: Reference, *, unit_notional: float, asked: float, tests_in_book: int
+    sample: Sampled, reference: Reference, *, unit_notional: float, asked: float, tests_in_book: int
 ) -> Comparison:
     """Compare one unit's values, sharing the false-alarm probability among ``tests_in_book`` tests.
 
     ``asked`` is the standard error asked of the sampled value.
     """
     difference = sample.value - reference.value
-    scale = difference / sample.standard_error if sample.standard_error > 0.0 else None
+    sampled = reference.kind is ReferenceKind.SAMPLE
+    error = math.hypot(sample.standard_error, reference.error) if sampled else sample.standard_error
+    scale = difference / error if error > 0.0 else None
     if not is_test(reference):
         tolerance = APPROXIMATION_BP * 1e-4 * unit_notional
         verdict = Verdict.CLOSE if abs(difference) <= tolerance else Verdict.FAR
         return Comparison(difference, scale, tolerance, verdict)
 
     quantile = sampling_quantile(sample.degrees_of_freedom, FALSE_ALARM / max(tests_in_book, 1))
-    tolerance = quantile * sample.standard_error + reference.error + reference.allowance + IMMATERIAL * asked
+    own = 0.0 if sampled else reference.error
+    tolerance = quantile * error + own + reference.allowance + IMMATERIAL * asked
     match reference.kind:
         case ReferenceKind.LOWER_BOUND:
             verdict = Verdict.WITHIN_BOUND if difference >= -tolerance else Verdict.OUTSIDE_BOUND

@@ -20,6 +20,7 @@ from pricer.engines.monte_carlo import Sample
 from pricer.engines.problem import Reference
 from pricer.engines.selector import headline
 from pricer.engines.surface_replication import surface_reference
+from pricer.engines.unit_ratios import european_ratios
 from pricer.engines.unit_terms import UnitTerms
 from pricer.market.calendars import year_fraction
 from pricer.market.fx import currencies_of
@@ -27,6 +28,8 @@ from pricer.market.local_vol_surface import LocalVolSurface
 from pricer.market.market import Market
 
 Array = NDArray[np.float64]
+
+_METHOD = "pathwise, local volatility held as a function of time and level; vega under lognormal levels"
 
 #: Simulated forwards off by more than this and five standard errors are not those of the market.
 _DRIFT = 1e-4
@@ -68,7 +71,7 @@ def local_vol_value(
     found = _sampled(problem, asked, settings)
     surfaces = tuple(market.implied_surface(name) for name in trade.contract.underlyings)
     known = surface_reference(terms, surfaces)
-    return _value(found, asked, () if known is None else (known,))
+    return _value(found, terms, asked, () if known is None else (known,))
 
 
 def lognormal_value_by_paths(
@@ -76,7 +79,7 @@ def lognormal_value_by_paths(
 ) -> ModelValue:
     """One unit under lognormal random parts on top of known floors."""
     found = _sampled(path_problem(trade, terms, market, smiled=False), asked, settings)
-    return _value(found, asked, ())
+    return _value(found, terms, asked, ())
 
 
 def _variances(names: tuple[str, ...], factors: list[str], market: Market, trade: Trade) -> tuple[Array, Array]:
@@ -107,7 +110,7 @@ def _sampled(problem: LocalVolProblem, asked: Asked, settings: LocalVolSettings)
     )
 
 
-def _value(found: LocalVolSample, asked: Asked, known: tuple[Reference, ...]) -> ModelValue:
+def _value(found: LocalVolSample, terms: UnitTerms, asked: Asked, known: tuple[Reference, ...]) -> ModelValue:
     sample = _as_sample(found)
     means, errors = found.martingale_means, found.martingale_mean_errors
     drifted = np.abs(means - 1.0) > 5.0 * errors + _DRIFT  # NaN, a quanto's mean, is no drift
@@ -117,7 +120,7 @@ def _value(found: LocalVolSample, asked: Asked, known: tuple[Reference, ...]) ->
         references=known,
         time_steps=found.steps,
         is_sound=not bool(np.any(drifted)),
-        ratios="pathwise, local volatility held as a function of time and level; vega under lognormal levels",
+        ratios=european_ratios(terms, sample, _METHOD),
     )
 
 

@@ -37,6 +37,7 @@ class ReferenceKind(StrEnum):
     LOWER_BOUND = "lower bound"
     UPPER_BOUND = "upper bound"
     APPROXIMATION = "approximation"
+    SAMPLE = "independent sample"  # equal in expectation; its error is a standard error
 
 
 @dataclass(frozen=True, slots=True)

@@ -10,8 +10,8 @@ import numpy as np
 from scipy.special import stdtrit
 
 from pricer.engines.closed_form import best_exact
-from pricer.engines.monte_carlo import Sample
 from pricer.engines.problem import Reference, ReferenceKind
+from pricer.engines.sampled_value import Sampled
 
 #: Two-sided probability that a sampling interval covers the value.
 COVERAGE = 0.99
@@ -22,6 +22,7 @@ class Interval(StrEnum):
 
     EXACT = "exact"  # closed form or quadrature, with its numerical error
     BOUNDS = "bounds"  # lower and upper bounds computed without sampling
+    CERTIFIED = "certified bounds"  # sampled lower and upper bounds, each moved out by its own 99 % error
     SAMPLING = "99 % sampling"  # two-sided 99 % interval from the standard error, cut at a bound if one is nearer
 
 
@@ -37,7 +38,7 @@ class Headline:
     method: str
 
 
-def headline(sample: Sample, references: tuple[Reference, ...], tolerance: float) -> Headline:
+def headline(sample: Sampled, references: tuple[Reference, ...], tolerance: float) -> Headline:
     """The leading value of one unit.
 
     An exact reference leads when its own numerical error is within ``tolerance`` (the

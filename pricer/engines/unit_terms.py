@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.book import Trade
-from pricer.contracts.option import Conversion
+from pricer.contracts.option import Conversion, EuropeanOption
 from pricer.contracts.profile import PiecewiseLinear
 from pricer.engines.closed_form.ranks import is_sum
 from pricer.engines.problem import EuropeanProblem
@@ -49,8 +49,10 @@ class UnitTerms:
 
     @classmethod
     def of(cls, trade: Trade, market: Market) -> UnitTerms:
-        """Raises as :meth:`Market.joint_lognormal`."""
+        """Of a European option. Raises as :meth:`Market.joint_lognormal`, and TypeError for another contract."""
         option, expiry = trade.contract, trade.contract.expiry_date
+        if not isinstance(option, EuropeanOption):
+            raise TypeError(f"{trade.trade_id} is no European option")
         names, conversion = option.underlyings, option.conversion
         law = market.joint_lognormal(names, expiry, payment_currency=trade.currency, conversion=conversion, pure=True)
         prices = [market.affine_price(name) for name in names]

@@ -164,6 +164,13 @@ EXAMPLE_MARKET: Tables = {
         {"underlying": "WEXMOOR", "ORLUMA": 0.44, "TESKIR": 0.39, "VADRONE": 0.36, "WEXMOOR": 1.0, "EURUSD": 0.05},
         {"underlying": "EURUSD", "ORLUMA": -0.12, "TESKIR": -0.08, "VADRONE": -0.1, "WEXMOOR": 0.05, "EURUSD": 1.0},
     ],
+    "fixings": [
+        {"underlying": "ORLUMA", "date": date(2026, 3, 19), "level": 83.1},
+        {"underlying": "ORLUMA", "date": date(2026, 3, 20), "level": 83.42},
+        {"underlying": "TESKIR", "date": date(2026, 3, 20), "level": 214.3},
+        {"underlying": "WEXMOOR", "date": date(2026, 3, 20), "reason": "exchange closed early"},
+        {"underlying": "EURUSD", "date": date(2026, 3, 20), "level": 1.0988},
+    ],
     "curves": [
         {"curve": "EUR-STANDARD", "currency": "EUR", "day_count": "ACT/365F", "calendar": "TARGET"},
         {"curve": "EUR-USD-CASH", "currency": "EUR", "collateral": "USD", "day_count": "ACT/360", "calendar": "TARGET"},

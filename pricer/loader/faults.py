@@ -77,3 +77,11 @@ def unwanted(value: object, owner: str, governed_by: str) -> Fault:
             found = str(value)
     mend = f"Clear the cell, or correct {governed_by}."
     return Fault("unwanted-value", found, f"a blank cell, as this is for {owner} only", mend)
+
+
+def only_for(owner: str, belongs: bool, value: object, governed_by: str) -> None:
+    """Raise the fault of a value that ``owner`` alone must have, if it is missing or not theirs."""
+    if belongs and value is None:
+        raise blank_cell(f"{owner} need one")
+    if not belongs and value is not None:
+        raise unwanted(value, owner, governed_by)

@@ -21,17 +21,18 @@ NOT_DATA = ("read me", "examples")
 TEMPLATE_BOOK = "book"
 
 
-def read_sheets(path: str | Path, wanted: Sequence[str]) -> Sheets:
+def read_sheets(path: str | Path, wanted: Sequence[str], needed: Sequence[str] = ()) -> Sheets:
     """The ``wanted`` tables of the workbook or folder at ``path``.
 
     They are named after the file or folder; one that is called ``book`` after the folder it
-    lies in. Digest and cells come from the same bytes: each file is read once. Raises
-    :class:`InputError` when the input cannot be read.
+    lies in. ``needed`` are those without which there is no input, as a message names them.
+    Digest and cells come from the same bytes: each file is read once. Raises :class:`InputError`
+    when the input cannot be read.
     """
     path = Path(path)
     shown = path.name or str(path)
     if path.is_dir():
-        return _read_folder(path, shown, wanted)
+        return _read_folder(path, shown, wanted, needed or wanted)
     data = _bytes(path, shown)
     try:
         sheets, others = read_workbook(data, shown, wanted)
@@ -40,13 +41,13 @@ def read_sheets(path: str | Path, wanted: Sequence[str]) -> Sheets:
     return Sheets(_name(path), shown, _by_name(sheets), _unread(others), (SourceFile(shown, _sha256(data)),))
 
 
-def _read_folder(folder: Path, shown: str, wanted: Sequence[str]) -> Sheets:
+def _read_folder(folder: Path, shown: str, wanted: Sequence[str], needed: Sequence[str]) -> Sheets:
     files = sorted(entry for entry in folder.iterdir() if entry.is_file() and entry.suffix.lower() == ".csv")
     if not files:
         workbooks = sorted(entry.name for entry in folder.glob("*.xlsx"))
         hint = f"Name the workbook in it: {workbooks[0]}." if workbooks else "Name the folder that holds the tables."
         raise InputError(
-            [_fatal("no-tables", shown, "a folder without .csv files", f"the files {_csv_names(wanted)}", hint)]
+            [_fatal("no-tables", shown, "a folder without .csv files", f"the files {_csv_names(needed)}", hint)]
         )
     asked = {fold(name) for name in wanted}
     sheets: list[Sheet] = []

@@ -26,7 +26,7 @@ from pricer.loader.market_columns import (
 )
 from pricer.loader.names import CalendarName, Choice, Currency, CurrencyPair, Identifier
 from pricer.loader.numbers import Number
-from pricer.loader.underlying_rows import DividendRow, PriceHistoryRow, RepoRow, VolatilityRow
+from pricer.loader.underlying_rows import DividendRow, FixingRow, PriceHistoryRow, RepoRow, VolatilityRow
 from pricer.market.calendars import DAY_COUNTS
 from pricer.market.correlation_estimate import HistoryRules
 
@@ -192,6 +192,7 @@ MARKET_ROWS: Mapping[str, type[TableRow]] = MappingProxyType(
         "repo": RepoRow,
         "volatilities": VolatilityRow,
         "price_history": PriceHistoryRow,
+        "fixings": FixingRow,
         "curves": CurveRow,
         "curve_points": CurvePointRow,
         "fx": FxRow,

@@ -47,6 +47,24 @@ class Choice:
 
 
 @dataclass(frozen=True, slots=True)
+class YesNo:
+    """Yes or no; the truth values of a spreadsheet are taken as such."""
+
+    choices: tuple[str, ...] = ("yes", "no")
+
+    def words(self) -> str:
+        return "yes or no"
+
+    def read(self, cell: Cell, reading: Reading) -> bool:
+        if isinstance(cell, bool):
+            return cell
+        answer = fold(read_name(cell, reading))
+        if answer not in self.choices:
+            raise Fault("unknown-word", quoted(str(cell)))
+        return answer == "yes"
+
+
+@dataclass(frozen=True, slots=True)
 class Identifier:
     """A name that other tables refer to. Numbers become text without a decimal point."""
 

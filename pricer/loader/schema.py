@@ -6,7 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
 
-from pricer.loader.book_rows import ConstituentRow, trade_columns
+from pricer.loader.book_models import BOOK_COLUMNS, RARE_COLUMNS
 from pricer.loader.columns import Column, columns_of
 from pricer.loader.market_rows import MARKET_ROWS
 from pricer.loader.names import Identifier
@@ -15,20 +15,38 @@ from pricer.market.market import CORRELATIONS
 
 @dataclass(frozen=True, slots=True)
 class TableSchema:
-    """A table's purpose in one sentence, and its columns by name."""
+    """A table's purpose in one sentence, and its columns; the ``rare`` ones are written only if they are used."""
 
     purpose: str
     columns: Mapping[str, Column]
+    rare: frozenset[str] = frozenset()
 
+
+_BOOK_PURPOSES = {
+    "trades": "One row per trade.",
+    "constituents": (
+        "One row per trade and underlying. Ranked aggregates take no weights; performance options need an initial "
+        "fixing, or dates that set it."
+    ),
+    "schedules": (
+        "One row per date of a trade: dates that set its initial fixings, of its statistic, barriers, calls, coupons, "
+        "accruals and rights to exercise. This table and those below may be left out."
+    ),
+    "schedule_rules": "One row per series of dates that follow a rule, instead of rows in the table schedules.",
+    "barriers": "One row per barrier. A daily, continuous or expiry barrier needs no dates in the table schedules.",
+    "calls": (
+        "One row per trade with automatic calls whose trigger is not the usual one: the trade's aggregate, at or above "
+        "its level."
+    ),
+    "coupons": "One row per trade with coupons that have a memory, or whose trigger is not the usual one.",
+    "exercises": "One row per right of the holder to exercise early, or of the issuer to redeem early.",
+    "writers": "One row per trade whose writer may default before paying.",
+}
 
 BOOK: Mapping[str, TableSchema] = MappingProxyType(
     {
-        "trades": TableSchema("One row per trade.", trade_columns()),
-        "constituents": TableSchema(
-            "One row per trade and underlying. Ranked aggregates take no weights; performance options need an "
-            "initial fixing.",
-            columns_of(ConstituentRow),
-        ),
+        name: TableSchema(purpose, BOOK_COLUMNS[name], RARE_COLUMNS.get(name, frozenset()))
+        for name, purpose in _BOOK_PURPOSES.items()
     }
 )
 
@@ -48,6 +66,10 @@ _MARKET_PURPOSES = {
     "price_history": (
         "One row per day and underlying or currency pair. Correlations come from it where correlation_source in the "
         'table snapshot is "price history"; its last levels are compared with spots. May be left out.'
+    ),
+    "fixings": (
+        "One row per underlying or currency pair and day: the official levels that trades observed so far. A European "
+        "option needs none before it expires. May be left out."
     ),
     "curves": "One row per discount curve: one curve per currency and collateral.",
     "curve_points": (

@@ -17,6 +17,7 @@ from pricer.loader.exchange_rates import read_exchange_rates
 from pricer.loader.faults import Fault
 from pricer.loader.files import read_sheets
 from pricer.loader.findings import Findings, as_warnings
+from pricer.loader.fixings import read_fixings
 from pricer.loader.headers import find_sheet, match_header, unread_sheets
 from pricer.loader.market_places import Places
 from pricer.loader.market_rows import (
@@ -35,7 +36,7 @@ from pricer.loader.sheets import Sheet, Sheets
 from pricer.loader.table import Table, read_table
 from pricer.loader.text import quoted
 from pricer.loader.two_sided_rates import read_funding
-from pricer.loader.underlying_rows import DividendRow, PriceHistoryRow, RepoRow, VolatilityRow
+from pricer.loader.underlying_rows import DividendRow, FixingRow, PriceHistoryRow, RepoRow, VolatilityRow
 from pricer.loader.underlyings import read_underlyings
 from pricer.loader.volatilities import read_volatilities
 from pricer.market import quality
@@ -72,6 +73,7 @@ _CELLS: tuple[tuple[str, str, tuple[str, ...], str], ...] = (
     ("fx_volatilities", "fx_volatilities", ("pair", "expiry_date"), "volatility_decimal"),
     ("credit", "credit", ("name",), "name"),
     ("agreements", "agreements", ("netting_set",), "currency"),
+    ("fixings", "fixings", ("underlying", "date"), "level"),
 )
 
 
@@ -91,7 +93,7 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
     volatilities = tables.get("volatilities", VolatilityRow)
     fx_rows, fx_volatilities = tables.get("fx", FxRow), tables.get("fx_volatilities", FxVolatilityRow)
     credit_rows, funding_rows = tables.get("credit", CreditRow), tables.get("funding", FundingRow)
-    agreement_rows = tables.get("agreements", AgreementRow)
+    agreement_rows, fixing_rows = tables.get("agreements", AgreementRow), tables.get("fixings", FixingRow)
     findings = tables.findings
     row = None if snapshot is None else _snapshot_row(snapshot, findings)
     matrix, past = (None, None) if row is None else tables.correlations(row.correlation_source)
@@ -117,6 +119,7 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
     hazards, credit_quotes = read_credit(credit_rows, curves, findings)
     funding = read_funding(funding_rows, row.reporting_currency, today, findings)
     agreements = read_agreements(agreement_rows, findings)
+    fixings = read_fixings(fixing_rows, known, findings)
     estimated, half_life = row.correlation_source == PRICE_HISTORY, row.correlation_half_life_days
     correlations = read_correlation_source(matrix, past, estimated, known, underlyings, fx, today, half_life, findings)
     if not underlyings or not curves:
@@ -138,6 +141,7 @@ def load_market(path: str | Path, *, valuation_date: date | None = None) -> Mark
         credit=hazards,
         funding=funding,
         agreements=agreements,
+        fixings=fixings,
         quotes=MarketQuotes(credit_quotes, correlations.estimate, correlations.last_levels),
     )
     place = Places(correlations.source)

@@ -31,8 +31,10 @@ class Row(Generic[R]):
     issues: tuple[Issue, ...]
 
     def get(self, column: str) -> Any:
-        """The value in ``column``; :data:`UNREAD` where it could not be read."""
-        return getattr(self.value, column) if self.value is not None else self.readable.get(column, UNREAD)
+        """The value in ``column``; :data:`UNREAD` where it could not be read, or the row's model lacks the column."""
+        # A model's __dict__ holds its columns and nothing else; asking it for one that it lacks costs no exception.
+        read = self.readable if self.value is None else self.value.__dict__
+        return read.get(column, UNREAD)
 
 
 @dataclass(frozen=True, slots=True)

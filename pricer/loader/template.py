@@ -16,8 +16,9 @@ from openpyxl.worksheet.datavalidation import DataValidation
 from openpyxl.worksheet.properties import PageSetupProperties
 
 from pricer.loader.columns import Column
+from pricer.loader.contract_examples import WHOLE_BOOK
 from pricer.loader.days import FIRST_DATE, LAST_DATE, Day
-from pricer.loader.examples import EXAMPLE_BOOK, EXAMPLE_MARKET, EXAMPLE_PRICE_HISTORY
+from pricer.loader.examples import EXAMPLE_MARKET, EXAMPLE_PRICE_HISTORY
 from pricer.loader.names import Choice, Currency, FreeText, Identifier
 from pricer.loader.schema import BOOK, MARKET, TableSchema
 from pricer.loader.sheets import letters
@@ -40,6 +41,7 @@ _RULES = (
     "Columns are found by name: their order is free, and optional ones may be deleted.",
     "Column names on blue need a value in every row, the others only where their note says so.",
     "Columns that end in _decimal, weights and performances are decimals: 0.225 means 22.5 %.",
+    "Sheets whose note below says so may be left empty, or deleted.",
     "Dates are date cells, or text such as 2026-09-18.",
     "The sheets read me and examples are never read. Copy rows from examples and change them.",
     "The same tables may be given as a folder of .csv files (UTF-8, decimal points) named after the sheets.",
@@ -53,7 +55,7 @@ def write_templates(folder: str | Path) -> tuple[Path, ...]:
     """
     folder = Path(folder)
     parts = {
-        folder / "book.xlsx": ("A book of multi-asset options", BOOK, EXAMPLE_BOOK),
+        folder / "book.xlsx": ("A book of multi-asset options", BOOK, WHOLE_BOOK),
         folder / "market.xlsx": ("A market snapshot", MARKET, {**EXAMPLE_MARKET, **EXAMPLE_PRICE_HISTORY}),
     }
     for path in parts:

@@ -2,30 +2,41 @@
 
 from __future__ import annotations
 
+import math
 from collections import Counter
 from collections.abc import Iterator, Sequence
 
 from pricer.contracts.aggregate import RANKED, AggregateKind
 from pricer.contracts.profile import ProfileKind
 from pricer.core.issues import Issue, Severity
-from pricer.loader.book_rows import PERFORMANCE, PRICE, WEIGHTED, ConstituentRow, EuropeanOptionRow
+from pricer.loader.book_rows import AnyTradeRow, ConstituentRow
 from pricer.loader.columns import columns_of
 from pricer.loader.faults import Fault, blank_cell, number_in_words, unwanted
 from pricer.loader.numbers import as_percentage_points
+from pricer.loader.statistic_columns import StatisticKind
 from pricer.loader.table import UNREAD, Row, Table
 from pricer.loader.text import quoted
+from pricer.loader.trade_words import NOTE, OPTION, PERFORMANCE, PRICE, WEIGHTED
+from pricer.loader.triggers import HIGHEST_PERFORMANCE
 
-#: A strike this many times the sum of the weights' sizes is no performance: 100 was typed for 100 %.
-HIGHEST_PERFORMANCE = 4.0
+#: Strikes of statistics that are no levels: beyond these, percentage points were typed where a decimal belongs.
+HIGHEST_STRIKES = {
+    StatisticKind.CLIQUET: 4.0,
+    StatisticKind.VARIANCE: 1.0,
+    StatisticKind.VOLATILITY: 2.0,
+    StatisticKind.CORRELATION: 1.0,
+}
+#: A variance above this, a volatility of 40 %, is rarely agreed: was its root meant?
+HIGH_VARIANCE = 0.16
 #: Weights of a performance or a geometric aggregate that miss 1 by more than this are reported.
 WEIGHT_ROUNDING = 1e-3
 
-_TradeRow = Row[EuropeanOptionRow]
+_TradeRow = Row[AnyTradeRow]
 _Leg = Row[ConstituentRow]
 
 
 def check_terms(
-    trades: Table[EuropeanOptionRow], row: _TradeRow, constituents: Table[ConstituentRow], legs: Sequence[_Leg]
+    trades: Table[AnyTradeRow], row: _TradeRow, constituents: Table[ConstituentRow], legs: Sequence[_Leg]
 ) -> list[Issue]:
     """Everything that does not fit between the row of a trade and those of its constituents."""
     if not legs:
@@ -65,7 +76,8 @@ def _leg_faults(row: _TradeRow, leg: _Leg, times: int) -> Iterator[tuple[str, Fa
         elif aggregate is AggregateKind.GEOMETRIC and weight < 0.0:
             because = "the trade's aggregate is geometric"
             yield "weight", Fault("out-of-range", number_in_words(weight), "a number above 0", because=because)
-    if fixing is not UNREAD and level == PERFORMANCE and fixing is None:
+    # An option or note on a path may have its fixings set by dates, see contract_assembly.
+    if fixing is None and level == PERFORMANCE and row.get("product") not in (OPTION, NOTE):
         yield "initial_fixing", blank_cell("the trade is a performance option")
     if fixing is not UNREAD and level == PRICE and fixing is not None:
         yield "initial_fixing", unwanted(fixing, "performance options", "the trade's underlying_level")
@@ -92,9 +104,16 @@ def _weight_faults(row: _TradeRow, legs: Sequence[_Leg]) -> Iterator[tuple[str, 
         found = f"an exchange option with the weights {'; '.join(map(number_in_words, weights))}"
         expected = "two underlyings, one with a positive and one with a negative weight"
         yield "profile", Fault("terms-do-not-fit", found, expected, "Correct the table constituents, or the profile.")
+    statistic = row.get("statistic")
     for column in ("strike", "cash_level"):
         amount = row.get(column)
         if not isinstance(amount, float):
+            continue
+        if column == "strike" and statistic in HIGHEST_STRIKES:
+            highest = HIGHEST_STRIKES[statistic]
+            if abs(amount) > highest:
+                expected = f"a decimal {statistic} (0.04 = 4 %) of at most {highest:g}"
+                yield column, as_percentage_points(amount, expected, highest)
             continue
         if amount < 0.0 and min(weights) >= 0.0:
             expected = "a number of at least 0, as no weight is negative"
@@ -107,6 +126,12 @@ def _weight_faults(row: _TradeRow, legs: Sequence[_Leg]) -> Iterator[tuple[str, 
 
 def _weight_notes(row: _TradeRow, legs: Sequence[_Leg]) -> Iterator[tuple[str, Fault]]:
     """What is allowed, but rarely meant, by the column to look at."""
+    strike, whole = row.get("strike"), row.get("aggregate_weight")
+    if row.get("statistic") is StatisticKind.VARIANCE and isinstance(strike, float) and strike > HIGH_VARIANCE:
+        found = f"{number_in_words(strike)}, the variance of a volatility of {100.0 * math.sqrt(strike):.1f} %"
+        mend = f"Used as given. Enter {strike * strike:.6g} if {number_in_words(strike)} is the volatility."
+        if whole is None or whole > 0.0:
+            yield "strike", Fault("high-variance", found, "a variance (0.04 is that of 20 %)", mend)
     weights, aggregate = _weights(row, legs), row.get("aggregate")
     on_performance = row.get("underlying_level") == PERFORMANCE
     # Prices are weighted by numbers of shares, except in a geometric mean.

@@ -1,4 +1,4 @@
-"""The tables about underlyings: dividends, repo rates, volatilities and past prices."""
+"""The tables about underlyings: dividends, repo rates, volatilities, past prices and fixings."""
 
 from __future__ import annotations
 
@@ -9,6 +9,7 @@ from pydantic import ValidationInfo, field_validator
 
 from pricer.loader.columns import Column, TableRow
 from pricer.loader.days import Day
+from pricer.loader.faults import blank_cell
 from pricer.loader.market_columns import (
     HIGHEST_CURVATURE,
     HIGHEST_RELATIVE_STRIKE,
@@ -23,7 +24,7 @@ from pricer.loader.market_columns import (
     underlying_reference,
     volatility,
 )
-from pricer.loader.names import Identifier
+from pricer.loader.names import FreeText, Identifier
 from pricer.loader.numbers import Number
 
 
@@ -175,3 +176,34 @@ class PriceHistoryRow(TableRow):
             Number(above=0.0), "the closing level, adjusted for dividends and splits", "84.20", "always in one unit"
         ),
     ]
+
+
+class FixingRow(TableRow):
+    """The official level of an underlying, or of an exchange rate, on one day that trades observe."""
+
+    underlying: Annotated[
+        str, Column(Identifier(), "the id of an underlying, or a currency pair such as EURUSD", "ORLUMA")
+    ]
+    date: Annotated[date, Column(Day(), "the day of the fixing", "2026-03-20")]
+    level: Annotated[
+        float | None,
+        Column(
+            Number(above=0.0),
+            "the official level",
+            "84.20",
+            "in the underlying's currency, in one unit with its spot; of a pair as in the table fx",
+            None,
+            "where the day had none: the column reason says why then",
+        ),
+    ]
+    reason: Annotated[
+        str,
+        Column(FreeText(), "why there is no level", "market disruption", "", "", "where there is a level"),
+    ]
+
+    @field_validator("reason")
+    @classmethod
+    def check_reason(cls, reason: str, info: ValidationInfo) -> str:
+        if not reason and "level" in info.data and info.data["level"] is None:
+            raise blank_cell("there is no level either")
+        return reason

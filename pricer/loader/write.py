@@ -44,11 +44,15 @@ def write_tables(tables: Tables, path: str | Path) -> None:
 
 
 def column_order(table: str, rows: Sequence[Mapping[str, object]]) -> list[str]:
-    """The columns of a table as written: the known ones, then whatever else its rows hold."""
+    """The columns of a table as written: the known ones, without rare ones that no row has, then whatever else is."""
     schema = {**BOOK, **MARKET}.get(table)
-    known = () if schema is None else tuple(schema.columns)
-    used = dict.fromkeys(column for row in rows for column in row)
-    return [*known, *(column for column in used if column not in known)]
+    known = {} if schema is None else dict.fromkeys(schema.columns)
+    if schema is not None and schema.rare:
+        filled = {column for row in rows for column, value in row.items() if value is not None and value != ""}
+        known = {column: None for column in known if column not in schema.rare or column in filled}
+    given = dict.fromkeys(column for row in rows for column in row)
+    rare = frozenset() if schema is None else schema.rare
+    return [*known, *(column for column in given if column not in known and column not in rare)]
 
 
 def _write_workbook(tables: Tables, path: Path) -> None:

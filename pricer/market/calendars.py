@@ -92,7 +92,8 @@ DAY_COUNTS: Mapping[str, Callable[[], Any]] = MappingProxyType(
 #: The calendars' first and last day.
 FIRST_DAY, LAST_DAY = date(1901, 1, 1), date(2199, 12, 31)
 
-_CONVENTIONS = MappingProxyType[str, int](
+#: Roll conventions by name.
+CONVENTIONS = MappingProxyType[str, int](
     {
         "following": ql.Following,
         "modified following": ql.ModifiedFollowing,
@@ -113,7 +114,7 @@ def is_calendar(name: str) -> bool:
 
 def is_business_day(calendar: str, day: date) -> bool:
     """Whether ``day`` is a business day of ``calendar``; "TARGET+US" is one where both are open."""
-    return bool(_calendar(calendar).isBusinessDay(to_quantlib(day)))
+    return bool(calendar_named(calendar).isBusinessDay(to_quantlib(day)))
 
 
 def advance(calendar: str, day: date, business_days: int) -> date:
@@ -126,7 +127,7 @@ def advance(calendar: str, day: date, business_days: int) -> date:
 
 def roll(calendar: str, day: date, convention: str = "following") -> date:
     """``day`` moved to a business day by a roll convention."""
-    return from_quantlib(_calendar(calendar).adjust(to_quantlib(day), _convention(convention)))
+    return from_quantlib(calendar_named(calendar).adjust(to_quantlib(day), convention_named(convention)))
 
 
 def add_tenor(calendar: str, day: date, tenor: str, convention: str = "modified following") -> date:
@@ -135,7 +136,7 @@ def add_tenor(calendar: str, day: date, tenor: str, convention: str = "modified 
     Days are business days; weeks, months and years are calendar time, rolled at the end.
     Raises ValueError for a tenor that cannot be read.
     """
-    return _advance(calendar, day, *_length_and_unit(tenor), _convention(convention))
+    return _advance(calendar, day, *_length_and_unit(tenor), convention_named(convention))
 
 
 def currency_calendar(currency: str) -> str:
@@ -183,13 +184,14 @@ def _length_and_unit(tenor: str) -> tuple[int, int]:
 
 def _advance(calendar: str, day: date, length: int, unit: int, convention: int) -> date:
     try:
-        return from_quantlib(_calendar(calendar).advance(to_quantlib(day), length, unit, convention))
+        return from_quantlib(calendar_named(calendar).advance(to_quantlib(day), length, unit, convention))
     except RuntimeError as error:  # QuantLib's word for leaving its range of years
         raise ValueError(f"that far from {day} lies outside {FIRST_DAY} to {LAST_DAY}") from error
 
 
 @cache
-def _calendar(name: str) -> Any:
+def calendar_named(name: str) -> Any:
+    """QuantLib's calendar of that name, or the joint one of several (see :data:`CALENDARS`)."""
     if not is_calendar(name):
         raise ValueError(f'"{name}" is not a calendar; known are {", ".join(CALENDARS)}, also joined: TARGET+US')
     calendars = [CALENDARS[part.strip()]() for part in name.split("+")]
@@ -204,7 +206,8 @@ def day_counter(name: str) -> Any:
     return DAY_COUNTS[name]()
 
 
-def _convention(name: str) -> int:
-    if name not in _CONVENTIONS:
-        raise ValueError(f'"{name}" is not a roll convention; known are {", ".join(_CONVENTIONS)}')
-    return _CONVENTIONS[name]
+def convention_named(name: str) -> int:
+    """QuantLib's roll convention of that name (see :data:`CONVENTIONS`)."""
+    if name not in CONVENTIONS:
+        raise ValueError(f'"{name}" is not a roll convention; known are {", ".join(CONVENTIONS)}')
+    return CONVENTIONS[name]

@@ -9,6 +9,7 @@ from pricer.core.issues import Issue
 from pricer.market.findings import Locate, error, markets_reason, warning
 from pricer.market.fx import currencies_of
 from pricer.market.market import Market
+from pricer.market.trade_names import cell_of, names_of
 
 
 def conversion_coverage(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
@@ -16,12 +17,13 @@ def conversion_coverage(trade: Trade, market: Market, place: Locate) -> Iterator
     contract = trade.contract
     if (trade.currency, "") not in market.curves:
         return
-    known = [market.underlyings[name] for name in dict.fromkeys(contract.underlyings) if name in market.underlyings]
+    names = names_of(trade)
+    known = [market.underlyings[name] for name in names if name in market.underlyings]
     foreign = [underlying for underlying in known if underlying.currency != trade.currency]
     if contract.conversion is None:
         for underlying in foreign:
             yield error(
-                place(f"underlying:{underlying.underlying_id}"),
+                cell_of(underlying.underlying_id, place),
                 "other-currency",
                 f'underlying "{underlying.underlying_id}", quoted in {underlying.currency}, in a trade in '
                 f"{trade.currency}",
@@ -30,7 +32,7 @@ def conversion_coverage(trade: Trade, market: Market, place: Locate) -> Iterator
                 "composite.",
             )
         return
-    if not foreign and len(known) == len(set(contract.underlyings)):
+    if not foreign and len(known) == len(names):
         yield warning(
             place("conversion"),
             "idle-conversion",

@@ -3,19 +3,26 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from itertools import combinations
 
 from pricer.contracts.book import Trade
+from pricer.contracts.life_cycle import AsOf
+from pricer.contracts.option import EuropeanOption
 from pricer.core.issues import Issue, Severity
 from pricer.core.source import Place
 from pricer.market.conversion_coverage import conversion_coverage
-from pricer.market.date_coverage import date_coverage
+from pricer.market.correlation_coverage import correlation_coverage
+from pricer.market.date_coverage import date_coverage, known_date_coverage
 from pricer.market.dividend_quality import EXCEEDED
-from pricer.market.doubt_coverage import doubts, refused_rates
+from pricer.market.doubt_coverage import doubted_fixings, doubts, refused_rates
 from pricer.market.findings import Locate, did_you_mean, error, markets_reason, warning, words
-from pricer.market.market import CORRELATIONS, Market, MissingMarketDataError
+from pricer.market.level_coverage import level_coverage
+from pricer.market.market import Market, MissingMarketDataError
+from pricer.market.past_coverage import has_ended, past_coverage
 from pricer.market.size_coverage import size_coverage
+from pricer.market.standing import standing
+from pricer.market.trade_names import cell_of, names_of
 from pricer.market.underlying import Underlying
+from pricer.market.writer_coverage import writer_coverage
 
 
 def coverage(
@@ -23,26 +30,69 @@ def coverage(
 ) -> tuple[Issue, ...]:
     """Everything that keeps ``trade`` from being priced on ``market`` (errors), or qualifies its price (warnings).
 
-    Surfaces that fail their checks are errors unless accepted; then they are warnings.
+    Surfaces that fail their checks are errors unless accepted; then they are warnings. Only what is still to come
+    matters: a trade of which known amounts are left, if anything, needs nothing but their currency and curve.
 
     ``place`` gives the cell from which a column of the trade was read ("trade_id", "currency",
     "collateral", "strike", "expiry_date", "payment_date", "trade_date", "premium_date", and
-    "underlying:ID" and "initial_fixing:ID" for a constituent), or None. Every issue carries the trade's id.
+    "underlying:ID" and "initial_fixing:ID" for a constituent; "schedule:PURPOSE:DATE", "schedule:PURPOSE", "schedule",
+    "barrier", "call", "coupon", "exercise", "writer" and "assets" for the first row of each), or None.
+    Every issue carries the trade's id.
     """
+    state = _state(trade, market)
+    if state is not None and has_ended(state):
+        issues = _ended(trade, state, market, place)
+    else:
+        issues = _live(trade, state, market, place, accept_failing_surfaces=accept_failing_surfaces)
+    return tuple(issue.for_trade(trade.trade_id) for issue in issues)
+
+
+def _state(trade: Trade, market: Market) -> AsOf | None:
+    """Where the trade stands; None for a European option still to expire, which has no past, or paid before that."""
+    contract = trade.contract
+    has_no_past = contract.expiry_date > market.valuation_date or contract.payment_date < contract.expiry_date
+    return None if isinstance(contract, EuropeanOption) and has_no_past else standing(trade, market)
+
+
+def _ended(trade: Trade, state: AsOf, market: Market, place: Locate) -> list[Issue]:
+    return [
+        *_currencies(trade, market, place),
+        *past_coverage(trade, state, market, place),
+        *known_date_coverage(trade, state, market, place),
+        *writer_coverage(trade, market, place),
+        *refused_rates(trade, market, place),
+        *doubted_fixings(trade, market, place),
+    ]
+
+
+def _live(
+    trade: Trade, state: AsOf | None, market: Market, place: Locate, *, accept_failing_surfaces: bool
+) -> list[Issue]:
+    past = () if state is None else past_coverage(trade, state, market, place)
+    if trade.contract.expiry_date < market.valuation_date:  # and a fixing is missing
+        return [
+            *_currencies(trade, market, place),
+            *_underlyings(trade, market, place, to_come=False),
+            *past,
+            *date_coverage(trade, state, market, place),
+            *refused_rates(trade, market, place),
+        ]
     issues = [
         *_currencies(trade, market, place),
-        *_underlyings(trade, market, place),
+        *_underlyings(trade, market, place, to_come=True),
         *_surfaces(trade, market, place, accepted=accept_failing_surfaces),
         *conversion_coverage(trade, market, place),
-        *_correlations(trade, market, place),
-        *_unknown_pairs(trade, market, place),
-        *date_coverage(trade, market, place),
-        *size_coverage(trade, market, place),
+        *correlation_coverage(trade, market, place),
+        *writer_coverage(trade, market, place),
+        *past,
+        *date_coverage(trade, state, market, place),
+        *size_coverage(trade, state, market, place),
+        *level_coverage(trade, state, market, place),
         *refused_rates(trade, market, place),
     ]
     if all(issue.severity is Severity.WARNING for issue in issues):  # it will be priced
         issues.extend(doubts(trade, market, place))
-    return tuple(issue.for_trade(trade.trade_id) for issue in issues)
+    return issues
 
 
 def _currencies(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
@@ -89,9 +139,10 @@ def _currencies(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
         )
 
 
-def _underlyings(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
-    for name in dict.fromkeys(trade.contract.underlyings):
-        here = place(f"underlying:{name}")
+def _underlyings(trade: Trade, market: Market, place: Locate, *, to_come: bool) -> Iterator[Issue]:
+    """Names that the market does not know; of those whose prices ``to_come`` matter, what they lack."""
+    for name in names_of(trade):
+        here = cell_of(name, place)
         why = markets_reason(market.rejected.get(name, ()))
         underlying = market.underlyings.get(name)
         if underlying is None and why:
@@ -111,7 +162,7 @@ def _underlyings(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]
                 f"{did_you_mean(name, market.underlyings)}Correct the name, or add it to the underlyings table of the "
                 "market.",
             )
-        else:
+        elif to_come:
             if not market.has_volatility(name):
                 yield error(
                     here,
@@ -125,15 +176,14 @@ def _underlyings(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]
 
 def failing_surfaces(trade: Trade, market: Market) -> tuple[str, ...]:
     """The trade's underlyings whose volatility surfaces fail their checks."""
-    names = dict.fromkeys(trade.contract.underlyings)
-    return tuple(name for name in names if name in market.surfaces and not market.surfaces[name].passes)
+    return tuple(name for name in names_of(trade) if name in market.surfaces and not market.surfaces[name].passes)
 
 
 def _surfaces(trade: Trade, market: Market, place: Locate, *, accepted: bool) -> Iterator[Issue]:
     for name in failing_surfaces(trade, market):
         found = f'underlying "{name}", whose volatility surface fails: {market.surfaces[name].failures[0]}'
         expected = "a volatility surface that passes its checks"
-        here = place(f"underlying:{name}")
+        here = cell_of(name, place)
         if accepted:
             mend = "Priced from it all the same, as asked, and marked; correct the quotes in the volatilities table."
             yield warning(here, "failing-surface", found, expected, mend)
@@ -167,60 +217,6 @@ def _price(underlying: Underlying, market: Market, here: Place | None) -> Iterat
             "volatilities that leave the price above its cash dividends a law",
             "Correct the volatilities around the ex dates, or enter dividends far ahead as proportional ones.",
         )
-
-
-def _correlations(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
-    names = [name for name in dict.fromkeys(trade.contract.underlyings) if name in market.underlyings]
-    if len(names) < 2:
-        return
-    if market.correlation is None:
-        yield error(
-            place("trade_id"),
-            "no-correlations",
-            "no usable correlation matrix",
-            f"correlations among {words(names)}",
-            markets_reason(market.rejected.get(CORRELATIONS, ()))
-            or "Add the correlations of the trade's underlyings to the correlations table of the market.",
-        )
-        return
-    told: set[str] = set()  # a pair is told once, at the first of the two
-    for name in names:
-        if name in market.correlation:
-            continue
-        told.add(name)
-        others = [other for other in names if other not in told]
-        if others:
-            yield error(
-                place(f"underlying:{name}"),
-                "missing-correlation",
-                f'no correlation of underlying "{name}" with {words(others)}',
-                "a correlation for every pair of the trade's underlyings",
-                markets_reason(market.rejected.get(f"{CORRELATIONS}:{name}", ()))
-                or f'Add a row and a column "{name}" to the correlations table of the market.',
-            )
-
-
-def _unknown_pairs(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
-    """Pairs of the trade's underlyings and exchange rates whose cells in the matrix gave no number."""
-    ids = {name: f"underlying:{name}" for name in trade.contract.underlyings if name in market.underlyings}
-    if trade.contract.conversion is not None:
-        currencies = dict.fromkeys(market.underlyings[name].currency for name in ids)
-        for currency in (other for other in currencies if other != trade.currency):
-            try:
-                factors = market.fx.log_factors(currency, trade.currency)
-            except (LookupError, ValueError):
-                continue  # told with the conversion
-            ids |= {name: "conversion" for pair in factors for name in (pair, pair[3:] + pair[:3])}
-    for first, second in combinations(ids, 2):
-        why = market.why_unknown(first, second)
-        if why:
-            yield error(
-                place(ids[first]) or place("currency"),
-                "missing-correlation",
-                f"no correlation of {first} with {second}",
-                "a correlation for every pair that the trade depends on",
-                markets_reason(why),
-            )
 
 
 def _known_currencies(market: Market) -> set[str]:

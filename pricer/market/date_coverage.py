@@ -6,41 +6,63 @@ from collections.abc import Iterator
 from datetime import date
 
 from pricer.contracts.book import Trade
+from pricer.contracts.feature import Appointment
+from pricer.contracts.life_cycle import AsOf
 from pricer.core.issues import Issue
+from pricer.core.source import Place
 from pricer.market.calendars import LAST_DAY, is_business_day, roll
+from pricer.market.curves import DiscountCurve
 from pricer.market.findings import Locate, error, warning, words
 from pricer.market.market import Market
+from pricer.market.observation_care import observation_care
+from pricer.market.trade_names import names_of
 
 
-def date_coverage(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
-    """Issues of the trade's dates; those of an option that has expired end with that."""
-    if trade.contract.expiry_date < market.valuation_date:
-        yield _expired(trade, market, place)
-        return
-    if (latest := _latest(trade)) > LAST_DAY:
+def date_coverage(trade: Trade, state: AsOf | None, market: Market, place: Locate) -> Iterator[Issue]:
+    """Issues of the trade's dates to come; ``state`` is None for a European option still to expire.
+
+    Of what expired before the valuation date they are its past's: see :mod:`pricer.market.past_coverage`.
+    """
+    if (latest := _latest(trade, state)) > LAST_DAY:
         yield _too_late(latest, place)
         return
     yield from _order(trade, market, place)
-    yield from _curves_reach(trade, market, place)
+    if trade.contract.expiry_date < market.valuation_date:
+        return
+    yield from _curves_reach(trade, state, market, place)
     yield from _volatilities_reach(trade, market, place)
     yield from _holidays(trade, market, place)
+    if state is not None:
+        yield from _observations(trade, state, market, place)
 
 
-def _expired(trade: Trade, market: Market, place: Locate) -> Issue:
-    expiry, payment, today = trade.contract.expiry_date, trade.contract.payment_date, market.valuation_date
-    mend = (
-        f"It was paid on {payment}: remove the settled trade from the book."
-        if payment < today
-        else f"Its known amount is still to be paid, on {payment}: carry it outside this book; options after expiry "
-        "are not valued by this version."
-    )
-    found = f"expiry date {expiry}, before the valuation date {today}"
-    return error(place("expiry_date"), "expired", found, "an expiry on or after the valuation date", mend)
+def known_date_coverage(trade: Trade, state: AsOf, market: Market, place: Locate) -> Iterator[Issue]:
+    """Issues of the days on which known amounts and a premium are paid, once nothing else is left of the trade."""
+    paid = max((payment.payment_date for payment in state.to_be_paid), default=market.valuation_date)
+    due = market.valuation_date if trade.premium is None else trade.premium.payment_date
+    if max(paid, due) > LAST_DAY:
+        yield _too_late(max(paid, due), place)
+        return
+    curve = market.curves.get((trade.currency, trade.collateral))
+    yield from _beyond_curve(curve, "payment date", paid, place("payment_date") or place("expiry_date"))
+    yield from _beyond_curve(curve, "premium date", due, place("premium_date"))
 
 
-def _latest(trade: Trade) -> date:
-    dates = [trade.contract.expiry_date, trade.contract.payment_date]
+def _latest(trade: Trade, state: AsOf | None) -> date:
+    dates = [trade.contract.expiry_date, _last_payment(trade, state)]
     return max(dates if trade.premium is None else [*dates, trade.premium.payment_date])
+
+
+def _last_payment(trade: Trade, state: AsOf | None) -> date:
+    """The last day on which anything may be paid."""
+    coming = [] if state is None else [item.payment_date for feature in _coming(state) for item in feature]
+    known = [] if state is None else [payment.payment_date for payment in state.to_be_paid]
+    return max([trade.contract.payment_date, *known, *(day for day in coming if day is not None)])
+
+
+def _coming(state: AsOf) -> Iterator[tuple[Appointment, ...]]:
+    """What each feature may still do."""
+    return (state.appointments(i) for i in range(len(state.contract.features)))
 
 
 def _too_late(latest: date, place: Locate) -> Issue:
@@ -55,14 +77,6 @@ def _too_late(latest: date, place: Locate) -> Issue:
 
 def _order(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
     expiry, payment = trade.contract.expiry_date, trade.contract.payment_date
-    if expiry == market.valuation_date:
-        yield warning(
-            place("expiry_date"),
-            "expires-today",
-            f"expiry date {expiry}, which is the valuation date",
-            "an expiry after the valuation date",
-            "The option is valued at the market's spots; compare them with the official fixings.",
-        )
     if trade.trade_date is not None and trade.trade_date > market.valuation_date:
         yield warning(
             place("trade_date"),
@@ -89,8 +103,8 @@ def _order(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
         )
 
 
-def _curves_reach(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
-    expiry, payment, premium = trade.contract.expiry_date, trade.contract.payment_date, trade.premium
+def _curves_reach(trade: Trade, state: AsOf | None, market: Market, place: Locate) -> Iterator[Issue]:
+    expiry, payment, premium = trade.contract.expiry_date, _last_payment(trade, state), trade.premium
     own, standard = (trade.currency, trade.collateral), (trade.currency, "")
     needed = [(own, "payment date", payment, place("payment_date") or place("expiry_date"))]
     if premium is not None:
@@ -98,23 +112,27 @@ def _curves_reach(trade: Trade, market: Market, place: Locate) -> Iterator[Issue
     if own != standard:  # forwards come from the standard curve
         needed.append((standard, "expiry date", expiry, place("expiry_date")))
     reached = [(market.curves.get(key), label, day, here) for key, label, day, here in needed]
-    for name in dict.fromkeys(trade.contract.underlyings):
+    for name in names_of(trade):
         if name in market.repo:
             reached.append((market.repo[name].mid, "expiry date", expiry, place("expiry_date")))
     for curve, label, day, here in reached:
-        if curve is not None and curve.is_extrapolated(day):
-            yield warning(
-                here,
-                "beyond-curve",
-                f"{label} {day}, after {curve.last_date}, where curve {curve.curve_id} ends",
-                f"a curve that reaches the {label}",
-                "The curve's last forward rate is used beyond its end; add a later point to the curve.",
-            )
+        yield from _beyond_curve(curve, label, day, here)
+
+
+def _beyond_curve(curve: DiscountCurve | None, label: str, day: date, here: Place | None) -> Iterator[Issue]:
+    if curve is not None and curve.is_extrapolated(day):
+        yield warning(
+            here,
+            "beyond-curve",
+            f"{label} {day}, after {curve.last_date}, where curve {curve.curve_id} ends",
+            f"a curve that reaches the {label}",
+            "The curve's last forward rate is used beyond its end; add a later point to the curve.",
+        )
 
 
 def _volatilities_reach(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
     expiry = trade.contract.expiry_date
-    for name in dict.fromkeys(trade.contract.underlyings):
+    for name in names_of(trade):
         last = _last_volatility(name, market)
         if last is not None and expiry > last:
             smile = "The smile keeps its shape in standard deviations beyond that date"
@@ -151,3 +169,14 @@ def _holidays(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
             "a business day of every underlying",
             f"The option is valued to {expiry}; if its terms move the date, enter {before} or {after}.",
         )
+
+
+def _observations(trade: Trade, state: AsOf, market: Market, place: Locate) -> Iterator[Issue]:
+    """Observations to come on ex dates and holidays; the expiry's own are told apart."""
+    features = [[item.day for item in coming] for coming in _coming(state)]
+    series = [state.setting_dates_to_come, state.statistic_dates_to_come, *features]
+    expiry = trade.contract.expiry_date
+    days = [[day for day in dict.fromkeys(own) if day != expiry] for own in series]
+    known = [market.underlyings[name] for name in trade.contract.underlyings if name in market.underlyings]
+    columns = ("schedule", "barrier", "exercise", "expiry_date")
+    yield from observation_care(days, known, next(filter(None, map(place, columns)), None))

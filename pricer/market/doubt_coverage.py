@@ -11,6 +11,8 @@ from pricer.core.issues import Issue
 from pricer.core.source import Place
 from pricer.market.findings import Locate, error, warning
 from pricer.market.market import Market
+from pricer.market.standing import conversion_pairs, whole_contract
+from pricer.market.trade_names import cell_of, names_of
 
 
 def refused_rates(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
@@ -25,15 +27,28 @@ def doubts(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
     """A warning per item in ``market.doubts`` that the trade is priced from."""
     if not market.doubts:
         return
-    for name in dict.fromkeys(trade.contract.underlyings):
-        here = place(f"underlying:{name}")
+    for name in names_of(trade):
+        here = cell_of(name, place)
         yield from _doubted(market, name, f'underlying "{name}"', here)
         yield from _doubted(market, f"repo:{name}", f'underlying "{name}"', here)
+    yield from doubted_fixings(trade, market, place)
     for pair, column in _rates(trade, market).items():
         yield from _doubted(market, f"fx:{pair}", f"the rate {pair}", place(column) or place("currency"))
     for pair in dict.fromkeys(_volatilities(trade, market)):
         here = place("conversion") or place("currency")
         yield from _doubted(market, f"fx_volatilities:{pair}", f"the volatility of {pair}", here)
+
+
+def doubted_fixings(trade: Trade, market: Market, place: Locate) -> Iterator[Issue]:
+    """Those doubts that are of fixings which the trade looks at, of its underlyings or of pairs that convert them."""
+    if not any(item.startswith("fixings:") for item in market.doubts):
+        return
+    days = [day for day in whole_contract(trade).dates if day <= market.valuation_date]
+    pairs = conversion_pairs(trade, market).values()
+    for name in dict.fromkeys((*trade.contract.underlyings, *pairs, *(pair[3:] + pair[:3] for pair in pairs))):
+        here = place(f"underlying:{name}") or place("conversion")
+        for day in days:
+            yield from _doubted(market, f"fixings:{name}:{day}", f"the fixing of {name} on {day}", here)
 
 
 def _doubted(market: Market, item: str, what: str, here: Place | None) -> Iterator[Issue]:
@@ -66,7 +81,7 @@ def _foreign(trade: Trade, market: Market) -> list[str]:
     """Currencies that the trade's conversion brings into its own."""
     if trade.contract.conversion is None:
         return []
-    known = [market.underlyings[name].currency for name in trade.contract.underlyings if name in market.underlyings]
+    known = [market.underlyings[name].currency for name in names_of(trade) if name in market.underlyings]
     return [currency for currency in dict.fromkeys(known) if currency != trade.currency]
 
 

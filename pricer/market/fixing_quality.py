@@ -7,10 +7,11 @@ from collections.abc import Iterator, Mapping
 from datetime import date
 from itertools import pairwise
 
-from pricer.contracts.fixings import Fixings
 from pricer.core.issues import Issue
 from pricer.market.calendars import is_business_day
 from pricer.market.findings import Locate, did_you_mean, nowhere, percent, warning
+from pricer.market.fx import currencies_of
+from pricer.market.market import Market
 from pricer.market.underlying import Underlying
 
 #: A fixing that moved from the one before by more than this (as a logarithm, per root of a calendar day) is reported.
@@ -21,29 +22,37 @@ PLAUSIBLE_RATE_MOVE = 0.10
 PLAUSIBLE_FACTOR = 3.0
 
 
-def fixing_gates(
-    fixings: Fixings,
-    underlyings: Mapping[str, Underlying],
-    rates: Mapping[str, float],
-    valuation_date: date,
-    place: Locate = nowhere,
-) -> Iterator[Issue]:
-    """Warnings of all fixings; ``rates`` are tonight's exchange rates by pair.
+def fixing_gates(market: Market, place: Locate = nowhere) -> Iterator[tuple[Issue, str]]:
+    """Warnings of all fixings, each with the fixing that it doubts as "fixings:NAME:YYYY-MM-DD", or an empty text.
 
-    ``place`` gives the cell of "fixings:NAME:YYYY-MM-DD", or None.
+    Silent about underlyings and pairs that the market was given but refused: that is told with them.
+    ``place`` gives the cell of a fixing named as above, or None.
     """
-    for name, levels in sorted(fixings.levels.items()):
-        underlying = underlyings.get(name)
+    today = market.valuation_date
+    rates = _tonights_rates(market)
+    for name, levels in sorted(market.fixings.levels.items()):
+        if name in market.rejected or name[3:] + name[:3] in market.rejected:
+            continue
+        underlying = market.underlyings.get(name)
         spot = underlying.spot if underlying is not None else rates.get(name)
-        inverse = rates.get(name[3:] + name[:3]) if spot is None and len(name) == 6 else None
-        spot = 1.0 / inverse if inverse else spot
         if spot is None:
-            yield _unknown(name, min(levels), (*underlyings, *rates), place)
-        yield from _later(name, levels, valuation_date, place)
+            yield _unknown(name, min(levels), (*market.underlyings, *rates), place), ""
+        yield from ((issue, "") for issue in _later(name, levels, today, place))
         if underlying is not None:
-            yield from _closed(underlying, levels, place)
+            yield from ((issue, "") for issue in _closed(underlying, levels, place))
         move = PLAUSIBLE_RATE_MOVE if underlying is None and spot is not None else PLAUSIBLE_MOVE
-        yield from _leaps(name, levels, spot, move, valuation_date, place)
+        yield from _leaps(name, levels, spot, move, today, place)
+
+
+def _tonights_rates(market: Market) -> dict[str, float]:
+    """Tonight's exchange rates: all quoted pairs, and those among the fixings that follow from them."""
+    rates = {first + second: rate for (first, second), rate in market.fx.quotes.items()}
+    for name in market.fixings.levels:
+        try:
+            rates.setdefault(name, market.fx.rate(*currencies_of(name)))
+        except (LookupError, ValueError):  # an underlying, or a pair that the market does not know
+            continue
+    return rates
 
 
 def _unknown(name: str, first: date, known: tuple[str, ...], place: Locate) -> Issue:
@@ -70,20 +79,21 @@ def _later(name: str, levels: Mapping[date, float], valuation_date: date, place:
 
 def _closed(underlying: Underlying, levels: Mapping[date, float], place: Locate) -> Iterator[Issue]:
     name = underlying.underlying_id
-    for day in sorted(levels):
-        if not is_business_day(underlying.calendar, day):
-            yield warning(
-                place(f"fixings:{name}:{day}"),
-                "fixing-on-holiday",
-                f"a fixing of {name} on {day}, not a business day of calendar {underlying.calendar}",
-                "fixings of trading days",
-                "It is used if a trade observes that day; correct the day if it is wrong.",
-            )
+    closed = [day for day in sorted(levels) if not is_business_day(underlying.calendar, day)]
+    if closed:
+        more = f" (and {len(closed) - 1} more days)" if len(closed) > 1 else ""
+        yield warning(
+            place(f"fixings:{name}:{closed[0]}"),
+            "fixing-on-holiday",
+            f"a fixing of {name} on {closed[0]}{more}, not a business day of calendar {underlying.calendar}",
+            "fixings of trading days",
+            "It is used if a trade observes that day; correct the day if it is wrong.",
+        )
 
 
 def _leaps(
     name: str, levels: Mapping[date, float], spot: float | None, move: float, valuation_date: date, place: Locate
-) -> Iterator[Issue]:
+) -> Iterator[tuple[Issue, str]]:
     known = sorted((day, level) for day, level in levels.items() if day <= valuation_date)
     if spot is not None and known:
         known.append((valuation_date, spot))
@@ -92,10 +102,15 @@ def _leaps(
         if abs(math.log(second / first)) > limit:
             is_spot = spot is not None and i == len(known) - 2
             what = f"tonight's price {second:g} of {name}" if is_spot else f"a fixing {second:g} of {name} on {day}"
-            yield warning(
-                place(f"fixings:{name}:{before if is_spot else day}"),
-                "fixing-leaps",
-                f"{what}, {percent(second / first - 1.0, 1)} from the fixing {first:g} of {before}",
-                f"at most {percent(math.exp(limit) - 1.0)} up or {percent(1.0 - math.exp(-limit))} down in that time",
-                "Check unit, day and currency, and whether a split or the like asks for adjusted fixings.",
+            item = f"fixings:{name}:{before if is_spot else day}"
+            yield (
+                warning(
+                    place(item),
+                    "fixing-leaps",
+                    f"{what}, {percent(second / first - 1.0, 1)} from the fixing {first:g} of {before}",
+                    f"at most {percent(math.exp(limit) - 1.0)} up or {percent(1.0 - math.exp(-limit))} down in that "
+                    "time",
+                    "Check unit, day and currency, and whether a split or the like asks for adjusted fixings.",
+                ),
+                item,
             )

@@ -10,6 +10,7 @@ from itertools import combinations
 import numpy as np
 from numpy.typing import NDArray
 
+from pricer.contracts.fixings import Fixings
 from pricer.contracts.option import Conversion
 from pricer.core.issues import Issue
 from pricer.core.source import SourceFile
@@ -54,7 +55,8 @@ class Market:
     "agreements:NETTING_SET" and the funding curve as "funding".
     A rate that stands in ``fx`` and in ``rejected`` contradicts the others: nothing may be converted at it.
     ``doubts`` are warnings about items that are used though they are implausible: of underlyings by their ids,
-    of "repo:ID", "fx:EURUSD" and "fx_volatilities:EURUSD".
+    of "repo:ID", "fx:EURUSD", "fx_volatilities:EURUSD" and "fixings:ID:YYYY-MM-DD".
+    ``fixings`` are the official levels of past observation days, of underlyings and of currency pairs.
     ``quotes`` are those from which curves, hazard rates and correlations were made.
     """
 
@@ -75,6 +77,7 @@ class Market:
     agreements: Mapping[str, Agreement] = field(default_factory=dict)
     quotes: MarketQuotes = field(default_factory=MarketQuotes)
     doubts: Mapping[str, tuple[Issue, ...]] = field(default_factory=dict)
+    fixings: Fixings = field(default_factory=Fixings)
 
     def growth_curve(self, underlying_id: str) -> DiscountCurve:
         """The curve at which the spot grows: the mid of the underlying's repo rates, if it has any, else the

@@ -14,6 +14,7 @@ from pricer.market.curve_quality import curve_gates, repo_gates
 from pricer.market.curves import DiscountCurve
 from pricer.market.dividend_quality import dividend_gates, weekend_ex_dates
 from pricer.market.findings import Locate, nowhere, percent, warning
+from pricer.market.fixing_quality import fixing_gates
 from pricer.market.fx_quality import rate_gates, volatility_triangles
 from pricer.market.level_quality import level_gates
 from pricer.market.local_vol_check import local_vol_gates
@@ -88,6 +89,8 @@ def review(market: Market, repair: Repair | None = None, place: Locate = nowhere
     found.add(volatility_triangles(market, place))
     for item, issue in level_gates(market, found.refused, place):
         found.add([issue], item)
+    for issue, fixing in fixing_gates(market, place):
+        found.add([issue], *filter(None, (fixing,)))
     return found.review()
 
 

@@ -10,7 +10,7 @@ from typing import Any
 import QuantLib as ql  # noqa: N813 - the short name of QuantLib's own examples
 
 from pricer.contracts.observation import Observation
-from pricer.market.calendars import _calendar, _convention, advance, from_quantlib, to_period, to_quantlib
+from pricer.market.calendars import advance, calendar_named, convention_named, from_quantlib, to_period, to_quantlib
 
 
 class Stub(StrEnum):
@@ -57,7 +57,7 @@ def period_dates(start: date, end: date, rule: ScheduleRule) -> tuple[date, ...]
     """
     if end <= start:
         raise ValueError(f"the schedule's end {end} does not lie after its start {start}")
-    calendar, tenor = _calendar(rule.calendar), to_period(rule.frequency)
+    calendar, tenor = calendar_named(rule.calendar), to_period(rule.frequency)
     if tenor.length() < 1:
         raise ValueError(f'a schedule needs a frequency above zero; got "{rule.frequency}"')
     if tenor.units() == ql.Days:
@@ -65,7 +65,7 @@ def period_dates(start: date, end: date, rule: ScheduleRule) -> tuple[date, ...]
         if not days:
             raise ValueError(f"no business day of {rule.calendar} lies between {start} and {end}")
         return _every(days, tenor.length(), rule.stub)
-    convention = _convention(rule.convention)
+    convention = convention_named(rule.convention)
     generated = _generated(start, end, tenor, rule, calendar, convention)
     return tuple(sorted({from_quantlib(day) for day in generated}))
 

@@ -106,7 +106,7 @@ VALUATIONS: tuple[Column, ...] = (
         "checked, under its model, by",
         "Which independent reference under the same model stands beside the value. The status tells whether it "
         "disagrees.",
-        15,
+        18,
     ),
     text_column(
         "method",
@@ -317,7 +317,13 @@ CROSS_CHECK: tuple[Column, ...] = (
     _TRADE,
     _PRODUCT,
     text_column("reference_method", "reference", "The method that the engine is compared with.", 52),
-    text_column("reference_kind", "kind of reference", "Whether it is exact, a bound or an approximation.", 14),
+    text_column(
+        "reference_kind",
+        "kind of reference",
+        "Whether it is exact, a bound, an approximation, or a sample that shares neither draws nor code with the "
+        "engine.",
+        18,
+    ),
     text_column("model", "model", "The model of both values.", 16),
     text_column("currency", "trade currency", "The currency of the amounts.", 9),
     Column(
@@ -352,7 +358,8 @@ CROSS_CHECK: tuple[Column, ...] = (
         "difference_standard_errors",
         "difference (standard errors)",
         Kind.FIXED,
-        "Difference over the engine's standard error; blank where the engine has none.",
+        "Difference over the engine's standard error, or over both errors where the reference is a sample; blank where "
+        "there is none.",
     ),
     Column(
         "tolerance",
@@ -395,7 +402,7 @@ CROSS_CHECK: tuple[Column, ...] = (
         "reference_error",
         "error of reference (trade currency)",
         Kind.AMOUNT,
-        "Bound on the reference's own numerical error.",
+        "Bound on the reference's own numerical error; of an independent sample its standard error.",
         printed=False,
     ),
     text_column("source", "source of reference", "Where the reference's formula was published.", 60, printed=False),

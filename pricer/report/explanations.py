@@ -33,7 +33,8 @@ READING: tuple[tuple[str, str], ...] = (
     (
         "values without sampling",
         "Closed forms and quadratures have a numerical error instead of a sampling error: half the distance between "
-        "lower and upper end. These are added up, without any netting, in a line of their own.",
+        "lower and upper end. These are added up, without any netting, in a line of their own, together with what "
+        "certified bounds leave open beyond the sampling error of the value between them.",
     ),
     ("signs", "The desk's: a positive value is worth having, a positive delta gains when the price rises."),
     ("lots", "Delta over the underlying's lot size, not rounded."),
@@ -63,7 +64,29 @@ READING: tuple[tuple[str, str], ...] = (
         "checked, under its model, by",
         "A cross-check tests the engine under the model it was made for. Most closed forms and bounds are of lognormal "
         "levels: beside a value under local volatility they test the sampling, not that value. The column says which "
-        "reference of the leading model stands beside the value.",
+        "reference of the leading model stands beside the value; in the summary, otherwise means by bounds or by an "
+        "independent sample.",
+    ),
+    (
+        "values that nothing has to check",
+        "Of a trade that has ended only decided amounts are left, which are discounted: no reference stands beside "
+        "them, and they do not count as unchecked.",
+    ),
+    (
+        "probabilities and expected lives",
+        "Under the pricing measure of the leading model: they explain the value, and are no forecast.",
+    ),
+    (
+        "overhedge cost",
+        "Value of what the desk would book for safety less the value shown: jumps of payouts and coupons as spreads on "
+        "the safe side, barriers and call triggers moved; where the safe direction is not known the worse one counts. "
+        "Common practice; it is not inside the value, and whether it may be is for the local rules to decide. Both are "
+        "sampled, so a cost of the size of the standard error says little.",
+    ),
+    (
+        "events",
+        "Distances are from today's level of what a trigger compares to its level; standard deviations use today's "
+        "volatilities and correlations without drift, to first order. They rank triggers and are no probabilities.",
     ),
     ("1 bp of notional", "0.01 % of the trade's notional."),
     (
@@ -81,6 +104,8 @@ READING: tuple[tuple[str, str], ...] = (
 INTERVALS: dict[Interval, str] = {
     Interval.EXACT: "Closed form or quadrature; the ends are the value less and plus its numerical error.",
     Interval.BOUNDS: "Bounds computed without sampling, both nearer than the ends of the sampling interval.",
+    Interval.CERTIFIED: "A lower and an upper bound of an early exercise, both sampled, each moved out by its own 99 % "
+    "error: no exercise rule is worth less than the one below, and none can be worth more than the one above.",
     Interval.SAMPLING: "Two-sided 99 % interval by Student's quantile, cut at a bound if one is nearer.",
 }
 
@@ -95,9 +120,10 @@ STATUSES: dict[Status, str] = {
 }
 
 VERDICTS: dict[str, str] = {
-    Verdict.DIFFERS: "Engine and exact reference differ by more than the tolerance: find out why before using either.",
+    Verdict.DIFFERS: "Engine and reference, exact or an independent sample, differ by more than the tolerance: find "
+    "out why before using either.",
     Verdict.OUTSIDE_BOUND: "The engine's value lies beyond a bound by more than the tolerance: find out why.",
-    Verdict.AGREES: "Engine and exact reference agree within the tolerance.",
+    Verdict.AGREES: "Engine and reference, exact or an independent sample, agree within the tolerance.",
     NO_SAMPLING: "Verdict “agrees” where the engine left nothing to sampling either: no test of the sampling.",
     Verdict.WITHIN_BOUND: "The engine's value respects the bound within the tolerance.",
     Verdict.FAR: "An approximation is far from the engine's value; that by itself says nothing against the engine.",

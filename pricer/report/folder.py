@@ -27,6 +27,7 @@ _AS_CSV = (
     *("problems", "not_priced", "refusal_causes"),
     *("market_problems", "surfaces", "violations", "calibration", "curves", "forwards"),
     *("credit", "funding", "agreements"),
+    *("events", "life", "contracts", "contract_dates"),
 )
 
 

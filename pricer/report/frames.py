@@ -12,8 +12,10 @@ from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 from pricer.contracts.book import Refusal
+from pricer.contracts.life_cycle import Status as Life
 from pricer.core.issues import Issue, Severity
 from pricer.report import tidy
+from pricer.report.contract_frames import contract_tables, percent
 from pricer.report.market_frames import market_tables
 from pricer.report.model_differences import model_difference_bp
 from pricer.report.rates import Rates
@@ -40,7 +42,8 @@ def tables(outcome: Outcome) -> Mapping[str, Frame]:
 
     ``valuations`` has the trades that were not priced too, last, with blank numbers; ``cross_check`` and
     ``problems`` begin with what needs attention; ``seconds`` is the time each trade took. The market's tables are
-    those of :func:`pricer.report.market_frames.market_tables`.
+    those of :func:`pricer.report.market_frames.market_tables`, those of contracts with a past and of what is due those
+    of :func:`pricer.report.contract_frames.contract_tables`.
     """
     return {
         "valuations": valuations(outcome),
@@ -58,6 +61,7 @@ def tables(outcome: Outcome) -> Mapping[str, Frame]:
         ),
         "seconds": seconds(outcome),
         **market_tables(outcome, _all_issues(outcome)),
+        **contract_tables(outcome),
     }
 
 
@@ -70,6 +74,12 @@ def valuations(outcome: Outcome) -> Frame:
 
     def number(name: str) -> list[Any]:
         return [None if _status(item) is Status.NOT_PRICED else getattr(item, name) for item in items]
+
+    def while_alive(name: str) -> list[Any]:
+        return [
+            x if getattr(item, "life_status", "") == Life.LIVE else None
+            for item, x in zip(items, number(name), strict=True)
+        ]
 
     rates, checks = Rates.from_outcome(outcome), checked(outcome)
     currencies, differences = known("currency"), number("model_difference")
@@ -115,10 +125,17 @@ def valuations(outcome: Outcome) -> Frame:
             "randomisations": number("randomisations"),
             "degrees_of_freedom": number("degrees_of_freedom"),
             "time_steps": number("time_steps"),
+            "life_status": number("life_status"),
+            "expected_life": while_alive("expected_life"),
+            "expected_life_standard_error": while_alive("expected_life_standard_error"),
+            "call_probability_percent": [percent(x) for x in number("call_probability")],
+            "knock_probability_percent": [percent(x) for x in number("knock_probability")],
+            "overhedge_cost": number("overhedge_cost"),
+            "reporting_overhedge_cost": reporting(number("overhedge_cost")),
             "ending": [reason(item) if isinstance(item, Refusal) else item.ending for item in items],
         },
         text="trade_id product currency interval method status checked reporting_currency model counterparty strategy "
-        "netting_set ending",
+        "netting_set life_status ending",
         whole="paths randomisations degrees_of_freedom time_steps",
         dates="expiry_date",
     )

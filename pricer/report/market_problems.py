@@ -10,7 +10,19 @@ from pricer.core.source import SourceFile
 
 _GRAVEST_FIRST = (Severity.FATAL, Severity.ERROR, Severity.WARNING)
 #: The sheets of a book; what is found on another sheet was found in the market.
-BOOK_SHEETS = frozenset({"trades", "constituents"})
+BOOK_SHEETS = frozenset(
+    {
+        "trades",
+        "constituents",
+        "schedules",
+        "schedule_rules",
+        "barriers",
+        "calls",
+        "coupons",
+        "exercises",
+        "writers",
+    }
+)
 
 
 @dataclass(frozen=True, slots=True)

@@ -17,6 +17,7 @@ MARKET_CODES = frozenset(
         *("no-correlations", "missing-correlation", "no-fx-correlation"),
         *("no-fx-rate", "no-fx-route", "no-fx-volatility"),
         *("no-standard-curve", "no-collateral-curve", "unknown-currency"),
+        *("missing-fixing", "no-writer-credit"),
     }
 )
 

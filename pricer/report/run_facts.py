@@ -10,7 +10,7 @@ from typing import Any
 
 from pricer.core.issues import Severity
 from pricer.report.explanations import CAUTION
-from pricer.report.reference_coverage import checked_total
+from pricer.report.reference_coverage import Checked, checked_total
 from pricer.report.surface_fits import Reach, all_quotes, reach, smiles
 from pricer.report.text import CSV_RULE, clean
 from pricer.report.totals import book_total
@@ -57,7 +57,7 @@ def run_facts(outcome: Outcome, severities: Counter[str]) -> dict[str, Any]:
             "surfaces_failing": sum(not surface.passes for surface in surfaces),
             "quotes": len(quotes),
             "quotes_beyond_target": sum(reach(quote) is Reach.BEYOND for quote in quotes),
-            "leading_values_checked": {kind.value: count for kind, count in references.by.items()},
+            "leading_values_checked": {kind.value: references.by.get(kind, 0) for kind in Checked},
             "cross_checks": {verdict.value: verdicts[verdict] for verdict in Verdict},
             "cross_checks_without_sampling": sum(map(without_sampling, outcome.cross_checks)),
             "problems": {severity.value: severities[severity.value] for severity in Severity},

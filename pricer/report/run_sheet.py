@@ -8,9 +8,11 @@ from collections.abc import Iterable, Mapping
 from typing import TYPE_CHECKING
 
 from pricer.report import columns as c
+from pricer.report import contract_columns as k
 from pricer.report import market_columns as m
 from pricer.report.cells import put_text, workbook_of
 from pricer.report.explanations import CAUTION, INTERVALS, READING, SEVERITIES, STATUSES, VERDICTS
+from pricer.report.known_sums import OF_DELTA, OF_VEGA
 from pricer.report.page import page_height, set_up_page
 from pricer.report.styles import body_style
 from pricer.report.totals import priced
@@ -27,12 +29,16 @@ _TITLE_HEIGHT = 16.0
 _BELOW = "Below, on screen: the methods with their sources, and the meaning of every column."
 _Section = tuple[str, list[tuple[str, str, str]]]  # title; lines of three cells, the third continues the second
 _SHEETS: Mapping[str, tuple[c.Column, ...]] = {
-    "Valuations": c.VALUATIONS,
+    "Events": k.EVENTS,
+    "Valuations": (*c.VALUATIONS, *k.OF_CONTRACTS, *k.MORE_OF_CONTRACTS),
     "Deltas by trade": c.DELTAS,
-    "Deltas by underlying": c.UNDERLYING_DELTAS,
+    "Deltas by underlying": (*c.UNDERLYING_DELTAS, *OF_DELTA, *OF_VEGA),
     "Cross-check": c.CROSS_CHECK,
     "Why not priced": c.REFUSAL_CAUSES,
     "Problems": c.PROBLEMS,
+    "Life": k.LIFE,
+    "Contracts": k.CONTRACTS,
+    "the plain table contract_dates": k.CONTRACT_DATES,
     "Market: problems": m.MARKET_PROBLEMS,
     "Market: what is lacking": m.LACKING,
     "Market: surfaces": m.SURFACES,

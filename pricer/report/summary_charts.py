@@ -43,7 +43,7 @@ def add_bars(
 
 
 def add_scatter(sheet: Worksheet, area: Area, source: Worksheet, checks: pandas.DataFrame) -> None:
-    """Differences from exact references in units of their tolerance, over the reference value, by model.
+    """Differences from exact and sampled references in units of their tolerance, over the reference value, by model.
 
     ``source`` is the sheet that shows ``checks``; its rows may be sorted and filtered: the chart follows.
     """
@@ -53,7 +53,7 @@ def add_scatter(sheet: Worksheet, area: Area, source: Worksheet, checks: pandas.
     drawn = checks[checks[clouds].notna().any(axis=1)]
     percents = drawn["reference_percent"].dropna()
     if percents.empty:
-        put_text(sheet, area.row, area.column, "No exact reference could be set beside the engine.", "note")
+        put_text(sheet, area.row, area.column, "No exact or sampled reference could be set beside the engine.", "note")
         return
 
     def column(name: str) -> Reference:
@@ -61,7 +61,7 @@ def add_scatter(sheet: Worksheet, area: Area, source: Worksheet, checks: pandas.
         return Reference(source, min_col=number, min_row=HEADING_ROW + 1, max_row=HEADING_ROW + len(checks))
 
     chart = scatter_chart(
-        "engine less exact reference",
+        "engine less reference",
         "reference value (% of notional)",
         "difference (tolerances)",
         x=column("reference_percent"),

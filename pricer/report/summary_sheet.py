@@ -20,6 +20,7 @@ from pricer.report.reference_coverage import checked_total
 from pricer.report.refusal_causes import refusal_causes
 from pricer.report.styles import Mark, body_style, decimals_for
 from pricer.report.summary_charts import add_bars, add_scatter
+from pricer.report.summary_events import add_events
 from pricer.report.summary_tables import (
     checked_table,
     group_table,
@@ -52,6 +53,7 @@ def add_summary_sheet(workbook: Workbook, outcome: Outcome, frames: Mapping[str,
     _heading(canvas, outcome)
     _key_figures(canvas, outcome, whole, frames["problems"])
     _not_priced(canvas, outcome)
+    add_events(canvas, outcome)
     chart_areas = _chart_areas(canvas, outcome)
     by = {grouping: group_table(outcome, whole, grouping) for grouping in _GROUPINGS}
     underlyings = underlying_table(outcome)
@@ -85,7 +87,7 @@ def _chart_areas(canvas: Canvas, outcome: Outcome) -> list[Area]:
     row = canvas.take_rows(n_rows + 2)
     titles = ["Value by strategy", "Cash delta by underlying"]
     if outcome.cross_checks:
-        titles.append("Engine against exact references")
+        titles.append("Engine against exact and sampled references")
     places = THIRDS if len(titles) == len(THIRDS) else HALVES
     for title, (column, n_columns) in zip(titles, places, strict=True):
         canvas.section(row, column, title, n_columns)
@@ -137,7 +139,7 @@ def _key_figures(canvas: Canvas, outcome: Outcome, whole: BookTotal, problems: p
         ("priced, disputed by a cross-check", total.disputed, True),
         ("priced from a failing volatility surface", total.failing_surface, True),
         ("not priced, left out of every total", total.not_priced, True),
-        (f"values beside an exact reference of their model, of {references.trades:,}", references.checked, False),
+        (f"values beside an exact or sampled reference, of {references.trades:,}", references.independent, False),
         (f"cross-checks that disagree, of {len(outcome.cross_checks):,} made", flagged, True),
         (f"volatility surfaces that fail, of {len(surfaces):,}", failing, True),
         ("problems found (number)", sum(severities), True),

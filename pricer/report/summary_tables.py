@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 
 from pricer.report.columns import Kind
@@ -17,8 +18,8 @@ from pricer.report.top import (
     lines_of_underlyings,
     lines_of_verdicts,
 )
-from pricer.report.totals import BookTotal, group_totals
-from pricer.report.underlying_totals import underlying_totals
+from pricer.report.totals import BookTotal, group_totals, priced
+from pricer.report.underlying_totals import known_totals, underlying_totals
 from pricer.report.verdicts import by_model
 from pricer.run.outcome import CrossCheck, Outcome
 
@@ -53,10 +54,12 @@ def group_table(outcome: Outcome, whole: BookTotal, grouping: str) -> BlockTable
 
 
 def underlying_table(outcome: Outcome) -> BlockTable:
-    """Delta by underlying, largest cash delta first."""
-    currency = outcome.facts.reporting_currency
+    """Delta by underlying, largest cash delta first; where trades lack one, of the others, and the title says so."""
+    currency, totals = outcome.facts.reporting_currency, underlying_totals(outcome)
+    lacking = sum(any(math.isnan(d.delta) for d in v.deltas) for v in priced(outcome))
+    without = f", without {lacking:,} trade{'s' if lacking > 1 else ''} of unknown delta" if lacking else ""
     return BlockTable(
-        title="Cash delta by underlying",
+        title=f"Cash delta by underlying{without}",
         headings=(
             "underlying",
             "trades (number)",
@@ -66,7 +69,7 @@ def underlying_table(outcome: Outcome) -> BlockTable:
             f"standard error ({currency})",
         ),
         kinds=(Kind.COUNT, Kind.FIXED, Kind.AMOUNT, Kind.AMOUNT, Kind.AMOUNT),
-        lines=lines_of_underlyings(underlying_totals(outcome)),
+        lines=lines_of_underlyings(known_totals(totals) if lacking else totals),
         empty="No priced trade has sensitivities.",
     )
 
@@ -79,7 +82,7 @@ def checked_table(outcome: Outcome) -> BlockTable:
         headings=(
             "model",
             "exactly (number)",
-            "by bounds (number)",
+            "otherwise (number)",
             "by no reference (number)",
             f"value ({currency})",
             f"of it unchecked ({currency})",

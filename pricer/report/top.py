@@ -83,7 +83,8 @@ def lines_of_underlyings(totals: Sequence[UnderlyingTotal]) -> list[Line]:
             cash,
             items[0].reporting_cash_delta_standard_error if one else math.nan,
         )
-        return Line(name, numbers, Mark.LOOK if math.isnan(cash) and mark is Mark.NONE else mark)
+        is_partial = math.isnan(cash) or any(t.trades_without_delta for t in items)
+        return Line(name, numbers, Mark.LOOK if is_partial and mark is Mark.NONE else mark)
 
     largest, rest = _split(totals, SHOWN)
     lines = [line(item.underlying, [item]) for item in largest]
@@ -93,11 +94,24 @@ def lines_of_underlyings(totals: Sequence[UnderlyingTotal]) -> list[Line]:
 
 
 def lines_of_checked(totals: Sequence[CheckedTotal]) -> list[Line]:
-    """Values checked exactly, by bounds and by nothing, value, and that of the unchecked; the last is the total."""
+    """Values checked exactly, by bounds or a sample, and by nothing, value, and that of the unchecked.
+
+    The last line is the total. Trades that have ended are in the values alone: nothing has to check them.
+    """
+
+    def number(item: CheckedTotal, *kinds: Checked) -> int:
+        return sum(item.by.get(kind, 0) for kind in kinds)
+
     return [
         Line(
             item.model,
-            (*(item.by[kind] for kind in Checked), item.value, item.unchecked_value),
+            (
+                number(item, Checked.EXACT),
+                number(item, Checked.BOUNDS, Checked.SAMPLE),
+                number(item, Checked.NOTHING),
+                item.value,
+                item.unchecked_value,
+            ),
             Mark.TOTAL if item is totals[-1] else Mark.NONE,
         )
         for item in totals

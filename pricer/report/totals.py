@@ -10,7 +10,7 @@ from pricer.contracts.book import Refusal
 from pricer.engines.selector import COVERAGE, sampling_quantile
 from pricer.report.rates import Rates
 from pricer.report.sums import pooled_degrees_of_freedom, quadrature, total
-from pricer.run.outcome import Outcome, Status, Valuation
+from pricer.run.outcome import Interval, Outcome, Status, Valuation
 
 
 @dataclass(frozen=True, slots=True)
@@ -46,7 +46,8 @@ class BookTotal:
     """The headline, in the reporting currency.
 
     ``lower`` and ``upper`` are the 99 % sampling interval; ``unsampled_error`` adds the half-widths of the values
-    that have no sampling error; ``unpaid_premium`` is already inside the value.
+    that have no sampling error, and what certified bounds leave open beyond it; ``unpaid_premium`` is already inside
+    the value.
     """
 
     total: Total
@@ -93,11 +94,19 @@ def book_total(outcome: Outcome) -> BookTotal:
         total=whole,
         lower=whole.value - reach,
         upper=whole.value + reach,
-        unsampled_error=total(
-            0.0 if v.standard_error else rates.reporting((v.upper - v.lower) / 2.0, v.currency) for v in valuations
-        ),
+        unsampled_error=total(rates.reporting(_unsampled_error(v), v.currency) for v in valuations),
         unpaid_premium=total(rates.reporting(v.unpaid_premium, v.currency) for v in valuations),
     )
+
+
+def _unsampled_error(v: Valuation) -> float:
+    """The part of the half-width of the value's interval that its standard error does not cover."""
+    half = (v.upper - v.lower) / 2.0
+    if not v.standard_error:
+        return half
+    if v.interval is not Interval.CERTIFIED:
+        return 0.0
+    return max(0.0, half - sampling_quantile(v.degrees_of_freedom, 1.0 - COVERAGE) * v.standard_error)
 
 
 def group_totals(outcome: Outcome, grouping: str) -> list[Total]:

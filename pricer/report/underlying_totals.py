@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 from math import isfinite
 
 from pricer.report.rates import Rates
@@ -19,7 +20,7 @@ class UnderlyingTotal:
     ``delta`` in shares, ``lots`` in lots, ``cash_delta`` in the underlying's currency, ``gamma`` in shares per unit
     of currency of its price over the trades that have one, ``reporting_vega_per_vol_point``
     in reporting currency. What cannot be formed from the trades' numbers or the outcome's facts is NaN: a delta that
-    one trade lacks makes the book's unknown, and the counts of such trades say why.
+    one trade lacks makes the book's unknown, and the counts of such trades say why; the ``known`` sums leave them out.
     """
 
     underlying: str
@@ -40,6 +41,9 @@ class UnderlyingTotal:
     reporting_vega_per_vol_point_standard_error: float
     trades_without_delta: int
     trades_without_vega: int
+    known_delta: float
+    known_reporting_cash_delta: float
+    known_reporting_vega_per_vol_point: float
 
 
 def underlying_totals(outcome: Outcome) -> list[UnderlyingTotal]:
@@ -52,6 +56,20 @@ def underlying_totals(outcome: Outcome) -> list[UnderlyingTotal]:
     facts = {u.underlying: u for u in outcome.underlyings}
     totals = [_underlying_total(name, facts.get(name), pairs, rates) for name, pairs in members.items()]
     return sorted(totals, key=_largest_first)
+
+
+def known_totals(totals: Sequence[UnderlyingTotal]) -> list[UnderlyingTotal]:
+    """The totals with deltas summed over the trades that have one, largest first; partial, so without errors."""
+    known = [
+        replace(
+            item,
+            delta=item.known_delta,
+            reporting_cash_delta=item.known_reporting_cash_delta,
+            reporting_cash_delta_standard_error=math.nan,
+        )
+        for item in totals
+    ]
+    return sorted(known, key=_largest_first)
 
 
 def _largest_first(item: UnderlyingTotal) -> tuple[bool, float, str]:
@@ -69,6 +87,7 @@ def _underlying_total(
     lot_size = facts.lot_size if facts else math.nan
     delta = total(d.delta for d in deltas)
     error = quadrature(d.standard_error for d in deltas)
+    known = total(d.delta for d in deltas if isfinite(d.delta))
     return UnderlyingTotal(
         underlying=name,
         currency=facts.currency if facts else "",
@@ -90,4 +109,9 @@ def _underlying_total(
         ),
         trades_without_delta=sum(not isfinite(d.delta) for d in deltas),
         trades_without_vega=sum(not isfinite(d.vega) for d in deltas),
+        known_delta=known,
+        known_reporting_cash_delta=known * spot * to_reporting,
+        known_reporting_vega_per_vol_point=total(
+            rates.reporting(d.vega, v.currency) for v, d in pairs if isfinite(d.vega)
+        ),
     )

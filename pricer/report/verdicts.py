@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
+from pricer.engines.problem import ReferenceKind
 from pricer.run.outcome import CrossCheck, Model, Verdict
 
 #: What a reader should see first comes first; an approximation says least about the engine.
@@ -28,7 +29,8 @@ def by_model(checks: Sequence[CrossCheck]) -> list[tuple[Model, list[CrossCheck]
 
 def without_sampling(check: CrossCheck) -> bool:
     """Whether two exact values agree: nothing was sampled that the reference could have tested."""
-    return check.verdict is Verdict.AGREES and check.engine_standard_error == 0.0
+    sampled = check.reference_kind == ReferenceKind.SAMPLE
+    return check.verdict is Verdict.AGREES and check.engine_standard_error == 0.0 and not sampled
 
 
 def by_verdict(checks: Sequence[CrossCheck]) -> list[tuple[str, Verdict, list[CrossCheck]]]:

@@ -11,8 +11,11 @@ from pricer.core.issues import Severity
 from pricer.engines.cross_check import ALARMS
 from pricer.report import columns
 from pricer.report.bulk import Bulk, save_with_bulk
+from pricer.report.contract_columns import valuations_columns
+from pricer.report.contract_sheets import contract_table_sheets, events_table
 from pricer.report.fitting import Table
 from pricer.report.frames import short_reason, without_value
+from pricer.report.known_sums import underlying_columns
 from pricer.report.market_sheet import add_market_sheet, add_terms_sheet, market_table_sheets
 from pricer.report.run_sheet import add_run_sheet
 from pricer.report.smile_sheet import add_smile_sheet
@@ -48,6 +51,7 @@ def write_workbook(outcome: Outcome, frames: Mapping[str, pandas.DataFrame], tar
                 bulks[table.title] = bulk
 
     add_tables(_tables(outcome, frames))
+    add_tables(contract_table_sheets(outcome, frames))
     add_market_sheet(workbook, outcome, frames)
     calibration, *others = market_table_sheets(outcome, frames)
     add_tables([calibration])
@@ -71,11 +75,12 @@ def _tables(outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> list[Ta
     valuations.loc[missing, "method"] = [short_reason(item) for item in without_value(outcome)]
     checks, causes, problems = frames["cross_check"], frames["refusal_causes"], frames["problems"]
     return [
+        events_table(outcome, frames["events"]),
         Table(
             "Valuations",
             "Valuations",
             _valuations_note(whole),
-            columns.VALUATIONS,
+            valuations_columns(valuations),
             valuations,
             [_STATUS_MARKS.get(status, Mark.NONE) for status in valuations["status"]],
             empty="The book has no trades.",
@@ -94,8 +99,8 @@ def _tables(outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> list[Ta
             "Deltas by underlying",
             "Deltas by underlying",
             "Sums over priced trades, largest cash delta first; errors in quadrature, none for the total: see Run. "
-            "A marked row lacks a sum.",
-            columns.UNDERLYING_DELTAS,
+            "A marked row lacks a sum, because a trade lacks the number.",
+            underlying_columns(frames["underlying_deltas"]),
             frames["underlying_deltas"],
             _marks_of_gaps(frames["underlying_deltas"], *_ADDABLE),
             empty="No priced trade has sensitivities.",
@@ -132,6 +137,7 @@ def _tables(outcome: Outcome, frames: Mapping[str, pandas.DataFrame]) -> list[Ta
 
 
 _ADDABLE = ("reporting_cash_delta", "reporting_vega_per_vol_point")  # across underlyings
+_KNOWN = ("known_reporting_cash_delta", "known_reporting_vega_per_vol_point")  # these too
 _STATUS_MARKS = {
     Status.DISPUTED: Mark.LOOK,
     Status.FAILING_SURFACE: Mark.LOOK,
@@ -173,7 +179,7 @@ def _cross_check_note(outcome: Outcome) -> str:
 
 
 def _with_clouds(checks: pandas.DataFrame) -> pandas.DataFrame:
-    """The table with the differences from exact references in a column for each cloud of the chart."""
+    """The table with the differences from exact and sampled references in a column for each cloud of the chart."""
     models, verdicts, differences = checks["model"], checks["verdict"], checks["difference_tolerances"]
     agree = verdicts == Verdict.AGREES
     return checks.assign(
@@ -187,6 +193,6 @@ def _underlying_total(frame: pandas.DataFrame) -> dict[str, object] | None:
     """Sums of amounts in the reporting currency; without errors, as underlyings of one trade share their draws."""
     if frame.empty:
         return None
-    amounts = {name: total(frame[name].tolist()) for name in _ADDABLE}
+    amounts = {name: total(frame[name].tolist()) for name in (*_ADDABLE, *_KNOWN)}
     numbers = {name: None if math.isnan(number) else number for name, number in amounts.items()}
     return {"underlying": "total", **numbers}

@@ -7,7 +7,8 @@ from datetime import date, datetime
 from enum import StrEnum
 
 from pricer.contracts.book import Model as Model
-from pricer.contracts.book import Refusal
+from pricer.contracts.book import Refusal, Trade
+from pricer.contracts.life_cycle import AsOf
 from pricer.core.issues import Issue
 from pricer.core.source import SourceFile
 from pricer.engines.cross_check import Verdict as Verdict
@@ -43,6 +44,16 @@ class Delta:
     vega_standard_error: float
     spot: float
     method: str
+
+
+@dataclass(frozen=True, slots=True)
+class ChanceRow:
+    """The probability, under the pricing measure, that a contract ends on ``day`` in the way that ``what`` says."""
+
+    day: date
+    what: str
+    probability: float
+    standard_error: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -104,6 +115,53 @@ class Valuation:
     status: Status
     ending: str  # in words: how sampling ended, that of the deltas included
     deltas: tuple[Delta, ...]
+    life_status: str = "live"  # or "ended, to be paid", "settled"
+    expected_life: float | None = None  # years until it ends; None for European options
+    expected_life_standard_error: float | None = None
+    call_probability: float | None = None  # that it ends before expiry: called, exercised or knocked out with a rebate
+    knock_probability: float | None = None  # that its barrier is hit before it ends, 1 if it has been; None without one
+    chances: tuple[ChanceRow, ...] = ()
+    overhedge_cost: float | None = None  # 0 or less, not in value; None if no overhedge was asked for
+
+
+@dataclass(frozen=True, slots=True)
+class ContractFacts:
+    """A trade that is more than a European option, and where it stands: what its sheet is written from.
+
+    ``prices`` : days looked at so far, each with the underlyings' prices, converted where the contract has them so;
+    NaN where one is missing.
+    """
+
+    trade: Trade
+    as_of: AsOf
+    prices: tuple[tuple[date, tuple[float, ...]], ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class EventRow:
+    """Something that happens, or may happen, to a trade on ``day``; a daily series is one row, until ``last_day``.
+
+    ``amount`` is of the position, in the trade's currency; None where it depends on a level. ``level`` is a trigger's,
+    ``current`` what it compares with today, ``distance`` the move that remains as a fraction of ``current``,
+    ``deviations`` the same in standard deviations until then; ``met_today`` whether today's levels would meet it. All
+    four are None where there is no trigger.
+    """
+
+    trade_id: str
+    product: str
+    day: date
+    what: str
+    underlyings: tuple[str, ...] = ()
+    counterparty: str = ""
+    last_day: date | None = None
+    amount: float | None = None
+    payment_date: date | None = None
+    level: float | None = None
+    current: float | None = None
+    distance: float | None = None
+    deviations: float | None = None
+    met_today: bool | None = None
+    currency: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -264,6 +322,8 @@ class Outcome:
     issues: tuple[Issue, ...]
     underlyings: tuple[UnderlyingFacts, ...]
     market: MarketFacts = MarketFacts()
+    contracts: tuple[ContractFacts, ...] = ()  # in book order
+    events: tuple[EventRow, ...] = ()  # of the days ahead, by day
 
     @property
     def exit_status(self) -> int:

@@ -3,17 +3,15 @@
 from __future__ import annotations
 
 import math
-
-import numpy as np
-from numpy.typing import NDArray
+from typing import Any
 
 from pricer.contracts.book import Trade
+from pricer.engines.appraisal import Appraisal
 from pricer.engines.cross_check import compare
-from pricer.engines.european import Appraisal
 from pricer.engines.problem import ReferenceKind
 from pricer.market.coverage import failing_surfaces
 from pricer.market.market import Market
-from pricer.run.outcome import CrossCheck, Delta, Status, Valuation
+from pricer.run.outcome import ChanceRow, CrossCheck, Delta, Status, Valuation
 
 #: A lower bound of one unit is an upper bound of a short position.
 _MIRRORED = {
@@ -42,7 +40,7 @@ def valuation(appraisal: Appraisal, market: Market, *, disputed: bool = False, c
         netting_set=trade.netting_set,
         strategy=trade.strategy,
         expiry_date=trade.contract.expiry_date,
-        notional=size * appraisal.terms.unit_notional,
+        notional=size * appraisal.unit_notional,
         value=value,
         standard_error=size * lead.standard_error,
         lower=low + premium,
@@ -65,10 +63,29 @@ def valuation(appraisal: Appraisal, market: Market, *, disputed: bool = False, c
         status=_status(appraisal, market, disputed=disputed),
         ending=drawn.ending,
         deltas=deltas(appraisal, market),
+        life_status=str(appraisal.as_of.status),
+        overhedge_cost=None if appraisal.overhedge_cost is None else size * appraisal.overhedge_cost,
+        **_life(appraisal),
     )
 
 
+def _life(appraisal: Appraisal) -> dict[str, Any]:
+    """The fields of a valuation that say how long the contract may live."""
+    life = appraisal.leading.life
+    if life is None:
+        return {}
+    return {
+        "expected_life": life.expected_life,
+        "expected_life_standard_error": life.expected_life_error,
+        "call_probability": math.fsum(chance.probability for chance in life.ends) if life.ends else None,
+        "knock_probability": life.knocked,
+        "chances": tuple(ChanceRow(c.day, c.what, c.probability, c.standard_error) for c in life.ends),
+    }
+
+
 def _status(appraisal: Appraisal, market: Market, *, disputed: bool) -> Status:
+    if not appraisal.is_live:
+        return Status.PRICED
     if failing_surfaces(appraisal.trade, market):
         return Status.FAILING_SURFACE
     if disputed:
@@ -100,55 +117,27 @@ def unpaid_premium(trade: Trade, market: Market) -> float:
 
 
 def deltas(appraisal: Appraisal, market: Market) -> tuple[Delta, ...]:
-    """Shares, gamma and vega per underlying, from the sensitivities of one unit.
-
-    The random part of a forward is proportional to that of the spot, so a derivative with respect to its
-    logarithm, divided by the latter in the trade's currency, is the number of shares. A quanto's
-    forward moves with the volatility, which its vega includes.
-    """
-    trade, terms, drawn = appraisal.trade, appraisal.terms, appraisal.leading.sample
+    """Shares, gamma and vega of the position per underlying; none of a trade that has ended."""
+    if not appraisal.is_live:
+        return ()
+    trade, ratios = appraisal.trade, appraisal.leading.ratios
     position, size = trade.position, abs(trade.position)
-    names = trade.contract.underlyings
-    shares = terms.random_spots * terms.rates
-    vegas, vega_errors = _vegas(appraisal)
-    rows = []
-    for i, underlying in enumerate(names):
-        gamma, gamma_error = None, None
-        if drawn.log_gammas is not None and drawn.log_gamma_errors is not None:
-            base = float(terms.random_spots[i] * shares[i])
-            gamma = position * float(drawn.log_gammas[i]) / base
-            gamma_error = size * float(drawn.log_gamma_errors[i]) / base
-        rows.append(
-            Delta(
-                underlying=underlying,
-                delta=position * float(drawn.log_deltas[i] / shares[i]),
-                standard_error=size * float(drawn.log_delta_errors[i] / shares[i]),
-                gamma=gamma,
-                gamma_standard_error=gamma_error,
-                vega=position * float(vegas[i]),
-                vega_standard_error=size * float(vega_errors[i]),
-                spot=market.underlyings[underlying].spot,
-                method=appraisal.leading.ratios,
-            )
+    known = ratios.gammas is not None and ratios.gamma_errors is not None
+    gammas, gamma_errors = (ratios.gammas, ratios.gamma_errors) if known else (None, None)
+    return tuple(
+        Delta(
+            underlying=underlying,
+            delta=position * float(ratios.deltas[i]),
+            standard_error=size * float(ratios.delta_errors[i]),
+            gamma=None if gammas is None else position * float(gammas[i]),
+            gamma_standard_error=None if gamma_errors is None else size * float(gamma_errors[i]),
+            vega=position * float(ratios.vegas[i]),
+            vega_standard_error=size * float(ratios.vega_errors[i]),
+            spot=market.underlyings[underlying].spot,
+            method=ratios.method,
         )
-    return tuple(rows)
-
-
-def _vegas(appraisal: Appraisal) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-    """Of one unit per volatility point of each price at its forward, with errors: two (n,).
-
-    NaN for composites of several underlyings: their correlations move with their volatilities.
-    """
-    terms, drawn = appraisal.terms, appraisal.leading.sample
-    per_point = 0.01 * math.sqrt(terms.years) * terms.vega_slopes
-    if terms.is_composite:
-        missing = np.full(len(per_point), np.nan)
-        return missing, missing
-    deviations = terms.law.deviations
-    drifts = terms.drifts / np.where(deviations > 0.0, deviations, 1.0)
-    vegas = drawn.deviation_vegas + drifts * drawn.log_deltas
-    errors = np.hypot(drawn.deviation_vega_errors, drifts * drawn.log_delta_errors)
-    return per_point * vegas, per_point * errors
+        for i, underlying in enumerate(trade.contract.underlyings)
+    )
 
 
 def cross_checks(appraisal: Appraisal, tests_in_book: int) -> tuple[CrossCheck, ...]:
@@ -161,7 +150,7 @@ def cross_checks(appraisal: Appraisal, tests_in_book: int) -> tuple[CrossCheck, 
         found = compare(
             drawn,
             reference,
-            unit_notional=appraisal.terms.unit_notional,
+            unit_notional=appraisal.unit_notional,
             asked=appraisal.tolerance,
             tests_in_book=tests_in_book,
         )
@@ -177,7 +166,7 @@ def cross_checks(appraisal: Appraisal, tests_in_book: int) -> tuple[CrossCheck, 
                 reference_value=position * reference.value,
                 reference_error=size * reference.error,
                 difference=position * found.difference,
-                difference_bp=side * found.difference / appraisal.terms.unit_notional * 1e4,
+                difference_bp=side * found.difference / appraisal.unit_notional * 1e4,
                 difference_standard_errors=None if found.standard_errors is None else side * found.standard_errors,
                 tolerance=size * found.tolerance,
                 verdict=found.verdict,

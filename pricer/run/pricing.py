@@ -11,15 +11,19 @@ from functools import partial
 from importlib.metadata import version
 
 from pricer.contracts.book import Book, Model, Refusal, Trade
+from pricer.contracts.contract import Contract
 from pricer.core.issues import Issue, Severity
 from pricer.core.progress import Progress, Silent
+from pricer.engines.appraisal import Appraisal, AppraisalSettings, appraise
 from pricer.engines.calibration import Calibration, calibrate
 from pricer.engines.cross_check import ALARMS, APPROXIMATION_BP, FALSE_ALARM, IMMATERIAL, is_test
-from pricer.engines.european import Appraisal, AppraisalSettings, appraise
+from pricer.engines.not_covered import NotCovered
 from pricer.market.checked_surface import CheckedSurface
 from pricer.market.correlation_stress import stressed
 from pricer.market.market import Market
 from pricer.run.admission import admit, refusal
+from pricer.run.contract_facts import contract_facts
+from pricer.run.events import events
 from pricer.run.flat_quotes import flat_surface, is_random
 from pricer.run.local import map_groups
 from pricer.run.market_facts import forward_dates, market_facts
@@ -61,7 +65,8 @@ def price(book: Book, market: Market, settings: Settings | None = None, progress
     checks = tuple(row for appraisal in appraisals for row in cross_checks(appraisal, tests))
     disputed = {check.trade_id for check in checks if check.verdict in ALARMS}
     priced = time.perf_counter() - clock
-    used = sorted({name for appraisal in appraisals for name in appraisal.trade.contract.underlyings})
+    live = [appraisal.trade.contract for appraisal in appraisals if appraisal.is_live]
+    used = sorted({name for contract in live for name in contract.underlyings})
     surfaces = {**market.surfaces, **{name: flat_surface(name, market) for name in used if name not in market.surfaces}}
     simulated = {name for appraisal in appraisals if appraisal.local_volatility is not None
                  for name in appraisal.trade.contract.underlyings if is_random(surfaces[name])}  # fmt: skip
@@ -91,6 +96,12 @@ def price(book: Book, market: Market, settings: Settings | None = None, progress
             underlying_standings(
                 book.trades, refused, market, accept_failing_surfaces=settings.accept_failing_surfaces
             ),
+        ),
+        events=events(book, market),
+        contracts=tuple(
+            contract_facts(appraisal.trade, appraisal.as_of, market)
+            for appraisal in appraisals
+            if isinstance(appraisal.trade.contract, Contract)
         ),
     )
 
@@ -142,6 +153,16 @@ def _try_appraise(trade: Trade, market: Market, settings: AppraisalSettings) -> 
     """An appraisal, or the refusal of a trade on which the engine failed: one bad trade stops no run."""
     try:
         return appraise(trade, market, settings)
+    except NotCovered as reason:
+        issue = Issue(
+            code="not-covered",
+            found=f"a contract that this version does not price: {reason}",
+            expected="a contract that one of the engines covers",
+            mend="Value it outside this book, by the desk's authorised practice; the README lists what is covered.",
+            severity=Severity.ERROR,
+            trade_id=trade.trade_id,
+        )
+        return refusal(trade, market, (issue,))
     except (ArithmeticError, ValueError, LookupError) as error:
         issue = Issue(
             code="engine-failed",
@@ -186,6 +207,7 @@ def _facts(
             ("both models compared", "yes" if settings.compare_models else "no"),
             ("volatility surfaces that fail their checks", _failing_in_words(settings)),
             ("correlations among underlyings", _stress_in_words(settings)),
+            ("overhedge of jumps and barriers, its cost shown beside the value", _overhedge_in_words(settings)),
             ("target standard error of a value (bp of notional)", f"{settings.precision_bp:g}"),
             (
                 "target standard error of a cash delta (bp of notional or of gross cash delta)",
@@ -221,6 +243,13 @@ def _model_in_words(settings: Settings) -> str:
 
 def _failing_in_words(settings: Settings) -> str:
     return "accepted, trades marked" if settings.accept_failing_surfaces else "not priced from"
+
+
+def _overhedge_in_words(settings: Settings) -> str:
+    asked = settings.overhedge
+    if asked is None:
+        return "not asked for"
+    return f"spreads of {100.0 * asked.digital_spread:g} %, barriers moved by {100.0 * asked.barrier_shift:g} %"
 
 
 def _stress_in_words(settings: Settings) -> str:

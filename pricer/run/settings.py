@@ -6,7 +6,9 @@ import os
 from dataclasses import dataclass, field
 
 from pricer.contracts.book import Model
-from pricer.engines.european import AppraisalSettings
+from pricer.contracts.overhedge import Overhedge
+from pricer.engines.appraisal import AppraisalSettings
+from pricer.engines.contract_value import ContractSettings
 from pricer.engines.local_vol_monte_carlo import LocalVolSettings
 from pricer.engines.monte_carlo import SamplingSettings
 
@@ -30,7 +32,8 @@ class Settings:
     else lognormal. ``compare_models`` : compute both wherever they differ, for the model difference.
     ``accept_failing_surfaces`` : price from volatility surfaces that fail their checks, and mark the trades.
     ``correlation_towards_one``, ``correlation_towards_zero`` : shares from 0 to 1 by which all correlations
-    among underlyings are moved; at most one is above 0.
+    among underlyings are moved; at most one is above 0. ``contract`` : how paths and early exercise are sampled.
+    ``overhedge`` : spreads and barrier shifts that the desk would book for safety; their cost is shown, values stay.
     """
 
     seed: int = 20_000
@@ -45,6 +48,8 @@ class Settings:
     correlation_towards_zero: float = 0.0
     sampling: SamplingSettings = field(default_factory=SamplingSettings)
     local_vol: LocalVolSettings = field(default_factory=LocalVolSettings)
+    contract: ContractSettings = field(default_factory=ContractSettings)
+    overhedge: Overhedge | None = None
 
     def __post_init__(self) -> None:
         if self.seed < 0:
@@ -72,4 +77,6 @@ class Settings:
             compare_models=self.compare_models,
             sampling=self.sampling,
             local_vol=self.local_vol,
+            contract=self.contract,
+            overhedge=self.overhedge,
         )

@@ -43,6 +43,24 @@ def common_deviations(covariance: NDArray[np.float64], groups: NDArray[np.bool_]
     return out
 
 
+def common_to_all(covariances: NDArray[np.float64]) -> NDArray[np.float64]:
+    """:func:`common_deviations` for everyone together, of many covariances (m, n, n) at once: (m,)."""
+    deviations = np.sqrt(np.diagonal(covariances, axis1=1, axis2=2))
+    out = np.zeros(len(covariances))
+    live = np.all(deviations > 0.0, axis=1)
+    s = deviations[live]
+    values, vectors = np.linalg.eigh(covariances[live] / (s[:, :, None] * s[:, None, :]))
+    inside = values > s.shape[1] * 1e-13
+    targets = 1.0 / s
+    squares = np.einsum("ti,tij->tj", targets, vectors) ** 2
+    outside = np.sqrt(np.where(inside, 0.0, squares).sum(axis=1))
+    lost = outside > 1e-6 * np.linalg.norm(targets, axis=1)
+    inverse = np.where(inside, squares / np.where(inside, values, 1.0), 0.0).sum(axis=1)
+    c = 1.0 / np.sqrt(np.where(lost, np.inf, inverse))
+    out[live] = np.where(c > _NARROW * s.max(axis=1), c, 0.0)
+    return out
+
+
 def principal_components(
     covariance: NDArray[np.float64], importance: NDArray[np.float64], variances: NDArray[np.float64]
 ) -> NDArray[np.float64]:

@@ -14,10 +14,10 @@
 from __future__ import annotations
 
 from pricer.market.dividends import CashDividend
-from saltmarsh.correlations import FX_VOLATILITIES, correlation_matrix, yearly_volatilities
+from saltmarsh.correlations import FX_VOLATILITIES, correlation_matrix
 from saltmarsh.credit import CREDIT, CREDIT_TENORS, FUNDING, agreements
 from saltmarsh.facts import FX_SPOTS, UNDERLYINGS, VALUATION_DATE, Tables, years_to
-from saltmarsh.history import price_history
+from saltmarsh.history import fixings, price_history
 from saltmarsh.rates import CURVES, PAYERS, REPO, REPO_DATES, curve_points, dividends
 from saltmarsh.volatilities import EXPIRIES, volatilities
 
@@ -62,7 +62,8 @@ def market_tables() -> Tables:
         "correlations": [
             {"underlying": a, **{b: float(matrix[i, j]) for j, b in enumerate(names)}} for i, a in enumerate(names)
         ],
-        "price_history": price_history(names, matrix, yearly_volatilities()),
+        "price_history": price_history(names),
+        "fixings": fixings(names),
         "curves": [
             {"curve": name, "currency": ccy, "collateral": collateral, "day_count": count, "calendar": calendar}
             for name, (ccy, collateral, count, calendar) in CURVES.items()

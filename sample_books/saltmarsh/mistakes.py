@@ -11,6 +11,7 @@ The market's, in the order of its tables:
 - ``curves``: none for euros under dollar collateral; ``curve_points``: points of last autumn on the
   sterling curve;
 - ``fx``: a sterling rate that does not fit the two others; ``fx_volatilities``: none of EURGBP;
+- ``fixings``: one of KRUNTEL missing, one of DRUVEX in pence, two of ORLUMA on one day;
 - ``credit``: spreads of Pennifold Capital that no default intensity satisfies, one of Thrayle Insurance in basis
   points;
 - ``agreements``: thresholds where Thrayle Insurance posts nothing.
@@ -24,33 +25,74 @@ from datetime import date
 from saltmarsh.facts import Row, Tables
 from saltmarsh.volatilities import quoted_volatility
 
+#: European trades in the order of the book: what is wrong in the row of the table trades.
+_IN_EUROPEANS: list[Row] = [
+    {"strike": "eighty-six"},
+    {"expiry_date": date(2026, 11, 13)},
+    {"currency": "EUX"},
+    {"direction": "buy it"},
+    {"trade_id": "SMD-0006"},
+    {"quantity": -5_000},
+    {"expiry_date": "03/04/2027"},
+    {"notional": None},
+    {"aggregate": "wieghted sum"},
+    {"collateral": "JPY"},
+    {"counterparty": '=HYPERLINK("a")', "strike": "#N/A"},
+]
+#: Trades on a path: the table, what its row holds, what is wrong in it. An empty row is left out.
+_ON_A_PATH: dict[str, tuple[str, Row, Row]] = {
+    "SMD-0086": ("trades", {}, {"statistic": "averge"}),
+    "SMD-0088": ("schedules", {"date": date(2026, 4, 1)}, {"date": date(2026, 4, 3)}),  # Good Friday: no fixing
+    "SMD-0098": ("barriers", {}, {"level": 70}),
+    "SMD-0099": ("barriers", {}, {"recorded_hit_date": date(2026, 8, 10), "clear_until": None}),
+    "SMD-0103": ("constituents", {"underlying": "VADRONE"}, {"barrier_level": None}),
+    "SMD-0104": ("barriers", {}, {"kind": "knock-down"}),
+    "SMD-0107": ("schedule_rules", {}, {}),  # a barrier on dates that nobody gives
+    "SMD-0109": ("trades", {}, {"local_cap": 3}),
+    "SMD-0110": ("schedule_rules", {}, {"frequency": "monthly"}),
+    "SMD-0114": ("schedule_rules", {"purpose": "call"}, {"level": 95}),
+    "SMD-0116": ("calls", {}, {"feature": 2}),
+    "SMD-0118": ("schedule_rules", {"purpose": "coupon"}, {"amount": 2.4}),
+    "SMD-0119": ("coupons", {}, {"memory": "maybe"}),
+    "SMD-0120": ("coupons", {}, {"feature": 2}),
+    "SMD-0121": ("schedules", {"date": date(2029, 3, 1)}, {"date": date(2029, 12, 3)}),
+    "SMD-0128": ("trades", {}, {"capital": 100}),
+    "SMD-0132": ("trades", {}, {"call_strike": None}),
+    "SMD-0137": ("schedule_rules", {}, {}),
+    "SMD-0140": ("exercises", {}, {"by": "buyer"}),
+    "SMD-0145": ("exercises", {}, {"exercised_date": date(2026, 11, 25)}),
+    "SMD-0147": ("writers", {}, {"writer": "Pennyfold Capital"}),
+    "SMD-0148": ("writers", {}, {"liabilities": None}),
+    "SMD-0151": ("schedule_rules", {}, {}),
+    "SMD-0153": ("constituents", {"underlying": "KRUNTEL"}, {"variance_weight": "0,4x"}),
+}
+#: Trades on a path that nothing is wrong with.
+_GOOD = ("SMD-0089", "SMD-0097", "SMD-0100", "SMD-0125", "SMD-0126", "SMD-0127", "SMD-0129", "SMD-0155")
+
 
 def broken_book(book: Tables) -> Tables:
     """Some good trades and one of each common mistake, to show what refusals look like."""
-    trades = [dict(row) for row in book["trades"][:20]]
-    constituents = [dict(row) for row in book["constituents"]]
-    mistakes: list[Row] = [
-        {"strike": "eighty-six"},
-        {"expiry_date": date(2026, 11, 13)},
-        {"currency": "EUX"},
-        {"direction": "buy it"},
-        {"trade_id": "SMD-0006"},
-        {"quantity": -5_000},
-        {"expiry_date": "03/04/2027"},
-        {"notional": None},
-        {"aggregate": "wieghted sum"},
-        {"collateral": "JPY"},
-        {"counterparty": '=HYPERLINK("a")', "strike": "#N/A"},
-    ]
-    for row, mistake in zip(trades, mistakes, strict=False):
+    first = [row["trade_id"] for row in book["trades"][:20]]
+    tables = {
+        name: [dict(row) for row in rows if row["trade_id"] in {*first, *_ON_A_PATH, *_GOOD}]
+        for name, rows in book.items()
+    }
+    for trade_id, (table, where, mistake) in _ON_A_PATH.items():
+        _mistake(tables[table], {"trade_id": trade_id, **where}, mistake)
+    _mistake(tables["constituents"], {"trade_id": "SMD-0014", "underlying": "TESKIR"}, {"weight": None})
+    _mistake(tables["constituents"], {"trade_id": "SMD-0015", "underlying": "HALQUIN"}, {"underlying": "HALQUEN"})
+    for row, mistake in zip(tables["trades"], _IN_EUROPEANS, strict=False):
         row.update(mistake)
-    for row in constituents:
-        if row["trade_id"] == "SMD-0014" and row["underlying"] == "TESKIR":
-            row["weight"] = None
-        if row["trade_id"] == "SMD-0015" and row["underlying"] == "HALQUIN":
-            row["underlying"] = "HALQUEN"
-    kept = {row["trade_id"] for row in trades}
-    return {"trades": trades, "constituents": [row for row in constituents if row["trade_id"] in kept]}
+    return tables
+
+
+def _mistake(rows: list[Row], where: Row, mistake: Row) -> None:
+    """Put the mistake into the row that holds ``where``; take that row out if there is none to put in."""
+    (found,) = [row for row in rows if all(row.get(name) == value for name, value in where.items())]
+    if mistake:
+        found.update(mistake)
+    else:
+        rows.remove(found)
 
 
 def broken_market(market: Tables) -> Tables:
@@ -72,11 +114,19 @@ def broken_market(market: Tables) -> Tables:
     tables["curve_points"][first:first] = stale
     _slip(tables["fx"], "spot", lambda _: 1.3307, pair="GBPUSD")
     tables["fx_volatilities"] = [row for row in tables["fx_volatilities"] if row["pair"] != "EURGBP"]
+    tables["fixings"] = _broken_fixings(tables["fixings"])
     _slip(tables["credit"], "cds_spread_decimal", lambda _: 0.0900, name="Pennifold Capital", tenor="1Y")
     _slip(tables["credit"], "cds_spread_decimal", lambda _: 0.0120, name="Pennifold Capital", tenor="2Y")
     _slip(tables["credit"], "cds_spread_decimal", lambda x: round(1e4 * x, 2), name="Thrayle Insurance", tenor="5Y")
     _slip(tables["agreements"], "collateral", lambda _: "none", netting_set="THR-1")
     return tables
+
+
+def _broken_fixings(rows: list[Row]) -> list[Row]:
+    kept = [row for row in rows if (row["underlying"], row["date"]) != ("KRUNTEL", date(2026, 11, 25))]
+    _slip(kept, "level", lambda x: round(100.0 * x, 2), underlying="DRUVEX", date=date(2026, 6, 17))
+    first = next(i for i, row in enumerate(kept) if row["underlying"] == "ORLUMA" and row["date"] == date(2026, 11, 17))
+    return [*kept[: first + 1], kept[first] | {"level": 84.91}, *kept[first + 1 :]]
 
 
 def _broken_volatilities(rows: list[Row]) -> list[Row]:

@@ -1,8 +1,8 @@
-"""The sample's book: trades that cover every aggregate and profile, conversion and model.
+"""The sample's book: trades that cover every aggregate and profile, conversion and model, and every kind of path.
 
 The first sixty are in their underlyings' own currency and leave the model to the run. After them come trades
 that pay in another currency, trades that ask for a model, and short ones on underlyings whose cash
-dividends go ex only after they have expired.
+dividends go ex only after they have expired. The rest have a path, and half of them a past.
 """
 
 from __future__ import annotations
@@ -12,16 +12,58 @@ from datetime import date
 from itertools import cycle
 from typing import Any
 
+from saltmarsh.averages import average_trades
+from saltmarsh.barriers import barrier_trades
+from saltmarsh.booking import Booked
+from saltmarsh.exercises import exercise_trades, writer_trades
 from saltmarsh.facts import COUNTERPARTIES, FX_SPOTS, UNDERLYINGS, Row, Tables
+from saltmarsh.notes import note_trades
+from saltmarsh.sums import sum_trades
+from saltmarsh.variances import variance_trades
 
 EXPIRIES = [date(2027, 1, 15), date(2027, 3, 19), date(2027, 6, 18), date(2027, 9, 17), date(2027, 12, 17),
             date(2028, 6, 16), date(2028, 12, 15), date(2029, 12, 21), date(2030, 12, 20)]  # fmt: skip
+#: Tables of what only trades on a path have.
+FEATURE_TABLES = ("schedules", "schedule_rules", "barriers", "calls", "coupons", "exercises", "writers")
 #: Counterparties of the first sixty trades, in turn; the last one is new to the desk.
 _PARTNERS = list(COUNTERPARTIES.items())
 
 
 def book_tables() -> Tables:
-    """The trades and their constituents."""
+    """The trades and everything that belongs to them."""
+    tables = _europeans()
+    partners = cycle(_PARTNERS)
+    for number, booked in enumerate(_on_a_path(), start=len(tables["trades"]) + 1):
+        trade_id = f"SMD-{number:04d}"
+        counterparty, netting_set = next(partners)
+        tables["trades"].append(
+            {
+                "trade_id": trade_id,
+                "direction": "short",
+                "settlement_lag_days": 2,
+                "counterparty": counterparty,
+                "netting_set": netting_set,
+                **booked.terms,
+            }
+        )
+        for table, row in (*(("constituents", leg) for leg in booked.legs), *booked.rows):
+            tables[table].append({"trade_id": trade_id, **row})
+    return tables
+
+
+def _on_a_path() -> Iterator[Booked]:
+    """Options and notes with a path of their own, half of them with a past."""
+    yield from average_trades()
+    yield from barrier_trades()
+    yield from sum_trades()
+    yield from note_trades()
+    yield from exercise_trades()
+    yield from writer_trades()
+    yield from variance_trades()
+
+
+def _europeans() -> Tables:
+    """European options, with empty tables of what only other trades have."""
     trades: list[Row] = []
     constituents: list[Row] = []
     partners = cycle(_PARTNERS[:-1])
@@ -45,7 +87,7 @@ def book_tables() -> Tables:
             }
         )
         constituents.extend({"trade_id": trade_id, **_leg(leg)} for leg in legs)
-    return {"trades": trades, "constituents": constituents}
+    return {"trades": trades, "constituents": constituents} | {name: [] for name in FEATURE_TABLES}
 
 
 def _leg(leg: tuple[str, float | None, float | None]) -> Row:

@@ -35,9 +35,12 @@ def small_book(*trade_ids: str) -> dict[str, list[dict]]:
     """Tables of the sample's trades with these ids, in the order asked."""
     tables = sample_maker().book_tables()
     by_id = {row["trade_id"]: row for row in tables["trades"]}
+    others = {
+        name: [row for row in rows if row["trade_id"] in trade_ids] for name, rows in tables.items() if name != "trades"
+    }
     return {
         "trades": [by_id[trade_id] for trade_id in trade_ids],
-        "constituents": [row for row in tables["constituents"] if row["trade_id"] in trade_ids],
+        **{name: rows for name, rows in others.items() if rows},
     }
 
 

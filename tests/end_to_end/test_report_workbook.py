@@ -22,7 +22,7 @@ from pricer.run.outcome import MarketFacts
 from tests.unit.report_outcomes import WARNINGS, empty, facts, issue, outcome, refusals, valuation
 
 SHEETS = [
-    *("Summary", "Valuations", "Deltas by trade", "Deltas by underlying", "Cross-check"),
+    *("Summary", "Events", "Valuations", "Deltas by trade", "Deltas by underlying", "Cross-check"),
     *("Why not priced", "Problems"),
     *("Market", "Calibration", "Smiles", "Curves", "Forwards", "Credit, funding, agreements", "Run"),
 ]

@@ -10,7 +10,7 @@ import numpy as np
 import pytest
 
 from pricer.contracts.book import Model
-from pricer.contracts.option import Conversion
+from pricer.contracts.option import Conversion, EuropeanOption
 from pricer.core.issues import Severity
 from pricer.loader import load_book, load_market, write_tables
 from pricer.market.calendars import year_fraction
@@ -47,12 +47,17 @@ def test_nothing_is_wrong_with_it():
 
 
 def test_every_trade_can_be_priced_on_it_and_little_is_odd_about_any():
-    """Three trades expire on 18 June 2027, a holiday in New York (the 19th is a Saturday)."""
+    """18 June 2027 is a holiday in New York (the 19th is a Saturday); the sample's README tells the rest."""
     admitted = admit(book(), market())
     assert admitted.refusals == ()
-    assert len(admitted) == 85
+    assert len(admitted) == 156
     found = [(issue.code, issue.trade_id) for issue in admitted.issues if issue not in market().issues]
-    assert found == [("expiry-on-holiday", trade_id) for trade_id in ("SMD-0021", "SMD-0048", "SMD-0057")]
+    assert found == [
+        *(("expiry-on-holiday", trade_id) for trade_id in ("SMD-0021", "SMD-0048", "SMD-0057")),
+        ("observed-on-ex-date", "SMD-0102"),
+        ("touch-not-recorded", "SMD-0103"),
+        *(("spot-for-fixing", trade_id) for trade_id in ("SMD-0115", "SMD-0120", "SMD-0133", "SMD-0153")),
+    ]
 
 
 def test_csv_files_and_workbook_hold_the_same_market():
@@ -128,7 +133,7 @@ def test_at_least_ten_trades_expire_before_cash_dividends_that_their_shares_stil
 
 def test_quantos_composites_and_models_are_in_the_book():
     conversions = Counter(trade.contract.conversion for trade in book())
-    assert conversions == {None: 75, Conversion.QUANTO: 5, Conversion.COMPOSITE: 5}
+    assert conversions == {None: 139, Conversion.QUANTO: 10, Conversion.COMPOSITE: 7}
     models = Counter(trade.model for trade in book())
     assert models[Model.LOCAL_VOLATILITY] >= 5
     assert models[Model.LOGNORMAL] >= 2
@@ -136,8 +141,11 @@ def test_quantos_composites_and_models_are_in_the_book():
 
 def test_fixings_of_composites_are_in_the_trades_currency():
     for trade in book():
-        if trade.contract.conversion is Conversion.COMPOSITE and trade.contract.on_performance:
-            for name, fixing in zip(trade.contract.underlyings, trade.contract.reference_levels, strict=True):
+        contract = trade.contract
+        if contract.conversion is Conversion.COMPOSITE and contract.on_performance:
+            is_european = isinstance(contract, EuropeanOption)
+            fixings = contract.reference_levels if is_european else contract.levels.references
+            for name, fixing in zip(contract.underlyings, fixings, strict=True):
                 spot = market().spot_in(name, trade.currency, Conversion.COMPOSITE)
                 assert 0.85 < fixing / spot < 1.15, (trade.trade_id, name)
 
@@ -155,7 +163,7 @@ def test_correlations_can_be_estimated_from_the_history_instead(tmp_path):
 
 
 @pytest.mark.parametrize(
-    "name", ["dividends", "repo", "price_history", "fx_volatilities", "credit", "funding", "agreements"]
+    "name", ["dividends", "repo", "price_history", "fixings", "fx_volatilities", "credit", "funding", "agreements"]
 )
 def test_it_loads_without_any_of_its_optional_tables(tmp_path, name):
     rest = {table: rows for table, rows in tables().items() if table != name}

@@ -16,7 +16,7 @@ from pricer.contracts.option import Conversion, EuropeanOption
 from pricer.contracts.profile import Profile, ProfileKind
 from pricer.core.issues import Severity
 from pricer.loader import load_book, write_book, write_tables
-from pricer.loader.examples import EXAMPLE_BOOK
+from pricer.loader.contract_examples import WHOLE_BOOK
 from pricer.loader.schema import BOOK
 from pricer.loader.text import clean, half_width
 from pricer.market.calendars import CURRENCY_CALENDARS, advance
@@ -131,13 +131,37 @@ cells = st.one_of(
     days,
     names,
     st.sampled_from(
-        ["#N/A", "nan", "1,5", "1,000", "50%", "03/04/2026", "2026-02-30", "EX-1", "EX-9", "EUR", "GBp", "; ;"]
+        [
+            "#N/A",
+            "nan",
+            "1,5",
+            "1,000",
+            "50%",
+            "03/04/2026",
+            "2026-02-30",
+            "EX-1",
+            "EX-99",
+            "EUR",
+            "GBp",
+            "; ;",
+            "yes",
+            "option",
+            "note",
+            "call",
+            "barrier",
+            "accrual",
+            "1D",
+            "average",
+            "daily",
+            "dates",
+            "at hit",
+        ]
     ),
 )
 places = st.sampled_from(
     [
         (table, row, column)
-        for table, rows in EXAMPLE_BOOK.items()
+        for table, rows in WHOLE_BOOK.items()
         for row in range(len(rows))
         for column in BOOK[table].columns
     ]
@@ -148,7 +172,7 @@ places = st.sampled_from(
 @settings(max_examples=60, deadline=None, suppress_health_check=[HealthCheck.too_slow])
 @given(changes=st.lists(st.tuples(places, cells), min_size=1, max_size=6))
 def test_whatever_stands_in_the_cells_every_row_is_a_trade_or_a_refusal(name, changes):
-    tables = {table: [dict(row) for row in rows] for table, rows in EXAMPLE_BOOK.items()}
+    tables = {table: [dict(row) for row in rows] for table, rows in WHOLE_BOOK.items()}
     for (table, row, column), value in changes:
         tables[table][row][column] = value
     with tempfile.TemporaryDirectory() as folder:

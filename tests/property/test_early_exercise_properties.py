@@ -67,7 +67,7 @@ def only(problem: EarlyExerciseProblem, dates: list[int]) -> EarlyExerciseProble
     )
 
 
-@settings(max_examples=12, deadline=None, derandomize=True)
+@settings(max_examples=5, deadline=None, derandomize=True)
 @given(problems())
 def test_more_dates_are_worth_no_less_and_the_bounds_are_in_order(problem):
     all_dates = early_exercise_value(problem, SMALL)
@@ -80,7 +80,7 @@ def test_more_dates_are_worth_no_less_and_the_bounds_are_in_order(problem):
         assert fewer.lower < all_dates.upper + noise + 1e-6 * scale
 
 
-@settings(max_examples=6, deadline=None, derandomize=True)
+@settings(max_examples=3, deadline=None, derandomize=True)
 @given(problems(), st.randoms(use_true_random=False))
 def test_the_order_of_the_assets_does_not_matter(problem, random):
     order = list(range(problem.n_assets))

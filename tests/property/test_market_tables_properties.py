@@ -10,7 +10,7 @@ from hypothesis import strategies as st
 from pricer.loader import load_market, write_tables
 from tests.unit.market_tables import full_market
 
-OPTIONAL = ("repo", "fx", "fx_volatilities", "credit", "funding", "agreements")
+OPTIONAL = ("repo", "fx", "fx_volatilities", "credit", "funding", "agreements", "fixings")
 
 
 def loaded(tables):
@@ -31,7 +31,10 @@ def test_any_subset_of_the_optional_tables_loads_in_silence(absent, emptied):
     market = loaded(tables)
     # The correlations hold the pair EURUSD, which the market knows from either of two tables.
     pair_unknown = {"fx", "fx_volatilities"} <= absent
-    assert [issue.code for issue in market.issues] == ["unknown-underlying"] * pair_unknown
+    # Without rates nobody can tell whether a pair's fixings are plausible.
+    rate_unknown = "fx" in absent and "fixings" not in absent
+    told = ["unknown-underlying"] * pair_unknown + ["fixings-of-unknown"] * rate_unknown
+    assert [issue.code for issue in market.issues] == told
     assert market.rejected == {}
     assert list(market.underlyings) == ["ORLUMA", "TESKIR", "VADRONE", "WEXMOOR"]
     has = {
@@ -41,6 +44,7 @@ def test_any_subset_of_the_optional_tables_loads_in_silence(absent, emptied):
         "credit": market.credit,
         "funding": market.funding is not None,
         "agreements": market.agreements,
+        "fixings": market.fixings.levels,
     }
     assert {name for name, held in has.items() if not held} == absent
 

@@ -10,7 +10,7 @@ import numpy as np
 from pricer.core.randomness import Purpose, stream
 from pricer.loader.examples import EXAMPLE_MARKET
 
-OPTIONAL = ("dividends", "repo", "price_history", "fx", "fx_volatilities", "credit", "funding", "agreements")
+OPTIONAL = ("dividends", "repo", "price_history", "fx", "fx_volatilities", "credit", "funding", "agreements", "fixings")
 VALUATION_DATE = date(2026, 3, 31)
 SPOTS = (("underlyings", "underlying"), ("fx", "pair"))
 
@@ -23,7 +23,7 @@ def full_market():
 def small_market():
     """Three underlyings in EUR with volatilities at the forward, and nothing but the tables of old."""
     tables = full_market()
-    for name in ("repo", "fx_volatilities", "credit", "funding", "agreements"):
+    for name in ("repo", "fixings", "fx_volatilities", "credit", "funding", "agreements"):
         del tables[name]
     for name, column, unwanted in (
         ("underlyings", "underlying", ("WEXMOOR",)),

@@ -78,15 +78,15 @@ def test_what_decides_the_martingale_has_no_mean():
     dynamics = LognormalDynamics(problem, importance(problem))
     inputs = inputs_by_date(problem, InputChoice(), stream(3, "m", Purpose.FIT, 999))
     with threadpool_limits(limits=1), ThreadPoolExecutor(2) as pool:
-        rule = fit_rule(dynamics, inputs, QUICK.fit, 0.0, lambda b: stream(3, "m", Purpose.FIT, b), pool)
-    moves = np.empty((32, problem.n_dates - 1))
-    for block in range(32):
+        rule = fit_rule(dynamics, inputs, QUICK.fit, np.zeros(9), lambda b: stream(3, "m", Purpose.FIT, b), pool)
+    moves = np.empty((16, problem.n_dates - 1))
+    for block in range(16):
         generator = stream(3, "m", Purpose.CERTIFY, block)
         paths, successors = dynamics.paths(generator, 512), dynamics.successors(64)
         for i in range(problem.n_dates - 1):
             expected = rule.dates[i + 1].expected(i + 1, paths[i], successors, 64, generator)
             moves[block, i] = np.mean(rule.dates[i + 1].value(paths[i + 1]).astype(float) - expected)
-    errors = moves.std(axis=0, ddof=1) / np.sqrt(32)
+    errors = moves.std(axis=0, ddof=1) / np.sqrt(16)
     assert np.all(np.abs(moves.mean(axis=0)) < SURE * errors)
     assert np.all(errors < 0.1)  # small enough to see a bias of a per cent of the value
 
@@ -117,7 +117,7 @@ def test_the_lower_bound_never_exceeds_the_upper_bound_of_more_dates():
 
 def test_the_issuers_right_is_the_holders_of_the_opposite():
     payoffs = PiecewiseLinear(-100.0, -0.5, (90.0,), (0.3,), (0.0,))
-    mine = best_of_call(2, payoff=payoffs)
+    mine = best_of_call(2, np.array([1.0, 2.0, 3.0]), payoff=payoffs)
     theirs = replace(mine, payoffs=tuple(f.scaled(-1.0) for f in mine.payoffs), right=Right.ISSUER)
     holder, issuer = early_exercise_value(mine, QUICK), early_exercise_value(theirs, QUICK)
     assert (issuer.lower, issuer.upper) == (-holder.upper, -holder.lower)
@@ -125,7 +125,8 @@ def test_the_issuers_right_is_the_holders_of_the_opposite():
 
 
 def test_an_issuer_never_pays_more_than_without_the_right():
-    problem = best_of_call(3, correlation=0.5, right=Right.ISSUER, payoff=call(80.0))
+    times = np.array([1.0, 2.0, 3.0])
+    problem = best_of_call(3, times, correlation=0.5, right=Right.ISSUER, payoff=call(80.0))
     value = early_exercise_value(problem, QUICK)
     for date in range(problem.n_dates):
         assert value.lower - SURE * value.lower_error < european(problem, date)
@@ -145,7 +146,7 @@ def test_exercise_at_once_counts_where_it_is_worth_more():
 
 
 def test_an_answer_repeats_to_the_last_bit_on_any_number_of_threads():
-    problem = best_of_call(3, correlation=0.2)
+    problem = best_of_call(3, np.array([1.0, 2.0, 3.0]), correlation=0.2)
     once = early_exercise_value(problem, replace(QUICK, threads=1))
     assert early_exercise_value(problem, replace(QUICK, threads=3)) == once
     assert early_exercise_value(problem, replace(QUICK, seed=2)) != once
@@ -207,3 +208,50 @@ def test_sizes_that_the_sampler_does_not_have_are_refused():
         CertificateSettings(blocks=1)
     with pytest.raises(ValueError, match="at least 8 blocks"):
         FitSettings(blocks=4)
+
+
+def test_income_is_paid_until_the_option_ends():
+    """A constant income of 1 a date, and an exercise that pays nothing: the holder stays to the end."""
+    problem = best_of_call(2, np.array([1.0, 2.0, 3.0]))
+    income, nothing = PiecewiseLinear(1.0, 0.0), PiecewiseLinear(0.0, 0.0)
+    paid = replace(problem, payoffs=(nothing,) * 3, incomes=(income, None, income))
+    value = early_exercise_value(paid, QUICK)
+    assert value.lower == pytest.approx(2.0, abs=1e-5)
+    assert value.gap == pytest.approx(0.0, abs=1e-5)
+    issuer = early_exercise_value(replace(paid, right=Right.ISSUER), QUICK)
+    assert issuer.value == pytest.approx(1.0, abs=1e-5)  # ended on the first date, whose income is paid
+
+
+def test_a_date_without_a_right_is_as_good_as_no_date():
+    problem = best_of_call(2, np.array([1.0, 2.0, 3.0]))
+    without = replace(problem, payoffs=(problem.payoffs[0], None, problem.payoffs[2]))
+    value, twice = (
+        early_exercise_value(without, QUICK),
+        early_exercise_value(best_of_call(2, np.array([1.0, 3.0])), QUICK),
+    )
+    assert value.dates[1].exercise_probability == 0.0
+    noise = SURE * np.hypot(value.upper_error, twice.upper_error)
+    assert value.value == pytest.approx(twice.value, abs=noise + value.gap + twice.gap)
+
+
+def test_what_some_dates_add_is_seen_on_the_same_paths():
+    problem = best_of_call(2, np.array([1.0, 1.5, 2.0, 2.5, 3.0]))
+    both = early_exercise_value(replace(problem, some=(True, False, True, False, True)), QUICK)
+    some = early_exercise_value(best_of_call(2, np.array([1.0, 2.0, 3.0])), QUICK)
+    noise = SURE * np.hypot(both.upper_error, some.upper_error) + both.gap + some.gap
+    assert both.gain == pytest.approx(both.value - some.value, abs=noise)
+    assert 0.0 < both.gain_error < 0.3 * both.gain
+
+
+@pytest.mark.parametrize(
+    ("change", "message"),
+    [
+        ({"incomes": (None,)}, "as many incomes; got 1"),
+        ({"some": (True,)}, "as many marks; got 1"),
+        ({"floors": np.zeros((1, 1))}, "floors must be"),
+        ({"payoffs": (None, None)}, "the last date needs a payoff"),
+    ],
+)
+def test_parts_that_do_not_fit_are_refused(change, message):
+    with pytest.raises(ValueError, match=message):
+        replace(best_of_call(2, np.array([1.0, 2.0])), **change)

@@ -44,7 +44,7 @@ def in_numpy(
             moved = aggregate(x[None, :, :] * shocks[:, None, :])
         averaged.append(payoff(moved).mean(axis=0))
     scores = np.log(x) @ inputs.scores.T.astype(float)
-    return np.vstack([payoffs[0](a), a, ranked.T, scores.T, *powers, *averaged])
+    return np.vstack([payoffs[0](a), np.zeros_like(a), a, ranked.T, scores.T, *powers, *averaged])
 
 
 @pytest.mark.parametrize("aggregate", AGGREGATES, ids=lambda aggregate: str(aggregate.kind))
@@ -94,7 +94,7 @@ def test_successors_have_the_law_of_the_next_step():
     levels = np.empty((4, 128), dtype=np.float32)
     generator, moves = draws(3), []
     for _ in range(400):
-        sampler.fill(2, states, generator, levels)
+        sampler.fill(2, states, generator, 0, levels)
         moves.append(np.log(levels.reshape(4, 2, 64)[:, 1].astype(float) / states[:, 1:]))
     together = np.concatenate(moves, axis=1)
     assert np.allclose(together.mean(axis=1), problem.log_drifts[2], atol=1e-6)  # mirrored: exact but for rounding
@@ -110,7 +110,7 @@ def test_an_average_over_successors_is_unbiased_whatever_their_number():
         sampler, generator, levels = dynamics.successors(inner), draws(inner), np.empty((2, inner), dtype=np.float32)
         averages = []
         for _ in range(6000 if inner == 2 else 1500):
-            sampler.fill(0, states, generator, levels)
+            sampler.fill(0, states, generator, 0, levels)
             averages.append(np.maximum(levels.max(axis=0).astype(float) - 100.0, 0.0).mean())
         means.append((np.mean(averages), np.std(averages, ddof=1) / np.sqrt(len(averages))))
     (few, few_error), (many, many_error) = means

@@ -6,7 +6,9 @@ import pytest
 
 from pricer.contracts.fixings import Fixing, Fixings
 from pricer.market.fixing_quality import fixing_gates
+from pricer.market.fx import FxRates
 from pricer.market.underlying import Underlying
+from tests.unit.markets import small_market
 
 TODAY = date(2026, 3, 16)  # a Monday
 UNDERLYINGS = {"VESKA": Underlying("VESKA", "EUR", 50.0, "TARGET")}
@@ -14,7 +16,12 @@ UNDERLYINGS = {"VESKA": Underlying("VESKA", "EUR", 50.0, "TARGET")}
 
 def found(*rows, name="VESKA", rates=None):
     fixings = Fixings.from_rows(Fixing(name, date.fromisoformat(day), level) for day, level in rows)
-    return [(issue.code, issue.found) for issue in fixing_gates(fixings, UNDERLYINGS, rates or {}, TODAY)]
+    return [(issue.code, issue.found) for issue, _ in fixing_gates(market(fixings, rates))]
+
+
+def market(fixings, rates=None, **changes):
+    fx = FxRates.from_pairs(rates or {})
+    return small_market(valuation_date=TODAY, underlyings=UNDERLYINGS, fx=fx, fixings=fixings, **changes)
 
 
 def test_ordinary_fixings_pass():
@@ -59,5 +66,12 @@ def test_a_currency_pair_is_known_either_way_round():
 
 
 def test_an_unknown_name_is_told_with_the_one_that_may_be_meant():
-    (issue,) = fixing_gates(Fixings.from_rows([Fixing("VESKKA", TODAY, 50.0)]), UNDERLYINGS, {}, TODAY)
+    fixings = Fixings.from_rows([Fixing("VESKKA", TODAY, 50.0)])
+    ((issue, _),) = fixing_gates(market(fixings))
     assert (issue.code, issue.mend[:21]) == ("fixings-of-unknown", 'Did you mean "VESKA"?')
+    assert list(fixing_gates(market(fixings, rejected={"VESKKA": ()}))) == []  # told with the underlying
+
+
+def test_a_leap_puts_in_doubt_the_fixing_that_leapt():
+    fixings = Fixings.from_rows(Fixing("VESKA", date(2026, 3, day), level) for day, level in ((12, 50.0), (13, 5.0)))
+    assert [doubted for _, doubted in fixing_gates(market(fixings))] == ["fixings:VESKA:2026-03-13"] * 2

@@ -7,7 +7,7 @@ from datetime import date
 import pytest
 from pydantic import ValidationError
 
-from pricer.loader.book_rows import ConstituentRow, EuropeanOptionRow, TradeRow, trade_columns
+from pricer.loader.book_rows import TRADE_ROWS, ConstituentRow, EuropeanOptionRow, TradeRow, trade_columns
 from pricer.loader.columns import columns_of
 from pricer.loader.faults import Fault
 from pricer.loader.market_rows import CurvePointRow, CurveRow, UnderlyingRow, VolatilityRow
@@ -94,7 +94,7 @@ def test_all_faults_of_a_row_come_at_once():
         ({"currency": "AED"}, "settlement_calendar", "a blank cell", None),
         ({"underlying_level": "price", "notional": None, "quantity": 1.0, "strike": "100%"}, "strike", '"100%"',
          "an amount of currency, as the trade is a price option"),
-        ({"product": "barrier option"}, "product", '"barrier option"', "one of: european option"),
+        ({"product": "barrier option"}, "product", '"barrier option"', "one of: european option, option, note"),
     ],
 )  # fmt: skip
 def test_terms_that_do_not_fit_are_told_at_the_cell_to_change(changes, column, found, expected):
@@ -137,7 +137,9 @@ def test_a_performance_may_be_written_as_a_percentage():
 
 
 def test_the_columns_of_trades_are_those_of_every_product_and_no_other():
-    assert set(trade_columns()) == set(columns_of(EuropeanOptionRow))
+    assert set(trade_columns()) == {name for model in TRADE_ROWS.values() for name in columns_of(model)}
+    # Options of later days stand behind the columns that European options have always had.
+    assert list(trade_columns())[: len(columns_of(EuropeanOptionRow))][-1] == "model"
     assert set(columns_of(TradeRow)) < set(trade_columns())
     assert list(trade_columns())[:3] == ["trade_id", "product", "direction"]
 

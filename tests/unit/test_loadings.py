@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from pricer.simulation.loadings import cholesky, common_deviations, principal_components
+from pricer.simulation.loadings import cholesky, common_deviations, common_to_all, principal_components
 
 
 def common_deviation(covariance: np.ndarray, members: np.ndarray) -> float:
@@ -89,3 +89,15 @@ def test_a_covariance_of_zero_has_no_loadings():
     zero = np.zeros((3, 3))
     assert cholesky(zero, np.ones(3)).shape == (3, 0)
     assert principal_components(zero, np.ones(3), np.ones(3)).shape == (3, 0)
+
+
+def test_common_deviations_of_many_steps_are_those_of_each():
+    random = np.random.default_rng(5)
+    roots = random.standard_normal((20, 4, 4))
+    covariances = roots @ roots.transpose(0, 2, 1)
+    covariances[0] = 0.0
+    covariances[1] = np.ones((4, 4))
+    covariances[2, 0, :] = covariances[2, :, 0] = 0.0
+    expected = [float(common_deviations(one, np.ones((1, 4), dtype=bool))[0]) for one in covariances]
+    np.testing.assert_allclose(common_to_all(covariances), expected, rtol=1e-9)
+    assert common_to_all(covariances)[1] == pytest.approx(1.0)

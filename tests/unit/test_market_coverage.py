@@ -6,6 +6,7 @@ from datetime import date
 import pytest
 
 from pricer.contracts.aggregate import Aggregate, AggregateKind
+from pricer.contracts.fixings import Fixing, Fixings
 from pricer.contracts.profile import Profile, ProfileKind
 from pricer.core.issues import Issue, Severity
 from pricer.core.source import Place
@@ -227,32 +228,37 @@ def test_no_curve_for_the_collateral():
 
 
 @pytest.mark.parametrize(
-    ("payment", "mend"),
-    [
-        (date(2026, 11, 25), "It was paid on 2026-11-25: remove the settled trade from the book."),
-        (
-            date(2026, 12, 1),
-            "Its known amount is still to be paid, on 2026-12-01: carry it outside this book; options after expiry are "
-            "not valued by this version.",
-        ),
-    ],
+    ("payment", "else_"),
+    [(date(2026, 11, 25), " Or remove the trade: it was paid on 2026-11-25."), (date(2026, 12, 1), "")],
 )
-def test_an_expired_option(payment, mend):
+def test_an_expired_option_without_its_fixing_says_which_row_to_add(payment, else_):
     issue = only(basket("ARVENNE", expiry=date(2026, 11, 23), payment=payment))
-    assert (issue.code, issue.severity) == ("expired", Severity.ERROR)
+    assert (issue.code, issue.severity) == ("missing-fixing", Severity.ERROR)
     assert str(issue) == (
-        AT + '"expiry_date" (cell H7): found expiry date 2026-11-23, before the valuation date 2026-11-30; expected an '
-        f"expiry on or after the valuation date. {mend}"
+        AT + '"expiry_date" (cell H7): found no fixing of ARVENNE on 2026-11-23; expected a fixing for every '
+        "observation up to now. Add a row to the market's fixings table: underlying ARVENNE, date 2026-11-23, and the "
+        f"official level; where a day itself had none, the one that the trade's terms fall back on.{else_}"
     )
+
+
+def test_an_expired_option_with_its_fixing_is_a_known_amount():
+    fixings = Fixings.from_rows([Fixing("ARVENNE", date(2026, 11, 23), 66.0)])
+    trade = basket("ARVENNE", expiry=date(2026, 11, 23), payment=date(2026, 12, 1))
+    assert told(trade, small_market(fixings=fixings)) == []
 
 
 def test_an_option_that_expires_today_is_allowed_with_a_warning():
     issue = only(basket("ARVENNE", expiry=TODAY, payment=date(2026, 12, 2)))
-    assert (issue.code, issue.severity) == ("expires-today", Severity.WARNING)
+    assert (issue.code, issue.severity) == ("spot-for-fixing", Severity.WARNING)
     assert str(issue) == (
-        AT + '"expiry_date" (cell H7): found expiry date 2026-11-30, which is the valuation date; expected an expiry '
-        "after the valuation date. The option is valued at the market's spots; compare them with the official fixings."
+        AT + '"expiry_date" (cell H7): found an observation today, 2026-11-30, without a fixing of ARVENNE; expected '
+        "today's fixings. Today's spots stand in for them; enter the fixings once they are published."
     )
+
+
+def test_an_option_that_expires_today_with_its_fixing_is_a_known_amount():
+    fixings = Fixings.from_rows([Fixing("ARVENNE", TODAY, 66.0)])
+    assert told(basket("ARVENNE", expiry=TODAY, payment=date(2026, 12, 2)), small_market(fixings=fixings)) == []
 
 
 def test_a_payment_before_expiry():
@@ -375,7 +381,7 @@ def test_a_strike_of_zero_and_the_strike_of_a_spread_are_not_compared(trade):
 def test_a_strike_is_not_compared_where_the_forwards_are_unknown():
     market = small_market(curves={("EUR", "USD"): curve("EUR-USD", "EUR", "USD")})
     assert only(struck(15000.0, 1.0, 1.0), market).code == "no-standard-curve"
-    assert only(replace(basket("ARVENNE", expiry=date(2026, 11, 23)))).code == "expired"
+    assert only(replace(basket("ARVENNE", expiry=date(2026, 11, 23)))).code == "missing-fixing"
 
 
 def test_an_expiry_on_a_holiday():

@@ -18,14 +18,13 @@ def share(*, cash=(), proportional=(), calendar="TARGET"):
 
 
 def found(days, underlying):
-    return [issue.found for issue in observation_care(days, [underlying])]
+    return [issue.found for issue in observation_care([days], [underlying])]
 
 
 def test_an_observation_on_an_ex_date_is_told_with_its_dividend():
     underlying = share(cash=QUARTERS[1:2], proportional=QUARTERS[2:])
     assert found(QUARTERS, underlying) == [
-        "an observation of VESKA on 2026-09-14, when it goes ex a dividend of 2.10 % of its price",
-        "an observation of VESKA on 2026-06-15, when it goes ex a dividend of 1.25 EUR",
+        "observations on ex dates: 2026-06-15 of VESKA (1.25 EUR), 2026-09-14 of VESKA (2.10 % of its price)"
     ]
 
 
@@ -38,8 +37,25 @@ def test_a_daily_series_meets_its_ex_dates_in_silence():
     assert found(days, share(cash=QUARTERS[1:], calendar="WEEKENDS")) == []
 
 
-def test_days_without_trading_are_told_together():
-    days = (date(2026, 4, 3), date(2026, 5, 1), date(2026, 12, 25))  # Good Friday, Labour Day, Christmas Day
+def test_a_daily_series_beside_quarterly_dates_hides_none_of_these():
+    daily = [day for day in (QUARTERS[0] + timedelta(days=i) for i in range(100)) if day.weekday() < 5]
+    (issue,) = observation_care([daily, QUARTERS], [share(cash=QUARTERS[1:2], calendar="WEEKENDS")])
+    assert issue.found == "observations on ex dates: 2026-06-15 of VESKA (1.25 EUR)"
+
+
+def test_a_daily_series_that_begins_on_an_ex_date_meets_it_in_silence():
+    days = [QUARTERS[1] + timedelta(days=i) for i in range(4)]
+    assert found(days, share(cash=QUARTERS[1:2])) == []
+
+
+def test_days_without_trading_are_told_together_with_the_calendars_that_are_closed():
+    # Good Friday, Labour Day, Christmas Day and New Year's Day
+    days = (date(2026, 4, 3), date(2026, 5, 1), date(2026, 12, 25), date(2027, 1, 1))
     assert found(days, share()) == [
-        "observations of VESKA on 2026-04-03, 2026-05-01, 2026-12-25, not business days of calendar TARGET"
+        "observations on days without trading: 2026-04-03 (TARGET), 2026-05-01 (TARGET), 2026-12-25 (TARGET) and 1 more"
     ]
+    both = [share(), share(calendar="LSE")]
+    (issue,) = observation_care([(date(2026, 5, 1), date(2026, 5, 4), date(2026, 12, 25))], both)
+    assert issue.found == (
+        "observations on days without trading: 2026-05-01 (TARGET), 2026-05-04 (LSE), 2026-12-25 (TARGET and LSE)"
+    )

@@ -16,6 +16,7 @@ from pricer.simulation.common_steps import CommonSteps
 from tests.unit.path_cases import CALL, autocallable, law_of, reading
 
 WORST = reading(Aggregate.worst_of(3))
+SPREAD = Reading(Aggregate.weighted_sum((1.0, -1.0)), (1.0, 1.0))
 ONE = Payment.fixed(1.0, 1.0, When.SURVIVING)
 
 
@@ -27,7 +28,8 @@ def sample(problem, points=256):
 @pytest.mark.parametrize(
     ("make", "message"),
     [
-        (lambda: Reading(Aggregate.weighted_sum((1.0, -1.0)), (1.0, 1.0)), "one sign"),
+        (lambda: Tables(PathProblem(law_of(n=2), (Leg((Event(0, Trigger(SPREAD, 1.0)),)),))), "one sign"),
+        (lambda: Reading(Aggregate.weighted_sum((0.0, 0.0)), (1.0, 1.0)), "other than 0"),
         (lambda: Reading(Aggregate.worst_of(2), (1.0,)), "references"),
         (lambda: Reading(Aggregate.worst_of(2, cash=1.0), (1.0, 1.0)), "fold the cash"),
         (lambda: Leg(()), "increasing dates"),

@@ -24,6 +24,7 @@ CSV_FILES = {
     *("cross_check.csv", "problems.csv", "not_priced.csv", "refusal_causes.csv"),
     *("market_problems.csv", "surfaces.csv", "violations.csv", "calibration.csv", "curves.csv", "forwards.csv"),
     *("credit.csv", "funding.csv", "agreements.csv"),
+    *("events.csv", "life.csv", "contracts.csv", "contract_dates.csv"),
 }
 
 

@@ -12,7 +12,7 @@ import pytest
 from pricer.contracts.book import Book
 from pricer.core.issues import Issue, Severity
 from pricer.core.source import SourceFile
-from pricer.loader.book_tables import book_tables
+from pricer.loader.book_models import BOOK_COLUMNS
 from pricer.loader.market_rows import MARKET_ROWS
 from pricer.report import tables
 from pricer.report.market_problems import BOOK_SHEETS, market_problems
@@ -178,7 +178,7 @@ def test_a_flat_market_gives_empty_tables_with_all_columns(frames):
 
 
 def test_the_sheets_of_a_book_are_known_by_name():
-    assert set(book_tables(Book("b", (), (), ()))) == BOOK_SHEETS
+    assert set(BOOK_COLUMNS) == BOOK_SHEETS
     assert not BOOK_SHEETS & set(MARKET_ROWS)
 
 

@@ -145,7 +145,7 @@ def test_an_expiry_today_pays_on_todays_spot_and_says_so():
     outcome = priced(basket("ARVENNE", expiry=TODAY))
     (v,) = outcome.valuations
     assert v.value == pytest.approx(100.0 * (100.0 - 60.0))
-    assert [issue.code for issue in outcome.issues] == ["expires-today"]
+    assert [issue.code for issue in outcome.issues] == ["spot-for-fixing"]
 
 
 def ranked(*weights):

@@ -139,9 +139,16 @@ def _is_positive(problem: EuropeanProblem) -> bool:
 
 def _must_be_claim(problem: EuropeanProblem) -> None:
     """Raise ValueError where the payoff asks the holder to pay: then it is not the writer alone who may fail."""
-    payoff = above_zero(problem.payoff) if _is_positive(problem) else problem.payoff
+    if not is_claim(problem.payoff, positive=_is_positive(problem)):
+        raise ValueError("only a payoff that is never negative can be a claim on its writer")
+
+
+def is_claim(payoff: PiecewiseLinear, *, positive: bool) -> bool:
+    """Whether the payoff is never negative; ``positive`` says that its level never is."""
+    payoff = above_zero(payoff) if positive else payoff
     intercepts, slopes = payoff.pieces()
-    edges = (0.0 if _is_positive(problem) else -math.inf, *payoff.knots, math.inf)
-    for b, m, ends in zip(intercepts, slopes, pairwise(edges), strict=True):
-        if min(b if m == 0.0 else b + m * end for end in ends) < -1e-12 * (1.0 + abs(b)):
-            raise ValueError("only a payoff that is never negative can be a claim on its writer")
+    edges = (0.0 if positive else -math.inf, *payoff.knots, math.inf)
+    return all(
+        min(b if m == 0.0 else b + m * end for end in ends) >= -1e-12 * (1.0 + abs(b))
+        for b, m, ends in zip(intercepts, slopes, pairwise(edges), strict=True)
+    )

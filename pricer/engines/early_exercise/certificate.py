@@ -48,6 +48,7 @@ class BlockBounds:
     upper: float
     exercised: Array  # share of paths that the rule ends there
     squared_errors: Array  # of the continuation value, on these fresh paths
+    gain: float  # of the lower bound, over that with the rights of some dates alone
 
 
 def certify(
@@ -57,33 +58,45 @@ def certify(
     settings: CertificateSettings,
     streams: Callable[[int], np.random.Generator],
     pool: ThreadPoolExecutor,
+    some: tuple[bool, ...] = (),
 ) -> list[BlockBounds]:
-    """Bounds from each block of paths. ``start`` : (n_state,) at time 0."""
-    return list(pool.map(lambda b: _block(dynamics, start, rule, settings, streams(b)), range(settings.blocks)))
+    """Bounds from each block of paths. ``start`` : (n_state,) at time 0; ``some`` dates as in the problem.
+
+    The rule with the rights of some dates alone is followed on the same paths: the difference has little noise.
+    """
+    marks = some or (True,) * len(rule.dates)
+    return list(pool.map(lambda b: _block(dynamics, start, rule, settings, streams(b), marks), range(settings.blocks)))
 
 
 def _block(
-    dynamics: Dynamics, start: Array, rule: FittedRule, settings: CertificateSettings, stream: np.random.Generator
+    dynamics: Dynamics,
+    start: Array,
+    rule: FittedRule,
+    settings: CertificateSettings,
+    stream: np.random.Generator,
+    some: tuple[bool, ...],
 ) -> BlockBounds:
     paths = dynamics.paths(stream, settings.points)
     successors = dynamics.successors(settings.inner)
     last = len(rule.dates) - 1
-    payoff = rule.dates[last].rows(paths[last])[0].astype(float)
-    lower = upper = value = payoff
+    lower = upper = value = rule.dates[last].value(paths[last]).astype(float)
     stop = np.full(settings.points, last)
-    errors = np.zeros(last + 1)
+    errors, gain = np.zeros(last + 1), np.zeros(settings.points)
     for i in range(last - 1, -1, -1):
         expected = rule.dates[i + 1].expected(i + 1, paths[i], successors, settings.inner, stream)
         move = value - expected
         rows = rule.dates[i].rows(paths[i])
-        payoff, on = rows[0].astype(float), rule.dates[i].going_on(rows).astype(float)
-        lower, upper = lower - move, np.maximum(payoff, upper - move)
+        payoff, income, on = rows[0].astype(float), rows[1].astype(float), rule.dates[i].going_on(rows).astype(float)
+        lower, upper = lower - move, np.maximum(payoff, upper - move) + income
         errors[i] = np.mean((lower - on) ** 2)
         ends = payoff > on
-        lower = np.where(ends, payoff, lower)
+        gain = np.where(ends, 0.0 if some[i] else payoff - lower + gain, gain)
+        lower = np.where(ends, payoff, lower) + income
         stop[ends] = i
-        value = np.maximum(payoff, on)
+        value = np.maximum(payoff, on) + income
     origin = np.repeat(start.astype(np.float32)[:, None], settings.points, axis=1)
     move = value - rule.dates[0].expected(0, origin, successors, settings.inner, stream)
     exercised = np.bincount(stop, minlength=last + 1) / settings.points
-    return BlockBounds(float(np.mean(lower - move)), float(np.mean(upper - move)), exercised, errors)
+    return BlockBounds(
+        float(np.mean(lower - move)), float(np.mean(upper - move)), exercised, errors, float(np.mean(gain))
+    )

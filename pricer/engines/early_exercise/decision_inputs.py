@@ -31,6 +31,15 @@ KINDS = {
 }
 
 
+#: Rows of a date before its inputs: what is paid at exercise, and the income.
+FIRST_INPUT = 2
+
+_NOTHING = PiecewiseLinear(0.0, 0.0)
+
+#: Less than anything that going on could be worth, and far from the end of single precision.
+_NO_RIGHT = PiecewiseLinear(-1e30, 0.0)
+
+
 @dataclass(frozen=True, slots=True)
 class InputChoice:
     """How many of each: ``ranks`` of sorted levels, ``scores`` of log-levels, ``powers``, ``shocks`` per horizon."""
@@ -64,15 +73,16 @@ class DateInputs:
     scores: Singles  # (n_scores, n)
     powers: Singles  # (n_powers, n)
     shocks: Singles  # (horizons, m, n)
-    profiles: Singles  # (1 + horizons, width)
+    profiles: Singles  # (2 + horizons, width): of the payoff now, the income now, and later payoffs
+    floors: Singles  # (1 + horizons, n)
 
     @property
     def rows(self) -> int:
-        """The payoff, the aggregate, and the rest."""
-        return 2 + self.n_ranks + len(self.scores) + len(self.powers) + len(self.shocks)
+        """The payoff, the income, the aggregate, and the rest."""
+        return FIRST_INPUT + 1 + self.n_ranks + len(self.scores) + len(self.powers) + len(self.shocks)
 
     def fill(self, levels: Singles, out: Singles) -> None:
-        """``out`` (rows, lanes) at ``levels`` (n, lanes): row 0 is the payoff now, the others the inputs."""
+        """``out`` (rows, lanes) at ``levels`` (n, lanes): rows 0 and 1 are payoff and income now."""
         kernels.decision_inputs(
             levels,
             self.kind,
@@ -83,6 +93,7 @@ class DateInputs:
             self.powers,
             self.shocks,
             self.profiles,
+            self.floors,
             out,
         )
 
@@ -101,9 +112,11 @@ def importance(problem: EarlyExerciseProblem) -> Array:
 def inputs_by_date(problem: EarlyExerciseProblem, choice: InputChoice, stream: np.random.Generator) -> list[DateInputs]:
     """The inputs of every date; ``stream`` draws the frozen shocks."""
     kind, n = problem.aggregate.kind, problem.n_assets
-    payoffs = problem.decider_payoffs
-    width = 3 + 3 * max(len(f.knots) for f in payoffs)
-    profiles = np.stack([_packed(f, width) for f in payoffs])
+    payoffs, incomes = problem.decider_payoffs, problem.decider_incomes
+    width = 3 + 3 * max(len(f.knots) for f in (*payoffs, *incomes) if f is not None)
+    profiles = [_packed(f or _NO_RIGHT, width) for f in payoffs]
+    income_profiles = [_packed(f or _NOTHING, width) for f in incomes]
+    floors = np.zeros((problem.n_dates, n)) if problem.floors is None else problem.floors
     weights = np.array(problem.aggregate.weights, dtype=np.float32)
     first_rank, n_ranks = _ranks(problem, choice.ranks)
     cumulated = problem.covariances
@@ -112,7 +125,7 @@ def inputs_by_date(problem: EarlyExerciseProblem, choice: InputChoice, stream: n
     out = []
     last = problem.n_dates - 1
     for i in range(problem.n_dates):
-        horizons = sorted({min(i + 1, last), last}) if i < last else []
+        horizons = sorted({_next_right(payoffs, i), last}) if i < last else []
         shocks = np.empty((len(horizons), choice.shocks, 1 if kind is AggregateKind.GEOMETRIC else n), dtype=np.float32)
         for h, to in enumerate(horizons):
             moves = _frozen(cumulated[to] - cumulated[i], drifts[to] - drifts[i], shares, choice.shocks, stream)
@@ -129,10 +142,15 @@ def inputs_by_date(problem: EarlyExerciseProblem, choice: InputChoice, stream: n
                 scores,
                 _powers(problem, cumulated[last] - cumulated[i], drifts[last] - drifts[i], choice.powers),
                 shocks,
-                np.ascontiguousarray(profiles[[i, *horizons]], dtype=np.float32),
+                np.array([profiles[i], income_profiles[i], *(profiles[to] for to in horizons)], dtype=np.float32),
+                np.array([floors[to] for to in (i, *horizons)], dtype=np.float32),
             )
         )
     return out
+
+
+def _next_right(payoffs: tuple[PiecewiseLinear | None, ...], date: int) -> int:
+    return next(i for i in range(date + 1, len(payoffs)) if payoffs[i] is not None)
 
 
 def _packed(payoff: PiecewiseLinear, width: int) -> Array:
@@ -184,6 +202,8 @@ def _powers(problem: EarlyExerciseProblem, covariance: Array, drift: Array, want
 
 def _are_alike(problem: EarlyExerciseProblem) -> bool:
     """Do all assets of a ranked aggregate move by one law?"""
+    if problem.floors is not None and np.ptp(problem.floors, axis=1).any():
+        return False
     for drift, covariance in zip(problem.log_drifts, problem.step_covariances, strict=True):
         off = covariance[~np.eye(problem.n_assets, dtype=bool)]
         spread = np.ptp(np.diag(covariance)) + np.ptp(off) + np.ptp(drift)

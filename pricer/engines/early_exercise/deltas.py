@@ -19,8 +19,8 @@ from threadpoolctl import threadpool_limits
 from pricer.core.randomness import Purpose
 from pricer.engines.early_exercise.certificate import CertificateSettings
 from pricer.engines.early_exercise.dynamics import Dynamics
-from pricer.engines.early_exercise.engine import EarlyExerciseSettings, RuleMaker, streams
-from pricer.engines.early_exercise.problem import EarlyExerciseProblem, Right
+from pricer.engines.early_exercise.engine import EarlyExerciseSettings, RuleMaker, Solution, streams
+from pricer.engines.early_exercise.problem import EarlyExerciseProblem
 from pricer.engines.early_exercise.rule import FittedRule
 
 Array = NDArray[np.float64]
@@ -49,26 +49,30 @@ def early_exercise_deltas(
     problem: EarlyExerciseProblem,
     settings: EarlyExerciseSettings | None = None,
     assets: Sequence[int] | None = None,
+    solution: Solution | None = None,
 ) -> EarlyExerciseDeltas:
-    """Deltas of some assets (all where None) under the rule of the first round.
+    """Deltas of some assets (all where None) under the rule of ``solution``, else of a first round.
 
-    Each costs two more evaluations of the certificate. Levels must move in proportion to their spots, as
-    lognormal ones do. Raises ValueError for a first date at time 0: whether to exercise at once is another question.
+    Each costs two more evaluations of the certificate. The random parts of levels must move in proportion to their
+    spots, as lognormal ones do. Raises ValueError for a first date at time 0: whether to exercise at once is another
+    question.
     """
     settings = EarlyExerciseSettings() if settings is None else settings
     chosen = tuple(range(problem.n_assets)) if assets is None else tuple(assets)
     with threadpool_limits(limits=1), ThreadPoolExecutor(settings.threads) as pool:
-        maker = RuleMaker(problem, settings, pool)
-        rule = maker.rule(maker.start, 1)
+        if solution is None or solution.rule is None or solution.dynamics is None:
+            maker = RuleMaker(problem, settings, pool)
+            rule, dynamics = maker.rule(maker.start, 1), maker.dynamics
+        else:
+            rule, dynamics = solution.rule, solution.dynamics
         draws = streams(settings, Purpose.CERTIFY, _FIRST_BLOCK)
 
         def block(b: int) -> Array:
-            return _block(maker.dynamics, problem.spots, rule, settings.certificate, chosen, draws(b))
+            return _block(dynamics, problem.spots, rule, settings.certificate, chosen, draws(b))
 
         means = np.stack(list(pool.map(block, range(settings.certificate.blocks))))  # (blocks, 2, k)
-    sign = 1.0 if problem.right is Right.HOLDER else -1.0
     errors = means.std(axis=0, ddof=1) / np.sqrt(len(means))
-    return EarlyExerciseDeltas(chosen, sign * means[:, 0].mean(axis=0), errors[0], errors[1])
+    return EarlyExerciseDeltas(chosen, problem.sign * means[:, 0].mean(axis=0), errors[0], errors[1])
 
 
 def _block(
@@ -101,7 +105,8 @@ def _block(
                 stream.bit_generator.state = draws
                 levels = paths[i] * scale
                 martingale = date.value(levels) - date.expected(i, before * scale, successors, settings.inner, stream)
-                payoff = np.where(ends, date.rows(levels)[0].astype(float), 0.0)
+                rows = date.rows(levels)[:2].astype(float)
+                payoff = np.where(ends, rows[0], 0.0) + np.where(alive, rows[1], 0.0)
                 moves += side * (payoff - np.where(alive, martingale, 0.0))
                 out[1, k] += side * float(np.mean(payoff))
             out[0, k] += float(np.mean(moves))

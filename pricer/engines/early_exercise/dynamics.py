@@ -38,11 +38,11 @@ def checked_sizes(points: int, inner: int) -> None:
 class Successors(Protocol):
     """Draws of the next state; one instance belongs to one thread."""
 
-    def fill(self, date: int, states: Singles, stream: np.random.Generator, levels: Singles) -> None:
+    def fill(self, date: int, states: Singles, stream: np.random.Generator, first: int, levels: Singles) -> None:
         """States at ``date`` given ``states`` (n, P) at the date before, all from one set of inner points.
 
-        ``levels`` : (n, P K), the K successors of a state side by side. The set is random as a whole, so that
-        each average over successors is unbiased given the state.
+        ``levels`` : (n, at least first + P K), from column ``first`` on the K successors of a state side by side.
+        The set is random as a whole, so that each average over successors is unbiased given the state.
         """
         ...
 
@@ -133,14 +133,14 @@ class _LognormalSuccessors:
         self._normals = [np.empty((part.shape[1], half), dtype=np.float32) for part in loadings]
         self._growth = np.empty((len(drifts[0]), inner), dtype=np.float32)
 
-    def fill(self, date: int, states: Singles, stream: np.random.Generator, levels: Singles) -> None:
+    def fill(self, date: int, states: Singles, stream: np.random.Generator, first: int, levels: Singles) -> None:
         loadings = self._loadings[date]
         dims = loadings.shape[1]
         shift = stream.integers(0, 2**32, size=dims, dtype=np.uint32)
         kernels.mirrored_growth(
             self._points[:dims], shift, loadings, self._drifts[date], self._normals[date], self._growth
         )
-        kernels.grown(states, self._growth, levels)
+        kernels.grown(states, self._growth, first, levels)
 
 
 def mirrored_normals(dims: int, m: int, stream: np.random.Generator) -> Array:

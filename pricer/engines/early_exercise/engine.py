@@ -12,11 +12,11 @@ from threadpoolctl import threadpool_limits
 
 from pricer.core.randomness import Purpose, stream
 from pricer.engines.early_exercise.certificate import BlockBounds, CertificateSettings, certify
-from pricer.engines.early_exercise.decision_inputs import InputChoice, importance, inputs_by_date
+from pricer.engines.early_exercise.decision_inputs import FIRST_INPUT, InputChoice, importance, inputs_by_date
 from pricer.engines.early_exercise.dynamics import MOST_INNER, Dynamics, LognormalDynamics
 from pricer.engines.early_exercise.fitting import FitSettings, fit_rule
 from pricer.engines.early_exercise.outcome import DateDiagnostics, EarlyExerciseValue, Effort, Ending
-from pricer.engines.early_exercise.problem import EarlyExerciseProblem, Right, infimum
+from pricer.engines.early_exercise.problem import EarlyExerciseProblem, Right
 from pricer.engines.early_exercise.rule import FittedRule
 
 Array = NDArray[np.float64]
@@ -47,10 +47,24 @@ class EarlyExerciseSettings:
     threads: int = 2
 
 
+@dataclass(frozen=True, slots=True)
+class Solution:
+    """The interval, and the rule of its last round; None where nothing was fitted."""
+
+    value: EarlyExerciseValue
+    rule: FittedRule | None
+    dynamics: Dynamics | None
+
+
 def early_exercise_value(
     problem: EarlyExerciseProblem, settings: EarlyExerciseSettings | None = None
 ) -> EarlyExerciseValue:
     """The interval of ``problem`` on its dates; deterministic under ``settings.seed`` and ``settings.group``."""
+    return solve(problem, settings).value
+
+
+def solve(problem: EarlyExerciseProblem, settings: EarlyExerciseSettings | None = None) -> Solution:
+    """The same with the fitted rule, for deltas."""
     settings = EarlyExerciseSettings() if settings is None else settings
     if settings.rounds < 1:
         raise ValueError(f"at least one round; got {settings.rounds}")
@@ -60,19 +74,30 @@ def early_exercise_value(
         return _refined(problem, settings, pool)
 
 
-def _with_immediate_exercise(problem: EarlyExerciseProblem, settings: EarlyExerciseSettings) -> EarlyExerciseValue:
+def _with_immediate_exercise(problem: EarlyExerciseProblem, settings: EarlyExerciseSettings) -> Solution:
     """The better, for who decides, of the payoff today and of what remains."""
-    level = problem.aggregate(problem.spots)
-    now = float(problem.payoffs[0](level) * problem.discount_factors[0])
+    payoff = problem.payoffs[0]
+    assert payoff is not None  # the problem says so
+    level = problem.aggregate(problem.spots if problem.floors is None else problem.spots + problem.floors[0])
+    now = float(payoff(level) * problem.discount_factors[0])
     if problem.n_dates == 1:
-        return EarlyExerciseValue(now, now, 0.0, 0.0, 0.0, Ending.KNOWN, None, (DateDiagnostics(0.0, 1.0, 0.0, 0.0),))
-    later = early_exercise_value(problem.after_first_date(), settings)
+        only = (DateDiagnostics(0.0, 1.0, 0.0, 0.0),)
+        return Solution(EarlyExerciseValue(now, now, 0.0, 0.0, 0.0, Ending.KNOWN, None, only), None, None)
+    solution = solve(problem.after_first_date(), settings)
+    later = solution.value
     better = max if problem.right is Right.HOLDER else min
     lower, upper = better(now, later.lower), better(now, later.upper)
     at_once = now >= later.value if problem.right is Right.HOLDER else now <= later.value
     stay = 0.0 if at_once else 1.0
-    dates = [replace(date, exercise_probability=stay * date.exercise_probability) for date in later.dates]
-    return replace(
+    dates = [
+        replace(
+            date,
+            exercise_probability=stay * date.exercise_probability,
+            probability_error=stay * date.probability_error,
+        )
+        for date in later.dates
+    ]
+    value = replace(
         later,
         lower=lower,
         upper=upper,
@@ -81,7 +106,12 @@ def _with_immediate_exercise(problem: EarlyExerciseProblem, settings: EarlyExerc
         gap_error=later.gap_error if upper != now else 0.0,
         ending=Ending.KNOWN if lower == upper == now else later.ending,
         dates=(DateDiagnostics(0.0, 1.0 - stay, 0.0, 0.0), *dates),
+        expected_life=stay * later.expected_life,
+        expected_life_error=stay * later.expected_life_error,
+        gain=stay * later.gain,
+        gain_error=stay * later.gain_error,
     )
+    return replace(solution, value=value)
 
 
 class RuleMaker:
@@ -92,30 +122,30 @@ class RuleMaker:
     ) -> None:
         choice = settings.inputs or InputChoice.suited_to(problem)
         self._inputs = inputs_by_date(problem, choice, streams(settings, Purpose.FIT, _ROUND**2)(0))
-        self._floor = min(infimum(payoff) for payoff in problem.decider_payoffs)
+        self._floors = problem.continuation_floors
         self._settings = settings
         self._pool = pool
         self.dynamics: Dynamics = LognormalDynamics(problem, importance(problem))
-        self.start = replace(settings.fit, degree=_degree(self._inputs[0].rows - 1, settings.fit.degree))
+        self.start = replace(settings.fit, degree=_degree(self._inputs[0].rows - FIRST_INPUT, settings.fit.degree))
 
     def rule(self, fit: FitSettings, number: int) -> FittedRule:
         """The rule of round ``number``."""
         draws = streams(self._settings, Purpose.FIT, number * _ROUND)
-        return fit_rule(self.dynamics, self._inputs, fit, self._floor, draws, self._pool)
+        return fit_rule(self.dynamics, self._inputs, fit, self._floors, draws, self._pool)
 
 
-def _refined(
-    problem: EarlyExerciseProblem, settings: EarlyExerciseSettings, pool: ThreadPoolExecutor
-) -> EarlyExerciseValue:
+def _refined(problem: EarlyExerciseProblem, settings: EarlyExerciseSettings, pool: ThreadPoolExecutor) -> Solution:
     maker = RuleMaker(problem, settings, pool)
     fit, certificate = maker.start, settings.certificate
     rule: FittedRule | None = None
+    found: FittedRule | None = None
     blocks: list[BlockBounds] = []
     for number in range(1, settings.rounds + 1):
         if rule is None:
-            rule, blocks = maker.rule(fit, number), []
+            rule = found = maker.rule(fit, number)
+            blocks = []
         draws = streams(settings, Purpose.CERTIFY, number * _ROUND)
-        blocks = blocks + certify(maker.dynamics, problem.spots, rule, certificate, draws, pool)
+        blocks = blocks + certify(maker.dynamics, problem.spots, rule, certificate, draws, pool, problem.some)
         used = Effort(
             number,
             fit.blocks * fit.points,
@@ -134,7 +164,7 @@ def _refined(
             certificate = replace(certificate, inner=min(2 * certificate.inner, MOST_INNER))
         else:
             certificate = replace(certificate, blocks=2 * len(blocks))
-    return outcome
+    return Solution(outcome, found, maker.dynamics)
 
 
 def _outcome(
@@ -155,17 +185,25 @@ def _outcome(
         ending = Ending.TOO_NOISY
     else:
         ending = Ending.REACHED
-    probabilities = np.mean([b.exercised for b in blocks], axis=0)
+    exercised = np.array([b.exercised for b in blocks])
+    lives = exercised @ problem.times
+    probabilities, doubts = exercised.mean(axis=0), exercised.std(axis=0, ddof=1) / root
     fresh = np.sqrt(np.mean([b.squared_errors for b in blocks], axis=0))
     held = [fit.held_out_error for fit in rule.fits] + [0.0]
     dates = tuple(
-        DateDiagnostics(float(t), float(p), float(h), float(e))
-        for t, p, h, e in zip(problem.times, probabilities, held, fresh, strict=True)
+        DateDiagnostics(float(t), float(p), float(h), float(e), float(d))
+        for t, p, h, e, d in zip(problem.times, probabilities, held, fresh, doubts, strict=True)
     )
     if problem.right is Right.ISSUER:
         low, high = -high, -low
         errors[0], errors[1] = errors[1], errors[0]
-    return EarlyExerciseValue(low, high, errors[0], errors[1], errors[2], ending, used, dates)
+    life, life_error = float(lives.mean()), float(lives.std(ddof=1) / root)
+    gains = np.array([b.gain for b in blocks])
+    return EarlyExerciseValue(
+        *(low, high, errors[0], errors[1], errors[2], ending, used, dates, life, life_error),
+        gain=float(gains.mean()),
+        gain_error=float(gains.std(ddof=1) / root),
+    )
 
 
 def _degree(inputs: int, most: int) -> int:

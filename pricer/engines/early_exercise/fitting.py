@@ -16,7 +16,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from pricer.engines.early_exercise.decision_inputs import DateInputs
+from pricer.engines.early_exercise.decision_inputs import FIRST_INPUT, DateInputs
 from pricer.engines.early_exercise.dynamics import Dynamics, Successors, checked_sizes
 from pricer.engines.early_exercise.rule import Continuation, DateValue, FittedRule
 from pricer.regression.least_squares import Fit, NormalEquations, fit
@@ -30,6 +30,9 @@ _HELD_OUT = 8
 
 #: Exercised states count half where their payoff exceeds the continuation by so many errors of the first fit.
 _NEAR = 2.0
+
+#: An error below this part of the targets is rounding.
+_ROUNDING = 1e-7
 
 #: Fitted values are held between the quantiles, over the anchor, that leave this share of the sample on either side.
 _BEYOND = 1e-3
@@ -67,7 +70,7 @@ class _Block:
         self.earned: Array = np.empty(settings.points)
 
     def end(self, last: DateValue) -> None:
-        self.value = self.earned = last.rows(self.paths[-1])[0].astype(float)
+        self.value = self.earned = last.value(self.paths[-1]).astype(float)
 
     def aim(self, date: int, inputs: DateInputs, following: DateValue) -> None:
         """Inputs and targets at ``date``."""
@@ -77,20 +80,24 @@ class _Block:
 
     def follow(self, here: DateValue) -> None:
         """Value and earnings under the rule just fitted."""
-        payoff, on = self.rows[0].astype(float), here.going_on(self.rows).astype(float)
-        self.value = np.maximum(payoff, on)
-        self.earned = np.where(payoff > on, payoff, self.target)
+        payoff, income = self.rows[0].astype(float), self.rows[1].astype(float)
+        on = here.going_on(self.rows).astype(float)
+        self.value = np.maximum(payoff, on) + income
+        self.earned = np.where(payoff > on, payoff, self.target) + income
 
 
 def fit_rule(
     dynamics: Dynamics,
     inputs: Sequence[DateInputs],
     settings: FitSettings,
-    floor: float,
+    floors: Array,
     streams: Callable[[int], np.random.Generator],
     pool: ThreadPoolExecutor,
 ) -> FittedRule:
-    """Fit from the last date back. ``streams(block)`` makes each block's generator; ``floor`` of any continuation."""
+    """Fit from the last date back.
+
+    ``streams(block)`` makes each block's generator; ``floors`` : (n_dates,) the least each continuation can be.
+    """
     last = len(inputs) - 1
     following = DateValue(inputs[last], None)
     blocks = list(pool.map(lambda b: _Block(dynamics, settings, streams(b)), range(settings.blocks)))
@@ -100,9 +107,9 @@ def fit_rule(
         block.end(following)
     for date in range(last - 1, -1, -1):
         _each(pool, blocks, _Block.aim, date, inputs[date], following)
-        sample = np.concatenate([block.rows[1:] for block in blocks[: max(len(blocks) // 4, 1)]], axis=1)
+        sample = np.concatenate([block.rows[FIRST_INPUT:] for block in blocks[: max(len(blocks) // 4, 1)]], axis=1)
         basis = PolynomialBasis.of(sample, settings.degree, free=len(inputs[date].shocks))
-        result, continuation = _fitted_twice(basis, blocks, len(inputs[date].shocks), floor, pool)
+        result, continuation = _fitted_twice(basis, blocks, len(inputs[date].shocks), float(floors[date]), pool)
         following = DateValue(inputs[date], continuation)
         _each(pool, blocks, _Block.follow, following)
         dates.append(following)
@@ -122,9 +129,10 @@ def _fitted_twice(
 
     There only the payoff matters, and its size would govern the fit where the decision is close.
     """
-    functions = list(pool.map(lambda block: basis(block.rows[1:]), blocks))
+    functions = list(pool.map(lambda block: basis(block.rows[FIRST_INPUT:]), blocks))
     first = _fitted(basis.size, blocks, functions, [None] * len(blocks), pool)
-    scale = _NEAR * max(first.held_out_error, 1e-300)
+    largest = max(float(np.max(np.abs(block.target))) for block in blocks)
+    scale = _NEAR * max(first.held_out_error, _ROUNDING * largest, 1e-300)
     excess = [block.rows[0] - first.coefficients @ part for block, part in zip(blocks, functions, strict=True)]
     weights = [1.0 / (1.0 + (np.maximum(x, 0.0) / scale) ** 2) for x in excess]
     result = _fitted(basis.size, blocks, functions, weights, pool)

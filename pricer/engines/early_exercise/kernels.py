@@ -103,16 +103,16 @@ def mirrored_growth(points: Any, shift: Any, loadings: Any, drifts: Any, normals
             down[k] = exp2_single(drift - row[k])
 
 
-@_stored(types.void(types.float32[:, :], _F32_2, _F32_2))
-def grown(states: Any, growth: Any, levels: Any) -> None:
-    """``levels[i, p K + k] = states[i, p] growth[i, k]``: (n, P), (n, K) and (n, P K)."""
+@_stored(types.void(types.float32[:, :], _F32_2, types.int64, _F32_2))
+def grown(states: Any, growth: Any, first: int, levels: Any) -> None:
+    """``levels[i, first + p K + k] = states[i, p] growth[i, k]``: (n, P), (n, K) and (n, at least first + P K)."""
     use_wide_vectors()
     n, paths = states.shape
     inner = growth.shape[1]
     for i in range(n):
         for p in range(paths):
             level = states[i, p]
-            row = levels[i, p * inner : (p + 1) * inner]
+            row = levels[i, first + p * inner : first + (p + 1) * inner]
             factors = growth[i]
             for k in range(inner):
                 row[k] = level * factors[k]
@@ -178,52 +178,55 @@ def _power_means(strip: Any, weights: Any, least: bool, top: Any, ratio: Any, in
 
 
 @njit(**OPTIONS)
-def _extreme(levels: Any, factors: Any, greatest: bool, out: Any) -> None:
-    """The greatest (least) of ``levels[i] factors[i]`` on a strip."""
+def _extreme(levels: Any, factors: Any, floors: Any, greatest: bool, out: Any) -> None:
+    """The greatest (least) of ``levels[i] factors[i] + floors[i]`` on a strip."""
     use_wide_vectors()
     n = levels.shape[0]
-    f = factors[0]
+    f, b = factors[0], floors[0]
     for p in range(STRIP):
-        out[p] = levels[0, p] * f
+        out[p] = levels[0, p] * f + b
     i = 1
     if greatest:
         while i + 3 < n:
             a, b, c, d = factors[i], factors[i + 1], factors[i + 2], factors[i + 3]
+            e, f, g, h = floors[i], floors[i + 1], floors[i + 2], floors[i + 3]
             for p in range(STRIP):
-                one = max(levels[i, p] * a, levels[i + 1, p] * b)
-                two = max(levels[i + 2, p] * c, levels[i + 3, p] * d)
+                one = max(levels[i, p] * a + e, levels[i + 1, p] * b + f)
+                two = max(levels[i + 2, p] * c + g, levels[i + 3, p] * d + h)
                 out[p] = max(out[p], max(one, two))
             i += 4
         while i < n:
-            a = factors[i]
+            a, b = factors[i], floors[i]
             for p in range(STRIP):
-                out[p] = max(out[p], levels[i, p] * a)
+                out[p] = max(out[p], levels[i, p] * a + b)
             i += 1
     else:
         while i < n:
-            a = factors[i]
+            a, b = factors[i], floors[i]
             for p in range(STRIP):
-                out[p] = min(out[p], levels[i, p] * a)
+                out[p] = min(out[p], levels[i, p] * a + b)
             i += 1
 
 
 @njit(**OPTIONS)
-def _aggregate(kind: int, weights: Any, levels: Any, factors: Any, value: Any, ranked: Any, out: Any) -> None:
-    """The aggregate of ``levels[i] factors[i]`` on a strip; ``value`` and ``ranked`` are scratch."""
+def _aggregate(
+    kind: int, weights: Any, levels: Any, factors: Any, floors: Any, value: Any, ranked: Any, out: Any
+) -> None:
+    """The aggregate of ``levels[i] factors[i] + floors[i]`` on a strip; ``value`` and ``ranked`` are scratch."""
     use_wide_vectors()
     n = levels.shape[0]
     if kind == BEST:
-        _extreme(levels, factors, True, out)
+        _extreme(levels, factors, floors, True, out)
     elif kind == WORST:
-        _extreme(levels, factors, False, out)
+        _extreme(levels, factors, floors, False, out)
     elif kind == RANKED:
         for r in range(n):
             for p in range(STRIP):
                 ranked[r, p] = _F(-1.0)
         for i in range(n):
-            f = factors[i]
+            f, b = factors[i], floors[i]
             for p in range(STRIP):
-                value[p] = levels[i, p] * f
+                value[p] = levels[i, p] * f + b
             _insert(value, i + 1, ranked)
         for p in range(STRIP):
             out[p] = _F(0.0)
@@ -236,9 +239,9 @@ def _aggregate(kind: int, weights: Any, levels: Any, factors: Any, value: Any, r
         for p in range(STRIP):
             out[p] = _F(0.0)
         for i in range(n):
-            f = factors[i] * weights[i]
+            f, b = factors[i] * weights[i], floors[i] * weights[i]
             for p in range(STRIP):
-                out[p] += f * levels[i, p]
+                out[p] += f * levels[i, p] + b
 
 
 @njit(**OPTIONS)
@@ -256,7 +259,9 @@ def _add_payoff(profile: Any, aggregate: Any, scale: Any, out: Any) -> None:
                 out[p] += jump if aggregate[p] > knot else _F(0.0)
 
 
-@_stored(types.void(_F32_2, types.int64, _F32_1, types.int64, types.int64, _F32_2, _F32_2, _F32_3, _F32_2, _F32_2))
+@_stored(
+    types.void(_F32_2, types.int64, _F32_1, types.int64, types.int64, _F32_2, _F32_2, _F32_3, _F32_2, _F32_2, _F32_2)
+)
 def decision_inputs(
     levels: Any,
     kind: int,
@@ -267,6 +272,7 @@ def decision_inputs(
     powers: Any,
     shocks: Any,
     profiles: Any,
+    floors: Any,
     out: Any,
 ) -> None:
     """What is paid now, and what a continuation value is made of.
@@ -274,15 +280,18 @@ def decision_inputs(
     ``levels`` : (n, lanes), lanes a multiple of ``STRIP``. ``kind``, ``weights`` : of the aggregate.
     ``scores`` : (n_scores, n) loadings of log-levels. ``powers`` : (n_powers, n), see ``_power_means``.
     ``shocks`` : (horizons, m, n) growth factors, (.., 1) of the aggregate itself where it is geometric.
-    ``profiles`` : (1 + horizons, width), now first.
-    ``out`` : (2 + n_ranks + n_scores + n_powers + horizons, lanes): payoff now, aggregate, logs of the levels ranked
-    ``first_rank`` and following, scores, log power means, payoffs averaged over the shocks of each horizon.
+    ``profiles`` : (2 + horizons, width), of payoff and income now and of later payoffs. ``floors`` : (1 + horizons, n)
+    added to levels now and, moved by a shock, to later ones; none for a geometric aggregate.
+    ``out`` : (3 + n_ranks + n_scores + n_powers + horizons, lanes): payoff and income now, aggregate, logs of the
+    levels ranked ``first_rank`` and following, scores, log power means, payoffs averaged over each horizon's shocks.
     """
     use_wide_vectors()
     n, lanes = levels.shape
     n_scores, horizons, m = scores.shape[0], shocks.shape[0], shocks.shape[1]
     ones = np.ones(n, dtype=np.float32)
+    none = np.zeros(n, dtype=np.float32)
     strip = np.empty((n, STRIP), dtype=np.float32)
+    full = np.empty((n, STRIP), dtype=np.float32)
     result = np.empty((out.shape[0], STRIP), dtype=np.float32)
     value = np.empty(STRIP, dtype=np.float32)
     aggregate = np.empty(STRIP, dtype=np.float32)
@@ -293,10 +302,14 @@ def decision_inputs(
     share = _F(1.0 / m)
     for start in range(0, lanes, STRIP):
         _copy_in(levels, start, strip)
+        for i in range(n):
+            b = floors[0, i]
+            for p in range(STRIP):
+                full[i, p] = strip[i, p] + b
         if n_scores > 0 or kind == GEOMETRIC:
             for i in range(n):
                 for p in range(STRIP):
-                    logs[i, p] = log_double(float(strip[i, p]))
+                    logs[i, p] = log_double(float(full[i, p]))
         if kind == GEOMETRIC:
             for p in range(STRIP):
                 wide[p] = 0.0
@@ -307,14 +320,15 @@ def decision_inputs(
             for p in range(STRIP):
                 aggregate[p] = _F(exp2_double(_LOG2_E * wide[p]))
         else:
-            _aggregate(kind, weights, strip, ones, value, ranked, aggregate)
+            _aggregate(kind, weights, full, ones, none, value, ranked, aggregate)
         for row in range(result.shape[0]):
             for p in range(STRIP):
                 result[row, p] = _F(0.0)
         _add_payoff(profiles[0], aggregate, _F(1.0), result[0])
+        _add_payoff(profiles[1], aggregate, _F(1.0), result[1])
         for p in range(STRIP):
-            result[1, p] = aggregate[p]
-        at = 2
+            result[2, p] = aggregate[p]
+        at = 3
         if n_ranks > 0:
             depth = first_rank + n_ranks
             for r in range(depth):
@@ -322,7 +336,7 @@ def decision_inputs(
                     ranked[r, p] = _F(-1.0)
             for i in range(n):
                 for p in range(STRIP):
-                    value[p] = strip[i, p]
+                    value[p] = full[i, p]
                 _insert(value, min(i + 1, depth), ranked)
             for r in range(n_ranks):
                 for p in range(STRIP):
@@ -339,7 +353,7 @@ def decision_inputs(
                 result[at + s, p] = _F(wide[p])
         at += n_scores
         if len(powers) > 0:
-            _power_means(strip, powers, kind == WORST, aggregate, value, moved, result, at)
+            _power_means(full, powers, kind == WORST, aggregate, value, moved, result, at)
         at += len(powers)
         for h in range(horizons):
             for s in range(m):
@@ -348,8 +362,8 @@ def decision_inputs(
                     for p in range(STRIP):
                         moved[p] = aggregate[p] * f
                 else:
-                    _aggregate(kind, weights, strip, shocks[h, s], value, ranked, moved)
-                _add_payoff(profiles[1 + h], moved, share, result[at + h])
+                    _aggregate(kind, weights, strip, shocks[h, s], floors[1 + h], value, ranked, moved)
+                _add_payoff(profiles[2 + h], moved, share, result[at + h])
         _copy_out(result, start, out)
 
 

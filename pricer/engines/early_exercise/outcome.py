@@ -38,13 +38,15 @@ class DateDiagnostics:
     """One exercise date. Errors are root mean squares of the continuation value in time-0 money; 0 at the last.
 
     ``held_out_error`` is on paths kept from the fit, where deeply exercised states count less; ``fresh_error`` on the
-    certifying paths, all alike, what the rule earns less the martingale as its target.
+    certifying paths, all alike, what the rule earns less the martingale as its target. ``probability_error`` is
+    the standard error of the exercise probability.
     """
 
     time: float
     exercise_probability: float
     held_out_error: float
     fresh_error: float
+    probability_error: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,6 +55,8 @@ class EarlyExerciseValue:
 
     Each bound has the standard error of its estimate, from independent randomisations; ``gap_error`` is that of
     ``upper - lower``, far smaller, as both come from the same paths. ``value`` is the middle.
+    ``expected_life`` : years under the fitted rule until exercise or the last date. ``gain`` : what the rule earns
+    for who decides over the same with the rights of some dates alone, 0 where the problem marks none.
     """
 
     lower: float
@@ -63,6 +67,10 @@ class EarlyExerciseValue:
     ending: Ending
     effort: Effort | None
     dates: tuple[DateDiagnostics, ...]
+    expected_life: float = 0.0
+    expected_life_error: float = 0.0
+    gain: float = 0.0
+    gain_error: float = 0.0
 
     @property
     def value(self) -> float:

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pricer.engines.early_exercise import kernels
-from pricer.engines.early_exercise.decision_inputs import DateInputs
+from pricer.engines.early_exercise.decision_inputs import FIRST_INPUT, DateInputs
 from pricer.engines.early_exercise.dynamics import Successors
 from pricer.regression.least_squares import Fit
 from pricer.regression.polynomial import PolynomialBasis
@@ -18,6 +18,12 @@ Singles = NDArray[np.float32]
 
 #: Lanes of inner successors worked on together: their levels stay in the second-level cache.
 LANES = 2048
+
+#: Lanes that share one set of inner points, at least: making a set must not cost more than using it.
+_SET = 256
+
+#: The same for many assets: states to a set, one for so many assets.
+_ASSETS = 10
 
 
 @dataclass(frozen=True, slots=True)
@@ -44,13 +50,13 @@ class Continuation:
 
 @dataclass(frozen=True, slots=True)
 class DateValue:
-    """Payoff and continuation at one date; None for a continuation at the last."""
+    """Payoff, income and continuation at one date; None for a continuation at the last."""
 
     inputs: DateInputs
     continuation: Continuation | None
 
     def rows(self, levels: Singles) -> Singles:
-        """Payoff and inputs, (rows, lanes)."""
+        """Payoff, income and inputs, (rows, lanes)."""
         out = np.empty((self.inputs.rows, levels.shape[1]), dtype=np.float32)
         self.inputs.fill(levels, out)
         return out
@@ -59,14 +65,15 @@ class DateValue:
         """The continuation value, (lanes,)."""
         if self.continuation is None:
             raise ValueError("nothing goes on after the last date")
-        return self.continuation(rows[1:], len(self.inputs.shocks))
+        return self.continuation(rows[FIRST_INPUT:], len(self.inputs.shocks))
 
     def value(self, levels: Singles) -> Singles:
-        """``max(payoff, continuation)``, (lanes,)."""
+        """``max(payoff, continuation)`` and the date's income, (lanes,)."""
         rows = self.rows(levels)
         out: Singles = rows[0]
         if self.continuation is not None:
             out = np.maximum(out, self.going_on(rows))
+        out += rows[1]
         return out
 
     def expected(
@@ -75,13 +82,15 @@ class DateValue:
         """Averages of ``value`` over ``inner`` successors of ``states`` (n, P) one date before, (P,): unbiased."""
         n, points = states.shape
         together = max(LANES // inner, 1)
+        shared = min(max(_SET // inner, -(-n // _ASSETS), 1), together)
         out = np.empty(points)
         levels = np.empty((n, min(together, points) * inner), dtype=np.float32)
         for start in range(0, points, together):
             part = states[:, start : start + together]
             if part.shape[1] * inner != levels.shape[1]:
                 levels = np.empty((n, part.shape[1] * inner), dtype=np.float32)
-            successors.fill(date, part, stream, levels)
+            for s in range(0, part.shape[1], shared):
+                successors.fill(date, part[:, s : s + shared], stream, s * inner, levels)
             out[start : start + together] = self.value(levels).reshape(-1, inner).mean(axis=1, dtype=float)
         return out
 

@@ -27,8 +27,7 @@ class When(StrEnum):
 class Reading:
     """An aggregate of levels over ``references`` (n,), or over the levels at the date ``since``.
 
-    Everything may enter with one sign only: a weighted sum needs weights above 0, as the levels'
-    common factor must scale all of it.
+    Weights may have any sign here; an engine whose common factor must scale all of a reading takes one sign only.
     """
 
     aggregate: Aggregate
@@ -41,8 +40,8 @@ class Reading:
             raise ValueError("fold the cash level into the payoff first")
         if len(self.references) != len(weights) or min(self.references) <= 0.0:
             raise ValueError(f"{len(weights)} references above 0 are needed; got {self.references}")
-        if min(weights) < 0.0 or max(weights) <= 0.0:
-            raise ValueError(f"weights must have one sign and be written positive; got {weights}")
+        if not any(weights):
+            raise ValueError(f"a reading needs a weight other than 0; got {weights}")
 
 
 @dataclass(frozen=True, slots=True)

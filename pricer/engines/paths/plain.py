@@ -6,6 +6,8 @@ at many values of it, in equal steps of probability: slow, and nothing could be 
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 from numpy.typing import NDArray
 from scipy.special import ndtri
@@ -24,7 +26,7 @@ def hard_values(problem: PathProblem, rest: Array, common: Array) -> Array:
     """
     steps = CommonSteps.of(problem.law.times, problem.law.covariances)
     levels = np.exp(_log_levels(problem, steps, rest) + _common_moves(steps, common)[:, None, :])
-    return np.stack([_value(leg, problem, levels) for leg in problem.legs])
+    return np.stack([leg_values(leg, problem.legs, levels) for leg in problem.legs])
 
 
 def smooth_values(problem: PathProblem, rest: Array, common: Array, nodes: int) -> Array:
@@ -37,7 +39,7 @@ def smooth_values(problem: PathProblem, rest: Array, common: Array, nodes: int) 
     out = np.zeros((len(problem.legs), rest.shape[2]))
     for w in ndtri((np.arange(nodes) + 0.5) / nodes):
         levels = np.exp(logs + (moves + steps.shifts[:, None] * w)[:, None, :])
-        out += np.stack([_value(leg, problem, levels) for leg in problem.legs])
+        out += np.stack([leg_values(leg, problem.legs, levels) for leg in problem.legs])
     return out / nodes
 
 
@@ -62,18 +64,13 @@ def _read(reading: Reading, date: int, levels: Array) -> Array:
     return reading.aggregate((levels[date] / below).T)
 
 
-def _value(leg: Leg, problem: PathProblem, levels: Array) -> Array:
-    """Discounted payments of a leg on paths ``levels`` (n_dates, n, paths): (paths,)."""
+def leg_values(leg: Leg, legs: tuple[Leg, ...], levels: Array) -> Array:
+    """Discounted payments of one of ``legs`` on paths ``levels`` (n_dates, n, paths): (paths,)."""
     alive = np.ones(levels.shape[2], dtype=bool)
     running = np.full(levels.shape[2], leg.sum_so_far)
     value, missed = np.zeros(levels.shape[2]), np.zeros(levels.shape[2])
-    for event, pays in _whole(leg, problem):
-        up = np.zeros_like(alive)
-        down = np.zeros_like(alive)
-        if event.above is not None:
-            up = _read(event.above.reading, event.date, levels) > event.above.level
-        if event.below is not None:
-            down = (_read(event.below.reading, event.date, levels) < event.below.level) & ~up
+    for event, pays in _whole(leg, legs):
+        up, down = _stops(event, levels)
         if event.fixing is not None:
             running = running + event.fixing.share * _read(event.fixing.reading, event.date, levels)
         for payment in event.payments if pays else ():
@@ -94,12 +91,54 @@ def _value(leg: Leg, problem: PathProblem, levels: Array) -> Array:
     return value
 
 
-def _whole(leg: Leg, problem: PathProblem) -> list[tuple[Event, bool]]:
+@dataclass(frozen=True, slots=True)
+class StopShares:
+    """Of given paths, the shares that leave a leg at each of its events, (n_events,); they have no errors."""
+
+    dates: NDArray[np.int64]
+    above: Array
+    below: Array
+    above_errors: Array
+    below_errors: Array
+    life: float
+    life_error: float
+    stopped_above_error: float = 0.0
+    stopped_below_error: float = 0.0
+
+
+def stops(leg: Leg, levels: Array, times: Array) -> StopShares:
+    """Where paths ``levels`` (n_dates, n, paths) at ``times`` leave a leg without a branch."""
+    alive = np.ones(levels.shape[2], dtype=bool)
+    above, below = [], []
+    for event in leg.events:
+        up, down = _stops(event, levels)
+        above.append(float(np.mean(alive & up)))
+        below.append(float(np.mean(alive & down)))
+        alive &= ~up & ~down
+    none = np.zeros(len(above))
+    dates = np.array([event.date for event in leg.events], dtype=np.int64)
+    saved = (np.array(above) + np.array(below)) @ (times[dates[-1]] - times[dates])
+    life = float(times[dates[-1]] - saved)
+    return StopShares(dates, np.array(above), np.array(below), none, none, life, 0.0)
+
+
+def _stops(event: Event, levels: Array) -> tuple[NDArray[np.bool_], NDArray[np.bool_]]:
+    """Which paths meet the stop above, and which of the others the one below, (paths,) each."""
+    up = np.zeros(levels.shape[2], dtype=bool)
+    down = np.zeros_like(up)
+    if event.above is not None:
+        up = _read(event.above.reading, event.date, levels) > event.above.level
+    if event.below is not None:
+        down = (_read(event.below.reading, event.date, levels) < event.below.level) & ~up
+    return up, down
+
+
+def _whole(leg: Leg, legs: tuple[Leg, ...]) -> list[tuple[Event, bool]]:
     """Events of a leg after those of the legs it branches off, and whether they pay to it."""
     own = [(event, True) for event in leg.events]
     if leg.branch is None:
         return own
-    others = _whole(problem.legs[leg.branch.leg], problem)
+    others = _whole(legs[leg.branch.leg], legs)
     return [(event, False) for event, _ in others if event.date < leg.branch.date] + own
 
 

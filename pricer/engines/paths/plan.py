@@ -42,10 +42,14 @@ _NEVER = 1e3
 
 @dataclass(frozen=True, slots=True)
 class PathProblem:
-    """Value of all ``legs`` together, per unit, discounted."""
+    """Value of all ``legs`` together, per unit, discounted.
+
+    ``drawn_like`` : a law close to this one, whose paths are to be made from the same points in the same way.
+    """
 
     law: PathLaw
     legs: tuple[Leg, ...]
+    drawn_like: PathLaw | None = None
 
     def __post_init__(self) -> None:
         last = len(self.law.times) - 1
@@ -64,7 +68,9 @@ class Tables:
 
     def __init__(self, problem: PathProblem) -> None:
         self._problem = problem
-        self._steps = CommonSteps.of(problem.law.times, problem.law.covariances)
+        other = problem.drawn_like
+        like = None if other is None else CommonSteps.of(other.times, other.covariances)
+        self._steps = CommonSteps.of(problem.law.times, problem.law.covariances, like=like)
         self._readings: dict[tuple[int, Reading], int] = {}
         self._events: list[list[int]] = []
         self._numbers: list[list[float]] = []
@@ -117,6 +123,8 @@ class Tables:
             return -1
         if len(reading.references) != self._problem.law.n_assets:
             raise ValueError(f"{len(reading.references)} references for {self._problem.law.n_assets} levels")
+        if min(reading.aggregate.weights) < 0.0:
+            raise ValueError(f"weights must have one sign and be written positive; got {reading.aggregate.weights}")
         if reading.since is not None and not 0 <= reading.since < date:
             raise ValueError(f"date {date}: a reading since date {reading.since} needs an earlier one")
         shifts = self._steps.shifts

@@ -8,13 +8,18 @@ survival probabilities and conditional draws.
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
 from pricer.core.randomness import Purpose, stream
+from pricer.engines.paths.law import PathLaw
 from pricer.engines.paths.plan import PathProblem, Tables
 from pricer.simulation.batch_means import batch_estimate
+
+if TYPE_CHECKING:
+    from pricer.simulation.path_sampler import PathSampler
 
 Array = NDArray[np.float64]
 
@@ -24,11 +29,15 @@ _ROUNDING = 2.0**-23
 
 @dataclass(frozen=True, slots=True)
 class PathSettings:
-    """How much is drawn, points being per randomisation and powers of two."""
+    """How much is drawn, points being per randomisation and powers of two.
+
+    ``maximum_steps`` limits paths times dates times levels: so many cost some seconds.
+    """
 
     randomisations: int = 32
     initial_points: int = 256
     maximum_points: int = 2**16
+    maximum_steps: int = 2**28
     with_ratios: bool = True
 
     def __post_init__(self) -> None:
@@ -40,6 +49,11 @@ class PathSettings:
         if self.maximum_points < self.initial_points:
             raise ValueError(f"{self.initial_points} initial points exceed {self.maximum_points} maximum points")
 
+    def most_points(self, law: PathLaw) -> int:
+        """The largest number of points per randomisation within the limits, not below the initial one."""
+        within = max(self.maximum_steps // (self.randomisations * law.forwards.size), 1)
+        return int(max(min(self.maximum_points, 2 ** (within.bit_length() - 1)), self.initial_points))
+
 
 @dataclass(frozen=True, slots=True)
 class LegSample:
@@ -47,7 +61,7 @@ class LegSample:
 
     ``dates`` : (n_events,) places among the law's dates; ``above``, ``below`` : (n_events,) probabilities of
     being stopped there, with errors; ``life`` : expected years until it is stopped or ends. Probabilities of a
-    leg that branches off count from the branch on.
+    leg that branches off count from the branch on. ``stopped_above_error``, ``stopped_below_error`` : of their sums.
     """
 
     value: float
@@ -59,6 +73,8 @@ class LegSample:
     below_errors: Array
     life: float
     life_error: float
+    stopped_above_error: float = np.nan
+    stopped_below_error: float = np.nan
 
     @property
     def stopped_above(self) -> float:
@@ -97,27 +113,48 @@ def sample_paths(
     seed: int,
     value_tolerance: float,
     delta_tolerance: float = np.inf,
+    delta_fraction: float = 0.0,
     settings: PathSettings = _DEFAULT,
 ) -> PathSample:
-    """Sample until the standard errors of the value and of every log-delta are within tolerance."""
-    from pricer.simulation.path_sampler import Method, PathSampler  # compiles: only when needed
+    """Sample until the standard errors of the value and of every log-delta are within tolerance.
 
+    For log-deltas that is ``delta_tolerance`` or ``delta_fraction`` of their gross sum, whichever is larger.
+    """
     tables = Tables(problem)
-    method = Method.SMOOTH_WITH_RATIOS if settings.with_ratios else Method.SMOOTH
-    random = stream(seed, group, Purpose.PRICE, 0)
-    sampler = PathSampler(tables.plan(), random, settings.randomisations, method=method)
-    points = settings.initial_points
+    sampler = _sampler(tables, group, seed, settings)
+    points, most = settings.initial_points, settings.most_points(problem.law)
     while True:
         out = _result(tables, problem, sampler.extend(points) / points, points, settings.with_ratios)
-        delta_error = float(np.max(out.log_delta_errors)) if settings.with_ratios and tables.is_smoothed else 0.0
-        reached = out.standard_error <= value_tolerance and delta_error <= delta_tolerance
-        if reached or points >= settings.maximum_points:
+        delta_error, delta_limit = 0.0, delta_tolerance
+        if settings.with_ratios and tables.is_smoothed:
+            delta_error = float(np.max(out.log_delta_errors))
+            delta_limit = max(delta_tolerance, delta_fraction * float(np.sum(np.abs(out.log_deltas))))
+        reached = out.standard_error <= value_tolerance and delta_error <= delta_limit
+        if reached or points >= most:
             break
         points *= 2
     notes = ["precision reached" if reached else "budget of points spent"]
     if not tables.is_smoothed:
         notes.append("sensitivities not available: between two dates the covariance leaves no factor to smooth jumps")
     return replace(out, reached=reached, ending="; ".join(notes))
+
+
+def batch_values(
+    problem: PathProblem, *, group: str, seed: int, points: int, settings: PathSettings = _DEFAULT
+) -> Array:
+    """The value by randomisation, (randomisations,), from the same points as :func:`sample_paths` draws."""
+    tables = Tables(problem)
+    sampler = _sampler(tables, group, seed, replace(settings, with_ratios=False))
+    out: Array = sampler.extend(points)[:, : len(problem.legs)].sum(axis=1) / points
+    return out
+
+
+def _sampler(tables: Tables, group: str, seed: int, settings: PathSettings) -> PathSampler:
+    from pricer.simulation.path_sampler import Method, PathSampler  # compiles: only when needed
+
+    method = Method.SMOOTH_WITH_RATIOS if settings.with_ratios else Method.SMOOTH
+    random = stream(seed, group, Purpose.PRICE, 0)
+    return PathSampler(tables.plan(), random, settings.randomisations, method=method)
 
 
 def prepare_paths() -> None:
@@ -158,6 +195,7 @@ def _result(tables: Tables, problem: PathProblem, means: Array, points: int, wit
                 down_errors[places],
                 float(life),
                 float(life_error),
+                *(float(batch_estimate(side[:, places].sum(axis=1)[:, None])[1][0]) for side in (above, below)),
             )
         )
     return PathSample(

@@ -1,0 +1,32 @@
+"""How much the stepwise engine draws, and how finely it cuts."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True, slots=True)
+class StepwiseSettings:
+    """Settings of legs on paths in steps.
+
+    ``randomisations`` of Sobol points, each starting with ``initial_points``, are doubled until errors are within
+    tolerance, up to ``maximum_points``, or until the work is ``maximum_work``: of a path that is about
+    dates times assets, and as much again for every delta. ``steps`` of a path under local volatility besides those that
+    dates and quoted expiries ask for; contracts with more than ``dense`` dates get one step a date. ``cells`` of the
+    factor that is integrated.
+    """
+
+    randomisations: int = 16
+    initial_points: int = 64
+    maximum_points: int = 2**14
+    maximum_work: float = 6e7
+    steps: int = 32
+    dense: int = 100
+    cells: int = 18
+
+    def __post_init__(self) -> None:
+        if self.randomisations < 8:
+            raise ValueError(f"at least 8 randomisations are needed to tell an error; got {self.randomisations}")
+        for points in (self.initial_points, self.maximum_points):
+            if points < 16 or points & (points - 1):
+                raise ValueError(f"points must be a power of two from 16; got {points}")

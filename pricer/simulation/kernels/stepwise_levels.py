@@ -1,0 +1,113 @@
+"""Prices of one path along its common factor: simulated at the factor's nodes, smooth in between."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+from numba import njit
+
+from pricer.simulation.kernels.elementary import exp2_double
+from pricer.simulation.kernels.vectors import OPTIONS, SUM_OPTIONS
+
+_LN2 = 0.6931471805599453
+
+# Kinds of readings.
+SUM, BEST, WORST, RANKED, GEOMETRIC = range(5)
+
+# Columns of the table of readings.
+DATE, KIND, SINCE = range(3)
+
+
+@njit(**OPTIONS)
+def walk_nodes(
+    noise: Any, directions: Any, nodes: Any, start: float, start_slope: float, moves: Any, levels: Any, lowest: Any,
+    per_node: Any, dates: Any, rows: Any, places: Any, out: Any, slopes: Any,
+) -> None:  # fmt: skip
+    """X of one asset at the dates, ``out`` (n_dates, n_nodes), for every value of the factor in ``nodes``.
+
+    ``noise``, ``directions`` (n_steps,) : increments are ``noise + directions w``; ``moves`` (n_steps - 1, NODES, 2),
+    ``levels`` (n_dates, NODES, 2) : values and rises; ``dates`` (n_steps,) : the date that ends a step, -1 for none.
+    ``slopes`` (n_dates, n_nodes) by the logarithm of X at the start. Scratch ``rows`` (3, n_nodes), ``places``
+    (n_nodes,) integers.
+    """
+    n_steps, n_nodes = len(noise), len(nodes)
+    highest = float(levels.shape[1] - 2)
+    for j in range(n_nodes):
+        rows[0, j] = start
+        rows[2, j] = start_slope
+    for s in range(n_steps):
+        low, scale, date, move, direction = lowest[s], per_node[s], dates[s], noise[s], directions[s]
+        for j in range(n_nodes):
+            q = rows[0, j] + move + direction * nodes[j]
+            x = (q - low) * scale
+            place = np.int32(min(max(x, 0.0), highest))
+            rows[0, j] = q
+            rows[1, j] = x - place
+            places[j] = place
+        if date >= 0:
+            for j in range(n_nodes):
+                rise = levels[date, places[j], 1]
+                out[date, j] = levels[date, places[j], 0] + rise * rows[1, j]
+                slopes[date, j] = rise * scale * rows[2, j]
+        if s + 1 < n_steps:
+            for j in range(n_nodes):
+                rise = moves[s, places[j], 1]
+                rows[0, j] += moves[s, places[j], 0] + rise * rows[1, j]
+                rows[2, j] *= 1.0 + rise * scale
+    for k in range(len(out)):
+        for j in range(n_nodes):
+            x = exp2_double(out[k, j])
+            out[k, j] = x
+            slopes[k, j] *= _LN2 * x
+
+
+@njit(**SUM_OPTIONS)
+def spread(at_nodes: Any, scale: float, floor: float, weights: Any, out: Any) -> None:
+    """Prices ``scale X + floor`` at the ends of cells (n_ends,) from X at the nodes (n_nodes,)."""
+    for f in range(len(out)):
+        out[f] = floor
+    for j in range(len(at_nodes)):
+        x = scale * at_nodes[j]
+        for f in range(len(out)):
+            out[f] += weights[j, f] * x
+
+
+@njit(**SUM_OPTIONS)
+def read(table: Any, references: Any, weights: Any, prices: Any, ranks: Any, out: Any) -> None:
+    """Every reading at the ends of cells, ``out`` (n_readings, n_ends).
+
+    ``table`` (n_readings, 3); ``references``, ``weights`` (n_readings, n); ``prices`` (n_dates, n, n_ends).
+    """
+    n, n_ends = prices.shape[1], prices.shape[2]
+    for r in range(len(table)):
+        date, kind, since = table[r, DATE], table[r, KIND], table[r, SINCE]
+        for f in range(n_ends):
+            out[r, f] = 0.0
+        for i in range(n):
+            if kind == SUM and weights[r, i] == 0.0:
+                continue
+            for f in range(n_ends):
+                below = references[r, i] if since < 0 else max(prices[since, i, f], 1e-300)
+                level = prices[date, i, f] / below
+                if kind == SUM:
+                    out[r, f] += weights[r, i] * level
+                elif kind == BEST:
+                    out[r, f] = level if i == 0 else max(out[r, f], level)
+                elif kind == WORST:
+                    out[r, f] = level if i == 0 else min(out[r, f], level)
+                elif kind == GEOMETRIC:
+                    out[r, f] += weights[r, i] * np.log(max(level, 1e-300))
+                else:
+                    place = i
+                    while place > 0 and ranks[place - 1, f] < level:
+                        ranks[place, f] = ranks[place - 1, f]
+                        place -= 1
+                    ranks[place, f] = level
+        if kind == GEOMETRIC:
+            for f in range(n_ends):
+                out[r, f] = np.exp(out[r, f])
+        elif kind == RANKED:
+            for i in range(n):
+                for f in range(n_ends):
+                    out[r, f] += weights[r, i] * ranks[i, f]
