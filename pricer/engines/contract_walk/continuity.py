@@ -3,11 +3,29 @@
 from __future__ import annotations
 
 from pricer.contracts.autocall import Autocall
+from pricer.contracts.average import Average
 from pricer.contracts.barrier import Barrier, BarrierState
 from pricer.contracts.coupons import Coupons
+from pricer.contracts.exercise import Exercise
+from pricer.contracts.expiry_level import ExpiryLevel
 from pricer.contracts.locked_in import LockedIn
 from pricer.contracts.performance_sum import PerformanceSum
+from pricer.contracts.realised_correlation import RealisedCorrelation
+from pricer.contracts.realised_variance import RealisedVariance
 from pricer.engines.contract_terms import ContractTerms
+
+_KNOWN = (
+    ExpiryLevel,
+    Average,
+    PerformanceSum,
+    LockedIn,
+    RealisedVariance,
+    RealisedCorrelation,
+    Coupons,
+    Autocall,
+    Barrier,
+    Exercise,
+)
 
 
 def is_continuous(terms: ContractTerms) -> bool:
@@ -17,6 +35,8 @@ def is_continuous(terms: ContractTerms) -> bool:
     """
     contract, today = terms.contract, terms.as_of.valuation_date
     statistic, states = contract.statistic, terms.as_of.progress.features
+    if not isinstance(statistic, _KNOWN) or not all(isinstance(feature, _KNOWN) for feature in contract.features):
+        return False  # nothing is known of it
     payoffs = [contract.payout.payoff()]
     if isinstance(statistic, PerformanceSum):
         payoffs.append(statistic.local.payoff())

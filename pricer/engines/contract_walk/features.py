@@ -17,6 +17,7 @@ from pricer.contracts.trigger import Direction, Trigger
 from pricer.engines.contract_walk.between_dates import Watch
 from pricer.engines.contract_walk.bulk import aggregated, met, paid, read
 from pricer.engines.contract_walk.ledger import Ledger
+from pricer.engines.contract_walk.one_by_one import AnyFeature
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -53,7 +54,7 @@ def begin(feature: Feature[Any], state: Any, paths: int, watch: Watch | None) ->
             return PathExercise(feature)
         case Exercise():
             raise TypeError("a walk along given paths cannot tell when a right is best exercised")
-    raise TypeError(f"paths cannot be walked for a {type(feature).__name__}")
+    return AnyFeature(feature, state, paths)
 
 
 class _Plain:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from datetime import date
 from typing import Any, Protocol
 
 import numpy as np
@@ -16,6 +17,7 @@ from pricer.contracts.performance_sum import PerformanceState, PerformanceSum
 from pricer.contracts.realised_correlation import CorrelationState, RealisedCorrelation
 from pricer.contracts.realised_variance import RealisedVariance, VarianceState
 from pricer.engines.contract_walk.bulk import aggregated, paid
+from pricer.engines.contract_walk.one_by_one import AnyStatistic
 
 Array = NDArray[np.float64]
 
@@ -23,14 +25,14 @@ Array = NDArray[np.float64]
 class PathStatistic(Protocol):
     """Shown the levels (n_assets, n_paths) of its dates to come, in order."""
 
-    def observe(self, levels: Array) -> None: ...
+    def observe(self, day: date, levels: Array) -> None: ...
 
     def value(self, paths: int) -> Array:
         """The statistic of each path after the last date, (paths,)."""
 
 
 def begin(statistic: Statistic[Any], state: Any) -> PathStatistic:
-    """The statistic in ``state``, ready for paths. Raises TypeError for one that is not known here."""
+    """The statistic in ``state``, ready for paths."""
     match statistic:
         case ExpiryLevel():
             return PathLevel(statistic, state)
@@ -44,7 +46,7 @@ def begin(statistic: Statistic[Any], state: Any) -> PathStatistic:
             return PathVariance(statistic, state)
         case RealisedCorrelation():
             return PathCorrelation(statistic, state)
-    raise TypeError(f"paths cannot be walked for a {type(statistic).__name__}")
+    return AnyStatistic(statistic, state)
 
 
 class PathLevel:
@@ -54,7 +56,7 @@ class PathLevel:
         self._aggregate = statistic.aggregate
         self._level: Array | float | None = state
 
-    def observe(self, levels: Array) -> None:
+    def observe(self, day: date, levels: Array) -> None:
         self._level = aggregated(self._aggregate, levels)
 
     def value(self, paths: int) -> Array:
@@ -69,7 +71,7 @@ class PathAverage:
         self._statistic = statistic
         self._sums: Array = np.array(state.sums)[:, None]
 
-    def observe(self, levels: Array) -> None:
+    def observe(self, day: date, levels: Array) -> None:
         by_underlying = self._statistic.of is AverageOf.UNDERLYINGS
         self._sums = self._sums + (levels if by_underlying else aggregated(self._statistic.aggregate, levels))
 
@@ -87,7 +89,7 @@ class PathPerformances:
         self._start = None if state.period_start is None else np.array(state.period_start)[:, None]
         self._total: Array = np.array(state.total)
 
-    def observe(self, levels: Array) -> None:
+    def observe(self, day: date, levels: Array) -> None:
         if self._start is not None:
             performance = aggregated(self._statistic.aggregate, levels / self._start)
             self._total = self._total + paid(self._statistic.local, performance)
@@ -107,7 +109,7 @@ class PathSelections:
         self._made = len(state)
         self._total: Array = np.array(math.fsum(selection.level for selection in state))
 
-    def observe(self, levels: Array) -> None:
+    def observe(self, day: date, levels: Array) -> None:
         left = self._statistic.n_underlyings - self._made
         order = np.argsort(np.where(self._gone, np.inf, -levels), axis=0, kind="stable")
         chosen = order[min(self._statistic.rank, left) - 1][None]
@@ -135,7 +137,7 @@ class PathVariance:
         self._squares = self._squares[self._rows]
         self._weights = weights[self._rows]
 
-    def observe(self, levels: Array) -> None:
+    def observe(self, day: date, levels: Array) -> None:
         rows = [levels[self._assets]]
         if self._with_aggregate:
             rows.append(aggregated(self._statistic.aggregate, levels)[None])
@@ -162,7 +164,7 @@ class PathCorrelation:
         self._sums: Array = np.array(state.sums)[:, None]
         self._products: Array = np.array(state.products).reshape(n, n, 1)
 
-    def observe(self, levels: Array) -> None:
+    def observe(self, day: date, levels: Array) -> None:
         now = np.log(levels)
         if self._last is not None:
             moves = now - self._last

@@ -70,7 +70,7 @@ def walk_paths(
             continue
         levels = prices[place] / reference
         if day in seen:
-            statistic.observe(levels)
+            statistic.observe(day, levels)
         for feature, mine in zip(features, own, strict=True):
             if day not in mine:
                 continue
