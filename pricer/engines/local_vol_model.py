@@ -17,13 +17,12 @@ from pricer.engines.local_vol_problem import LocalVolProblem
 from pricer.engines.local_vol_sample import LocalVolSample
 from pricer.engines.model_value import Asked, ModelValue
 from pricer.engines.monte_carlo import Sample
+from pricer.engines.path_inputs import Drivers
 from pricer.engines.problem import Reference
 from pricer.engines.selector import headline
 from pricer.engines.surface_replication import surface_reference
 from pricer.engines.unit_ratios import european_ratios
 from pricer.engines.unit_terms import UnitTerms
-from pricer.market.calendars import year_fraction
-from pricer.market.fx import currencies_of
 from pricer.market.local_vol_surface import LocalVolSurface
 from pricer.market.market import Market
 
@@ -37,28 +36,20 @@ _DRIFT = 1e-4
 
 def path_problem(trade: Trade, terms: UnitTerms, market: Market, *, smiled: bool) -> LocalVolProblem:
     """The trade as paths see it, with every underlying's smile or with lognormal levels."""
-    option = trade.contract
-    names = option.underlyings
-    currencies = [market.underlyings[name].currency for name in names]
-    chains = [market.fx.log_factors(c, trade.currency) if c != trade.currency else {} for c in currencies]
-    pairs = sorted({pair for chain in chains for pair in chain})
-    factors = [*names, *pairs]
-    times, variances = _variances(names, factors, market, trade)
+    names, drivers = trade.contract.underlyings, Drivers.of(trade, market)
     surfaces = (LocalVolSurface.from_implied(market.implied_surface(name), horizon=terms.years) for name in names)
     return LocalVolProblem(
         surfaces=tuple(surfaces) if smiled else (),
-        correlation=market.driver_correlation(factors),
+        correlation=drivers.correlation,
         scales=terms.law.forwards * np.exp(-terms.drifts),
         floors=terms.floors,
-        variance_times=times,
-        variances=variances,
+        variance_times=drivers.times,
+        variances=drivers.variances,
         years=terms.years,
         aggregate=terms.aggregate,
         payoff=terms.payoff,
         discount_factor=terms.discount_factor,
-        exposures=np.array([[chain.get(pair, 0.0) for pair in pairs] for chain in chains]).reshape(
-            len(names), len(pairs)
-        ),
+        exposures=drivers.exposures,
         composite=terms.is_composite,
     )
 
@@ -80,22 +71,6 @@ def lognormal_value_by_paths(
     """One unit under lognormal random parts on top of known floors."""
     found = _sampled(path_problem(trade, terms, market, smiled=False), asked, settings)
     return _value(found, terms, asked, ())
-
-
-def _variances(names: tuple[str, ...], factors: list[str], market: Market, trade: Trade) -> tuple[Array, Array]:
-    """Common times from 0 to expiry (k + 1,), every one at which a volatility jumps, and total variances.
-
-    The latter are those of the lognormal model at these times, (factors, k + 1).
-    """
-    expiry, today = trade.contract.expiry_date, market.valuation_date
-    quoted = {day for name in names for day in market.pure_volatility(name).dates}
-    quoted |= {day for pair in factors[len(names) :] for day in market.fx.volatilities[currencies_of(pair)].dates}
-    dates = [*sorted(day for day in quoted if day < expiry), expiry]
-    times = np.array([0.0, *(year_fraction(today, day) for day in dates)])
-    variances = np.zeros((len(factors), len(times)))
-    for row, factor in enumerate(factors):
-        variances[row, 1:] = [market.log_covariance([factor], day)[0, 0] for day in dates]
-    return times, np.maximum.accumulate(variances, axis=1)
 
 
 def _sampled(problem: LocalVolProblem, asked: Asked, settings: LocalVolSettings) -> LocalVolSample:

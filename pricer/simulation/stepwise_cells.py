@@ -17,8 +17,8 @@ REACH = 4.5
 #: Values of the factor for which paths are simulated: from -REACH to REACH.
 NODES = 9
 
-#: Neighbouring nodes whose polynomial gives a price between them: of degree 5.
-_NEIGHBOURS = 6
+#: Neighbouring nodes whose polynomial gives a price between them: of degree 7.
+_NEIGHBOURS = 8
 
 
 @dataclass(frozen=True, slots=True)

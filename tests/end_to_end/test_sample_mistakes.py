@@ -31,9 +31,9 @@ TOLD = {
     ("SMD-0015", "constituents", "B37", "unknown-underlying"),
     ("SMD-0086", "trades", "AD22", "unknown-word"),
     ("SMD-0088", "schedules", "D2", "missing-fixing"),  # a reference on Good Friday
-    ("SMD-0098", "barriers", "E3", "not-a-decimal"),
-    ("SMD-0099", "barriers", "M4", "dates-out-of-order"),
-    ("SMD-0103", "constituents", "E74", "blank-cell"),
+    ("SMD-0098", "barriers", "E2", "not-a-decimal"),
+    ("SMD-0099", "barriers", "M3", "dates-out-of-order"),
+    ("SMD-0103", "constituents", "E75", "blank-cell"),
     ("SMD-0104", "barriers", "C7", "unknown-word"),
     ("SMD-0107", "barriers", "H8", "no-dates"),  # a barrier on dates that nobody gives
     ("SMD-0109", "trades", "AF32", "not-a-decimal"),
@@ -52,12 +52,12 @@ TOLD = {
     ("SMD-0147", "writers", "B2", "no-writer-credit"),
     ("SMD-0148", "writers", "E3", "blank-cell"),
     ("SMD-0151", "trades", "AD51", "no-dates"),
-    ("SMD-0153", "constituents", "F125", "not-a-number"),
+    ("SMD-0153", "constituents", "F126", "not-a-number"),
 }
 #: Trades that nothing is wrong with, or something that costs nothing: SMD-0002 has expired and was paid.
 LEFT = {
     *("SMD-0002", "SMD-0012", "SMD-0013", "SMD-0016", "SMD-0017", "SMD-0018", "SMD-0019", "SMD-0020"),
-    *("SMD-0089", "SMD-0097", "SMD-0100", "SMD-0125", "SMD-0126", "SMD-0127", "SMD-0129", "SMD-0155"),
+    *("SMD-0089", "SMD-0100", "SMD-0101", "SMD-0125", "SMD-0126", "SMD-0127", "SMD-0129", "SMD-0156"),
 }
 
 
@@ -93,7 +93,7 @@ def test_every_table_of_a_book_has_a_mistake():
     [
         (
             "SMD-0098",
-            'broken_book.xlsx, sheet barriers, row 3, column "level" (cell E3): found 70; expected a decimal '
+            'broken_book.xlsx, sheet barriers, row 2, column "level" (cell E2): found 70; expected a decimal '
             "performance (1.00 = 100 %) of at most 4. Did you mean 0.7 (70 %)?",
         ),
         (

@@ -38,7 +38,7 @@ def df(law, date):
 
 def reading(aggregate, since=None):
     n = len(aggregate.weights)
-    return Reading(aggregate, (100.0,) * n, since)
+    return Reading(aggregate, (100.0 if since is None else 1.0,) * n, since)
 
 
 def autocallable(law, aggregate=None, trigger=1.0, step=0.05, coupon=0.06, knock_in=0.65):

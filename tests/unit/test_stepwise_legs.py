@@ -10,11 +10,11 @@ from pricer.engines.paths.leg import Branch, Event, Fixing, Leg, Payment, Readin
 from pricer.engines.paths.plain import leg_values
 from pricer.engines.stepwise.tables import LegTables
 from pricer.simulation.kernels.stepwise_legs import value_leg
-from pricer.simulation.kernels.stepwise_levels import read
+from pricer.simulation.kernels.stepwise_levels import add_slopes, read
 from pricer.simulation.stepwise_cells import FactorCells
 
 N_DATES, N = 6, 3
-CELLS = 72
+CELLS = 144
 AGGREGATES = (
     Aggregate.worst_of(N),
     Aggregate.best_of(N),
@@ -28,7 +28,7 @@ AGGREGATES = (
 def prices_along(w, random):
     """One path's prices as smooth functions of the factor, (n_dates, n, len(w)), and how to make them."""
     starts = random.normal(0.0, 0.15, (N_DATES, N)).cumsum(axis=0) * 0.5
-    slopes = random.uniform(0.02, 0.12, (N_DATES, N)).cumsum(axis=0)
+    slopes = random.uniform(0.02, 0.07, (N_DATES, N)).cumsum(axis=0)
     return np.exp(starts[:, :, None] + slopes[:, :, None] * w + 0.01 * w**2)
 
 
@@ -59,36 +59,82 @@ def random_leg(random, *, memory):
     return Leg(tuple(events), 0.1)
 
 
-def by_cells(legs, at_nodes, cells):
+def along(legs, at_nodes, cells):
+    """Readings of ``legs`` and what is needed to value them again on other readings."""
     tables = LegTables.of(legs)
     prices = np.ascontiguousarray(at_nodes @ cells.weights)
     readings = np.empty((len(tables.readings), prices.shape[2]))
     read(tables.readings, tables.references, tables.weights, prices, np.empty((N, prices.shape[2])), readings)
-    stopped, values = np.zeros((tables.n_stops, 2)), []
+    return tables, readings, prices
+
+
+def by_cells(tables, readings, cells):
+    """Values of legs, probabilities of stops, and derivatives by readings of all together."""
+    stopped, adjoints, values = np.zeros((tables.n_stops, 2)), np.zeros_like(readings), []
+    shape = len(tables.events), CELLS, 2
     for (first, last), start in zip(tables.legs, tables.first_sums, strict=True):
-        scratch = np.empty((CELLS, 2)), np.empty(CELLS + 1), np.empty((len(tables.events), CELLS, 2))
         values.append(
             value_leg(
                 first, last, start, tables.events, tables.numbers, tables.payments, tables.profiles, readings,
-                cells.mass, cells.moment, *scratch, stopped,
+                cells.mass, cells.moment, np.empty((CELLS, 2)), np.empty((CELLS, 2), dtype=np.int64),
+                np.empty(CELLS + 1), np.empty(shape), np.empty(shape, dtype=np.int64), stopped,
+                np.empty(CELLS, dtype=np.int64), True, adjoints, np.empty((len(tables.events), CELLS + 1)),
             )
         )  # fmt: skip
-    return np.array(values), stopped
+    return np.array(values), stopped, adjoints
 
 
 @pytest.mark.parametrize("memory", [False, True], ids=["plain", "coupons in memory"])
 def test_a_leg_is_worth_the_mean_over_its_factor(memory):
-    """40 random legs. A midpoint of 20,000 on the wrong side of a jump of about 1 is 5e-5; a cell has its own 2e-4."""
+    """24 random legs of some 20 jumps each; one of 20,000 midpoints on the wrong side of a jump of 1 is 5e-5."""
     cells = FactorCells.of(CELLS)
     nodes = ndtri((np.arange(20_000) + 0.5) / 20_000)
-    for seed in range(40):
+    for seed in range(24):
         random = np.random.default_rng(seed)
         leg = random_leg(random, memory=memory)
         state = random.bit_generator.state
         followed = leg_values(leg, (leg,), prices_along(nodes, random)).mean()
         random.bit_generator.state = state
-        (found,), _ = by_cells((leg,), prices_along(cells.nodes, random), cells)
-        assert found == pytest.approx(followed, abs=5e-4)
+        tables, readings, _ = along((leg,), prices_along(cells.nodes, random), cells)
+        (found,), _, _ = by_cells(tables, readings, cells)
+        assert found == pytest.approx(followed, abs=3e-4)
+
+
+@pytest.mark.parametrize("memory", [False, True], ids=["plain", "coupons in memory"])
+def test_derivatives_by_readings_are_those_of_moved_readings(memory):
+    cells = FactorCells.of(CELLS)
+    for seed in range(20):
+        random = np.random.default_rng(seed)
+        leg = random_leg(random, memory=memory)
+        tables, readings, _ = along((leg,), prices_along(cells.nodes, random), cells)
+        (_,), _, adjoints = by_cells(tables, readings, cells)
+        way = random.uniform(-1.0, 1.0, (len(readings), 1)) * readings
+        up, down = (by_cells(tables, readings + sign * 1e-6 * way, cells)[0][0] for sign in (1.0, -1.0))
+        assert (adjoints * way).sum() == pytest.approx((up - down) / 2e-6, rel=1e-4, abs=1e-4)
+
+
+def test_derivatives_go_on_to_the_prices_that_readings_are_made_of():
+    """One reading of each kind, and one over an earlier date; price slopes 1 at one node of one asset and date."""
+    cells, random = FactorCells.of(CELLS), np.random.default_rng(3)
+    references = (1.1, 0.9, 1.0)
+    paid = tuple(
+        Payment(PiecewiseLinear(0.0, 1.0), 1.0 + 0.1 * k, When.ALIVE, Reading(aggregate, references, k % 2 or None))
+        for k, aggregate in enumerate(AGGREGATES)
+    )
+    leg = Leg((Event(4, payments=paid),))
+    at_nodes = prices_along(cells.nodes, random)
+    tables, readings, prices = along((leg,), at_nodes, cells)
+    _, _, adjoints = by_cells(tables, readings, cells)
+    for date, asset, node in ((4, 0, 4), (4, 1, 3), (4, 2, 5), (1, 0, 4), (1, 1, 5), (2, 1, 4)):
+        way, slopes = np.zeros((N_DATES, N, len(cells.nodes))), np.zeros(N)
+        way[date, asset, node] = 1.0
+        add_slopes(
+            tables.readings, tables.references, tables.weights, prices, readings, adjoints, cells.weights, way,
+            np.empty_like(prices), slopes,
+        )  # fmt: skip
+        moved = [by_cells(*along((leg,), at_nodes + sign * 1e-6 * way, cells)[:2], cells)[0][0] for sign in (1.0, -1.0)]
+        assert slopes[asset] == pytest.approx((moved[0] - moved[1]) / 2e-6, rel=1e-5, abs=1e-7)
+        assert abs(slopes).sum() == abs(slopes[asset])
 
 
 def test_a_branch_follows_its_parent_first():
@@ -101,7 +147,8 @@ def test_a_branch_follows_its_parent_first():
     state = random.bit_generator.state
     levels = prices_along(nodes, random)
     random.bit_generator.state = state
-    values, stopped = by_cells((parent, child), prices_along(cells.nodes, random), cells)
+    tables, readings, _ = along((parent, child), prices_along(cells.nodes, random), cells)
+    values, stopped, _ = by_cells(tables, readings, cells)
     expected = [leg_values(leg, (parent, child), levels).mean() for leg in (parent, child)]
     assert values == pytest.approx(expected, abs=3e-4)
     assert 1.0 - stopped[:3].sum() == pytest.approx(expected[0], abs=3e-4)

@@ -116,7 +116,7 @@ def test_legs_agree_with_the_walk_where_dividends_are_paid(smiled):
 
 
 def test_deltas_are_those_of_moved_spots():
-    """Absolute quotes move with no spot; local volatility stays where it is over the present forward, so they do here."""
+    """Flat volatilities move with no spot, so that spots can be moved alone."""
     market = euro_market()
     found = note(TWO, SPOTS)
     value = stepped(found, market, smiled=True)

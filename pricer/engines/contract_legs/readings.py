@@ -26,7 +26,7 @@ class Bound:
 
 @dataclass(frozen=True, slots=True)
 class Readings:
-    """Levels are prices over ``references``, or over those of the date ``since``, all by places among the dates."""
+    """Levels are prices over ``references``, times those of the date ``since`` if given; dates by their places."""
 
     places: dict[date, int]
     references: tuple[float, ...]

@@ -25,7 +25,7 @@ class When(StrEnum):
 
 @dataclass(frozen=True, slots=True)
 class Reading:
-    """An aggregate of levels over ``references`` (n,), or over the levels at the date ``since``.
+    """An aggregate of levels over ``references`` (n,), times the levels at the date ``since`` where one is given.
 
     Weights may have any sign here; an engine whose common factor must scale all of a reading takes one sign only.
     """

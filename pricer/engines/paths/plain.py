@@ -60,7 +60,9 @@ def _common_moves(steps: CommonSteps, normals: Array) -> Array:
 
 
 def _read(reading: Reading, date: int, levels: Array) -> Array:
-    below = np.array(reading.references)[:, None] if reading.since is None else levels[reading.since]
+    below = np.array(reading.references)[:, None]
+    if reading.since is not None:
+        below = below * levels[reading.since]
     return reading.aggregate((levels[date] / below).T)
 
 

@@ -202,7 +202,9 @@ def degree(reading: Reading) -> float:
 def _start(law: PathLaw, date: int, reading: Reading) -> Array:
     """Base-2 logarithm of what each asset contributes at zero noise, (n,)."""
     drifted = np.log(law.forwards) - 0.5 * law.variances
-    start = drifted[date] - (np.log(reading.references) if reading.since is None else drifted[reading.since])
+    start = drifted[date] - np.log(reading.references)
+    if reading.since is not None:
+        start = start - drifted[reading.since]
     if reading.aggregate.kind is AggregateKind.WEIGHTED_SUM:
         weights = np.array(reading.aggregate.weights)
         start = np.where(weights > 0.0, start + np.log(np.where(weights > 0.0, weights, 1.0)), -_NEVER)

@@ -124,9 +124,9 @@ def grid_of(terms: ContractTerms, drivers: Drivers, settings: StepwiseSettings, 
     """
     kinks = drivers.times[1:]
     if not smiled:
-        return TimeGrid.of(terms.times, steps=2, kinks=kinks, least=2 if len(terms.times) == 1 else 1)
+        return TimeGrid.of(terms.times, steps=2, kinks=kinks, least=2 if len(terms.times) == 1 else 1, cuts=0)
     if len(terms.dates) > settings.dense:
-        return TimeGrid.of(terms.times, steps=1, kinks=kinks, least=1)
+        return TimeGrid.of(terms.times, steps=1, kinks=kinks, least=1, cuts=0)
     return TimeGrid.of(terms.times, steps=settings.steps, kinks=kinks, least=4 if len(terms.times) == 1 else 2, cuts=1)
 
 

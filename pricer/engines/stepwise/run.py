@@ -10,13 +10,13 @@ from numpy.typing import NDArray
 
 from pricer.contracts.book import Trade
 from pricer.core.randomness import Purpose, stream
+from pricer.engines.contract_legs.drawing import Drawn
 from pricer.engines.contract_legs.result import ContractLegs
 from pricer.engines.contract_terms import ContractTerms
 from pricer.engines.contract_walk.noise import Noise
 from pricer.engines.local_vol_problem import FlatVolatility
 from pricer.engines.model_value import Asked
 from pricer.engines.path_inputs import Drivers, is_converted
-from pricer.engines.stepwise.control import KnownMean
 from pricer.engines.stepwise.law import StepwiseLaw, grid_of, prices_of
 from pricer.engines.stepwise.sampler import StepwiseSampler
 from pricer.engines.stepwise.settings import StepwiseSettings
@@ -52,7 +52,11 @@ class Stops:
 
 @dataclass(slots=True)
 class Run:
-    """Samplers on common draws. ``halving`` : what twice as many steps changed, with its standard error."""
+    """Samplers on common draws.
+
+    ``known`` : legs on lognormal prices, the mean of ``control``, which is then a control variate. ``halving`` : what
+    twice as many steps changed, with its standard error.
+    """
 
     terms: ContractTerms
     settings: StepwiseSettings
@@ -61,8 +65,8 @@ class Run:
     fine: StepwiseSampler
     coarse: StepwiseSampler | None
     control: StepwiseSampler | None
-    known: KnownMean | None
     steps: int
+    known: Drawn | None = None
     halving: tuple[float, float] = (0.0, 0.0)
 
     @classmethod
@@ -77,9 +81,9 @@ class Run:
         *,
         smiled: bool,
         drivers: Drivers | None = None,
-        known: KnownMean | None = None,
+        controlled: bool = False,
     ) -> Run:
-        """``drivers`` in place of the market's own; with ``known`` lognormal legs are the control variate."""
+        """``drivers`` in place of the market's own; ``controlled`` : lognormal legs are drawn, too."""
         drivers = Drivers.of(trade, market) if drivers is None else drivers
         names, composite = trade.contract.underlyings, is_converted(trade, market)
         flat = [FlatVolatility.of(drivers.times, drivers.variances[row]) for row in range(len(names))]
@@ -102,21 +106,21 @@ class Run:
             halved = sampler(
                 StepwiseLaw.of(twice, drivers, surfaces, signs, scales, floors, composite=composite, factor=law.factor)
             )
-        if known is not None:
+        if controlled:
             whole = scales * (1.0 + floors / terms.forwards)
             none = np.zeros_like(floors)
             control = sampler(
                 StepwiseLaw.of(grid, drivers, flat, signs, whole, none, composite=composite, factor=law.factor)
             )
         steps = grid.n_steps if smiled else 0
-        return cls(terms, settings, drivers, tables, sampler(law), halved, control, known, steps)
+        return cls(terms, settings, drivers, tables, sampler(law), halved, control, steps)
 
     @property
     def most_points(self) -> int:
         """Of a randomisation, within the budget of work."""
         n = len(self.terms.random_spots)
         laws = 1 if self.control is None else 2
-        per_point = self.settings.randomisations * len(self.terms.dates) * n * (1 + n) * laws
+        per_point = self.settings.randomisations * len(self.terms.dates) * n * 2 * laws
         affordable = 1 << max(int(self.settings.maximum_work / per_point).bit_length() - 1, 4)
         return max(min(affordable, self.settings.maximum_points), self.settings.initial_points)
 
@@ -142,7 +146,7 @@ class Run:
             (value,), (error,) = batch_estimate(means)
             return float(value), float(error)
         others = self.control.values.sum(axis=1, keepdims=True) / self.control.points
-        found = _controlled(means, others, np.array([self.known.value]), np.array([self.known.error]))
+        found = _controlled(means, others, np.array([self.known.value]), np.array([self.known.standard_error]))
         return float(found[0][0]), float(found[1][0])
 
     def slopes(self) -> tuple[Array, Array]:

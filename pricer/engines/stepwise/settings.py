@@ -10,19 +10,19 @@ class StepwiseSettings:
     """Settings of legs on paths in steps.
 
     ``randomisations`` of Sobol points, each starting with ``initial_points``, are doubled until errors are within
-    tolerance, up to ``maximum_points``, or until the work is ``maximum_work``: of a path that is about
-    dates times assets, and as much again for every delta. ``steps`` of a path under local volatility besides those that
-    dates and quoted expiries ask for; contracts with more than ``dense`` dates get one step a date. ``cells`` of the
-    factor that is integrated.
+    tolerance, up to ``maximum_points`` or ``maximum_work``: paths times dates times assets, as much again for deltas
+    and twice that with a control variate. ``steps`` of a path under local volatility besides those that dates and
+    quoted expiries ask for; contracts with more than ``dense`` dates get one step a date. ``cells`` of the factor
+    that is integrated.
     """
 
     randomisations: int = 16
     initial_points: int = 64
     maximum_points: int = 2**14
-    maximum_work: float = 6e7
+    maximum_work: float = 3e7
     steps: int = 32
     dense: int = 100
-    cells: int = 18
+    cells: int = 24
 
     def __post_init__(self) -> None:
         if self.randomisations < 8:

@@ -85,11 +85,12 @@ class _Collector:
 
     def tables(self) -> LegTables:
         found = list(self._readings)
+        n = -1 if found else 1
         table = [[date, _KINDS[x.aggregate.kind], -1 if x.since is None else x.since] for date, x in found]
         return LegTables(
             readings=np.array(table, dtype=np.int64).reshape(-1, 3),
-            references=np.array([x.references for _, x in found], dtype=float).reshape(len(found), -1),
-            weights=np.array([x.aggregate.weights for _, x in found], dtype=float).reshape(len(found), -1),
+            references=np.array([x.references for _, x in found], dtype=float).reshape(len(found), n),
+            weights=np.array([x.aggregate.weights for _, x in found], dtype=float).reshape(len(found), n),
             legs=np.array(self._spans, dtype=np.int64).reshape(-1, 2),
             first_sums=np.array([leg.sum_so_far for leg in self._all], dtype=float),
             events=np.array(self._events, dtype=np.int64).reshape(-1, k.EVENT_COLUMNS),

@@ -4,8 +4,8 @@ Levels follow local volatility by the splitting scheme of ``simulation.local_vol
 known amounts. One normal factor of the whole path, which moves all log-levels alike, is split off its motions and
 integrated: every path is simulated at nine values of it, prices in between are smooth, and legs are integrated cell by
 cell (``simulation.kernels.stepwise_legs``). Triggers, digital coupons and knots are so smooth in what is sampled,
-whatever the legs and the signs of weights. Under local volatility the same legs on lognormal prices are the control
-variate.
+whatever the legs and the signs of weights. The same legs on lognormal prices are the control variate where their
+engine knows them.
 """
 
 from __future__ import annotations
@@ -24,7 +24,7 @@ from pricer.engines.path_inputs import is_converted
 from pricer.engines.problem import Reference
 from pricer.engines.sampled_value import SampledValue
 from pricer.engines.selector import Interval, headline
-from pricer.engines.stepwise.control import can_be_controlled, known_mean
+from pricer.engines.stepwise.control import known_mean
 from pricer.engines.stepwise.run import Run
 from pricer.engines.stepwise.settings import StepwiseSettings
 from pricer.engines.stepwise.vegas import lognormal_vegas
@@ -60,8 +60,9 @@ def stepwise_value(
     the present forward; vegas are those under lognormal levels, NaN for composites, whose correlations would move.
     Raises as :meth:`Market.driver_correlation` and :meth:`Market.implied_surface`.
     """
-    known = known_mean(terms, legs, asked) if smiled and can_be_controlled(terms, legs) else None
-    run = Run.of(trade, terms, legs, market, asked, settings, smiled=smiled, known=known)
+    known = known_mean(terms, legs, asked)
+    run = Run.of(trade, terms, legs, market, asked, settings, smiled=smiled, controlled=known is not None)
+    run.known = known
     found = _sample(run, asked)
     sample = SampledValue(
         value=found.value + terms.known_value,
@@ -77,8 +78,7 @@ def stepwise_value(
     shares = terms.random_spots * terms.rates
     vegas, vega_errors = np.full((2, len(shares)), np.nan)
     if not is_converted(trade, market):
-        points = run.fine.slope_points
-        vegas, vega_errors = lognormal_vegas(trade, terms, legs, market, asked, settings, run.drivers, points)
+        vegas, vega_errors = lognormal_vegas(trade, terms, market, asked, settings, run, known)
     return ModelValue(
         headline=leading,
         sample=sample,

@@ -6,10 +6,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pricer.contracts.book import Trade
-from pricer.engines.contract_legs.result import ContractLegs
+from pricer.engines.contract_legs.drawing import Drawn
+from pricer.engines.contract_legs.mapping import contract_legs
+from pricer.engines.contract_legs.result import ContractLegs, NotAsLegs
 from pricer.engines.contract_terms import ContractTerms
 from pricer.engines.model_value import Asked
-from pricer.engines.path_inputs import Drivers
+from pricer.engines.stepwise.control import lognormal_legs
 from pricer.engines.stepwise.run import Run
 from pricer.engines.stepwise.settings import StepwiseSettings
 from pricer.market.market import Market
@@ -25,28 +27,63 @@ _POINT = 0.01
 def lognormal_vegas(
     trade: Trade,
     terms: ContractTerms,
+    market: Market,
+    asked: Asked,
+    settings: StepwiseSettings,
+    run: Run,
+    known: Drawn | None,
+) -> tuple[Array, Array]:
+    """Per volatility point, and errors, (n,) each: a volatility to every date moves, correlations stay.
+
+    A quanto's forwards follow, cash dividends still to come stay, and barriers watched at all times are corrected for
+    the moved volatility. With ``known``, legs on lognormal prices drawn by their own engine, only the difference that
+    cash dividends make is sampled here. NaN where moved legs cannot be told.
+    """
+    n = len(terms.random_spots)
+    vegas, errors = np.full((2, n), np.nan)
+    fewer = 2 ** int(np.ceil(np.log2(2 * n)))
+    points = max(run.fine.slope_points // fewer, settings.initial_points)
+    for asset in range(n):
+        smooth, stepped = [], []
+        for by in (_BUMP, -_BUMP):
+            moved = terms.with_volatility_moved(asset, by)
+            legs = contract_legs(moved)
+            if isinstance(legs, NotAsLegs):
+                return vegas, errors
+            if known is not None:
+                smooth.append(known.again(lognormal_legs(moved, legs, terms), asked, fewer))
+            if known is None or terms.has_floors:
+                stepped.append(_values(trade, terms, legs, market, asked, settings, run, asset, by, points, known))
+        value, variance = 0.0, 0.0
+        for moves in (smooth, stepped):
+            if moves:
+                (move,), (error,) = batch_estimate(((moves[0] - moves[1]) * (_POINT / (2.0 * _BUMP)))[:, None])
+                value, variance = value + float(move), variance + float(error) ** 2
+        vegas[asset], errors[asset] = value, np.sqrt(variance)
+    return vegas, errors
+
+
+def _values(
+    trade: Trade,
+    terms: ContractTerms,
     legs: ContractLegs,
     market: Market,
     asked: Asked,
     settings: StepwiseSettings,
-    drivers: Drivers,
+    run: Run,
+    asset: int,
+    by: float,
     points: int,
-) -> tuple[Array, Array]:
-    """Per volatility point, and errors, (n,) each: a volatility to every date moves, correlations stay.
-
-    A quanto's forwards follow; cash dividends still to come stay. The 2 n values together take about ``points`` of
-    each randomisation.
-    """
-    n = len(terms.random_spots)
-    vegas, errors = np.empty(n), np.empty(n)
-    each = max(points >> (2 * n).bit_length(), settings.initial_points)
-    for asset in range(n):
-        means = []
-        for by in (_BUMP, -_BUMP):
-            moved = drivers.with_volatility_moved(asset, by)
-            run = Run.of(trade, terms, legs, market, asked, settings, smiled=False, drivers=moved)
-            run.fine.extend(each)
-            means.append(run.fine.values.sum(axis=1) / each)
-        (move,), (error,) = batch_estimate(((means[0] - means[1]) * (_POINT / (2.0 * _BUMP)))[:, None])
-        vegas[asset], errors[asset] = float(move), float(error)
-    return vegas, errors
+    known: Drawn | None,
+) -> Array:
+    """By randomisation, (randomisations,), after a move; less the same without cash dividends if those are known."""
+    drivers = run.drivers.with_volatility_moved(asset, by)
+    moved = Run.of(
+        trade, terms, legs, market, asked, settings, smiled=False, drivers=drivers, controlled=known is not None
+    )
+    moved.fine.extend(points)
+    out = moved.fine.values.sum(axis=1) / points
+    if moved.control is not None:
+        moved.control.extend(points)
+        out = out - moved.control.values.sum(axis=1) / points
+    return np.asarray(out)

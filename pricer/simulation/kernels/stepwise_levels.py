@@ -88,7 +88,7 @@ def read(table: Any, references: Any, weights: Any, prices: Any, ranks: Any, out
             if kind == SUM and weights[r, i] == 0.0:
                 continue
             for f in range(n_ends):
-                below = references[r, i] if since < 0 else max(prices[since, i, f], 1e-300)
+                below = references[r, i] if since < 0 else references[r, i] * max(prices[since, i, f], 1e-300)
                 level = prices[date, i, f] / below
                 if kind == SUM:
                     out[r, f] += weights[r, i] * level
@@ -111,3 +111,71 @@ def read(table: Any, references: Any, weights: Any, prices: Any, ranks: Any, out
             for i in range(n):
                 for f in range(n_ends):
                     out[r, f] += weights[r, i] * ranks[i, f]
+
+
+@njit(**OPTIONS)
+def _chosen(table: Any, references: Any, prices: Any, r: int, f: int) -> Any:
+    """The asset that is the best or the worst of reading ``r`` at the end ``f`` of a cell; -1 for other readings."""
+    date, kind, since = table[r, DATE], table[r, KIND], table[r, SINCE]
+    if kind not in (BEST, WORST):
+        return -1
+    out, found = -1, 0.0
+    for i in range(prices.shape[1]):
+        level = prices[date, i, f] / (references[r, i] * (1.0 if since < 0 else max(prices[since, i, f], 1e-300)))
+        if out < 0 or (level > found if kind == BEST else level < found):
+            out, found = i, level
+    return out
+
+
+@njit(**SUM_OPTIONS)
+def add_slopes(
+    table: Any, references: Any, weights: Any, prices: Any, readings: Any, adjoints: Any, cell_weights: Any,
+    price_slopes: Any, of_prices: Any, slopes: Any,
+) -> None:  # fmt: skip
+    """Hand derivatives by readings, ``adjoints``, on to where assets start: added to ``slopes`` (n,).
+
+    ``price_slopes`` (n_dates, n, n_nodes) of prices at the nodes by the logarithm at the start. Scratch ``of_prices``
+    as ``prices``.
+    """
+    n_dates, n, n_ends = prices.shape
+    of_prices[:] = 0.0
+    for r in range(len(table)):
+        date, kind, since = table[r, DATE], table[r, KIND], table[r, SINCE]
+        for f in range(n_ends):
+            moved = adjoints[r, f]
+            if moved == 0.0:
+                continue
+            chosen = _chosen(table, references, prices, r, f)
+            for i in range(n):
+                if chosen >= 0 and i != chosen:
+                    continue
+                before = 1.0 if since < 0 else max(prices[since, i, f], 1e-300)
+                start = references[r, i] * before
+                level = prices[date, i, f] / start
+                weight = weights[r, i]
+                if chosen >= 0:
+                    weight = 1.0
+                elif kind == GEOMETRIC:
+                    weight *= readings[r, f] / max(level, 1e-300)
+                elif kind == RANKED:
+                    place = 0
+                    for j in range(n):
+                        below = references[r, j] * (1.0 if since < 0 else max(prices[since, j, f], 1e-300))
+                        other = prices[date, j, f] / below
+                        place += int(other > level or (other == level and j < i))
+                    weight = weights[r, place]
+                of_prices[date, i, f] += moved * weight / start
+                if since >= 0:
+                    of_prices[since, i, f] -= moved * weight * level / before
+    for k in range(n_dates):
+        for i in range(n):
+            size = 0.0
+            for f in range(n_ends):
+                size += abs(of_prices[k, i, f])
+            if size == 0.0:
+                continue
+            for j in range(len(cell_weights)):
+                total = 0.0
+                for f in range(n_ends):
+                    total += cell_weights[j, f] * of_prices[k, i, f]
+                slopes[i] += total * price_slopes[k, i, j]

@@ -10,13 +10,10 @@ import numpy as np
 from numba import njit
 
 from pricer.core.stored_code import digest_of, stored_under
+from pricer.simulation.kernels.stepwise_cells import moment_between, share_between
 from pricer.simulation.kernels.stepwise_legs import value_leg
-from pricer.simulation.kernels.stepwise_levels import read, spread, walk_nodes
+from pricer.simulation.kernels.stepwise_levels import add_slopes, read, spread, walk_nodes
 from pricer.simulation.kernels.vectors import OPTIONS
-
-#: The start of an asset's log-level is moved by this much to differentiate legs, by first-order changes of prices:
-#: legs are smooth in these, kinks in the slope aside.
-BUMP = 1e-4
 
 
 def _accumulate(
@@ -36,14 +33,14 @@ def _accumulate(
     cells = n_ends - 1
     rows, places = np.empty((3, n_nodes)), np.empty(n_nodes, dtype=np.int32)
     at_nodes, slopes_at = np.empty((n_dates, n_nodes)), np.empty((n_dates, n_nodes))
-    prices, bumped = np.empty((n_dates, n, n_ends)), np.empty((n_dates, n, n_ends))
-    kept = np.empty((n_dates, n_ends))
-    found = np.empty((len(table), n_ends))
-    ranks = np.empty((n, n_ends))
-    alive, running = np.empty((cells, 2)), np.empty(n_ends)
+    price_slopes = np.empty((n_dates, n, n_nodes))
+    prices, of_prices = np.empty((n_dates, n, n_ends)), np.empty((n_dates, n, n_ends))
+    found, adjoints = np.empty((len(table), n_ends)), np.empty((len(table), n_ends))
+    ranks, ends = np.empty((n, n_ends)), np.empty(n_ends)
+    alive, cuts, running = np.empty((cells, 2)), np.empty((cells, 2), dtype=np.int64), np.empty(n_ends)
     missed = np.empty((len(events), cells, 2))
-    unused = np.empty_like(stopped)
-    ends = np.empty(n_ends)
+    missed_cuts = np.empty((len(events), cells, 2), dtype=np.int64)
+    pending, of_running = np.empty(cells, dtype=np.int64), np.empty((len(events), n_ends))
     for path in range(n_paths):
         row = path if len(conversion) > 1 else 0
         for i in range(n):
@@ -54,37 +51,24 @@ def _accumulate(
             for k in range(n_dates):
                 rate = conversion[row, k, i]
                 spread(at_nodes[k], scales[k, i] * rate, floors[k, i] * rate, cell_weights, prices[k, i])
-                if with_slopes:
-                    for j in range(n_nodes):
-                        slopes_at[k, j] = at_nodes[k, j] + BUMP * slopes_at[k, j]
-                    spread(slopes_at[k], scales[k, i] * rate, floors[k, i] * rate, cell_weights, bumped[k, i])
+                for j in range(n_nodes):
+                    price_slopes[k, i, j] = scales[k, i] * rate * slopes_at[k, j]
             spread(at_nodes[n_dates - 1], 1.0, 0.0, cell_weights, ends)
             for c in range(cells):
-                forwards[i] += ends[c] * (mass[c, 0] + mass[c, 1] + mass[c, 2] + mass[c, 3])
-                forwards[i] += (ends[c + 1] - ends[c]) * (moment[c, 0] + moment[c, 1] + moment[c, 2] + moment[c, 3])
+                share, first = share_between(mass, c, 0.0, 1.0), moment_between(moment, c, 0.0, 1.0)
+                forwards[i] += ends[c] * share + (ends[c + 1] - ends[c]) * first
         read(table, references, weights, prices, ranks, found)
-        base = 0.0
+        if with_slopes:
+            adjoints[:] = 0.0
         for leg in range(n_legs):
-            value = value_leg(
+            values[leg] += value_leg(
                 legs[leg, 0], legs[leg, 1], first_sums[leg], events, numbers, payments, profiles, found, mass, moment,
-                alive, running, missed, stopped,
+                alive, cuts, running, missed, missed_cuts, stopped, pending, with_slopes, adjoints, of_running,
             )  # fmt: skip
-            values[leg] += value
-            base += value
-        if not with_slopes:
-            continue
-        for i in range(n):
-            kept[:] = prices[:, i]
-            prices[:, i] = bumped[:, i]
-            read(table, references, weights, prices, ranks, found)
-            prices[:, i] = kept
-            moved = 0.0
-            for leg in range(n_legs):
-                moved += value_leg(
-                    legs[leg, 0], legs[leg, 1], first_sums[leg], events, numbers, payments, profiles, found, mass,
-                    moment, alive, running, missed, unused,
-                )  # fmt: skip
-            slopes[i] += (moved - base) / BUMP
+        if with_slopes:
+            add_slopes(
+                table, references, weights, prices, found, adjoints, cell_weights, price_slopes, of_prices, slopes
+            )
 
 
 #: Kernels import from each other: a change in any of their files renews those on disk.
