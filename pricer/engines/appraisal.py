@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import time
 from collections.abc import Iterable
 from dataclasses import dataclass, field, replace
@@ -32,14 +33,18 @@ from pricer.market.market import Market
 from pricer.market.standing import standing
 
 
+#: How much larger the error of a contract may be under the model that does not lead.
+_LESS = 2.0
+
+
 @dataclass(frozen=True, slots=True)
 class AppraisalSettings:
     """How trades are appraised.
 
     ``precision_bp`` and ``delta_precision_bp`` are targets for the standard errors of the value and of
     each cash delta (delta times spot), in basis points of notional; for cash deltas, of their gross
-    sum where that is larger, of which paths need only come within ``path_delta_precision_bp``: digitals
-    move by many times what they pay. ``model`` leads where the trade asks for none; None: local volatility
+    sum where that is larger, of which paths need only come within ``path_delta_precision_bp``, contracts with
+    triggers within ``contract_delta_precision_bp``: digitals move by many times what they pay. ``model`` leads where the trade asks for none; None: local volatility
     where an underlying has a smile. ``compare_models`` : both are computed wherever they differ. ``overhedge`` :
     what the desk would rather book than a payout that jumps, if it asks for that.
     """
@@ -48,6 +53,7 @@ class AppraisalSettings:
     precision_bp: float = 1.0
     delta_precision_bp: float = 1.0
     path_delta_precision_bp: float = 10.0
+    contract_delta_precision_bp: float = 100.0
     model: Model | None = None
     compare_models: bool = True
     overhedge: Overhedge | None = None
@@ -113,15 +119,19 @@ def _appraised(trade: Trade, market: Market, settings: AppraisalSettings) -> App
         return Appraisal(trade, as_of, notional, Model.LOGNORMAL, known, None, False, 0.0, 0.0)
     terms = ContractTerms.of(trade, as_of, market)
     asked = _asked(trade, terms.unit_notional, settings)
-    asked = replace(asked, delta_fraction=settings.path_delta_precision_bp * 1e-4)
+    asked = replace(asked, delta_fraction=settings.contract_delta_precision_bp * 1e-4)
     has_smile = _has_smile(trade.contract, market)
     wanted = _lead(trade, settings, has_smile=has_smile)
     both = settings.compare_models and has_smile
     smiled = lognormal = None
     if both or (wanted is Model.LOCAL_VOLATILITY and has_smile):
-        smiled = local_vol_contract_value(trade, terms, market, asked, settings.contract)
+        leads = wanted is Model.LOCAL_VOLATILITY
+        smiled = local_vol_contract_value(trade, terms, market, asked if leads else _beside(asked), settings.contract)
     if both or wanted is Model.LOGNORMAL or smiled is None:
-        lognormal = lognormal_contract_value(trade, terms, market, asked, settings.contract)
+        leads = wanted is Model.LOGNORMAL or smiled is None
+        lognormal = lognormal_contract_value(
+            trade, terms, market, asked if leads else _beside(asked), settings.contract
+        )
     lead = Model.LOGNORMAL if has_smile and smiled is None else wanted  # some contracts know no local volatility
     return Appraisal(trade, as_of, terms.unit_notional, lead, lognormal, smiled, has_smile, asked.value_tolerance, 0.0)
 
@@ -167,6 +177,11 @@ def _asked(trade: Trade, unit_notional: float, settings: AppraisalSettings) -> A
         delta_tolerance=settings.delta_precision_bp * 1e-4 * unit_notional,
         delta_fraction=settings.delta_precision_bp * 1e-4,
     )
+
+
+def _beside(asked: Asked) -> Asked:
+    """What is asked of the model that does not lead: the model difference needs its value, nothing its deltas."""
+    return replace(asked, value_tolerance=_LESS * asked.value_tolerance, delta_tolerance=math.inf)
 
 
 def _has_smile(contract: EuropeanOption | Contract, market: Market) -> bool:

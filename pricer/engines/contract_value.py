@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 
+from pricer.contracts.barrier import Barrier
 from pricer.contracts.book import Trade
 from pricer.contracts.exercise import Exercise
 from pricer.contracts.life_cycle import AsOf
@@ -24,6 +25,7 @@ from pricer.engines.stepwise.settings import StepwiseSettings
 from pricer.engines.stepwise.value import stepwise_value
 from pricer.engines.variance_products import variance_references, variance_value
 from pricer.engines.vulnerable_value import claim_fault, vulnerable_value
+from pricer.market.local_vol_surface import LocalVolSurface
 from pricer.market.market import Market
 
 
@@ -67,11 +69,19 @@ def local_vol_contract_value(
     if may_be_exercised(terms.as_of) or has_structural_writer(terms):
         return None
     known = variance_references(terms, market)
-    legs = contract_legs(terms)
+    legs = contract_legs(terms, _at_barriers(terms, market))
     if isinstance(legs, NotAsLegs):
         return walk_value(trade, terms, market, asked, settings.walk, smiled=True, references=known)
     known = (*known, *_check(trade, terms, market, asked, settings, smiled=True))
     return stepwise_value(trade, terms, legs, market, asked, settings.stepwise, known, smiled=True)
+
+
+def _at_barriers(terms: ContractTerms, market: Market) -> tuple[LocalVolSurface, ...]:
+    """Local volatilities for barriers watched at all times, none without one."""
+    if not any(isinstance(feature, Barrier) and feature.continuous for feature in terms.contract.features):
+        return ()
+    surfaces = (market.implied_surface(name) for name in terms.contract.underlyings)
+    return tuple(LocalVolSurface.from_implied(surface, horizon=terms.years) for surface in surfaces)
 
 
 def _check(

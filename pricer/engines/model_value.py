@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from datetime import date
 
@@ -17,13 +18,20 @@ Array = NDArray[np.float64]
 
 @dataclass(frozen=True, slots=True)
 class Asked:
-    """Targets for standard errors, per unit and discounted, and what keys the draws; see ``monte_carlo.sample``."""
+    """Targets for standard errors, per unit and discounted, and what keys the draws; see ``monte_carlo.sample``.
+
+    An infinite ``delta_tolerance`` says that nobody asks for sensitivities.
+    """
 
     group: str
     seed: int
     value_tolerance: float
     delta_tolerance: float
     delta_fraction: float
+
+    @property
+    def wants_ratios(self) -> bool:
+        return math.isfinite(self.delta_tolerance)
 
 
 @dataclass(frozen=True, slots=True)

@@ -217,6 +217,10 @@ def _facts(
                 "the same under local volatility (bp of gross cash delta)",
                 f"{settings.path_delta_precision_bp:g}",
             ),
+            (
+                "the same for contracts with a path (bp of gross cash delta)",
+                f"{settings.contract_delta_precision_bp:g}",
+            ),
             ("independent randomisations", str(sampling.randomisations)),
             ("points a randomisation: first, at most", f"{sampling.initial_points}, {sampling.maximum_points}"),
             ("order of random factors", sampling.ordering),

@@ -26,7 +26,7 @@ class Settings:
     ``precision_bp`` : target standard error of each value, in basis points of notional.
     ``delta_precision_bp`` : the same for each cash delta (delta times spot), of the trade's
     notional or of its gross cash delta, whichever is larger; of the latter, paths under local volatility need
-    only come within ``path_delta_precision_bp``.
+    only come within ``path_delta_precision_bp``, contracts with a path within ``contract_delta_precision_bp``.
     ``workers`` : threads that price trades side by side; no number depends on it.
     ``model`` leads where a trade asks for none; None: local volatility where an underlying has a smile,
     else lognormal. ``compare_models`` : compute both wherever they differ, for the model difference.
@@ -40,6 +40,7 @@ class Settings:
     precision_bp: float = 1.0
     delta_precision_bp: float = 1.0
     path_delta_precision_bp: float = 10.0
+    contract_delta_precision_bp: float = 100.0
     workers: int = field(default_factory=available_cores)
     model: Model | None = None
     compare_models: bool = True
@@ -54,7 +55,12 @@ class Settings:
     def __post_init__(self) -> None:
         if self.seed < 0:
             raise ValueError(f"the seed must be a whole number from 0; got {self.seed}")
-        for precision in (self.precision_bp, self.delta_precision_bp, self.path_delta_precision_bp):
+        for precision in (
+            self.precision_bp,
+            self.delta_precision_bp,
+            self.path_delta_precision_bp,
+            self.contract_delta_precision_bp,
+        ):
             if not precision > 0.0:
                 raise ValueError(f"the precision must be above 0 basis points; got {precision}")
         if self.workers < 1:
@@ -73,6 +79,7 @@ class Settings:
             precision_bp=self.precision_bp,
             delta_precision_bp=self.delta_precision_bp,
             path_delta_precision_bp=self.path_delta_precision_bp,
+            contract_delta_precision_bp=self.contract_delta_precision_bp,
             model=self.model,
             compare_models=self.compare_models,
             sampling=self.sampling,

@@ -17,6 +17,7 @@ from pricer.engines.contract_legs.readings import Bound, Readings
 from pricer.engines.contract_legs.unsayable import UnsayableError
 from pricer.engines.contract_terms import ContractTerms
 from pricer.engines.paths.leg import Payment, When
+from pricer.market.local_vol_surface import LocalVolSurface
 
 
 @dataclass(frozen=True, slots=True)
@@ -29,7 +30,12 @@ class Watch:
 
 
 def add_enders(
-    draft: DraftLeg, features: Sequence[Feature[Any]], states: Sequence[Any], terms: ContractTerms, readings: Readings
+    draft: DraftLeg,
+    features: Sequence[Feature[Any]],
+    states: Sequence[Any],
+    terms: ContractTerms,
+    readings: Readings,
+    surfaces: Sequence[LocalVolSurface] = (),
 ) -> dict[int, list[int]]:
     """Stops of ``draft`` and what they pay; the features that end the contract, in order, by date."""
     found: dict[int, list[int]] = {}
@@ -39,7 +45,7 @@ def add_enders(
             watches, amounts = _calls(feature, state, terms, readings), feature.amounts[state:]
         elif isinstance(feature, Barrier) and feature.rebate_at_hit is not None:
             source = Source(number, str(Ending.KNOCKED_OUT), is_barrier=True)
-            watches = tuple(barrier_watches(feature, terms, readings))
+            watches = tuple(barrier_watches(feature, terms, readings, surfaces))
             amounts = (feature.rebate_at_hit,) * len(watches)
         else:
             continue
@@ -75,8 +81,10 @@ def _calls(call: Autocall, passed: int, terms: ContractTerms, readings: Readings
     )
 
 
-def barrier_watches(barrier: Barrier, terms: ContractTerms, readings: Readings) -> Iterator[Watch]:
-    """The observations to come of a barrier that was not hit."""
+def barrier_watches(
+    barrier: Barrier, terms: ContractTerms, readings: Readings, surfaces: Sequence[LocalVolSurface] = ()
+) -> Iterator[Watch]:
+    """The observations to come of a barrier that was not hit; ``surfaces`` (n,) of local volatility, if any."""
     today = terms.as_of.valuation_date
     if barrier.recorded_hit is not None and barrier.recorded_hit.day > today:
         raise UnsayableError("a hit is recorded for a day to come")
@@ -87,5 +95,7 @@ def barrier_watches(barrier: Barrier, terms: ContractTerms, readings: Readings) 
     for number, (seen, level) in enumerate(rows):
         moved = None
         if barrier.continuous and not readings.is_setting(seen.day):
-            moved = watching.scales(terms, readings, barrier.trigger, places, number, has_begun=has_begun)
+            moved = watching.scales(
+                terms, readings, barrier.trigger, level, places, number, has_begun=has_begun, surfaces=surfaces
+            )
         yield Watch(places[number], readings.bound(barrier.trigger, seen.day, level, moved), seen)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 
 from pricer.contracts.autocall import Autocall
 from pricer.contracts.barrier import Barrier, BarrierKind, BarrierState
@@ -19,32 +19,34 @@ from pricer.engines.contract_legs.result import ContractLegs, NotAsLegs, Stop
 from pricer.engines.contract_legs.unsayable import UnsayableError
 from pricer.engines.contract_terms import ContractTerms
 from pricer.engines.paths.leg import When
+from pricer.market.local_vol_surface import LocalVolSurface
 
 
-def contract_legs(terms: ContractTerms) -> ContractLegs | NotAsLegs:
+def contract_legs(terms: ContractTerms, surfaces: Sequence[LocalVolSurface] = ()) -> ContractLegs | NotAsLegs:
     """What the contract of ``terms`` still pays from tonight on, as legs; amounts already decided are left out.
 
     Leg 0 is stopped by what ends the contract; it pays calls, rebates at hit, coupons and the part of the final
-    amount that no barrier changes. Each further leg is one that barriers stop as well.
+    amount that no barrier changes. Each further leg is one that barriers stop as well. ``surfaces`` (n,) of local
+    volatility say how far barriers watched at all times are moved under a smile.
     """
     as_of = terms.as_of
     if as_of.status is not Status.LIVE:
         return NotAsLegs("the contract is not live")
     try:
-        return _Decomposition(terms, remaining(as_of)).legs()
+        return _Decomposition(terms, remaining(as_of), surfaces).legs()
     except UnsayableError as reason:
         return NotAsLegs(str(reason))
 
 
 class _Decomposition:
-    def __init__(self, terms: ContractTerms, left: Remaining) -> None:
+    def __init__(self, terms: ContractTerms, left: Remaining, surfaces: Sequence[LocalVolSurface]) -> None:
         contract = left.contract
         for feature in contract.features:
             if not isinstance(feature, Coupons | Autocall | Barrier):
                 raise UnsayableError(f"the contract has a feature that looks ahead: {feature.label}")
         if contract.writer is not None and contract.writer.structural is not None:
             raise UnsayableError("the writer's assets decide on its default")
-        self._terms, self._left = terms, left
+        self._terms, self._left, self._surfaces = terms, left, surfaces
         self._readings = Readings.of(terms, contract)
         self._final = FinalLevel(contract, left.statistic, terms, self._readings)
         self._expiry = self._readings.places[contract.expiry.day]
@@ -54,14 +56,15 @@ class _Decomposition:
             if isinstance(feature, Barrier) and feature.rebate_at_hit is None
         ]
         self._watches = {
-            number: tuple(barrier_watches(feature, terms, self._readings)) for number, feature in self._barriers
+            number: tuple(barrier_watches(feature, terms, self._readings, surfaces))
+            for number, feature in self._barriers
         }
 
     def legs(self) -> ContractLegs:
         contract, states = self._left.contract, self._left.features
         main = DraftLeg(self._readings)
         main.event(self._expiry)
-        enders = add_enders(main, contract.features, states, self._terms, self._readings)
+        enders = add_enders(main, contract.features, states, self._terms, self._readings, self._surfaces)
         bare = main.copy_of_stops()
         ends = tuple(self._stops(0, bare))
         drafts = [main, *self._add_coupons(main, bare, enders)]

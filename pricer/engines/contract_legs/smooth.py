@@ -84,7 +84,7 @@ def _vegas(terms: ContractTerms, drawn: Drawn, asked: Asked) -> tuple[Array, Arr
     n = len(terms.contract.underlyings)
     missing = np.full(n, np.nan)
     converted = terms.contract.conversion is Conversion.COMPOSITE and bool(np.any(terms.rates != 1.0))
-    if converted and n > 1:
+    if not asked.wants_ratios or (converted and n > 1):
         return missing, missing
     fewer = 2 ** int(np.ceil(np.log2(2 * n)))
     by_asset = []

@@ -60,7 +60,7 @@ def walk_value(
     composites, whose correlations move with volatilities. Raises TypeError for a right to exercise, ValueError where
     a final level cannot be formed.
     """
-    differentiable = is_continuous(terms)
+    differentiable = asked.wants_ratios and is_continuous(terms)
     for finer in range(_REFINED + 1):
         cut = replace(settings, steps=settings.steps * 2**finer)
         run, precise = _sampled(trade, terms, market, asked, cut, smiled=smiled, differentiable=differentiable)
@@ -160,7 +160,7 @@ def _ratios(
     shares = terms.random_spots * terms.rates
     slopes, errors = batch_estimate(sums.slopes / sums.slope_points)
     vegas = vega_errors = np.full(len(shares), np.nan)
-    if not is_converted(trade, market):
+    if asked.wants_ratios and not is_converted(trade, market):
         run = Run.of(trade, terms, market, asked, settings, Purpose.PRICE, smiled=False)
         law, noise = lognormal_prices(trade, terms, market), run.sampler.noise
         room = settings.maximum_cells / 8.0 / (run.cells_per_point * 2 * len(shares))

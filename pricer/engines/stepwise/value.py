@@ -77,7 +77,7 @@ def stepwise_value(
         leading = replace(leading, method=METHOD)
     shares = terms.random_spots * terms.rates
     vegas, vega_errors = np.full((2, len(shares)), np.nan)
-    if not is_converted(trade, market):
+    if asked.wants_ratios and not is_converted(trade, market):
         vegas, vega_errors = lognormal_vegas(trade, terms, market, asked, settings, run, known)
     return ModelValue(
         headline=leading,
