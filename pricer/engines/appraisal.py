@@ -32,7 +32,6 @@ from pricer.engines.unit_terms import UnitTerms
 from pricer.market.market import Market
 from pricer.market.standing import standing
 
-
 #: How much larger the error of a contract may be under the model that does not lead.
 _LESS = 2.0
 
@@ -44,9 +43,10 @@ class AppraisalSettings:
     ``precision_bp`` and ``delta_precision_bp`` are targets for the standard errors of the value and of
     each cash delta (delta times spot), in basis points of notional; for cash deltas, of their gross
     sum where that is larger, of which paths need only come within ``path_delta_precision_bp``, contracts with
-    triggers within ``contract_delta_precision_bp``: digitals move by many times what they pay. ``model`` leads where the trade asks for none; None: local volatility
-    where an underlying has a smile. ``compare_models`` : both are computed wherever they differ. ``overhedge`` :
-    what the desk would rather book than a payout that jumps, if it asks for that.
+    triggers within ``contract_delta_precision_bp``: digitals move by many times what they pay. ``model`` leads where
+    the trade asks for none; None: local volatility where an underlying has a smile. ``compare_models`` : both are
+    computed wherever they differ. ``overhedge`` : what the desk would rather book than a payout that jumps, if it asks
+    for that.
     """
 
     seed: int

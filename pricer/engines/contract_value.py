@@ -31,7 +31,7 @@ from pricer.market.market import Market
 
 @dataclass(frozen=True, slots=True)
 class ContractSettings:
-    """How much each engine of contracts draws; ``with_checks``: whether an independent walk stands beside each value."""
+    """How much each engine of contracts draws; ``with_checks``: an independent walk stands beside each value."""
 
     smooth: PathSettings = field(default_factory=PathSettings)
     stepwise: StepwiseSettings = field(default_factory=StepwiseSettings)

@@ -30,7 +30,7 @@ def exercise_trades() -> Iterator[Booked]:
 
     callable_ = "issuer-callable notes"
     yield note(callable_, 6_000_000, ("SORBEQ", "HALQUIN"), date(2026, 10, 23), date(2028, 10, 23), put_strike=1.0
-               ).rule("coupon", "3M", amount=0.0185
+               ).rule("coupon", "3M", amount=0.0175
                ).rule("exercise", "3M", start_date=date(2027, 1, 25), end_date=date(2028, 7, 24), amount=1.0
                ).having("exercises", by="issuer", style="bermudan"
                ).barrier("knock-in", "down", 0.65, "expiry")  # fmt: skip

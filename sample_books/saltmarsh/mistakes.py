@@ -67,7 +67,7 @@ _ON_A_PATH: dict[str, tuple[str, Row, Row]] = {
     "SMD-0153": ("constituents", {"underlying": "KRUNTEL"}, {"variance_weight": "0,4x"}),
 }
 #: Trades on a path that nothing is wrong with.
-_GOOD = ("SMD-0089", "SMD-0097", "SMD-0100", "SMD-0125", "SMD-0126", "SMD-0127", "SMD-0129", "SMD-0155")
+_GOOD = ("SMD-0089", "SMD-0100", "SMD-0101", "SMD-0125", "SMD-0126", "SMD-0127", "SMD-0129", "SMD-0156")
 
 
 def broken_book(book: Tables) -> Tables:

@@ -122,7 +122,7 @@ def _guaranteed() -> Iterator[Booked]:
     accrual = "range accruals"
     yield _accruing(note(accrual, 5_000_000, ("ORLUMA", "VADRONE"), date(2026, 3, 16), date(2028, 3, 16)), 0.75, 0.022)
     yield _accruing(note(accrual, 4_000_000, ("KRUNTEL", "HALQUIN"), date(2026, 11, 16), date(2028, 5, 16),
-                         aggregate="best of"), 0.90, 0.034, 1.25)  # fmt: skip
+                         aggregate="best of"), 0.90, 0.030, 1.25)  # fmt: skip
 
 
 def _memory(sold: Booked, level: float, amount: float) -> Booked:

@@ -14,7 +14,7 @@ def variance_trades() -> Iterator[Booked]:
     yield option(desk, "forward", 12_000_000, {"ORLUMA": 0.25, "TESKIR": 0.25, "VADRONE": 0.25, "PELLOMAR": 0.25},
                  date(2026, 6, 18), date(2027, 6, 18), strike=0.034, statistic="variance", direction="long"
                  ).rule("observation", "1D")  # fmt: skip
-    yield option(desk, "forward", 8_000_000, {"MIZZANT": 1.0}, date(2026, 11, 20), date(2027, 3, 19), strike=0.125,
+    yield option(desk, "forward", 8_000_000, {"MIZZANT": 1.0}, date(2026, 11, 20), date(2027, 3, 19), strike=0.150,
                  statistic="variance").rule("observation", "1D")  # fmt: skip
     yield option(desk, "forward", 2_500_000, {"HALQUIN": 1.0}, date(2026, 9, 18), date(2027, 3, 19), strike=0.215,
                  statistic="volatility").rule("observation", "1D")  # fmt: skip

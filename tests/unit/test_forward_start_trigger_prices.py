@@ -28,7 +28,7 @@ from tests.unit.markets import TODAY, small_market
 
 SETTING, END = TODAY + timedelta(days=30), TODAY + timedelta(days=150)
 NAMES = ("ARVENNE", "BELCOR")
-ASKED = Asked("forward start", 3, 5e-5, np.inf, 0.0)
+ASKED = Asked("forward start", 3, 3e-4, np.inf, 0.0)
 #: Two independent samples differ by more than four standard errors in one case of 15000.
 ERRORS = 4.0
 
