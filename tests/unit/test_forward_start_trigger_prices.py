@@ -26,7 +26,7 @@ from pricer.engines.stepwise.value import stepwise_value
 from pricer.market.standing import standing
 from tests.unit.markets import TODAY, small_market
 
-SETTING, END = TODAY + timedelta(days=30), TODAY + timedelta(days=150)
+SETTING, END = TODAY + timedelta(days=30), TODAY + timedelta(days=90)
 NAMES = ("ARVENNE", "BELCOR")
 ASKED = Asked("forward start", 3, 3e-4, np.inf, 0.0)
 #: Two independent samples differ by more than four standard errors in one case of 15000.
@@ -46,14 +46,14 @@ def trade_of(*features, payout=None):
 
 def coupon(scales):
     trigger = Trigger(Direction.UP, Aggregate.worst_of(2), scales)
-    return Coupons((Coupon(SETTING + timedelta(days=60), END, 0.5, 1.0),), trigger)
+    return Coupons((Coupon(SETTING + timedelta(days=40), END, 0.5, 1.0),), trigger)
 
 
 def barrier():
     span = [SETTING + timedelta(days=i) for i in range(1, (END - SETTING).days + 1)]
     days = [Observation(day, day) for day in span if day.weekday() < 5]
     trigger = Trigger(Direction.DOWN, Aggregate.worst_of(2))
-    return Barrier(BarrierKind.OUT, trigger, tuple(days), (0.85,) * len(days), Redemption(capital=0.0), continuous=True)
+    return Barrier(BarrierKind.OUT, trigger, tuple(days), (0.9,) * len(days), Redemption(capital=0.0), continuous=True)
 
 
 def values(trade):
