@@ -171,7 +171,7 @@ def test_the_template_has_a_sheet_with_notes_for_every_table(tmp_path):
     workbook = openpyxl.load_workbook(tmp_path / "market.xlsx")
     assert workbook.sheetnames == [
         "read me", "snapshot", "underlyings", "dividends", "repo", "volatilities", "correlations", "price_history",
-        "curves", "curve_points", "fx", "fx_volatilities", "credit", "funding", "agreements", "examples",
+        "fixings", "curves", "curve_points", "fx", "fx_volatilities", "credit", "funding", "agreements", "examples",
     ]  # fmt: skip
     notes = {cell.value: cell.comment.text for cell in workbook["volatilities"][1]}
     assert notes["strike_of_forward_decimal"] == (

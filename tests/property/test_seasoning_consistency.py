@@ -98,7 +98,11 @@ CONTRACTS = {
         ExpiryLevel(EXPIRY, BASKET),
         CALL,
         paid(EXPIRY),
-        (Barrier(BarrierKind.OUT, Trigger(Direction.DOWN, WORST), tuple(map(paid, OBSERVED)), (0.8,) * 4, rebate_at_hit=0.02),),
+        (
+            Barrier(
+                BarrierKind.OUT, Trigger(Direction.DOWN, WORST), tuple(map(paid, OBSERVED)), (0.8,) * 4, rebate_at_hit=0.02
+            ),
+        ),
     ),
     "cliquet": Contract(
         FIXED,

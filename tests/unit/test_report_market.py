@@ -9,7 +9,6 @@ from datetime import date
 import pandas as pd
 import pytest
 
-from pricer.contracts.book import Book
 from pricer.core.issues import Issue, Severity
 from pricer.core.source import SourceFile
 from pricer.loader.book_models import BOOK_COLUMNS
