@@ -100,7 +100,11 @@ CONTRACTS = {
         paid(EXPIRY),
         (
             Barrier(
-                BarrierKind.OUT, Trigger(Direction.DOWN, WORST), tuple(map(paid, OBSERVED)), (0.8,) * 4, rebate_at_hit=0.02
+                BarrierKind.OUT,
+                Trigger(Direction.DOWN, WORST),
+                tuple(map(paid, OBSERVED)),
+                (0.8,) * 4,
+                rebate_at_hit=0.02,
             ),
         ),
     ),
