@@ -69,7 +69,18 @@ def _barrier(
         fault = Fault("dates-out-of-order", f"the date {hit}", expected, "Correct the date, or those of the barrier.")
         parts.tell(BARRIERS, place, "recorded_hit_date", fault)
         return None
+    if hit is not None and row.monitoring is not Monitoring.CONTINUOUS and hit not in {o.day for o in schedule}:
+        mend = "Correct the date, or clear the cell: the fixings of the days that are watched tell a hit."
+        expected = "a day on which the barrier is watched, as it is not watched at all times"
+        parts.tell(BARRIERS, place, "recorded_hit_date", Fault("terms-do-not-fit", f"the date {hit}", expected, mend))
+        return None
     instead, at_hit = _instead(parts, row, payout)
+    if at_hit is None and instead == payout:
+        words = f"a {row.kind} that changes nothing: the trade pays the same with and without a hit"
+        mend = "Enter the note's put_strike in the table trades, or delete the row."
+        expected = "a note with a put, which the barrier brings or takes away, or a barrier with a rebate"
+        parts.tell(BARRIERS, place, "kind", Fault("terms-do-not-fit", words, expected, mend))
+        return None
     return Barrier(
         row.kind,
         trigger,

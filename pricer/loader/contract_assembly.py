@@ -15,6 +15,7 @@ from pricer.contracts.option import EuropeanOption
 from pricer.contracts.profile import Profile
 from pricer.contracts.redemption import Redemption
 from pricer.contracts.writer import StructuralDefault, Writer
+from pricer.core.issues import Severity
 from pricer.loader.barrier_assembly import barriers_of
 from pricer.loader.book_models import BARRIERS, CONSTITUENTS, WRITERS
 from pricer.loader.book_rows import AnyTradeRow, ConstituentRow, NoteRow
@@ -26,7 +27,7 @@ from pricer.loader.series import AllSeries, all_series
 from pricer.loader.statistic_assembly import statistic_of
 from pricer.loader.table import UNREAD
 from pricer.loader.trade_parts import TradeParts
-from pricer.loader.trade_words import EUROPEAN_OPTION, OPTION, PERFORMANCE, PRICE
+from pricer.loader.trade_words import EUROPEAN_OPTION, OPTION, PERFORMANCE, PRICE, SHORT
 
 
 def contract_of(parts: TradeParts) -> EuropeanOption | Contract | None:
@@ -195,10 +196,21 @@ def _writer(parts: TradeParts) -> Writer | None:
     row = rows[0].value if rows else None
     if row is None:
         return None
+    _warn_of_own_default(parts, rows[0].number)
     structural = None
     if row.assets is not None:
         structural = StructuralDefault(row.assets, row.liabilities, row.deadweight_cost_decimal or 0.0)
     return Writer(row.writer, row.recovery_decimal, structural, row.defaulted_on)
+
+
+def _warn_of_own_default(parts: TradeParts, place: int) -> None:
+    """A short trade is paid by the desk, whose own default is seldom what is meant."""
+    if parts.get("direction") != SHORT:
+        return
+    words = "the writer of a trade that the desk is short, and pays itself"
+    mend = "What the desk owes counts less for the writer's default; delete the row unless its own default is meant."
+    fault = Fault("writer-of-short-trade", words, "writers of trades that the desk is long", mend)
+    parts.tell(WRITERS, place, "writer", fault, Severity.WARNING)
 
 
 def _refuse_features(parts: TradeParts) -> None:

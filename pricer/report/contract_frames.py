@@ -96,7 +96,7 @@ def events(outcome: Outcome) -> Frame:
             "distance_percent": [None if row.distance is None else 100.0 * row.distance for row in rows],
             "deviations": [row.deviations for row in rows],
             "met_today": [words[row.met_today] for row in rows],
-            "amount": [row.amount for row in rows],
+            "amount": [None if row.amount is None else _money(row.amount) for row in rows],
             "currency": [row.currency for row in rows],
             "payment_date": [row.payment_date for row in rows],
             "counterparty": [row.counterparty for row in rows],
@@ -104,6 +104,11 @@ def events(outcome: Outcome) -> Frame:
         text="due trade_id product what underlyings met_today currency counterparty",
         dates="day last_day payment_date",
     )
+
+
+def _money(amount: float) -> float:
+    """Without the dust of binary numbers, and without a minus before a zero."""
+    return round(amount, 4) + 0.0
 
 
 @dataclass(frozen=True, slots=True)

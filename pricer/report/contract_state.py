@@ -90,15 +90,23 @@ def feature_state(as_of: AsOf, i: int, words: Words) -> str:
         case Autocall():
             if as_of.ending is Ending.CALLED and as_of.progress.ended_on == feature.dates[state - 1]:
                 return f"called on {as_of.progress.ended_on}"
-            return f"not called on {state} of {len(feature.schedule)} dates"
+            return _seen("called", state, len(feature.schedule))
         case Barrier():
             if state.hit_on is not None:
                 return f"hit on {state.hit_on}"
             clear = "" if feature.clear_until is None else f", on record as clear until {feature.clear_until}"
-            return f"not hit on {state.seen} of {len(feature.schedule)} dates{clear}"
+            return _seen("hit", state.seen, len(feature.schedule)) + clear
         case Exercise():
             return "not exercised" if feature.exercised is None else f"exercised on {feature.exercised.day}"
     return ""
+
+
+def _seen(what: str, seen: int, n: int) -> str:
+    """That nothing has come of a trigger on the dates so far."""
+    dates = f"{n:,} dates" if n > 1 else "1 date"
+    if not seen:
+        return f"none of {dates} seen yet"
+    return f"not {what} on the first {seen:,} of {dates}" if seen > 1 else f"not {what} on the first of {dates}"
 
 
 def _own_days(as_of: AsOf, i: int) -> set[date]:

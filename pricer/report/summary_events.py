@@ -14,9 +14,13 @@ from pricer.report.styles import Mark, body_style
 from pricer.report.text import shorten
 from pricer.run.outcome import EventRow, Outcome
 
-SHOWN = 6  # lines
+SHOWN = 8  # lines
 #: A trigger within so many standard deviations counts as near.
 NEAR = 1.0
+#: Triggers that end a trade or change what it redeems: told even where they are met from afar.
+DECISIVE = ("call", "knock-in", "knock-out")
+#: What somebody has to enter.
+TO_ENTER = "fixing "
 
 
 @dataclass(frozen=True, slots=True)
@@ -39,8 +43,8 @@ def add_events(canvas: Canvas, outcome: Outcome) -> None:
     shown = groups[:SHOWN]
     canvas.reserve(ROW_HEIGHT * (4 + len(shown)))
     title = (
-        f"What is due: {soon:,} by tomorrow, {len(rows) - soon:,} later; triggers met or within {NEAR:g} standard "
-        f"deviation: {sum(map(_is_near, rows)):,}"
+        f"What is due: {soon:,} by tomorrow, {len(rows) - soon:,} later; triggers within {NEAR:g} standard deviation, "
+        f"and calls and barriers met: {sum(map(_is_near, rows)):,}"
     )
     canvas.section(canvas.take(), LEFT, title, LAST - LEFT + 1)
     _heading(canvas)
@@ -53,7 +57,10 @@ def add_events(canvas: Canvas, outcome: Outcome) -> None:
 
 
 def _groups(outcome: Outcome, rows: Sequence[EventRow]) -> list[_Group]:
-    """Overdue events, near triggers one by one, events by tomorrow, later ones; trades share the line of an event."""
+    """Overdue events, fixings to enter, near triggers one by one, events by tomorrow, later ones.
+
+    Trades share the line of an event.
+    """
     today = outcome.facts.valuation_date
     members: dict[tuple[object, ...], list[EventRow]] = {}
     for row in rows:
@@ -61,15 +68,17 @@ def _groups(outcome: Outcome, rows: Sequence[EventRow]) -> list[_Group]:
         members.setdefault((row.day, row.what, row.last_day, alone), []).append(row)
     groups = [_Group(found[0], len(found), due(found[0], today) is not Due.LATER) for found in members.values()]
 
-    def key(group: _Group) -> tuple[bool, bool, bool]:
-        is_overdue = due(group.first, today) is Due.OVERDUE
-        return not is_overdue, not _is_near(group.first), not group.is_soon
+    def key(group: _Group) -> tuple[bool, bool, bool, bool]:
+        first = group.first
+        is_overdue = due(first, today) is Due.OVERDUE
+        return not is_overdue, not first.what.startswith(TO_ENTER), not _is_near(first), not group.is_soon
 
     return sorted(groups, key=key)
 
 
 def _is_near(row: EventRow) -> bool:
-    return bool(row.met_today) or (row.deviations is not None and abs(row.deviations) <= NEAR)
+    is_close = row.deviations is not None and abs(row.deviations) <= NEAR
+    return is_close or (bool(row.met_today) and row.what in DECISIVE)
 
 
 def _heading(canvas: Canvas) -> None:

@@ -103,7 +103,7 @@ def test_what_is_due_by_tomorrow_is_marked_by_a_tint_and_a_bold_word(workbook):
 def test_the_summary_tells_what_is_due_and_which_triggers_are_near(workbook):
     found = texts(workbook["Summary"])
     title = next(text for text in found if text.startswith("What is due"))
-    assert title == "What is due: 4 by tomorrow, 2 later; triggers met or within 1 standard deviation: 1"
+    assert title == "What is due: 4 by tomorrow, 2 later; triggers within 1 standard deviation, and calls and barriers met: 1"
     first = found.index(title)
     ids = [text for text in found[first:] if text.startswith("PST-")][:6]
     assert ids == ["PST-103", "PST-104", "PST-108", "PST-100", "PST-101", "PST-105"]  # the near trigger leads
@@ -122,6 +122,26 @@ def test_many_events_share_lines_by_kind_and_near_triggers_have_one_each(tmp_pat
     assert len(lines) == SHOWN
     assert lines[:2] == ["NEAR", "T-0 and 29 more"]
     assert f"and {40 - 30 - 1 - (SHOWN - 2)} more: sheet Events" in found
+
+
+def test_the_summary_lets_fixings_to_enter_and_decisive_triggers_lead(tmp_path):
+    day = events()[0].day
+    today = outcome(3).facts.valuation_date
+
+    def trigger(trade_id, what, deviations, met):
+        return EventRow(trade_id, "note", day, what, level=1.0, current=1.2, distance=-0.1, deviations=deviations,
+                        met_today=met, underlyings=("ALDERMOOR",))  # fmt: skip
+
+    rows = (
+        trigger("E-1", "accrual", -5.8, True),  # met from afar, and ends nothing
+        trigger("E-2", "call", -3.0, True),
+        trigger("E-3", "knock-in", -1.2, False),
+        EventRow("E-4", "note", today, "fixing due: ALDERMOOR"),
+    )
+    path = write_report(outcome(3, events=rows), tmp_path / "led") / "report.xlsx"
+    found = texts(openpyxl.load_workbook(path)["Summary"])
+    assert next(text for text in found if text.startswith("What is due")).endswith("barriers met: 1")
+    assert [text for text in found if text.startswith("E-")] == ["E-4", "E-2", "E-1", "E-3"]
 
 
 def test_a_book_without_contracts_has_neither_lives_nor_terms_and_says_that_nothing_is_due(tmp_path):

@@ -129,7 +129,10 @@ def barriers(draw, aggregate, payout, scales):
     schedule = some_observations(draw, 1, 20)
     kind = draw(st.sampled_from(BarrierKind))
     is_note = isinstance(payout, Redemption)
-    instead = draw(st.sampled_from([Redemption(capital=0.25), without_put(payout) if is_note else NOTHING]))
+    otherwise = without_put(payout) if is_note else NOTHING
+    # A barrier that changes nothing is refused.
+    changes = otherwise != payout
+    instead = draw(st.sampled_from([Redemption(capital=0.25), otherwise] if changes else [Redemption(capital=0.25)]))
     at_hit = draw(st.none() | amounts) if kind is BarrierKind.OUT else None
     prices = (1.0,) * len(schedule) if scales else tuple(draw(levels) for _ in schedule)
     hit = draw(st.none() | st.sampled_from(schedule))

@@ -254,6 +254,12 @@ FAULTS = {
     "a hit when nobody watched": (
         "barriers", "EX-8", {}, {"recorded_hit_date": date(2027, 1, 4), "recorded_payment_date": None},
         "recorded_hit_date", "dates-out-of-order", "Correct"),
+    "a hit between the days on which a barrier is watched": (
+        "barriers", "EX-7", {}, {"recorded_hit_date": date(2026, 5, 2)}, "recorded_hit_date", "terms-do-not-fit",
+        "Correct the date, or clear the cell"),
+    "a knock-in of a note that has no put": (
+        "trades", "EX-11", {}, {"put_strike": None, "leverage": None}, "kind", "terms-do-not-fit",
+        "Enter the note's put_strike"),
     "a hit on a day that was clear": (
         "barriers", "EX-8", {}, {"clear_until": date(2026, 3, 18)}, "clear_until", "dates-out-of-order", "Correct"),
     "a rebate at the hit of a knock-in": (
@@ -411,6 +417,15 @@ def test_a_misspelt_table_of_features_is_never_ignored(load, tables):
     assert [(issue.code, issue.mend) for issue in caught.value.issues] == [
         ("missing-sheet", 'Did you mean "bariers"? Rename it.')
     ]
+
+
+def test_a_writer_of_a_trade_that_the_desk_is_short_is_used_with_a_warning(load, tables):
+    row_of(tables, "trades", "EX-14")["direction"] = "short"
+    book = load(tables)
+    (issue,) = book.issues
+    assert (issue.severity, issue.code, issue.trade_id) == (Severity.WARNING, "writer-of-short-trade", "EX-14")
+    assert (issue.sheet, issue.column) == ("writers", "writer")
+    assert next(trade for trade in book if trade.trade_id == "EX-14").contract.writer is not None
 
 
 def test_a_variance_strike_that_looks_like_a_volatility_is_used_with_a_warning(load, tables):

@@ -130,6 +130,11 @@ def grid_of(terms: ContractTerms, drivers: Drivers, settings: StepwiseSettings, 
     return TimeGrid.of(terms.times, steps=settings.steps, kinks=kinks, least=4 if len(terms.times) == 1 else 2, cuts=1)
 
 
+def cut_grid(terms: ContractTerms, drivers: Drivers) -> TimeGrid:
+    """Two steps where a grid of dense dates has one."""
+    return TimeGrid.of(terms.times, steps=1, kinks=drivers.times[1:], least=2, cuts=1)
+
+
 def prices_of(trade: Trade, terms: ContractTerms, market: Market) -> tuple[Array, Array]:
     """Scales and floors of prices over X, (n_dates, n) each."""
     if is_converted(trade, market):

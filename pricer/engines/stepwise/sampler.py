@@ -24,18 +24,23 @@ class StepwiseSampler:
     """
 
     def __init__(self, law: StepwiseLaw, noise: Noise, tables: LegTables, cells: int) -> None:
-        self._law, self._noise, self._tables, self._cells = law, noise, tables, FactorCells.of(cells)
+        self._law, self._noise, self._tables = law, noise, tables
         n, r = len(law.starts), noise.randomisations
+        self.cells = cells
         self.points = self.slope_points = 0
         self.values = np.zeros((r, len(tables.legs)))
         self.stopped = np.zeros((r, tables.n_stops, 2))
         self.slopes, self.forwards = np.zeros((r, n)), np.zeros((r, n))
 
+    def with_cells(self, cells: int) -> StepwiseSampler:
+        """The same paths, none drawn yet, integrated on ``cells`` of the factor."""
+        return StepwiseSampler(self._law, self._noise, self._tables, cells)
+
     def extend(self, points: int, *, with_slopes: bool = False) -> None:
         """Up to ``points``, a power of two, of every randomisation; slopes only if there are those of all before."""
         from pricer.simulation.kernels.stepwise_sums import accumulate_steps  # compiles: only when needed
 
-        law, tables, cells = self._law, self._tables, self._cells
+        law, tables, cells = self._law, self._tables, FactorCells.of(self.cells)
         room = max(_CELLS // max(self._noise.cells, 1), 16)
         block = min(1 << (room.bit_length() - 1), points, self.points or points)
         with_slopes = with_slopes and self.slope_points == self.points

@@ -13,7 +13,7 @@ class StepwiseSettings:
     tolerance, up to ``maximum_points`` or ``maximum_work``: paths times dates times assets, as much again for deltas
     and twice that with a control variate. ``steps`` of a path under local volatility besides those that dates and
     quoted expiries ask for; contracts with more than ``dense`` dates get one step a date. ``cells`` of the factor
-    that is integrated.
+    that is integrated, an even number; they are doubled where half of them would do badly.
     """
 
     randomisations: int = 16
@@ -30,3 +30,5 @@ class StepwiseSettings:
         for points in (self.initial_points, self.maximum_points):
             if points < 16 or points & (points - 1):
                 raise ValueError(f"points must be a power of two from 16; got {points}")
+        if self.cells < 4 or self.cells % 2:
+            raise ValueError(f"cells must be an even number from 4; got {self.cells}")

@@ -36,8 +36,8 @@ METHOD = "randomised low-discrepancy sampling, one factor of every path integrat
 _RATIOS = "derivatives of the smoothed paths, local volatility held as a function of time and level"
 _DEFAULT = StepwiseSettings()
 
-#: Of what halving the steps changes this is left, for a scheme of order 2.
-_LEFT = 1.0 / 3.0
+#: Cells of the factor are doubled up to this many.
+_MOST_CELLS = 96
 
 #: Simulated forwards off by more than this and five standard errors are not those of the market.
 _DRIFT = 1e-4
@@ -61,8 +61,7 @@ def stepwise_value(
     Raises as :meth:`Market.driver_correlation` and :meth:`Market.implied_surface`.
     """
     known = known_mean(terms, legs, asked)
-    run = Run.of(trade, terms, legs, market, asked, settings, smiled=smiled, controlled=known is not None)
-    run.known = known
+    run = Run.of(trade, terms, legs, market, asked, settings, smiled=smiled, known=known)
     found = _sample(run, asked)
     sample = SampledValue(
         value=found.value + terms.known_value,
@@ -114,6 +113,9 @@ class _Found:
 def _sample(run: Run, asked: Asked) -> _Found:
     """Until errors are within tolerance or the budget is spent."""
     points, with_slopes = run.settings.initial_points, True
+    run.extend(points, with_slopes=True)
+    while run.cell_bias > 0.5 * asked.value_tolerance and run.fine.cells < _MOST_CELLS:
+        run.double_cells()
     while True:
         run.extend(points, with_slopes=with_slopes)
         value, error = run.value()
@@ -125,15 +127,19 @@ def _sample(run: Run, asked: Asked) -> _Found:
         if precise or points >= run.most_points:
             break
         points *= 2
-    difference, noise = run.halving
-    bias = _LEFT * abs(difference)
-    biased = bias > max(0.5 * asked.value_tolerance, 3.0 * _LEFT * noise)
-    notes = ["precision reached" if precise else _miss(error, asked.value_tolerance, worst, limit)]
-    if biased:
+    miss = _miss(error, asked.value_tolerance, worst, limit)
+    bias, noise = abs(run.step_bias[0]), run.step_bias[1]
+    limit = 0.5 * asked.value_tolerance
+    is_biased, is_crude = bias > max(limit, 3.0 * noise), run.cell_bias > limit
+    notes = ["precision reached" if precise else miss]
+    if is_biased:
         notes.append(f"{run.steps} time steps leave a bias of about {bias:.2g}")
-    if run.steps and run.coarse is None:
-        notes.append(f"one time step per date, {run.steps} in all; their bias was not measured")
-    return _Found(value, error, bias, slopes, slope_errors, not biased and _come_back(run), "; ".join(notes))
+    if is_crude:
+        notes.append(f"{run.fine.cells} cells of the factor leave a bias of about {run.cell_bias:.2g}")
+    if run.cut is not None:
+        notes.append(f"one time step per date, {run.steps} in all; their bias was measured on few paths")
+    is_sound = not is_biased and not is_crude and _come_back(run)
+    return _Found(value, error, math.hypot(bias, run.cell_bias), slopes, slope_errors, is_sound, "; ".join(notes))
 
 
 def _miss(error: float, tolerance: float, delta_error: float, limit: float) -> str:

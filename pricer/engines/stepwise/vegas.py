@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 from pricer.contracts.book import Trade
 from pricer.engines.contract_legs.drawing import Drawn
 from pricer.engines.contract_legs.mapping import contract_legs
-from pricer.engines.contract_legs.result import ContractLegs, NotAsLegs
+from pricer.engines.contract_legs.result import NotAsLegs
 from pricer.engines.contract_terms import ContractTerms
 from pricer.engines.model_value import Asked
 from pricer.engines.stepwise.control import lognormal_legs
@@ -42,7 +42,7 @@ def lognormal_vegas(
     n = len(terms.random_spots)
     vegas, errors = np.full((2, n), np.nan)
     fewer = 2 ** int(np.ceil(np.log2(2 * n)))
-    points = max(run.fine.slope_points // fewer, settings.initial_points)
+    most = max(run.fine.slope_points // fewer, settings.initial_points)
     for asset in range(n):
         smooth, stepped = [], []
         for by in (_BUMP, -_BUMP):
@@ -53,37 +53,38 @@ def lognormal_vegas(
             if known is not None:
                 smooth.append(known.again(lognormal_legs(moved, legs, terms), asked, fewer))
             if known is None or terms.has_floors:
-                stepped.append(_values(trade, terms, legs, market, asked, settings, run, asset, by, points, known))
-        value, variance = 0.0, 0.0
-        for moves in (smooth, stepped):
-            if moves:
-                (move,), (error,) = batch_estimate(((moves[0] - moves[1]) * (_POINT / (2.0 * _BUMP)))[:, None])
-                value, variance = value + float(move), variance + float(error) ** 2
-        vegas[asset], errors[asset] = value, np.sqrt(variance)
+                drivers = run.drivers.with_volatility_moved(asset, by)
+                stepped.append(
+                    Run.of(trade, terms, legs, market, asked, settings, smiled=False, drivers=drivers, known=known)
+                )
+        found = [_difference(*smooth)] if smooth else []
+        if stepped:
+            found.append(_stepped(stepped[0], stepped[1], most, asked))
+        vegas[asset] = sum(value for value, _ in found)
+        errors[asset] = np.sqrt(sum(error**2 for _, error in found))
     return vegas, errors
 
 
-def _values(
-    trade: Trade,
-    terms: ContractTerms,
-    legs: ContractLegs,
-    market: Market,
-    asked: Asked,
-    settings: StepwiseSettings,
-    run: Run,
-    asset: int,
-    by: float,
-    points: int,
-    known: Drawn | None,
-) -> Array:
-    """By randomisation, (randomisations,), after a move; less the same without cash dividends if those are known."""
-    drivers = run.drivers.with_volatility_moved(asset, by)
-    moved = Run.of(
-        trade, terms, legs, market, asked, settings, smiled=False, drivers=drivers, controlled=known is not None
-    )
-    moved.fine.extend(points)
-    out = moved.fine.values.sum(axis=1) / points
-    if moved.control is not None:
-        moved.control.extend(points)
-        out = out - moved.control.values.sum(axis=1) / points
+def _stepped(up: Run, down: Run, most: int, asked: Asked) -> tuple[float, float]:
+    """On ``most`` points, or as few as a vega within the value's tolerance asks for."""
+    points = min(up.settings.initial_points, most)
+    while True:
+        value, error = _difference(_values(up, points), _values(down, points))
+        if error <= asked.value_tolerance or points >= most:
+            return value, error
+        points *= 2
+
+
+def _values(run: Run, points: int) -> Array:
+    """By randomisation, (randomisations,); less the same without cash dividends if those are known."""
+    run.fine.extend(points)
+    out = run.fine.values.sum(axis=1) / points
+    if run.control is not None:
+        run.control.extend(points)
+        out = out - run.control.values.sum(axis=1) / points
     return np.asarray(out)
+
+
+def _difference(up: Array, down: Array) -> tuple[float, float]:
+    (move,), (error,) = batch_estimate(((up - down) * (_POINT / (2.0 * _BUMP)))[:, None])
+    return float(move), float(error)
