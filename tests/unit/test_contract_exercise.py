@@ -17,7 +17,7 @@ from pricer.contracts.profile import PiecewiseLinear, Profile, ProfileKind
 from pricer.contracts.redemption import Redemption
 from pricer.contracts.trigger import Direction, Trigger
 from pricer.engines.closed_form import best_exact, references
-from pricer.engines.contract_exercise import NotCovered, why_not
+from pricer.engines.contract_exercise import ExerciseSettings, NotCovered, why_not
 from pricer.engines.contract_exercise.functions import best, joined, plus, summed
 from pricer.engines.problem import EuropeanProblem, ReferenceKind
 from pricer.engines.selector import Interval
@@ -259,10 +259,16 @@ def test_both_sides_of_an_ex_date_are_looked_at_however_few_the_days():
     dividends = Dividends(0.0, (ProportionalDividend(date(2027, 5, 12), 0.06),))
     market = flat_market(dividends)
     deal = trade(BASKET, Profile(ProfileKind.PUT, 2.0), rights=(TODAY, END), style=ExerciseStyle.AMERICAN)
-    found = [value_of(deal, market, replace(SMALL, american_days=days)).headline for days in (9, 20)]
+    found = [value_of(deal, market, replace(SMALL, american_days=days)).headline for days in (9, 21)]
     assert found[0].lower < found[1].upper
     assert found[1].lower < found[0].upper
     assert min(headline.lower for headline in found) > 1.0
     # a sure gain: the price falls by 6 %, less the interest lost on the strike until then
     discount = float(np.exp(-RATE * years(date(2027, 5, 12))))
     assert found[0].lower > 2.0 * discount - 0.94 - 1e-3
+
+
+@pytest.mark.parametrize("days", [3, 44])
+def test_days_that_cannot_be_halved_are_refused(days):
+    with pytest.raises(ValueError, match="an odd number of days"):
+        ExerciseSettings(american_days=days)
