@@ -30,7 +30,7 @@ _KNOCK = Column(
 OF_CONTRACTS: tuple[Column, ...] = (
     _EXPECTED_LIFE,
     Column(
-        "call_probability_percent",
+        "ends_early_probability_percent",
         "ends before expiry (%)",
         Kind.FIXED,
         "Probability, under the pricing measure, that it is called, exercised or knocked out with a rebate at once.",

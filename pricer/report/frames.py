@@ -128,7 +128,7 @@ def valuations(outcome: Outcome) -> Frame:
             "life_status": number("life_status"),
             "expected_life": while_alive("expected_life"),
             "expected_life_standard_error": while_alive("expected_life_standard_error"),
-            "call_probability_percent": [percent(x) for x in number("call_probability")],
+            "ends_early_probability_percent": [percent(x) for x in number("call_probability")],
             "knock_probability_percent": [percent(x) for x in number("knock_probability")],
             "overhedge_cost": number("overhedge_cost"),
             "reporting_overhedge_cost": reporting(number("overhedge_cost")),

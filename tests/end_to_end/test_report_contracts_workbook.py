@@ -103,7 +103,10 @@ def test_what_is_due_by_tomorrow_is_marked_by_a_tint_and_a_bold_word(workbook):
 def test_the_summary_tells_what_is_due_and_which_triggers_are_near(workbook):
     found = texts(workbook["Summary"])
     title = next(text for text in found if text.startswith("What is due"))
-    assert title == "What is due: 4 by tomorrow, 2 later; triggers within 1 standard deviation, and calls and barriers met: 1"
+    assert (
+        title
+        == "What is due: 4 by tomorrow, 2 later; triggers within 1 standard deviation, and calls and barriers met: 1"
+    )
     first = found.index(title)
     ids = [text for text in found[first:] if text.startswith("PST-")][:6]
     assert ids == ["PST-103", "PST-104", "PST-108", "PST-100", "PST-101", "PST-105"]  # the near trigger leads

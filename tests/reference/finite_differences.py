@@ -158,15 +158,16 @@ class _Grid:
 
     def _stepped(self, values: Array, step: float) -> Array:
         """One step of second order."""
-        slopes = self._all_slopes(values)
-        first = self._implicit(values + step * slopes, values, step)
-        return self._implicit(values + 0.5 * step * (slopes + self._all_slopes(first)), first, step)
+        slopes, total = self._slopes(values)
+        first = self._implicit(values + step * total, slopes, step)
+        again, total_again = self._slopes(first)
+        return self._implicit(values + 0.5 * step * (total + total_again), again, step)
 
-    def _implicit(self, predicted: Array, values: Array, step: float) -> Array:
-        """``predicted`` with each direction's slope of ``values`` made implicit in turn."""
+    def _implicit(self, predicted: Array, slopes: Sequence[Array], step: float) -> Array:
+        """``predicted`` with the slopes of each direction made implicit in turn."""
         part = IMPLICITNESS * step
-        for axis in range(len(self.axes)):
-            predicted = self._solved(predicted - part * self._slopes(values, axis), axis, part)
+        for axis, slope in enumerate(slopes):
+            predicted = self._solved(predicted - part * slope, axis, part)
         return predicted
 
     def _coefficients(self, axis: int) -> tuple[float, float]:
@@ -175,10 +176,18 @@ class _Grid:
         drift = 0.5 * self.levels.drifts[axis] / self.width
         return spread - drift, spread + drift
 
-    def _slopes(self, values: Array, axis: int) -> Array:
+    def _slopes(self, values: Array) -> tuple[list[Array], Array]:
+        """Slopes in time of each direction, and their sum with the mixed derivatives."""
+        slopes = [self._slope(values, axis) for axis in range(len(self.axes))]
+        return slopes, sum(slopes, self._mixed_slopes(values))
+
+    def _slope(self, values: Array, axis: int) -> Array:
         below, above = self._coefficients(axis)
-        moved = below * (_neighbour(values, axis, -1) - values) + above * (_neighbour(values, axis, 1) - values)
-        return np.asarray(moved)
+        slope, rises = np.zeros(self.shape), np.diff(np.moveaxis(values, axis, 0), axis=0)
+        lines = np.moveaxis(slope, axis, 0)
+        lines[:-1] += above * rises
+        lines[1:] -= below * rises
+        return slope
 
     def _mixed_slopes(self, values: Array) -> Array:
         total = np.zeros(self.shape)
@@ -188,10 +197,6 @@ class _Grid:
             total += self.levels.covariance[i, j] / (4.0 * self.width**2) * mixed
         return total
 
-    def _all_slopes(self, values: Array) -> Array:
-        """Slopes in time of all directions and mixed derivatives."""
-        return sum((self._slopes(values, axis) for axis in range(len(self.axes))), self._mixed_slopes(values))
-
     def _solved(self, right: Array, axis: int, part: float) -> Array:
         """The solution of ``(1 - part * slopes) x = right`` along one axis."""
         below, above = self._coefficients(axis)
@@ -199,9 +204,9 @@ class _Grid:
         bands = np.empty((3, n))
         bands[0], bands[1], bands[2] = -part * above, 1.0 + part * (below + above), -part * below
         bands[1, 0], bands[1, -1] = 1.0 + part * above, 1.0 + part * below  # no slope at the edges
-        lines = np.moveaxis(right, axis, 0)
-        solved = solve_banded((1, 1), bands, lines.reshape(n, -1), check_finite=False)
-        return np.moveaxis(solved.reshape(lines.shape), 0, axis)
+        lines = np.moveaxis(right, axis, -1)
+        solved = solve_banded((1, 1), bands, lines.reshape(-1, n).T, check_finite=False)
+        return np.moveaxis(solved.T.reshape(lines.shape), -1, axis)
 
 
 def _neighbour(values: Array, axis: int, by: int) -> Array:

@@ -60,7 +60,7 @@ def told(frames):
         ("note", "payout", "100 % less 1.25 times the fall below 100 %, at least 10 %", "not decided yet"),
         ("note", "coupons", "2026-06-15: 97 %, pays 2.75 % on 2026-06-20", "1 of 4 decided; 2.75 % in memory"),
         ("note", "call", "2026-09-15: 98 %, pays 100 % on 2026-09-20", "not called on the first of 4 dates"),
-        ("note", "knock-in", "is below the level, watched on 2026-03-15, 2026-06-15", "not hit on the first of 4 dates"),
+        ("note", "knock-in", "is below the level, watched on 2026-03-15, 2026-06-15", "not hit on the first of 4"),
         ("accrual", "coupons", "share of 6 days from 2026-01-15 to 2026-06-15 within 80 % to 120 %", "5 of 5 days"),
         ("average", "final level", "of each one's mean over 2026-01-15", "5 of 12 dates fixed, means so far ALDERMOOR"),
         ("average of baskets", "final level", "mean over the dates of the weighted sum", "5 of 12 dates fixed, mean"),
@@ -70,7 +70,8 @@ def told(frames):
         ("correlation", "final level", "less their means, pairs weighted by 0.5 ALDERMOOR", "4 of 11 returns known"),
         ("knock-out", "knock-out", "334 dates from 2026-01-15 to 2026-12-14: 70 %; a hit ends the contract and",
          "clear until 2026-05-29"),
-        ("rebate", "knock-out", "first divided ALDERMOOR by 1.3, BRANDWEIL by 1.2, CORVANTO by 1.25", "not hit on the first of 4"),
+        ("rebate", "knock-out", "first divided ALDERMOOR by 1.3, BRANDWEIL by 1.2, CORVANTO by 1.25",
+         "not hit on the first of 4"),
         ("bermudan", "trade", "long 20,000 units, paid in EUR", "live"),
         ("bermudan", "levels", "prices of ALDERMOOR", "today ALDERMOOR 48.25"),
         ("bermudan", "right to exercise", "the holder may end it for put, strike 50 on ALDERMOOR, bermudan, on "
@@ -194,7 +195,7 @@ def test_a_contract_that_can_only_expire_has_no_life_to_show(frames):
 def test_valuations_carry_life_status_probabilities_and_the_cost_of_the_overhedge(frames):
     rows = frames["valuations"].set_index("trade_id")
     note, called, plain = rows.loc["PST-100"], rows.loc["PST-116"], rows.loc["SMF-1000"]
-    assert note["call_probability_percent"] == 52.5
+    assert note["ends_early_probability_percent"] == 52.5
     assert note["reporting_overhedge_cost"] == note["overhedge_cost"] == -1850.0
     assert (called["life_status"], called["standard_error"]) == (Life.TO_BE_PAID, 0.0)
     assert pd.isna(called["expected_life"])
@@ -248,6 +249,15 @@ def test_events_come_by_day_and_within_it_triggers_that_are_met_or_near_first(fr
     assert call["underlyings"] == "ALDERMOOR, BRANDWEIL, CORVANTO"
     assert found.set_index("trade_id").loc["PST-101", "met_today"] == ""
     assert len(found) == len(events())
+
+
+def test_amounts_of_events_carry_no_dust_of_binary_numbers_and_no_minus_before_a_zero():
+    rows = tuple(
+        EventRow(f"T-{i}", "note", VALUATION_DATE, "payment: call", amount=amount)
+        for i, amount in enumerate((-3_000_000 * 1.0675, -3e6 * 0.0, None))
+    )
+    written = tables(empty(events=rows))["events"]["amount"].tolist()
+    assert repr(written[:2]) == "[-3202500.0, 0.0]" and math.isnan(written[2])
 
 
 def test_a_book_of_european_options_has_empty_tables_of_contracts():

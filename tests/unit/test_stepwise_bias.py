@@ -1,7 +1,5 @@
 """What cells of the factor and single steps a date leave is measured, and stands in the error."""
 
-from dataclasses import replace
-
 import numpy as np
 import pytest
 
@@ -85,22 +83,21 @@ def test_cells_that_cannot_be_doubled_enough_are_told(monkeypatch):
     assert value.sample.standard_error == pytest.approx(np.hypot(run.value()[1], run.cell_bias))
 
 
-def test_what_single_steps_a_date_leave_is_what_many_steps_change():
-    """Long steps under smiles, whose bias is large enough to be seen."""
-    market, names = real_market(), ("ARVENNE", "BELCOR")
-    seen = tuple(paid_at_once(quarter(k)) for k in (2, 4, 6, 8))
-    out = Barrier(BarrierKind.OUT, Trigger(Direction.DOWN, Aggregate.worst_of(2)), seen, (0.75,) * 4)
-    levels = replace(performances(*names), references=tuple(LEVELS[name] for name in names))
-    found = contract(out, names=names, levels=levels, last=quarter(8), aggregate=Aggregate.worst_of(2))
-    single = run_of(found, market, StepwiseSettings(dense=1), smiled=True)
-    many = run_of(found, market, StepwiseSettings(steps=64), smiled=True)
+def test_what_single_steps_leave_is_measured_where_they_cannot_be_halved():
+    """One date and two quoted expiries before it: three steps of up to a year under a smile, a bias that is seen."""
+    market, name = real_market(), "BELCOR"
+    out = Barrier(BarrierKind.OUT, Trigger(Direction.DOWN, Aggregate.worst_of(1)), (paid_at_once(quarter(8)),), (0.9,))
+    found = contract(out, names=(name,), levels=performances(name), last=quarter(8))
+    single = run_of(found, market, StepwiseSettings(dense=0), smiled=True)
+    many = run_of(found, market, StepwiseSettings(), smiled=True)
     for run in (single, many):
-        run.extend(1024, with_slopes=False)
-    left = single.value()[0] - many.value()[0]
-    noise = np.hypot(single.value()[1], many.value()[1])
-    print(left, noise, single.step_bias, many.step_bias)
-    assert single.cut is not None and many.cut is None
-    assert abs(abs(left) - abs(single.step_bias[0])) < 3.0 * np.hypot(noise, single.step_bias[1]) + 0.5 * abs(left)
+        run.extend(4096, with_slopes=False)
+    assert single.steps == 3 and single.cut is not None and many.cut is None
+    left, noise = abs(single.value()[0] - many.value()[0]), np.hypot(single.value()[1], many.value()[1])
+    said = abs(single.step_bias[0])
+    assert left > 3.0 * noise
+    assert left / 1.5 < said < 4.0 * left
+    assert abs(many.step_bias[0]) < 0.05 * said
 
 
 def test_a_control_that_is_rounding_or_badly_known_is_left_out():

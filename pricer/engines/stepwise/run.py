@@ -201,9 +201,8 @@ class Run:
         return value_of(self.fine, self.control, self.known)
 
     def slopes(self) -> tuple[Array, Array]:
-        """By the logarithm of each X at the start, with errors that contain what cells leave, (n,)."""
-        slopes, errors = slopes_of(self.fine, self.control, self.known)
-        return slopes, np.hypot(errors, self.slope_bias)
+        """By the logarithm of each X at the start, with errors, biases left out, (n,)."""
+        return slopes_of(self.fine, self.control, self.known)
 
     def forwards(self) -> tuple[Array, Array]:
         """Means of X on the last date, with errors, (n,)."""

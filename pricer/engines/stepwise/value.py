@@ -139,7 +139,8 @@ def _sample(run: Run, asked: Asked) -> _Found:
     if run.cut is not None:
         notes.append(f"one time step per date, {run.steps} in all; their bias was measured on few paths")
     is_sound = not is_biased and not is_crude and _come_back(run)
-    return _Found(value, error, math.hypot(bias, run.cell_bias), slopes, slope_errors, is_sound, "; ".join(notes))
+    left, slope_errors = math.hypot(bias, run.cell_bias), np.hypot(slope_errors, run.slope_bias)
+    return _Found(value, error, left, slopes, slope_errors, is_sound, "; ".join(notes))
 
 
 def _miss(error: float, tolerance: float, delta_error: float, limit: float) -> str:

@@ -1,4 +1,4 @@
-"""Prices of one path along its common factor: simulated at the factor's nodes, smooth in between."""
+"""Prices of paths along their common factor: simulated at the factor's nodes, smooth in between."""
 
 from __future__ import annotations
 
@@ -24,39 +24,46 @@ def walk_nodes(
     noise: Any, directions: Any, nodes: Any, start: float, start_slope: float, moves: Any, levels: Any, lowest: Any,
     per_node: Any, dates: Any, rows: Any, places: Any, out: Any, slopes: Any,
 ) -> None:  # fmt: skip
-    """X of one asset at the dates, ``out`` (n_dates, n_nodes), for every value of the factor in ``nodes``.
+    """X of one asset at the dates on a few paths, ``out`` (n_dates, lanes), for every value of the factor in ``nodes``.
 
-    ``noise``, ``directions`` (n_steps,) : increments are ``noise + directions w``; ``moves`` (n_steps - 1, NODES, 2),
+    Lanes are paths times nodes: paths go together so that a step's table is fetched once for all. ``noise`` (n_paths,
+    n_steps), ``directions`` (n_steps,) : increments are ``noise + directions w``; ``moves`` (n_steps - 1, NODES, 2),
     ``levels`` (n_dates, NODES, 2) : values and rises; ``dates`` (n_steps,) : the date that ends a step, -1 for none.
-    ``slopes`` (n_dates, n_nodes) by the logarithm of X at the start. Scratch ``rows`` (3, n_nodes), ``places``
-    (n_nodes,) integers.
+    ``slopes`` (n_dates, lanes) by the logarithm of X at the start. Scratch ``rows`` (4, lanes), ``places`` (lanes,)
+    integers.
     """
-    n_steps, n_nodes = len(noise), len(nodes)
+    n_paths, n_steps = noise.shape
+    n_nodes = len(nodes)
+    lanes = n_paths * n_nodes
     highest = float(levels.shape[1] - 2)
-    for j in range(n_nodes):
+    for j in range(lanes):
         rows[0, j] = start
         rows[2, j] = start_slope
     for s in range(n_steps):
-        low, scale, date, move, direction = lowest[s], per_node[s], dates[s], noise[s], directions[s]
-        for j in range(n_nodes):
-            q = rows[0, j] + move + direction * nodes[j]
+        low, scale, date, direction = lowest[s], per_node[s], dates[s], directions[s]
+        for path in range(n_paths):
+            move = noise[path, s]
+            for j in range(n_nodes):
+                rows[3, path * n_nodes + j] = move + direction * nodes[j]
+        for j in range(lanes):
+            q = rows[0, j] + rows[3, j]
             x = (q - low) * scale
             place = np.int32(min(max(x, 0.0), highest))
             rows[0, j] = q
             rows[1, j] = x - place
             places[j] = place
         if date >= 0:
-            for j in range(n_nodes):
+            for j in range(lanes):
                 rise = levels[date, places[j], 1]
                 out[date, j] = levels[date, places[j], 0] + rise * rows[1, j]
                 slopes[date, j] = rise * scale * rows[2, j]
         if s + 1 < n_steps:
-            for j in range(n_nodes):
+            for j in range(lanes):
                 rise = moves[s, places[j], 1]
                 rows[0, j] += moves[s, places[j], 0] + rise * rows[1, j]
                 rows[2, j] *= 1.0 + rise * scale
     for k in range(len(out)):
-        for j in range(n_nodes):
+        for j in range(lanes):
             x = exp2_double(out[k, j])
             out[k, j] = x
             slopes[k, j] *= _LN2 * x

@@ -15,6 +15,9 @@ from pricer.simulation.kernels.stepwise_legs import value_leg
 from pricer.simulation.kernels.stepwise_levels import add_slopes, read, spread, walk_nodes
 from pricer.simulation.kernels.vectors import OPTIONS
 
+#: Paths that walk together.
+_TOGETHER = 8
+
 
 def _accumulate(
     noise: Any, conversion: Any, with_slopes: bool, nodes: Any, cell_weights: Any, mass: Any, moment: Any,
@@ -31,8 +34,12 @@ def _accumulate(
     n_paths, n = noise.shape[:2]
     n_dates, n_nodes, n_ends, n_legs = len(scales), len(nodes), cell_weights.shape[1], len(legs)
     cells = n_ends - 1
-    rows, places = np.empty((3, n_nodes)), np.empty(n_nodes, dtype=np.int32)
-    at_nodes, slopes_at = np.empty((n_dates, n_nodes)), np.empty((n_dates, n_nodes))
+    together = min(_TOGETHER, n_paths)
+    lanes = together * n_nodes
+    rows, places = np.empty((4, lanes)), np.empty(lanes, dtype=np.int32)
+    on_lanes, slopes_on = np.empty((n, n_dates, lanes)), np.empty((n, n_dates, lanes))
+    at_nodes = on_lanes.reshape((n, n_dates, together, n_nodes))
+    slopes_at = slopes_on.reshape((n, n_dates, together, n_nodes))
     price_slopes = np.empty((n_dates, n, n_nodes))
     prices, of_prices = np.empty((n_dates, n, n_ends)), np.empty((n_dates, n, n_ends))
     found, adjoints = np.empty((len(table), n_ends)), np.empty((len(table), n_ends))
@@ -43,17 +50,22 @@ def _accumulate(
     pending, of_running = np.empty(cells, dtype=np.int64), np.empty((len(events), n_ends))
     for path in range(n_paths):
         row = path if len(conversion) > 1 else 0
+        place = path % together
+        if place == 0:
+            last = min(path + together, n_paths)
+            for i in range(n):
+                walk_nodes(
+                    noise[path:last, i], directions[:, i], nodes, starts[i], start_slopes[i], moves[i], levels[i],
+                    lowest[i], per_node[i], dates, rows, places, on_lanes[i], slopes_on[i],
+                )  # fmt: skip
         for i in range(n):
-            walk_nodes(
-                noise[path, i], directions[:, i], nodes, starts[i], start_slopes[i], moves[i], levels[i], lowest[i],
-                per_node[i], dates, rows, places, at_nodes, slopes_at,
-            )  # fmt: skip
             for k in range(n_dates):
                 rate = conversion[row, k, i]
-                spread(at_nodes[k], scales[k, i] * rate, floors[k, i] * rate, cell_weights, prices[k, i])
-                for j in range(n_nodes):
-                    price_slopes[k, i, j] = scales[k, i] * rate * slopes_at[k, j]
-            spread(at_nodes[n_dates - 1], 1.0, 0.0, cell_weights, ends)
+                spread(at_nodes[i, k, place], scales[k, i] * rate, floors[k, i] * rate, cell_weights, prices[k, i])
+                if with_slopes:
+                    for j in range(n_nodes):
+                        price_slopes[k, i, j] = scales[k, i] * rate * slopes_at[i, k, place, j]
+            spread(at_nodes[i, n_dates - 1, place], 1.0, 0.0, cell_weights, ends)
             for c in range(cells):
                 share, first = share_between(mass, c, 0.0, 1.0), moment_between(moment, c, 0.0, 1.0)
                 forwards[i] += ends[c] * share + (ends[c + 1] - ends[c]) * first
