@@ -2,15 +2,19 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass, field
 
 from pricer.contracts.barrier import Barrier
 from pricer.contracts.book import Trade
+from pricer.contracts.contract import Contract
 from pricer.contracts.exercise import Exercise
-from pricer.contracts.life_cycle import AsOf
+from pricer.contracts.life_cycle import AsOf, Status
+from pricer.contracts.observation import Observation
 from pricer.engines.closed_form.contract_references import contract_references
 from pricer.engines.contract_exercise.settings import ExerciseSettings
 from pricer.engines.contract_exercise.value import exercise_value
+from pricer.engines.contract_exercise.value import why_not as why_not_exercised
 from pricer.engines.contract_legs.mapping import contract_legs
 from pricer.engines.contract_legs.result import NotAsLegs
 from pricer.engines.contract_legs.smooth import smooth_value
@@ -27,6 +31,7 @@ from pricer.engines.variance_products import variance_references, variance_value
 from pricer.engines.vulnerable_value import claim_fault, vulnerable_value
 from pricer.market.local_vol_surface import LocalVolSurface
 from pricer.market.market import Market
+from pricer.market.standing import standing
 
 
 @dataclass(frozen=True, slots=True)
@@ -105,10 +110,31 @@ def _special(trade: Trade, terms: ContractTerms, market: Market, asked: Asked) -
     return variance_value(trade, terms, market, asked, smiled=False)
 
 
+def why_not(trade: Trade, market: Market) -> tuple[str, str] | None:
+    """The table of the book and the reason for which a live contract is covered by no engine; None for one that may be.
+
+    What only a solution can tell is left to the engines. Raises as :meth:`ContractTerms.of`.
+    """
+    contract = trade.contract
+    if not isinstance(contract, Contract) or not (contract.writer or any(_rights(contract))):
+        return None
+    as_of = standing(trade, market)
+    if as_of.status is not Status.LIVE:
+        return None
+    fault = claim_fault(contract)
+    if fault is not None:
+        return "writer", fault
+    reason = why_not_exercised(ContractTerms.of(trade, as_of, market)) if may_be_exercised(as_of) else None
+    return None if reason is None else ("exercise", reason)
+
+
 def may_be_exercised(as_of: AsOf) -> bool:
     """Whether a right to end the contract is still there, today's included."""
-    rights = (feature.rights for feature in as_of.contract.features if isinstance(feature, Exercise))
-    return any(days[-1].day >= as_of.valuation_date for days in rights)
+    return any(days[-1].day >= as_of.valuation_date for days in _rights(as_of.contract))
+
+
+def _rights(contract: Contract) -> Iterator[tuple[Observation, ...]]:
+    return (feature.rights for feature in contract.features if isinstance(feature, Exercise))
 
 
 def has_structural_writer(terms: ContractTerms) -> bool:

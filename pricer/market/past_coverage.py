@@ -14,7 +14,7 @@ from pricer.contracts.coupons import Coupons
 from pricer.contracts.life_cycle import AsOf, Status
 from pricer.core.issues import Issue
 from pricer.core.source import Place
-from pricer.market.findings import Locate
+from pricer.market.findings import Locate, error, warning
 from pricer.market.market import Market
 from pricer.market.standing import missing_days, price_record
 
@@ -44,6 +44,42 @@ def past_coverage(trade: Trade, state: AsOf, market: Market, place: Locate) -> I
                 yield _at(place("barrier"), issue)
             case _:
                 yield _at(place("writer"), issue)
+    yield from _records_ahead(state, place)
+    yield from _hits_from_the_start(state, place)
+
+
+def _records_ahead(state: AsOf, place: Locate) -> Iterator[Issue]:
+    """Records of days to come would be taken for facts: a hit that is certain, a barrier that nothing can touch."""
+    today = state.valuation_date
+    for feature in state.contract.features:
+        if not isinstance(feature, Barrier):
+            continue
+        hit, clear = None if feature.recorded_hit is None else feature.recorded_hit.day, feature.clear_until
+        for what, day in (("a hit recorded on", hit), ("a barrier known to be clear until", clear)):
+            if day is not None and day > today:
+                yield error(
+                    place("barrier"),
+                    "record-of-later-day",
+                    f"{what} {day}, after the valuation date {today}",
+                    "records up to the valuation date",
+                    "Correct the date, or clear the cell until that day.",
+                )
+
+
+def _hits_from_the_start(state: AsOf, place: Locate) -> Iterator[Issue]:
+    """A barrier hit on the first of its days is on the wrong side, or in another unit than the levels."""
+    for i, feature in enumerate(state.contract.features):
+        if not isinstance(feature, Barrier) or len(feature.schedule) == 1 or feature.recorded_hit is not None:
+            continue
+        first, seen = feature.schedule[0].day, state.progress.features[i]
+        if seen.hit_on == first:
+            yield warning(
+                place("barrier"),
+                "hit-from-the-start",
+                f"a {feature.kind} that was hit on {first}, the first day it was watched",
+                "a barrier that the levels of its first day do not reach",
+                "Check its level, unit and direction against the terms. The trade is valued as given.",
+            )
 
 
 def _or_removed(issue: Issue, trade: Trade, market: Market) -> Issue:

@@ -2,15 +2,18 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable, Iterator
 from dataclasses import replace
 from functools import partial
 
 import numpy as np
 
 from pricer.contracts.book import Book, Refusal, Trade
+from pricer.contracts.contract import Contract
 from pricer.core.issues import Issue, Severity
 from pricer.core.source import Place
 from pricer.market.coverage import coverage
+from pricer.market.findings import error
 from pricer.market.market import Market
 from pricer.market.netting_coverage import netting_coverage
 
@@ -28,6 +31,8 @@ def admit(book: Book, market: Market, *, accept_failing_surfaces: bool = False) 
     for trade in book.trades:
         place = partial(_place, book, trade)
         issues = coverage(trade, market, place, accept_failing_surfaces=accept_failing_surfaces)
+        if all(issue.severity is Severity.WARNING for issue in issues):
+            issues = (*issues, *_not_covered(trade, market, place))
         found.extend(issues)
         errors = tuple(issue for issue in issues if issue.severity is not Severity.WARNING)
         if errors:
@@ -41,6 +46,31 @@ def admit(book: Book, market: Market, *, accept_failing_surfaces: bool = False) 
         refusals=(*book.refusals, *refused),
         issues=(*book.issues, *market.issues, *found),
     )
+
+
+def _not_covered(trade: Trade, market: Market, place: Callable[[str], Place | None]) -> Iterator[Issue]:
+    if not isinstance(trade.contract, Contract):
+        return
+    from pricer.engines.contract_value import why_not  # loads the engines: only where a contract asks for them
+
+    try:
+        found = why_not(trade, market)
+    except (ArithmeticError, ValueError, LookupError):
+        return  # the engine will meet it, and say so
+    if found is not None:
+        table, reason = found
+        yield not_covered(trade, reason, place(table) or place("trade_id"))
+
+
+def not_covered(trade: Trade, reason: str, place: Place | None = None) -> Issue:
+    """What is said of a trade that no engine covers."""
+    return error(
+        place,
+        "not-covered",
+        f"a contract that this version does not price: {reason}",
+        "a contract that one of the engines covers",
+        "Value it outside this book, by the desk's authorised practice; the README lists what is covered.",
+    ).for_trade(trade.trade_id)
 
 
 def refusal(trade: Trade, market: Market, issues: tuple[Issue, ...]) -> Refusal:

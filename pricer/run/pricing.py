@@ -21,7 +21,7 @@ from pricer.engines.not_covered import NotCovered
 from pricer.market.checked_surface import CheckedSurface
 from pricer.market.correlation_stress import stressed
 from pricer.market.market import Market
-from pricer.run.admission import admit, refusal
+from pricer.run.admission import admit, not_covered, refusal
 from pricer.run.contract_facts import contract_facts
 from pricer.run.events import events
 from pricer.run.flat_quotes import flat_surface, is_random
@@ -154,15 +154,7 @@ def _try_appraise(trade: Trade, market: Market, settings: AppraisalSettings) -> 
     try:
         return appraise(trade, market, settings)
     except NotCovered as reason:
-        issue = Issue(
-            code="not-covered",
-            found=f"a contract that this version does not price: {reason}",
-            expected="a contract that one of the engines covers",
-            mend="Value it outside this book, by the desk's authorised practice; the README lists what is covered.",
-            severity=Severity.ERROR,
-            trade_id=trade.trade_id,
-        )
-        return refusal(trade, market, (issue,))
+        return refusal(trade, market, (not_covered(trade, str(reason)),))
     except (ArithmeticError, ValueError, LookupError) as error:
         issue = Issue(
             code="engine-failed",

@@ -10,6 +10,7 @@ import pytest
 from pricer.contracts.average import Average, AverageOf
 from pricer.contracts.book import Book, Trade
 from pricer.contracts.contract import Contract
+from pricer.contracts.exercise import Exercise, ExercisedBy
 from pricer.contracts.fixings import Fixing, Fixings
 from pricer.contracts.locked_in import LockedIn
 from pricer.contracts.observation import Observation
@@ -18,6 +19,7 @@ from pricer.contracts.profile import Profile, ProfileKind
 from pricer.contracts.writer import Writer
 from pricer.engines.contract_value import ContractSettings
 from pricer.engines.contract_walk.settings import WalkSettings
+from pricer.run.admission import admit
 from pricer.run.outcome import Status
 from pricer.run.pricing import price
 from pricer.run.settings import Settings
@@ -121,6 +123,16 @@ def test_a_contract_that_no_engine_covers_is_refused_in_words():
     outcome = run(trade(short_put, "DOUBTFUL"), trade(NOTE, "NOTE"))
     assert [v.trade_id for v in outcome.valuations] == ["NOTE"]
     assert {issue.code for issue in outcome.refusals[0].issues} <= {"no-writer-credit", "not-covered"}
+
+
+def test_a_right_beside_an_average_is_refused_before_anything_is_priced():
+    right = Exercise(ExercisedBy.HOLDER, tuple(map(paid, OBSERVED)), BASKET, CALL)
+    average = Contract(FIXED, Average((*OBSERVED, EXPIRY), BASKET), CALL, paid(EXPIRY), (right,))
+    admitted = admit(Book("night", (trade(average, "BOTH"), trade(NOTE, "NOTE"))), market_on(TODAY, SPOTS, FIXINGS))
+    assert [kept.trade_id for kept in admitted.trades] == ["NOTE"]
+    (issue,) = admitted.refusals[0].issues
+    assert issue.code == "not-covered"
+    assert "average" in issue.found
 
 
 def test_events_and_states_come_with_the_values():
