@@ -77,7 +77,7 @@ class ContractTerms:
             floors=floors,
             covariances=factors.covariances,
             discount=discount,
-            known_value=math.fsum(paid.amount * discount(paid.payment_date) for paid in as_of.to_be_paid),
+            known_value=decided_value(as_of, discount),
             unit_notional=contract.unit_notional(np.array(spots)),
             random_spots=np.array([price.random_spot for price in prices]),
             rates=np.array([market.fx.rate(currency, trade.currency) for currency in currencies]),
@@ -125,6 +125,11 @@ def _rate_forwards(market: Market, currencies: Sequence[str], target: str, dates
     """Forward exchange rates, (n_dates, n)."""
     by_currency = {c: np.array([market.fx_forward(c, target, day) for day in dates]) for c in set(currencies)}
     return np.array([by_currency[c] for c in currencies]).T.reshape(len(dates), len(currencies))
+
+
+def decided_value(as_of: AsOf, discount: Callable[[date], float]) -> float:
+    """What the amounts of one unit that are decided and not yet paid are worth tonight."""
+    return math.fsum(paid.amount * discount(paid.payment_date) for paid in as_of.to_be_paid)
 
 
 def discounting(trade: Trade, contract: Contract, market: Market) -> Callable[[date], float]:

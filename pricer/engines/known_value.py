@@ -2,13 +2,11 @@
 
 from __future__ import annotations
 
-import math
-
 import numpy as np
 
 from pricer.contracts.book import Trade
 from pricer.contracts.life_cycle import AsOf
-from pricer.engines.contract_terms import discounting
+from pricer.engines.contract_terms import decided_value, discounting
 from pricer.engines.model_value import Life, ModelValue, UnitRatios
 from pricer.engines.sampled_value import SampledValue
 from pricer.engines.selector import Headline, Interval
@@ -17,8 +15,7 @@ from pricer.market.market import Market
 
 def known_value(trade: Trade, as_of: AsOf, market: Market) -> ModelValue:
     """The discounted known amounts of one unit, 0 once all is settled; nothing moves it but the curve."""
-    discount = discounting(trade, as_of.contract, market)
-    value = math.fsum(paid.amount * discount(paid.payment_date) for paid in as_of.to_be_paid)
+    value = decided_value(as_of, discounting(trade, as_of.contract, market))
     none = np.zeros(len(trade.contract.underlyings))
     return ModelValue(
         headline=Headline(value, 0.0, value, value, Interval.EXACT, "known amounts, discounted"),

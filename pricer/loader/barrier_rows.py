@@ -12,7 +12,7 @@ from pricer.contracts.barrier import BarrierKind
 from pricer.contracts.trigger import Direction
 from pricer.loader.columns import Column
 from pricer.loader.days import Day
-from pricer.loader.faults import Fault, unwanted
+from pricer.loader.faults import Fault, check_paid_after, unwanted
 from pricer.loader.names import Choice
 from pricer.loader.numbers import Number
 from pricer.loader.trigger_columns import FeatureRow, WatchedOn, at_level_counts, watched_on
@@ -142,12 +142,9 @@ class BarrierRow(FeatureRow):
     @field_validator("recorded_payment_date")
     @classmethod
     def check_hit(cls, paid: date | None, info: ValidationInfo) -> date | None:
-        hit = info.data.get("recorded_hit_date")
-        if paid is not None and "recorded_hit_date" in info.data and hit is None:
-            raise unwanted(paid, "barriers with a recorded hit", "recorded_hit_date")
-        if paid is not None and hit is not None and paid < hit:
-            expected = f"a date from the recorded hit {hit} on"
-            raise Fault("dates-out-of-order", f"the date {paid}", expected, "Correct one of the two dates.")
+        if "recorded_hit_date" in info.data:
+            hit, owner = info.data["recorded_hit_date"], "barriers with a recorded hit"
+            check_paid_after(paid, hit, "the recorded hit", owner, "recorded_hit_date")
         return paid
 
     @field_validator("clear_until")

@@ -10,7 +10,7 @@ from pydantic import ValidationInfo, field_validator
 from pricer.contracts.exercise import ExercisedBy, ExerciseStyle
 from pricer.loader.columns import Column
 from pricer.loader.days import Day
-from pricer.loader.faults import Fault, unwanted
+from pricer.loader.faults import check_paid_after, unwanted
 from pricer.loader.names import Choice
 from pricer.loader.trigger_columns import FeatureRow
 
@@ -69,10 +69,7 @@ class ExerciseRow(FeatureRow):
     @field_validator("exercised_payment_date")
     @classmethod
     def check_payment(cls, paid: date | None, info: ValidationInfo) -> date | None:
-        used = info.data.get("exercised_date")
-        if paid is not None and "exercised_date" in info.data and used is None:
-            raise unwanted(paid, "rights that were used", "exercised_date")
-        if paid is not None and used is not None and paid < used:
-            expected = f"a date from the exercise {used} on"
-            raise Fault("dates-out-of-order", f"the date {paid}", expected, "Correct one of the two dates.")
+        if "exercised_date" in info.data:
+            used = info.data["exercised_date"]
+            check_paid_after(paid, used, "the exercise", "rights that were used", "exercised_date")
         return paid

@@ -79,6 +79,17 @@ def unwanted(value: object, owner: str, governed_by: str) -> Fault:
     return Fault("unwanted-value", found, f"a blank cell, as this is for {owner} only", mend)
 
 
+def check_paid_after(paid: date | None, day: date | None, what: str, owner: str, column: str) -> None:
+    """Raise the fault of a payment date without the ``day`` in ``column`` that it belongs to, or before it."""
+    if paid is None:
+        return
+    if day is None:
+        raise unwanted(paid, owner, column)
+    if paid < day:
+        expected = f"a date from {what} {day} on"
+        raise Fault("dates-out-of-order", f"the date {paid}", expected, "Correct one of the two dates.")
+
+
 def only_for(owner: str, belongs: bool, value: object, governed_by: str) -> None:
     """Raise the fault of a value that ``owner`` alone must have, if it is missing or not theirs."""
     if belongs and value is None:

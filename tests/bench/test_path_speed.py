@@ -12,14 +12,14 @@ import pytest
 
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.profile import PiecewiseLinear
-from pricer.engines.paths.barriers import knocked_in, knocked_out
 from pricer.engines.paths.law import PathLaw
 from pricer.engines.paths.leg import Payment, Reading, Trigger, When
-from pricer.engines.paths.notes import Observation
-from pricer.engines.paths.notes import autocallable as leg_of
 from pricer.engines.paths.plan import PathProblem, Tables
-from pricer.engines.paths.sample import PathSettings, prepare_paths, sample_paths
+from pricer.engines.paths.sample import PathSettings, sample_paths
 from pricer.simulation.path_sampler import Method, PathSampler
+from tests.unit.barrier_legs import knocked_in, knocked_out
+from tests.unit.note_legs import Observation
+from tests.unit.note_legs import autocallable as leg_of
 
 pytestmark = pytest.mark.bench
 
@@ -101,7 +101,8 @@ def test_seconds_times_variance_beside_plain_paths(name):
 
 
 def test_worst_of_autocallable_to_a_basis_point_within_a_second():
-    prepare_paths()
+    import pricer.simulation.path_sampler  # noqa: F401 - compiled, or loaded, outside the clock
+
     settings = PathSettings(initial_points=1024)
     start = time.process_time()
     found = sample_paths(

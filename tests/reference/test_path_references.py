@@ -13,13 +13,13 @@ import pytest
 
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.profile import PiecewiseLinear, Profile, ProfileKind
-from pricer.engines.paths.barriers import knocked_in, knocked_out, observed_knock_in
 from pricer.engines.paths.law import PathLaw
 from pricer.engines.paths.leg import Event, Leg, Payment, Reading, Trigger, When
-from pricer.engines.paths.notes import Observation
-from pricer.engines.paths.notes import autocallable as leg_of
 from pricer.engines.paths.plan import PathProblem
 from pricer.engines.paths.sample import PathSettings, sample_paths
+from tests.unit.barrier_legs import knocked_in, knocked_out, observed_knock_in
+from tests.unit.note_legs import Observation
+from tests.unit.note_legs import autocallable as leg_of
 
 
 def rows(name):

@@ -6,11 +6,11 @@ import QuantLib as ql
 
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.profile import Profile, ProfileKind
-from pricer.engines.paths.barriers import knocked_out
 from pricer.engines.paths.law import PathLaw
 from pricer.engines.paths.leg import Event, Fixing, Leg, Payment, Reading, Trigger, When
 from pricer.engines.paths.plan import PathProblem
 from pricer.engines.paths.sample import PathSettings, sample_paths
+from tests.unit.barrier_legs import knocked_out
 
 TODAY = ql.Date(2, 1, 2025)
 DAYS = ql.Actual365Fixed()

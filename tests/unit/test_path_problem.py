@@ -5,14 +5,15 @@ import pytest
 
 from pricer.contracts.aggregate import Aggregate
 from pricer.contracts.profile import PiecewiseLinear
-from pricer.engines.paths.barriers import difference, knocked_out, observed_knock_in
+from pricer.engines.paths.algebra import difference
 from pricer.engines.paths.law import PathLaw
 from pricer.engines.paths.leg import Branch, Event, Fixing, Leg, Payment, Reading, Trigger, When
-from pricer.engines.paths.notes import Observation
-from pricer.engines.paths.notes import autocallable as note
 from pricer.engines.paths.plan import PathProblem, Tables
 from pricer.engines.paths.sample import PathSettings, sample_paths
 from pricer.simulation.common_steps import CommonSteps
+from tests.unit.barrier_legs import knocked_out, observed_knock_in
+from tests.unit.note_legs import Observation
+from tests.unit.note_legs import autocallable as note
 from tests.unit.path_cases import CALL, autocallable, law_of, reading
 
 WORST = reading(Aggregate.worst_of(3))

@@ -12,7 +12,7 @@ from collections.abc import Sequence
 from pricer.contracts.barrier import Barrier, BarrierKind
 from pricer.contracts.feature import Payout
 from pricer.contracts.profile import PiecewiseLinear
-from pricer.engines.paths.barriers import difference
+from pricer.engines.paths.algebra import difference
 
 #: By the barriers that must not have been hit, numbered in the order of the contract.
 Parts = dict[frozenset[int], PiecewiseLinear]

@@ -16,7 +16,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from pricer.engines.closed_form.barrier import OVERSHOOT
-from pricer.engines.paths.barriers import times
+from pricer.engines.paths.algebra import times
 from pricer.engines.paths.law import PathLaw
 from pricer.engines.paths.leg import Event, Fixing, Leg, Payment, Reading, Remembered, Trigger
 from pricer.engines.paths.plan import PathProblem

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -33,18 +32,3 @@ class Drawn:
         out = self.prices
         out[:, asset] += self.started_at(asset, factor) - self.random[:, asset]
         return out
-
-
-class PriceLaw(Protocol):
-    """Turns Brownian motions into prices."""
-
-    @property
-    def clock(self) -> Array:
-        """The times of the motions, from 0, (n_steps + 1,)."""
-
-    @property
-    def sizes(self) -> Array:
-        """How far each motion moves the levels, (dims,)."""
-
-    def draw(self, walks: Array) -> Drawn:
-        """Prices of motions (n_steps, dims, n_paths)."""

@@ -9,29 +9,15 @@ from numpy.typing import NDArray
 
 from pricer.contracts.aggregate import AggregateKind
 from pricer.contracts.profile import PiecewiseLinear
+from pricer.engines.paths.codes import KINDS, WHENS
 from pricer.engines.paths.law import PathLaw
-from pricer.engines.paths.leg import Event, Leg, Payment, Reading, Trigger, When
+from pricer.engines.paths.leg import Event, Leg, Payment, Reading, Trigger
 from pricer.simulation.common_steps import CommonSteps
 from pricer.simulation.kernels import path_tables as k
 from pricer.simulation.kernels import readings as r
 from pricer.simulation.path_plan import PathPlan
 
 Array = NDArray[np.float64]
-
-_KINDS = {
-    AggregateKind.WEIGHTED_SUM: r.SUM,
-    AggregateKind.BEST_OF: r.BEST,
-    AggregateKind.WORST_OF: r.WORST,
-    AggregateKind.KTH_BEST: r.RANKED,
-    AggregateKind.RANK_WEIGHTED: r.RANKED,
-    AggregateKind.GEOMETRIC: r.GEOMETRIC,
-}
-_WHEN = {
-    When.ALIVE: k.ALIVE_BEFORE,
-    When.SURVIVING: k.SURVIVING,
-    When.STOPPED_ABOVE: k.STOPPED_ABOVE,
-    When.STOPPED_BELOW: k.STOPPED_BELOW,
-}
 
 #: A factor that moves a reading less than this smooths nothing.
 _HARD = 1e-9
@@ -84,7 +70,7 @@ class Tables:
 
     def plan(self) -> PathPlan:
         law = self._problem.law
-        kinds = [_KINDS[reading.aggregate.kind] for _, reading in self._readings]
+        kinds = [KINDS[reading.aggregate.kind] for _, reading in self._readings]
         widths = [1 if kind in (r.BEST, r.WORST) else law.n_assets for kind in kinds]
         firsts = np.cumsum([0, *widths])[:-1]
         table = [
@@ -184,7 +170,7 @@ class Tables:
         first = len(self._profiles)
         self._profiles += [f.intercept] if flat else _flat(f)
         self._payments.append(
-            [row, _WHEN[payment.when], int(payment.averaged and not flat), first, 0 if flat else len(f.knots)]
+            [row, WHENS[payment.when], int(payment.averaged and not flat), first, 0 if flat else len(f.knots)]
         )
 
 

@@ -157,11 +157,6 @@ def _sampler(tables: Tables, group: str, seed: int, settings: PathSettings) -> P
     return PathSampler(tables.plan(), random, settings.randomisations, method=method)
 
 
-def prepare_paths() -> None:
-    """Compile the kernels, or load them from the disk cache, ahead of the first trade."""
-    import pricer.simulation.path_sampler  # noqa: F401
-
-
 def _result(tables: Tables, problem: PathProblem, means: Array, points: int, with_ratios: bool) -> PathSample:
     n_legs, n_events = len(problem.legs), (sum(len(rows) for rows in tables.rows))
     n = problem.law.n_assets

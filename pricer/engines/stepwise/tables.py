@@ -8,28 +8,13 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from pricer.contracts.aggregate import AggregateKind
-from pricer.engines.paths.leg import Event, Leg, Payment, Reading, Trigger, When
+from pricer.engines.paths.codes import KINDS, WHENS
+from pricer.engines.paths.leg import Event, Leg, Payment, Reading, Trigger
 from pricer.simulation.kernels import stepwise_legs as k
-from pricer.simulation.kernels import stepwise_levels as r
+from pricer.simulation.kernels.path_tables import PAYMENT_COLUMNS
 
 Array = NDArray[np.float64]
 Integers = NDArray[np.int64]
-
-_KINDS = {
-    AggregateKind.WEIGHTED_SUM: r.SUM,
-    AggregateKind.BEST_OF: r.BEST,
-    AggregateKind.WORST_OF: r.WORST,
-    AggregateKind.KTH_BEST: r.RANKED,
-    AggregateKind.RANK_WEIGHTED: r.RANKED,
-    AggregateKind.GEOMETRIC: r.GEOMETRIC,
-}
-_WHEN = {
-    When.ALIVE: k.ALIVE,
-    When.SURVIVING: k.SURVIVING,
-    When.STOPPED_ABOVE: k.STOPPED_ABOVE,
-    When.STOPPED_BELOW: k.STOPPED_BELOW,
-}
 
 
 @dataclass(frozen=True, slots=True)
@@ -86,7 +71,7 @@ class _Collector:
     def tables(self) -> LegTables:
         found = list(self._readings)
         n = -1 if found else 1
-        table = [[date, _KINDS[x.aggregate.kind], -1 if x.since is None else x.since] for date, x in found]
+        table = [[date, KINDS[x.aggregate.kind], -1 if x.since is None else x.since] for date, x in found]
         return LegTables(
             readings=np.array(table, dtype=np.int64).reshape(-1, 3),
             references=np.array([x.references for _, x in found], dtype=float).reshape(len(found), n),
@@ -95,7 +80,7 @@ class _Collector:
             first_sums=np.array([leg.sum_so_far for leg in self._all], dtype=float),
             events=np.array(self._events, dtype=np.int64).reshape(-1, k.EVENT_COLUMNS),
             numbers=np.array(self._numbers, dtype=float).reshape(-1, k.EVENT_NUMBERS),
-            payments=np.array(self._payments, dtype=np.int64).reshape(-1, k.PAYMENT_COLUMNS),
+            payments=np.array(self._payments, dtype=np.int64).reshape(-1, PAYMENT_COLUMNS),
             profiles=np.array(self._profiles or [0.0], dtype=float),
             rows=tuple(self._rows),
             dates=tuple(self._dates),
@@ -150,4 +135,4 @@ class _Collector:
         row = -1 if flat else self._row(date, payment.reading)
         first = len(self._profiles)
         self._profiles += [f.intercept, f.slope, *f.knots, *f.bends, *f.jumps]
-        self._payments.append([row, _WHEN[payment.when], int(payment.averaged and not flat), first, len(f.knots)])
+        self._payments.append([row, WHENS[payment.when], int(payment.averaged and not flat), first, len(f.knots)])

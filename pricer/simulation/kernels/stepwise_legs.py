@@ -12,6 +12,16 @@ from typing import Any
 
 from numba import njit
 
+from pricer.simulation.kernels.path_tables import (
+    AVERAGED,
+    KNOTS,
+    PROFILE,
+    READING,
+    STOPPED_ABOVE,
+    STOPPED_BELOW,
+    SURVIVING,
+    WHEN,
+)
 from pricer.simulation.kernels.stepwise_cells import (
     KNOT,
     UNCUT,
@@ -31,13 +41,6 @@ ABOVE, BELOW, FIRST_PAYMENT, LAST_PAYMENT, FIXING, COUPON, PAYS, STOP_ROW = rang
 EVENT_COLUMNS = 8
 ABOVE_LEVEL, BELOW_LEVEL, SHARE, COUPON_LEVEL, COUPON_AMOUNT, COUPON_DISCOUNT = range(6)
 EVENT_NUMBERS = 6
-
-# Columns of a payment.
-READING, WHEN, AVERAGED, PROFILE, KNOTS = range(5)
-PAYMENT_COLUMNS = 5
-
-# On which paths a payment is made.
-ALIVE, SURVIVING, STOPPED_ABOVE, STOPPED_BELOW = range(4)
 
 
 @njit(**OPTIONS)

@@ -8,12 +8,10 @@ import numpy as np
 from numba import njit
 
 from pricer.simulation.kernels.elementary import exp2_double
+from pricer.simulation.kernels.readings import BEST, GEOMETRIC, RANKED, SUM, WORST
 from pricer.simulation.kernels.vectors import OPTIONS, SUM_OPTIONS
 
 _LN2 = 0.6931471805599453
-
-# Kinds of readings.
-SUM, BEST, WORST, RANKED, GEOMETRIC = range(5)
 
 # Columns of the table of readings.
 DATE, KIND, SINCE = range(3)
